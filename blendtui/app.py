@@ -1,0 +1,371 @@
+"""The console: opens a plant, shows its screens, and keeps the slow work off them."""
+
+from __future__ import annotations
+
+import os
+import signal
+import threading
+from collections import deque
+from collections.abc import Callable
+from datetime import date
+from pathlib import Path
+from typing import Any, ClassVar
+
+from textual.app import App
+from textual.binding import Binding, BindingType
+from textual.worker import get_current_worker
+
+from blendtui import commands
+from blendtui.desk import answers
+from blendtui.desk.errors import DeskError
+from blendtui.desk.plant import Plant, open_plant
+from blendtui.screens import messages, overlays, recipe, stocks, targets, trials
+from blendtui.screens.session import Session
+from blendtui.screens.state import RecipeState, Snapshot, read
+from blendtui.store.errors import PlantError
+from blendtui.widgets import paint
+from solver.errors import SolverError
+
+POLL = 2.5  # s between two looks for another person's change
+PATIENCE = 0.4  # s after which the screen says that it is waiting
+KEPT_MESSAGES = 200
+CSS = """
+Screen { layout: vertical; overflow: hidden; background: ansi_default; color: ansi_default; }
+#title, #edit, #answer, #caution { height: 1; }
+#status { height: 2; }
+#keys { height: 2; }
+.-wide #status { height: 1; }
+#stocks, #comparison, #notes, #text { height: 1fr; }
+#sides { layout: horizontal; height: 1fr; }
+#products { width: 22; height: 1fr; }
+#cells { width: 1fr; height: 1fr; margin-left: 1; }
+.-wide #products { width: 40; }
+#head { height: 2; }
+#shares { height: 9; }
+#trials { height: 8; }
+"""
+
+Task = tuple[Callable[[], Any], Callable[[Any], None], Callable[[str], None] | None]
+
+
+class Console(App[int]):
+    """The program. Everything that touches the plant after the start runs in one thread, in order."""
+
+    TITLE = "blendtui"
+    CSS = CSS
+    ENABLE_COMMAND_PALETTE = False
+    HORIZONTAL_BREAKPOINTS: ClassVar[list[tuple[int, str]] | None] = [(0, "-narrow"), (110, "-wide")]
+    BINDINGS: ClassVar[list[BindingType]] = [Binding("ctrl+q", "leave", show=False, priority=True),
+                                             Binding("ctrl+c", "leave", show=False, priority=True)]
+    MODES = {commands.STOCKS: stocks.StocksScreen, commands.TARGETS: targets.TargetsScreen,  # noqa: RUF012
+             commands.RECIPE: recipe.RecipeScreen, commands.TRIALS: trials.TrialsScreen}
+    DEFAULT_MODE = commands.STOCKS
+
+    def __init__(self, plant: Plant, *, today: date | None = None, sheets: Path | None = None) -> None:
+        super().__init__(ansi_color=True)
+        self.animation_level = "none"
+        self.plant = plant
+        self.today = today or date.today()
+        self.sheets = sheets or Path.cwd()  # where floor sheets are written
+        self.session = Session(read(plant), self._ask)
+        self.said: deque[tuple[str, str]] = deque(maxlen=KEPT_MESSAGES)
+        self.said.append(("note", f"{plant.opened_note}" if plant.opened_note else str(plant.path)))
+        self.been: list[str] = []  # screens to go back to
+        self._tasks: deque[Task] = deque()
+        self._running = 0
+        self._gate = threading.Lock()
+        self._draining = False
+        self._leaving = False
+        self._newer = threading.Event()
+
+    # Life
+
+    def on_mount(self) -> None:
+        """Begin the slow work only once the first screen has been sent."""
+        self.call_after_refresh(self._begin)
+        self.set_interval(POLL, self._poll)
+        try:
+            self._loop_signal(signal.SIGHUP)
+        except (ValueError, NotImplementedError, RuntimeError):
+            pass  # not the main thread, or a system without it
+
+    def _loop_signal(self, number: int) -> None:
+        import asyncio
+
+        if threading.current_thread() is threading.main_thread():
+            asyncio.get_running_loop().add_signal_handler(number, self._hung_up)
+
+    def _hung_up(self) -> None:
+        """The terminal is gone: there is nothing left to draw on, and everything is saved already."""
+        self.plant.close()
+        os._exit(129)
+
+    def _begin(self) -> None:
+        self.session.ask()
+        self.shows_changed()
+
+    @property
+    def page(self) -> Any:
+        """The screen below any overlay."""
+        return next(s for s in reversed(self.screen_stack) if hasattr(s, "say"))
+
+    def say(self, message: str, kind: str = "note") -> None:
+        """Say what happened, in the status line and in the list of messages."""
+        if message:
+            self.said.append((kind, message))
+        self.page.say(message, kind)
+
+    # Tasks on the plant
+
+    @property
+    def busy(self) -> bool:
+        """Is a change on its way to the plant?"""
+        return self._running > 0
+
+    def task(self, work: Callable[[], Any], done: Callable[[Any], None],
+             failed: Callable[[str], None] | None = None) -> None:
+        """Do `work` in the plant's thread, after what was asked before; then `done` or `failed` here."""
+        self._running += 1
+        with self._gate:
+            self._tasks.append((work, done, failed))
+            start = not self._draining
+            self._draining = True
+        if start:
+            self.run_worker(self._drain, thread=True, group="plant", exit_on_error=False)
+        self.set_timer(PATIENCE, self._say_waiting)
+
+    def _say_waiting(self) -> None:
+        if self.busy:
+            self.page.say("waiting for the plant file …", "wait")
+
+    def _drain(self) -> None:
+        while True:
+            with self._gate:
+                if not self._tasks:
+                    self._draining = False
+                    return
+                work, done, failed = self._tasks.popleft()
+            try:
+                self.post_message(messages.Finished(done, failed, work()))
+            except (PlantError, DeskError, SolverError, OSError) as error:
+                self.post_message(messages.Finished(done, failed, refusal=str(error)))
+            except Exception as error:  # an operator is told in a line, and may go on
+                self.post_message(messages.Finished(done, failed, refusal=fault(error)))
+
+    def on_finished(self, message: messages.Finished) -> None:
+        """A task ended."""
+        self._running -= 1
+        if message.refusal:
+            if message.failed:
+                message.failed(message.refusal)
+            self.say(message.refusal, "refused")
+        else:
+            message.done(message.result)
+        if not self.busy:
+            if self._leaving:
+                self.exit(0)
+            self.page.feed_later()
+
+    def change(self, work: Callable[[], Any], done: Callable[[Any], None],
+               failed: Callable[[str], None] | None = None) -> None:
+        """Do a change to the plant; then read the plant again, ask for the recipe, and `done`."""
+        plant, before = self.plant, self.session.snapshot.revision
+
+        def both() -> tuple[Any, Snapshot | None]:
+            result = work()
+            return result, read(plant) if plant.revision() != before else None
+
+        def then(pair: tuple[Any, Snapshot | None]) -> None:
+            result, snapshot = pair
+            if snapshot is not None:
+                self.session.edited()
+                self.adopt(snapshot)
+            done(result)
+
+        self.task(both, then, failed)
+
+    def adopt(self, snapshot: Snapshot) -> None:
+        """Show the plant as it is now, and ask for the recipe again."""
+        self.session.snapshot = snapshot
+        self.session.ask()
+        self.shows_changed()
+
+    def shows_changed(self) -> None:
+        """What the screens show has changed."""
+        self.page.refresh_page()
+
+    def _poll(self) -> None:
+        if self.busy:
+            return
+        plant, known = self.plant, self.session.snapshot.revision
+
+        def look() -> tuple[Snapshot, str, str] | None:
+            if plant.revision() == known:
+                return None
+            last = plant.journal(1)[0]
+            return read(plant), last.who, last.what
+
+        def done(found: tuple[Snapshot, str, str] | None) -> None:
+            if found is not None and found[0].revision != self.session.snapshot.revision:
+                self.adopt(found[0])
+                self.say(f"{found[1]} changed the plant: {found[2]}")
+
+        self.task(look, done)
+
+    # The recipe
+
+    def _ask(self, state: RecipeState) -> None:
+        self._newer.set()
+        self._newer = newer = threading.Event()
+        before, stocks = state.answer, self.session.snapshot.stocks
+        self.run_worker(lambda: self._answer(state, stocks, before, newer), thread=True, group="recipe",
+                        exclusive=True, exit_on_error=False)
+        self.set_timer(PATIENCE, self._say_slow)
+
+    def _say_slow(self) -> None:
+        if self.session.state.waiting:
+            self.shows_changed()
+
+    def _answer(self, state: RecipeState, stocks: tuple, before: answers.Answer | None,
+                newer: threading.Event) -> None:
+        """In a thread: the recipe, then what else the screens show of it, each with the request's number."""
+        number = state.request
+        try:
+            found = self.answer_of(self.plant, stocks, state.wishes, before)
+            self.post_message(messages.Answered(number, found))
+            # A moment's rest lets a fast typist's next wish come before the longer work begins.
+            if newer.wait(0.15) or get_current_worker().is_cancelled:
+                return
+            for more in answers.further(found, newer.is_set):
+                self.post_message(messages.Answered(number, more))
+        except (PlantError, DeskError, SolverError) as error:
+            self.post_message(messages.Unanswered(number, str(error)))
+        except Exception as error:  # an operator is told in a line, and may go on
+            self.post_message(messages.Unanswered(number, fault(error)))
+
+    answer_of = staticmethod(answers.answer)
+
+    def on_answered(self, message: messages.Answered) -> None:
+        """An answer came; a late one is dropped."""
+        if self.session.take(message.request, message.answer):
+            self.shows_changed()
+
+    def on_unanswered(self, message: messages.Unanswered) -> None:
+        """There is no answer."""
+        if self.session.fail(message.request, message.error):
+            self.shows_changed()
+
+    # Commands of every screen
+
+    def do_undo(self) -> None:
+        """Take back the last wish or edit."""
+        self._take_back("undo", self.session.undo, self.plant.undo, self.session.plant_undone, "undone")
+
+    def do_redo(self) -> None:
+        """Do again what was taken back."""
+        self._take_back("redo", self.session.redo, self.plant.redo, self.session.plant_redone, "done again")
+
+    def _take_back(self, what: str, wish: Callable, plant: Callable, note: Callable, verb: str) -> None:
+        taken = wish()
+        if taken is not None:
+            self.say(f"{verb}: {taken.what}", "done")
+            self.shows_changed()
+            return
+
+        def then(pair: tuple[str, Snapshot]) -> None:
+            note()
+            self.adopt(pair[1])
+            self.say(pair[0])
+
+        self.task(lambda: (plant(), read(self.plant)), then)
+
+    def do_next_product(self) -> None:
+        """Speak of the next product."""
+        self._other_product(1)
+
+    def do_previous_product(self) -> None:
+        """Speak of the product before."""
+        self._other_product(-1)
+
+    def _other_product(self, step: int) -> None:
+        codes = [p.product for p in self.session.snapshot.products]
+        if not codes:
+            self.say("there is no product yet: add one on the screen Targets", "refused")
+            return
+        at = codes.index(self.session.product) if self.session.product in codes else 0
+        self.session.choose(codes[(at + step) % len(codes)])
+        self.shows_changed()
+
+    def go(self, screen: str) -> None:
+        """Open a screen."""
+        if screen != self.current_mode:
+            self.been = [*[s for s in self.been if s != screen], self.current_mode][-4:]
+            self.switch_mode(screen)
+
+    def do_back(self) -> None:
+        """Go to the screen before."""
+        if not self.been:
+            self.say("this is where you came in; q leaves, 1 to 4 open the screens")
+            return
+        screen = self.been.pop()
+        self.switch_mode(screen)
+
+    def do_help(self) -> None:
+        """Show every command."""
+        self.push_screen(overlays.HelpScreen(self.page.NAME))
+
+    def do_messages(self) -> None:
+        """Show what was said, in full."""
+        self.push_screen(overlays.MessagesScreen(list(self.said)))
+
+    def do_palette(self) -> None:
+        """List the commands, and carry out the chosen one."""
+        self.push_screen(overlays.PaletteScreen(self.page.NAME), self._chosen)
+
+    def _chosen(self, command: commands.Command | None) -> None:
+        if command is None:
+            return
+        if command.screen not in (commands.ALL, self.page.NAME):
+            self.go(command.screen)
+            self.call_after_refresh(lambda: self.page.carry_out(command, command.keys[0]))
+        else:
+            self.page.carry_out(command, command.keys[0])
+
+    def action_leave(self) -> None:
+        """ctrl+q and ctrl+c."""
+        self.do_quit()
+
+    def do_quit(self) -> None:
+        """Leave, once everything is saved."""
+        if self.page.edit.active:
+            self.say("something is being typed: Enter keeps it, Esc drops it, then q leaves", "question")
+        elif self.busy:
+            self._leaving = True
+            self.say("leaving as soon as the last change is saved …", "wait")
+        else:
+            self.exit(0)
+
+
+for _code, _ in commands.SCREENS:
+    setattr(Console, f"do_go_{_code}", lambda self, code=_code: self.go(code))
+
+
+def fault(error: Exception) -> str:
+    """A fault of the program in a line."""
+    return f"a fault of this program ({type(error).__name__}: {str(error)[:120]}); nothing was changed by it"
+
+
+def run(path: Path | None) -> int:
+    """Open a plant and show it until the operator leaves; the exit code.
+
+    Raises PlantError in one line when the plant cannot be opened.
+    """
+    paint.adopt()
+    with open_plant(path) as plant:
+        app = Console(plant)
+        # Mouse reports cost bytes with every movement, which a slow line cannot spare.
+        app.run(mouse=not any(os.environ.get(name) for name in ("SSH_CONNECTION", "SSH_TTY", "SSH_CLIENT")))
+        return app.return_code or 0
+
+
+__all__ = ["Console", "run"]

@@ -1,0 +1,137 @@
+"""The one table of what can be done at the console: key line, palette and help screen are made from it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+ALL = "everywhere"
+STOCKS, TARGETS, RECIPE, TRIALS = "stocks", "targets", "recipe", "trials"
+SCREENS: tuple[tuple[str, str], ...] = ((STOCKS, "Stocks"), (TARGETS, "Targets"), (RECIPE, "Recipe"),
+                                        (TRIALS, "Trials"))
+MOVES = ("up", "down", "left", "right", "pageup", "pagedown", "home", "end", "ctrl+home", "ctrl+end")
+
+
+@dataclass(frozen=True)
+class Command:
+    """One thing that can be done."""
+
+    keys: tuple[str, ...]  # as Textual names them, or the character itself
+    action: str  # the screen, or else the program, carries it out in do_<action>
+    label: str  # two words at most, for the key line
+    screen: str  # where; ALL: on every screen
+    help: str  # one sentence
+    shown: str = ""  # the key as a person reads it, where it is not the first of `keys`
+    changes: bool = False  # waits until an edit that is under way has been saved
+    listed: bool = True  # has a place in the key line
+
+    @property
+    def key(self) -> str:
+        """The key as a person reads it."""
+        return self.shown or self.keys[0]
+
+
+def _on(screen: str, keys: str, action: str, label: str, help: str, *, shown: str = "", changes: bool = True,
+        listed: bool = True) -> Command:
+    return Command(tuple(keys.split()), action, label, screen, help, shown, changes, listed)
+
+
+COMMANDS: tuple[Command, ...] = (
+    _on(STOCKS, "enter", "edit", "edit", "Edit the cell under the cursor; units may be typed (12 t, 110 F, "
+        "215/46 SUS), an empty text means unknown.", shown="Enter"),
+    _on(STOCKS, "/ slash", "filter", "filter", "Show only the stocks in whose code, name, oil, kind or group all "
+        "the typed words are found.", changes=False),
+    _on(STOCKS, "s", "sort", "sort", "Sort by the column under the cursor; again turns the order, a third time "
+        "gives the plant's own.", changes=False),
+    _on(STOCKS, "a", "add", "add", "Add a stock under a new code."),
+    _on(STOCKS, "c", "copy", "copy", "Copy the stock under the cursor, its quantity aside, under a new code."),
+    _on(STOCKS, "d", "retire", "retire", "Take the stock under the cursor out of use; u brings it back."),
+    _on(STOCKS, "v", "add_value", "other value", "Give the stock a property that has no column yet, such as "
+        "ccs-25."),
+
+    _on(TARGETS, "enter", "edit", "edit", "Edit the cell under the cursor; an empty text means not asked.",
+        shown="Enter"),
+    _on(TARGETS, "tab", "pane", "list/cells", "Go from the list of products to the cells of the chosen one and "
+        "back.", shown="Tab", changes=False),
+    _on(TARGETS, "l", "limit", "new limit", "Add a limit on a property: low, high and guard are asked for one by "
+        "one."),
+    _on(TARGETS, "s", "rule", "new share rule", "Add a rule on the share of a stock, an oil, a kind or a group."),
+    _on(TARGETS, "x", "unknown", "unknown ok", "On a limit: let stocks serve whose value of that property is "
+        "unknown, or no longer."),
+    _on(TARGETS, "d", "drop", "drop", "Drop the limit or the share rule under the cursor; in the list of products, "
+        "take the product out of use."),
+    _on(TARGETS, "a", "add", "add", "Add a product under a new code."),
+    _on(TARGETS, "c", "copy", "copy", "Copy the product with its limits and rules under a new code."),
+
+    _on(RECIPE, "enter", "edit", "type share", "Type the share of the stock under the cursor by hand, in % or kg; "
+        "the properties follow.", shown="Enter"),
+    _on(RECIPE, "f", "fill", "fill to 100", "Give the stock under the cursor what the typed shares lack of 100 %, "
+        "or take off what is too much."),
+    _on(RECIPE, "b", "best", "best", "Go back to the least-cost recipe."),
+    _on(RECIPE, "h", "hold", "hold", "Hold the stock under the cursor at a share, and find the best of the rest; "
+        "on a held stock, let it go."),
+    _on(RECIPE, "x", "leave", "leave out", "Leave the stock under the cursor out, or let it in again."),
+    _on(RECIPE, "c", "free", "clear holds", "Let every held stock go and every left-out one in."),
+    _on(RECIPE, "n", "next", "next blend", "Step to the next feasible blend, cheapest first."),
+    _on(RECIPE, "p", "previous", "blend before", "Step to the feasible blend before."),
+    _on(RECIPE, "t", "take", "take", "Take the blend that is shown: its shares become yours to type over."),
+    _on(RECIPE, "k", "keep", "keep trial", "Keep the blend that is shown as a trial, under a name."),
+    _on(RECIPE, "m", "batch", "batch", "Type the size of the batch for this recipe."),
+    _on(RECIPE, "L", "law", "law", "Go to the next blending law for this recipe."),
+    _on(RECIPE, "w", "write", "write sheet", "Write the recipe as a text sheet for the floor, and say where."),
+    _on(RECIPE, "tab", "pane", "shares/limits", "Go from the shares to the limits and remarks and back.",
+        shown="Tab", changes=False),
+
+    _on(TRIALS, "enter", "open", "open", "Open the trial under the cursor on the recipe screen.", shown="Enter"),
+    _on(TRIALS, "space", "mark", "compare", "Mark the trial under the cursor to stand in the comparison, four at "
+        "most.", shown="Space", changes=False),
+    _on(TRIALS, "tab", "pane", "list/comparison", "Go from the list to the comparison and back.", shown="Tab",
+        changes=False),
+    _on(TRIALS, "d", "drop", "drop", "Drop the trial under the cursor; u brings it back."),
+
+    _on(ALL, "u", "undo", "undo", "Take back your last change, on this screen or another, and say what it was."),
+    _on(ALL, "r", "redo", "redo", "Do again what was undone last."),
+    _on(ALL, "] right_square_bracket", "next_product", "product", "Go to the next product: every screen speaks of "
+        "the same one.", shown="[ ]", changes=False),
+    _on(ALL, "[ left_square_bracket", "previous_product", "product before", "Go to the product before.",
+        changes=False, listed=False),
+    *(_on(ALL, str(n), f"go_{code}", name.lower(), f"Go to the screen {name}.", changes=False, listed=False)
+      for n, (code, name) in enumerate(SCREENS, 1)),
+    Command(MOVES, "move", "move", ALL, "Move by cells, by pages, to the first and last column; with ctrl to the "
+            "first and last row.", "arrows, PgUp, PgDn, Home, End", listed=False),
+    _on(ALL, "escape", "back", "back", "Drop what is being typed; else take the filter off; else go to the screen "
+        "before.", shown="Esc", changes=False, listed=False),
+    _on(ALL, "! exclamation_mark", "messages", "messages", "Show the messages of this session in full, newest "
+        "first.", changes=False, listed=False),
+    _on(ALL, ": colon ctrl+p", "palette", "all commands", "List every command, and run the one that is chosen.",
+        changes=False),
+    _on(ALL, "q ctrl+q", "quit", "quit", "Leave; every change was saved when it was made.", changes=False),
+    _on(ALL, "? question_mark f1", "help", "help", "Show this list.", changes=False),
+)
+
+
+def of(screen: str) -> Iterator[Command]:
+    """The commands of a screen, its own first."""
+    yield from (c for c in COMMANDS if c.screen == screen)
+    yield from (c for c in COMMANDS if c.screen == ALL)
+
+
+def find(screen: str, key: str, character: str | None) -> Command | None:
+    """The command that a key stands for on a screen, or None."""
+    for command in of(screen):
+        if key in command.keys or (character and character in command.keys):
+            return command
+    return None
+
+
+def key_line(screen: str) -> list[tuple[str, str]]:
+    """Keys and labels for the key line, the help key last."""
+    return [(c.key, c.label) for c in of(screen) if c.listed]
+
+
+def matching(typed: str, screen: str) -> list[Command]:
+    """Commands in which every typed word is found, those of the screen first."""
+    words = typed.lower().split()
+    order = [screen, ALL, *(code for code, _ in SCREENS if code != screen)]
+    found = [c for c in COMMANDS if all(w in f"{c.key} {c.label} {c.screen} {c.help}".lower() for w in words)]
+    return sorted(found, key=lambda c: order.index(c.screen))

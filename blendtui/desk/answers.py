@@ -1,0 +1,121 @@
+"""What the console shows of a product's recipe, worked out step by step so that a newer wish need not wait."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING
+
+from blendtui.store.plant import Plant
+from solver.stocks import Stock, StockTable
+from solver.target import Target
+
+from . import blends, targets
+
+if TYPE_CHECKING:
+    from solver.recipe import Recipe
+
+TIME_LIMIT = 5.0  # s, of one search
+
+
+@dataclass(frozen=True)
+class Wishes:
+    """What the operator wants of one recipe, over what the product asks for."""
+
+    product: str
+    law: str | None = None  # None: the product's
+    batch_kg: float | None = None  # None: the product's
+    held: Mapping[str, float] = field(default_factory=dict)  # stock → mass fraction
+    left_out: frozenset[str] = frozenset()
+    typed: Mapping[str, float] | None = None  # shares by hand, stock → mass fraction; None: the best is wanted
+
+    @property
+    def target_only(self) -> Wishes:
+        """The wishes that the least-cost recipe depends on."""
+        return replace(self, typed=None)
+
+
+@dataclass(frozen=True)
+class Answer:
+    """A product's recipe. What is not worked out yet, or cannot be, is None."""
+
+    wishes: Wishes
+    target: Target
+    stocks: tuple[Stock, ...]
+    allowed: tuple[str, ...]  # stocks that may serve, those used first, then in the plant's order
+    best: Recipe
+    by_hand: Recipe | None = None
+    ranges: Mapping[str, tuple[float, float]] | None = None
+    guard_cost_per_t: float | None = None
+    largest_batch_kg: float | None = None
+    blends: tuple[Recipe, ...] = ()
+    done: frozenset[str] = frozenset()  # which of ranges, guard, largest, blends have been worked out
+
+
+def target(plant: Plant, wishes: Wishes) -> Target:
+    """The target of a product under these wishes."""
+    return targets.target_of(plant, wishes.product, wishes.law, wishes.batch_kg, wishes.held, wishes.left_out)
+
+
+def answer(plant: Plant, stocks: tuple[Stock, ...], wishes: Wishes, before: Answer | None = None) -> Answer:
+    """The least-cost recipe, and the reading of the shares typed by hand if there are any.
+
+    `before` is an answer for the same plant: where it already holds the least cost of this target only the typed
+    shares are read again. Raises SolverError, PlantError or DeskError in one line.
+    """
+    goal = target(plant, wishes)
+    if before is not None and before.stocks == stocks and before.target == goal:
+        found = replace(before, wishes=wishes)
+    else:
+        best = blends.best(stocks, goal, TIME_LIMIT)
+        found = Answer(wishes, goal, stocks, _allowed(stocks, goal, best), best)
+    made = None if wishes.typed is None else blends.by_hand(stocks, goal, wishes.typed)
+    return replace(found, by_hand=made)
+
+
+def _allowed(stocks: tuple[Stock, ...], goal: Target, best: Recipe) -> tuple[str, ...]:
+    from solver.allowed import candidates
+
+    table = StockTable(stocks)
+    codes = [table.codes[i] for i in candidates(table, replace(goal, left_out=frozenset()))]
+    shares = best.shares or {}
+    return tuple(sorted(codes, key=lambda code: (code not in shares, -shares.get(code, 0.0))))
+
+
+def further(found: Answer, stale: Callable[[], bool]) -> Iterator[Answer]:
+    """The answer with its ranges, then what the guards cost and the largest batch, then the other blends.
+
+    Ends early when `stale` says that a newer wish has come.
+    """
+    if found.best.status == "infeasible" or not found.best.shares:
+        yield replace(found, done=frozenset(("ranges", "guard", "largest", "blends")))
+        return
+    for name, step in (("ranges", _ranges), ("guard", _guard), ("largest", _largest), ("blends", _blends)):
+        if stale():
+            return
+        if name not in found.done:
+            found = replace(step(found), done=found.done | {name})
+            if name != "guard":
+                yield found
+
+
+def _ranges(found: Answer) -> Answer:
+    from solver.choices import ranges
+
+    return replace(found, ranges=ranges(StockTable(found.stocks), found.target, time_limit=TIME_LIMIT))
+
+
+def _guard(found: Answer) -> Answer:
+    return replace(found, guard_cost_per_t=blends.guard_cost(StockTable(found.stocks), found.target, found.best))
+
+
+def _largest(found: Answer) -> Answer:
+    from solver.choices import largest_batch
+
+    return replace(found, largest_batch_kg=largest_batch(StockTable(found.stocks), found.target, time_limit=2.0))
+
+
+def _blends(found: Answer) -> Answer:
+    from solver.sets import blends as sets
+
+    return replace(found, blends=tuple(sets(StockTable(found.stocks), found.target, time_limit=TIME_LIMIT)))

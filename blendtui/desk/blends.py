@@ -1,0 +1,152 @@
+"""What can be done with blends: the best one, shares typed by hand, what else would do, and trials."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+from blendtui.store.plant import Plant
+from blendtui.store.records import Trial
+from solver.stocks import Stock, StockTable
+from solver.target import Target
+
+from . import targets
+from .errors import DeskError
+
+if TYPE_CHECKING:
+    from solver.recipe import Recipe
+
+SPREAD_MARKED = 3.0  # % between the laws from which a prediction is marked
+SPREAD_DOUBTED = 10.0  # % from which a laboratory blend is needed before the number can be trusted
+
+
+@dataclass(frozen=True)
+class Extras:
+    """What the recipe screen shows beside the recipe; it takes longer, so it comes after."""
+
+    guard_cost_per_t: float | None  # cost with guards less cost without; None: one of them has no blend
+    ranges: Mapping[str, tuple[float, float]] | None  # stock → least and most mass fraction
+    blends: tuple[Recipe, ...]  # other sets of stocks, cheapest first
+    largest_batch_kg: float | None  # of any blend that meets the target, with today's tanks
+
+
+def best(stocks: Sequence[Stock], target: Target, time_limit: float = 5.0) -> Recipe:
+    """The least-cost recipe, or the nearest blend where none meets the target."""
+    from solver.recipe import design
+
+    return design(StockTable(stocks), target, time_limit=time_limit)
+
+
+def by_hand(stocks: Sequence[Stock], target: Target, shares: Mapping[str, float]) -> Recipe:
+    """The reading of shares [mass fraction] typed by hand.
+
+    They need not sum to 1 while they are being typed: the properties are those of the same proportions
+    brought to 1, and `reasons` says what is missing or too much. Shares and kg stay as typed.
+    """
+    from solver.recipe import evaluate
+
+    total = sum(shares.values())
+    if total <= 0.0:
+        raise DeskError("no shares yet: type the share of at least one stock")
+    table = StockTable(stocks)
+    made = evaluate(table, {code: share / total for code, share in shares.items() if share > 0.0}, target)
+    if abs(total - 1.0) <= 1e-6:
+        return made
+    off = 100.0 * (total - 1.0)
+    words = (f"the shares sum to {100.0 * total:.2f} %: {abs(off):.2f} % "
+             f"{'too much' if off > 0 else 'missing'}; properties are those of the same proportions")
+    batch = target.batch_kg
+    return replace(made, shares=dict(shares), reasons=(words,),
+                   charges_kg=None if batch is None else {c: s * batch for c, s in shares.items()})
+
+
+def largest_at(stocks: Iterable[Stock], recipe: Recipe) -> tuple[float, str] | None:
+    """The largest batch [kg] of just these shares that today's tanks allow, and the stock that ends first."""
+    available = {s.code: s.available_kg for s in stocks}
+    sizes = [(kg / share, code) for code, share in (recipe.shares or {}).items()
+             if share > 0.0 and (kg := available.get(code)) is not None]
+    return min(sizes, default=None)
+
+
+def extras(stocks: Sequence[Stock], target: Target, recipe: Recipe) -> Extras:
+    """What the guards cost, the range of every stock, the other sets of stocks, and the largest batch."""
+    from solver.choices import largest_batch
+
+    if recipe.status == "infeasible":
+        return Extras(None, None, (), None)
+    table = StockTable(stocks)
+    return Extras(guard_cost(table, target, recipe), all_ranges(stocks, target, time_limit=5.0),
+                  tuple(other_sets(stocks, target, time_limit=5.0)),
+                  largest_batch(table, target, time_limit=2.0))
+
+
+def all_ranges(stocks: Sequence[Stock], target: Target,
+               time_limit: float = 60.0) -> dict[str, tuple[float, float]] | None:
+    """Least and most mass fraction of every allowed stock, whole-number rules left out."""
+    from solver.choices import ranges
+
+    return ranges(StockTable(stocks), target, time_limit=time_limit)
+
+
+def other_sets(stocks: Sequence[Stock], target: Target, count: int = 8,
+               time_limit: float = 60.0) -> list[Recipe]:
+    """Blends that differ in their set of stocks, cheapest first."""
+    from solver.sets import blends
+
+    return blends(StockTable(stocks), target, count, time_limit=time_limit)
+
+
+def guard_cost(table: StockTable, target: Target, recipe: Recipe) -> float | None:
+    """What the guards cost per tonne: the least cost less that of the same target without guards."""
+    from solver.recipe import design
+    from solver.rows import without_guards
+
+    if not any(x.guard or x.guard_pct for x in target.limits):
+        return 0.0
+    free = design(table, without_guards(target), time_limit=3.0)
+    if recipe.cost_per_t is None or free.cost_per_t is None or free.status == "infeasible":
+        return None
+    return max(0.0, recipe.cost_per_t - free.cost_per_t)
+
+
+def spread_words(spread_pct: float | None) -> str:
+    """What a spread between the laws means for the reader; empty below 3 %."""
+    if spread_pct is None or spread_pct <= SPREAD_MARKED:
+        return ""
+    if spread_pct <= SPREAD_DOUBTED:
+        return "the laws differ: confirm in the laboratory"
+    return "the laws differ widely: a laboratory blend is needed before this number can be trusted"
+
+
+# Trials
+
+def trials(plant: Plant, product: str | None = None) -> list[Trial]:
+    """The trials kept, of one product or of all, newest last."""
+    return plant.trials(product)
+
+
+def keep_trial(plant: Plant, name: str, product: str, recipe: Recipe, note: str = "") -> str:
+    """Keep a recipe's shares under a name, and say so in words. DeskError when they cannot be kept."""
+    if not recipe.shares:
+        raise DeskError("there are no shares to keep yet")
+    total = sum(recipe.shares.values())
+    if abs(total - 1.0) > 1e-4:
+        raise DeskError(f"the shares sum to {100 * total:.2f} %, not to 100 %; mend them before keeping them")
+    return targets.keep_trial(plant, Trial(name, product, dict(recipe.shares), recipe.law, note=note))
+
+
+def drop_trial(plant: Plant, product: str, name: str) -> str:
+    """Drop a trial, and say so in words; undo brings it back."""
+    return targets.drop_trial(plant, product, name)
+
+
+def compare(stocks: Sequence[Stock], target: Target, kept: Sequence[Trial]) -> list[Recipe]:
+    """Each trial's shares read on today's stocks, under the law it was kept with."""
+    from solver.recipe import evaluate
+
+    table = StockTable(stocks)
+    missing = {c for t in kept for c in t.shares} - set(table.codes)
+    if missing:
+        raise DeskError(f"no stock {', '.join(sorted(missing))} any more; the trial cannot be read today")
+    return [evaluate(table, t.shares, target, law=t.law) for t in kept]

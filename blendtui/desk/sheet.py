@@ -1,0 +1,112 @@
+"""The floor sheet: a recipe as plain text of 80 columns, for the printer and the clipboard on the floor."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Sequence
+from datetime import datetime
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from blendtui.store.harmless import harmless
+from blendtui.store.records import Product
+from solver.properties import lookup
+from solver.stocks import Stock
+
+from . import numbers
+from .errors import DeskError
+
+if TYPE_CHECKING:
+    from solver.recipe import LimitResult, Recipe
+
+WIDTH = 80
+NOT_A_CERTIFICATE = "A calculated blend is not a certificate: the laboratory releases."
+# Common practice on the floor; each a reminder with its reason, never a permission.
+CAUTIONS = (
+    "Site procedures, safety data sheets, permits and local codes decide; this sheet only reminds.",
+    "Flash: the lowest flash in the vessel and the heater skin count, not the blend's mean.",
+    "Water in hot oil froths over: drain and test first, heat slowly, leave room.",
+    "Static: bond, earth, fill from below, start slowly, wait before dipping.",
+    "Never mix concentrates neat; keep additives within the temperature of their safety data sheet.")
+_ORDER = {"base": 0, "rework": 1, "vi_improver": 2, "additive": 3, "pour_depressant": 4}
+_PLAIN = str.maketrans({"–": "-", "²": "2", "³": "3", "°": " deg ", "·": ".", "−": "-", "≤": "<=", "≥": ">=",
+                        "…": "...", "×": "x"})
+
+
+def charge_order(stocks: Sequence[Stock]) -> list[Stock]:
+    """The usual order of charging: light stock, heavy stock, rework, VI improver, package, pour depressant."""
+    return sorted(stocks, key=lambda s: (_ORDER.get(s.kind, 9), s.kv40 or 0.0, s.code))
+
+
+def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[Stock], when: datetime,
+                who: str) -> str:
+    """The sheet as text, ASCII only, no line longer than 80 columns. DeskError without shares."""
+    if not recipe.shares:
+        raise DeskError("there are no shares to write down yet")
+    used = charge_order([s for s in stocks if recipe.shares.get(s.code, 0.0) > 0.0])
+    title = harmless(f"{product.product}  {product.name}".strip(), 60)
+    lines = ["BLEND SHEET  " + title, "=" * WIDTH,
+             f"Plant {harmless(plant, 46)}",
+             f"Made {when:%Y-%m-%d %H:%M} by {harmless(who, 40)}",
+             f"Batch {numbers.kg(recipe.batch_kg)} kg   law {recipe.law}   {_status(recipe)}", ""]
+    lines += [*_charges(recipe, used), "", *_properties(recipe), ""]
+    lines += [line for words in (*recipe.reasons, *(f"To be tested: {t}" for t in recipe.to_be_tested))
+              for line in textwrap.wrap(words, WIDTH)]
+    lines += ["", *(line for c in (*CAUTIONS, NOT_A_CERTIFICATE)
+                    for line in textwrap.wrap("* " + c, WIDTH, subsequent_indent="  ")), "",
+              "Charged by ____________________   Checked by ____________________", ""]
+    text = "\n".join(line.rstrip() for line in lines).translate(_PLAIN)
+    return text.encode("ascii", "replace").decode("ascii")
+
+
+def _status(recipe: Recipe) -> str:
+    return {"optimal": "least cost", "stopped": "best known, not proven", "by hand": "shares typed by hand",
+            "infeasible": "NEAREST BLEND: DOES NOT MEET EVERY LIMIT"}[recipe.status]
+
+
+def _charges(recipe: Recipe, used: Sequence[Stock]) -> list[str]:
+    head = f"{'':5}{'stock':<14}{'name':<26}{'mass %':>8}{'kg':>12}{'L at 15 C':>13}"
+    lines = [head, "-" * WIDTH]
+    shares = recipe.shares or {}
+    for stock in used:
+        mass = (recipe.charges_kg or {}).get(stock.code)
+        volume = None if mass is None or stock.density15 is None else 1000.0 * mass / stock.density15
+        lines.append(f"[ ]  {harmless(stock.code, 13):<14}{harmless(stock.name, 25):<26}"
+                     f"{numbers.pct(shares[stock.code]):>8}{numbers.kg(mass):>12}{numbers.litres(volume):>13}")
+    total = recipe.batch_kg if recipe.charges_kg is None else sum(recipe.charges_kg.values())
+    lines += ["-" * WIDTH, f"{'':5}{'total':<40}{numbers.pct(sum(shares.values())):>8}{numbers.kg(total):>12}"]
+    return lines
+
+
+def _properties(recipe: Recipe) -> list[str]:
+    lines = [f"{'predicted':<34}{'value':>12}{'at least':>12}{'at most':>12}  ", "-" * WIDTH]
+    for limit in recipe.limits:
+        lines.append(_property(limit))
+    held = {limit.property for limit in recipe.limits}
+    for code in ("kv40", "kv100", "vi", "density15"):
+        if code not in held and (value := recipe.predicted.get(code)) is not None:
+            lines.append(f"{lookup(code).label:<34}{numbers.value(code, value):>12}")
+    spread = recipe.spread_pct
+    lines.append(f"spread of the laws, %: KV40 {numbers.fixed(spread.get('kv40'), 1)}, "
+                 f"KV100 {numbers.fixed(spread.get('kv100'), 1)}")
+    return lines
+
+
+def _property(limit: LimitResult) -> str:
+    label = "cost, per t" if limit.property == "cost_per_t" else lookup(limit.property).label
+    low, high = (("" if v is None else numbers.value(limit.property, v)) for v in (limit.low, limit.high))
+    word = {True: "met", False: "NOT MET", None: "unknown"}[limit.met]
+    return f"{label:<34}{numbers.value(limit.property, limit.value):>12}{low:>12}{high:>12}  {word}"
+
+
+def write_sheet(path: Path, text: str) -> str:
+    """Write a sheet to a new file and say where; DeskError rather than write over one."""
+    try:
+        with path.open("x", encoding="ascii") as out:
+            out.write(text)
+    except FileExistsError:
+        raise DeskError(f"{path} is there already; choose another name or move the old sheet away") from None
+    except OSError as error:
+        raise DeskError(f"cannot write {path}: {(error.strerror or str(error)).lower()}; "
+                        "choose another place") from None
+    return f"sheet written to {path}"

@@ -1,0 +1,148 @@
+"""Session: the recipe that all screens speak of, the wishes behind it, and what can be taken back."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+from blendtui.desk.answers import Answer, Wishes
+
+from .state import RecipeState, Snapshot
+
+if TYPE_CHECKING:
+    from solver.recipe import Recipe
+
+PLANT = "plant"  # stands in the history for a change that the plant's own journal takes back
+
+
+@dataclass(frozen=True)
+class Wish:
+    """A change of wishes that can be taken back."""
+
+    before: Wishes
+    after: Wishes
+    what: str
+
+
+class Session:
+    """The state of the recipe, and the one order in which wishes and edits are undone."""
+
+    def __init__(self, snapshot: Snapshot, ask: Callable[[RecipeState], None]) -> None:
+        self.snapshot = snapshot
+        product = snapshot.products[0].product if snapshot.products else ""
+        self.state = RecipeState(Wishes(product))
+        self._ask = ask
+        self.history: list[Wish | str] = []
+        self.undone: list[Wish | str] = []
+
+    # Asking and answering
+
+    def ask(self) -> None:
+        """Ask for the recipe of the present wishes and plant."""
+        state = self.state
+        if self.snapshot.product(state.wishes.product) is None:
+            product = self.snapshot.products[0].product if self.snapshot.products else ""
+            state = replace(state, wishes=Wishes(product), answer=None, blend=None)
+        if not state.wishes.product:
+            self.state = replace(state, waiting=False, answer=None, blend=None,
+                                 error="there is no product yet: add one on the screen Targets")
+            return
+        self.state = replace(state, request=state.request + 1, waiting=True)
+        self._ask(self.state)
+
+    def take(self, request: int, answer: Answer) -> bool:
+        """Take an answer; False when it is late, and nothing changes then."""
+        if request != self.state.request:
+            return False
+        blend = self.state.blend
+        if blend is not None and blend >= len(answer.blends) and "blends" in answer.done:
+            blend = None
+        self.state = replace(self.state, answer=answer, waiting=False, error="", blend=blend)
+        return True
+
+    def fail(self, request: int, error: str) -> bool:
+        """Take the reason why there is no answer; False when it is late."""
+        if request != self.state.request:
+            return False
+        self.state = replace(self.state, answer=None, waiting=False, error=error, blend=None)
+        return True
+
+    # What is shown
+
+    @property
+    def product(self) -> str:
+        """The product all screens speak of."""
+        return self.state.wishes.product
+
+    @property
+    def shown(self) -> Recipe | None:
+        """The recipe on the screen: a blend stepped to, else the shares typed by hand, else the best."""
+        state = self.state
+        if state.answer is None:
+            return None
+        if state.blend is not None and state.blend < len(state.answer.blends):
+            return state.answer.blends[state.blend]
+        return state.answer.by_hand or state.answer.best
+
+    # Wishing
+
+    def choose(self, product: str) -> None:
+        """Speak of another product; its wishes begin afresh."""
+        if product != self.product:
+            self.state = replace(self.state, wishes=Wishes(product), answer=None, blend=None, error="")
+            self.ask()
+
+    def wish(self, wishes: Wishes, what: str) -> None:
+        """Change the wishes, in a way that can be taken back."""
+        self.history.append(Wish(self.state.wishes, wishes, what))
+        self.undone.clear()
+        self._adopt(wishes)
+
+    def step(self, blend: int | None) -> None:
+        """Show one of the feasible blends, or the best again."""
+        self.state = replace(self.state, blend=blend)
+
+    def _adopt(self, wishes: Wishes) -> None:
+        same = wishes.product == self.product
+        self.state = replace(self.state, wishes=wishes, blend=None, answer=self.state.answer if same else None)
+        self.ask()
+
+    # Taking back
+
+    def edited(self) -> None:
+        """The plant was changed from here: the journal's undo is next in order."""
+        self.history.append(PLANT)
+        self.undone.clear()
+
+    def undo(self) -> Wish | None:
+        """Take back the last wish; None when the plant's own undo is due."""
+        if self.history and isinstance(self.history[-1], Wish):
+            wish = self.history.pop()
+            assert isinstance(wish, Wish)
+            self.undone.append(wish)
+            self._adopt(wish.before)
+            return wish
+        return None
+
+    def plant_undone(self) -> None:
+        """The plant's own undo was done."""
+        if self.history:
+            self.history.pop()
+        self.undone.append(PLANT)
+
+    def redo(self) -> Wish | None:
+        """Do the last undone wish again; None when the plant's own redo is due."""
+        if self.undone and isinstance(self.undone[-1], Wish):
+            wish = self.undone.pop()
+            assert isinstance(wish, Wish)
+            self.history.append(wish)
+            self._adopt(wish.after)
+            return wish
+        return None
+
+    def plant_redone(self) -> None:
+        """The plant's own redo was done."""
+        if self.undone:
+            self.undone.pop()
+        self.history.append(PLANT)

@@ -1,0 +1,172 @@
+"""Plant: what every task reads and changes, one transaction and one journal entry a change."""
+
+from __future__ import annotations
+
+import getpass
+import threading
+from collections.abc import Sequence
+from pathlib import Path
+from types import TracebackType
+
+from solver.stocks import Stock
+
+from . import journal, reads, state
+from .database import Database
+from .errors import ChangedSince, NothingToUndo, ReadOnlyPlant
+from .harmless import harmless
+from .records import Change, Entry, Product, Row, Trial
+from .state import Key
+
+
+def login_name() -> str:
+    """Who is at the keyboard, as the system knows them."""
+    try:
+        return getpass.getuser()
+    except (OSError, KeyError, ImportError):
+        return "unknown"
+
+
+class Plant:
+    """An open plant: a file, or a catalogue folder held in memory. Safe to use from several threads."""
+
+    def __init__(self, database: Database, path: Path, *, folder: bool = False, who: str | None = None,
+                 opened_note: str = "", notes: tuple[str, ...] = ()) -> None:
+        self.path = path
+        self.folder = folder
+        self.who = harmless(who or login_name(), 60)
+        self.opened_note = opened_note
+        self.notes = notes  # what the catalogue folder had that was not read, or kept without use
+        self._database = database
+        self._lock = threading.RLock()
+
+    def __enter__(self) -> Plant:
+        return self
+
+    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None,
+                 trace: TracebackType | None) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Close the file; everything saved is in it already."""
+        with self._lock:
+            self._database.close()
+
+    @property
+    def read_only(self) -> bool:
+        """May nothing be changed here (a catalogue folder, or a file that may not be written)?"""
+        return self.folder or self._database.read_only
+
+    # Reading
+
+    def revision(self) -> int:
+        """Number of the last journal entry: it grows with every change, anyone's."""
+        with self._lock, self._database.reading() as con:
+            return journal.revision(con)
+
+    def stocks(self, include_retired: bool = False) -> list[Stock]:
+        """The stocks in the plant's order."""
+        with self._lock, self._database.reading() as con:
+            return reads.stocks(con, include_retired)
+
+    def stock(self, code: str) -> Stock:
+        """One live stock; NoSuchRow when there is none of that code."""
+        with self._lock, self._database.reading() as con:
+            return reads.stock(con, code)
+
+    def products(self, include_retired: bool = False) -> list[Product]:
+        """The products in the plant's order, with their limits and share rules."""
+        with self._lock, self._database.reading() as con:
+            return reads.products(con, include_retired)
+
+    def product(self, code: str) -> Product:
+        """One live product; NoSuchRow when there is none of that code."""
+        with self._lock, self._database.reading() as con:
+            return reads.product(con, code)
+
+    def trials(self, product: str | None = None) -> list[Trial]:
+        """Trials that were kept, of one product or of all, oldest first."""
+        with self._lock, self._database.reading() as con:
+            return reads.trials(con, product)
+
+    def state(self) -> state.State:
+        """Everything the plant holds, as plain rows."""
+        with self._lock, self._database.reading() as con:
+            return state.read(con)
+
+    def table(self, name: str) -> dict[Key, Row]:
+        """Every row of one table."""
+        with self._lock, self._database.reading() as con:
+            return state.read_table(con, name)
+
+    def row(self, table: str, *key: str | int) -> Row | None:
+        """One row of one table as it is now, or None."""
+        with self._lock, self._database.reading() as con:
+            return state.present(con, state.change_of(table, key, None, None))
+
+    # Changing
+
+    def change(self, entry: Sequence[Change], what: str, why: str = "") -> int:
+        """Make changes in one transaction with one journal entry, and return its number.
+
+        ChangedSince when a cell is not as its change says it was; nothing is saved then. Changes that change
+        nothing are left out; if none is left, the number of the last entry is returned.
+        """
+        self._refuse_folder()
+        return self._write([c for c in entry if not c.empty], what, why)
+
+    def fill(self, changes: Sequence[Change], what: str, why: str = "") -> int:
+        """The first entry of a new plant, which is never undone."""
+        return self._write(changes, what, why)
+
+    def _write(self, changes: Sequence[Change], what: str, why: str) -> int:
+        with self._lock, self._database.writing(self.who) as con:
+            last = journal.revision(con)
+            if not changes and last:
+                return last
+            number = journal.append(con, self.who, harmless(what), changes, why)
+            state.apply(con, changes, number, what)
+            return number
+
+    def changed_since(self, change: Change, said: str) -> ChangedSince:
+        """The error that tells a screen which shows an old value of a cell whose the new one is."""
+        with self._lock, self._database.reading() as con:
+            return state.since(con, change, journal.revision(con) + 1, said)
+
+    def undo(self) -> str:
+        """Take back one's own latest entry that still stands, and say what it was."""
+        return self._take_back(0, "nothing of yours is left to undo", "undone")
+
+    def redo(self) -> str:
+        """Bring back what one's own last undo took away, and say what it was."""
+        return self._take_back(1, "nothing was undone that could be brought back", "done again")
+
+    def _take_back(self, which: int, nothing: str, verb: str) -> str:
+        self._refuse_folder()
+        with self._lock, self._database.writing(self.who) as con:
+            number = journal.undoable(con, self.who)[which]
+            if number is None:
+                raise NothingToUndo(nothing)
+            old = journal.read(con, number)
+            changes = [c.reversed() for c in reversed(old.changes)]
+            # The words of the entry first made, however often it was undone and done again.
+            what = old.what.split(": ", 1)[1] if old.undoes is not None else old.what
+            new = journal.append(con, self.who, f"{verb}: {what}", changes, "", number)
+            state.apply(con, changes, new, f"{verb}: {what}")
+            return f"{verb}: {what}"
+
+    def _refuse_folder(self) -> None:
+        if self.folder:
+            raise ReadOnlyPlant(f"{self.path} is a catalogue folder, which is read but never changed; make a "
+                                f"plant file of it to edit: blendtui import {self.path} --plant FILE")
+
+    # The record
+
+    def journal(self, limit: int = 50) -> list[Entry]:
+        """The latest entries, newest first."""
+        with self._lock, self._database.reading() as con:
+            return journal.newest(con, limit)
+
+    def verify(self) -> str | None:
+        """Recheck the journal's chain and the plant against it: the first thing that is wrong, or None."""
+        with self._lock, self._database.reading() as con:
+            return journal.broken(con) or reads.differs(con)

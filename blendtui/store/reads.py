@@ -1,0 +1,126 @@
+"""Rows of the file as the records that the rest of the program uses."""
+
+from __future__ import annotations
+
+import sqlite3
+from collections import defaultdict
+from typing import Any
+
+from solver.stocks import Stock
+from solver.target import Limit, ShareRule
+
+from . import journal, state
+from .errors import NoSuchRow
+from .harmless import harmless
+from .records import Product, Trial
+from .schema import QUANTITY, STOCK_NUMBERS, STOCK_TEST, STOCK_TEXT
+
+_STOCK_CELLS = (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST)
+_PRODUCT_CELLS = ("name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks", "min_share_pct",
+                  "only_listed", "note")
+
+
+def _one(where: str, code: str | None) -> tuple[str, tuple[str, ...]]:
+    return (f" AND {where} = ?", (code,)) if code is not None else ("", ())
+
+
+def stocks(con: sqlite3.Connection, include_retired: bool = False, code: str | None = None) -> list[Stock]:
+    """Stocks in the plant's order; only the one of that code when a code is given."""
+    only, given = _one("stock", code)
+    values: defaultdict[str, dict[str, float]] = defaultdict(dict)
+    for name, prop, value in con.execute("SELECT stock, property, value FROM stock_value WHERE 1 = 1"
+                                         f"{only} ORDER BY property", given):
+        values[name][prop] = value
+    mg = dict(con.execute(f"{QUANTITY}{only.replace('stock', 'm.stock')} GROUP BY m.stock", given))
+    rows = con.execute(f"SELECT stock, {', '.join(_STOCK_CELLS)} FROM stock WHERE retired <= ?{only} "
+                       "ORDER BY position, stock", (int(include_retired), *given))
+    return [Stock(code=row[0], **dict(zip(_STOCK_CELLS, row[1:], strict=True)), values=values.get(row[0], {}),
+                  on_hand_kg=kilograms(mg.get(row[0]))) for row in rows]
+
+
+def kilograms(mg: int | None) -> float | None:
+    """Whole milligrams as kg."""
+    return None if mg is None else mg / 1e6
+
+
+def milligrams(kg: float | None) -> int | None:
+    """kg as whole milligrams."""
+    return None if kg is None else round(kg * 1e6)
+
+
+def stock(con: sqlite3.Connection, code: str) -> Stock:
+    """One live stock."""
+    found = stocks(con, code=code)
+    if not found:
+        raise NoSuchRow(f"no stock {_shown(code)}; " + _known(con, "stock"))
+    return found[0]
+
+
+def products(con: sqlite3.Connection, include_retired: bool = False,
+             code: str | None = None) -> list[Product]:
+    """Products in the plant's order with their lines; only the one of that code when a code is given."""
+    only, given = _one("product", code)
+    limits: defaultdict[str, list[Limit]] = defaultdict(list)
+    for row in con.execute("SELECT product, property, low, high, guard, guard_pct, unknown_ok "
+                           f"FROM product_limit WHERE 1 = 1{only} "
+                           "ORDER BY product, position, property, line", given):
+        limits[row[0]].append(Limit(*row[1:6], source=f"limit on {row[1]}", unknown_ok=bool(row[6])))
+    rules: defaultdict[str, list[ShareRule]] = defaultdict(list)
+    for name, of, low, high in con.execute("SELECT product, of_name, low_pct, high_pct FROM share_rule "
+                                           f"WHERE 1 = 1{only} "
+                                           "ORDER BY product, position, of_name, line", given):
+        rules[name].append(ShareRule(of, low / 100.0, high / 100.0, source=f"share rule on {of}"))
+    rows = con.execute(f"SELECT product, {', '.join(_PRODUCT_CELLS)} FROM product WHERE retired <= ?{only} "
+                       "ORDER BY position, product", (int(include_retired), *given))
+    return [_product(row, limits, rules) for row in rows]
+
+
+def _product(row: tuple[Any, ...], limits: dict[str, list[Limit]],
+             rules: dict[str, list[ShareRule]]) -> Product:
+    cells = dict(zip(_PRODUCT_CELLS, row[1:], strict=True))
+    cells["only_listed"] = bool(cells["only_listed"])
+    return Product(row[0], **cells, limits=tuple(limits.get(row[0], ())), rules=tuple(rules.get(row[0], ())))
+
+
+def product(con: sqlite3.Connection, code: str) -> Product:
+    """One live product."""
+    found = products(con, code=code)
+    if not found:
+        raise NoSuchRow(f"no product {_shown(code)}; " + _known(con, "product"))
+    return found[0]
+
+
+def trials(con: sqlite3.Connection, product: str | None = None) -> list[Trial]:
+    """Kept trials, oldest first."""
+    only, given = _one("product", product)
+    shares: defaultdict[tuple[str, str], dict[str, float]] = defaultdict(dict)
+    for name, trial, code, pct in con.execute("SELECT product, trial, stock, share_pct FROM trial_share "
+                                              f"WHERE 1 = 1{only} "
+                                              "ORDER BY product, trial, position, stock", given):
+        shares[name, trial][code] = pct / 100.0
+    rows = con.execute("SELECT trial, product, law, kept_at, kept_by, note FROM trial WHERE 1 = 1"
+                       f"{only} ORDER BY kept_at, product, trial", given)
+    return [Trial(row[0], row[1], shares[row[1], row[0]], *row[2:]) for row in rows]
+
+
+def differs(con: sqlite3.Connection) -> str | None:
+    """The first cell that is not what the journal says it is, in words, or None."""
+    told, found = state.replay(journal.oldest_first(con)), state.read(con)
+    # A quantity unknown is no row at all in the file and a null in the journal.
+    told["quantity"] = {k: row for k, row in told["quantity"].items() if row["mg"] is not None}
+    changes = state.difference(told, found)
+    if not changes:
+        return None
+    return f"the plant was changed past its journal: {harmless(changes[0].words())}"
+
+
+def _shown(code: str) -> str:
+    return repr(harmless(code, 60))
+
+
+def _known(con: sqlite3.Connection, table: str) -> str:
+    codes = [row[0] for row in con.execute(f"SELECT {table} FROM {table} WHERE retired = 0 ORDER BY position "
+                                           "LIMIT 13")]
+    if not codes:
+        return f"the plant has no {table} yet"
+    return f"the plant has {', '.join(codes[:12])}{' …' if len(codes) > 12 else ''}"

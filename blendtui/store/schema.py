@@ -1,0 +1,101 @@
+"""The tables of a plant file, and the steps that bring an older file up to date.
+
+`user_version` counts the steps of MIGRATIONS that a file has had. A released step is never edited: a change
+of the schema is a new step at the end.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+APPLICATION_ID = 0x424C4E44  # "BLND"
+
+
+@dataclass(frozen=True)
+class Table:
+    """One kind of row that the journal can change."""
+
+    keys: tuple[str, ...]
+    columns: tuple[str, ...]
+
+
+STOCK_TEXT = ("name", "oil", "kind", "api_group")
+STOCK_NUMBERS = ("unpumpable_kg", "price_per_t", "density15", "kv40", "kv100", "blend_kv40", "blend_kv100")
+STOCK_TEST = ("tested_on", "source")
+
+TABLES: dict[str, Table] = {
+    "stock": Table(("stock",), (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST, "position", "retired")),
+    "stock_value": Table(("stock", "property"), ("value",)),
+    # Not a table of the file: the sum of a stock's movements, which only grows by further movements.
+    "quantity": Table(("stock",), ("mg",)),
+    "product": Table(("product",), ("name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks",
+                                    "min_share_pct", "only_listed", "note", "position", "retired")),
+    "product_limit": Table(("product", "property", "line"),
+                           ("low", "high", "guard", "guard_pct", "unknown_ok", "position")),
+    "share_rule": Table(("product", "of_name", "line"), ("low_pct", "high_pct", "position")),
+    "trial": Table(("product", "trial"), ("law", "note", "kept_at", "kept_by")),
+    "trial_share": Table(("product", "trial", "stock"), ("share_pct", "position")),
+    # Cells of catalogue columns that mean nothing to this program: kept, so that an export has them again.
+    "extra": Table(("table_name", "row_key", "column_name"), ("text",)),
+}
+
+# Sum of movements since the last marker "quantity unknown" (mg null), in whole milligrams: it is exact.
+QUANTITY = """
+SELECT m.stock, SUM(m.mg) AS mg FROM movement m
+LEFT JOIN (SELECT stock, MAX(id) AS id FROM movement WHERE mg IS NULL GROUP BY stock) u ON u.stock = m.stock
+WHERE m.id > COALESCE(u.id, 0)
+"""
+
+
+def _append_only(table: str) -> tuple[str, ...]:
+    return tuple(f"CREATE TRIGGER {table}_no_{verb.lower()} BEFORE {verb} ON {table} "
+                 f"BEGIN SELECT RAISE(ABORT, 'the {table} is append-only'); END"
+                 for verb in ("UPDATE", "DELETE"))
+
+
+MIGRATIONS: tuple[tuple[str, ...], ...] = ((
+    """CREATE TABLE stock (
+        stock TEXT NOT NULL PRIMARY KEY, name TEXT NOT NULL, oil TEXT NOT NULL, kind TEXT NOT NULL,
+        api_group TEXT NOT NULL, unpumpable_kg REAL, price_per_t REAL, density15 REAL, kv40 REAL, kv100 REAL,
+        blend_kv40 REAL, blend_kv100 REAL, tested_on TEXT NOT NULL, source TEXT NOT NULL,
+        position INTEGER NOT NULL, retired INTEGER NOT NULL)""",
+    """CREATE TABLE stock_value (
+        stock TEXT NOT NULL REFERENCES stock (stock), property TEXT NOT NULL, value REAL NOT NULL,
+        PRIMARY KEY (stock, property))""",
+    """CREATE TABLE product (
+        product TEXT NOT NULL PRIMARY KEY, name TEXT NOT NULL, grade TEXT NOT NULL, batch_kg REAL,
+        law TEXT NOT NULL, max_cost_per_t REAL, max_stocks INTEGER, min_share_pct REAL,
+        only_listed INTEGER NOT NULL, note TEXT NOT NULL, position INTEGER NOT NULL,
+        retired INTEGER NOT NULL)""",
+    """CREATE TABLE product_limit (
+        product TEXT NOT NULL REFERENCES product (product), property TEXT NOT NULL, line INTEGER NOT NULL,
+        low REAL, high REAL, guard REAL NOT NULL, guard_pct REAL NOT NULL, unknown_ok INTEGER NOT NULL,
+        position INTEGER NOT NULL, PRIMARY KEY (product, property, line))""",
+    """CREATE TABLE share_rule (
+        product TEXT NOT NULL REFERENCES product (product), of_name TEXT NOT NULL, line INTEGER NOT NULL,
+        low_pct REAL NOT NULL, high_pct REAL NOT NULL, position INTEGER NOT NULL,
+        PRIMARY KEY (product, of_name, line))""",
+    """CREATE TABLE trial (
+        product TEXT NOT NULL REFERENCES product (product), trial TEXT NOT NULL, law TEXT NOT NULL,
+        note TEXT NOT NULL, kept_at TEXT NOT NULL, kept_by TEXT NOT NULL, PRIMARY KEY (product, trial))""",
+    # A trial is a record of what was once tried: its stocks need not be in the plant any more.
+    """CREATE TABLE trial_share (
+        product TEXT NOT NULL, trial TEXT NOT NULL, stock TEXT NOT NULL, share_pct REAL NOT NULL,
+        position INTEGER NOT NULL, PRIMARY KEY (product, trial, stock),
+        FOREIGN KEY (product, trial) REFERENCES trial (product, trial))""",
+    """CREATE TABLE extra (
+        table_name TEXT NOT NULL, row_key TEXT NOT NULL, column_name TEXT NOT NULL, text TEXT NOT NULL,
+        PRIMARY KEY (table_name, row_key, column_name))""",
+    """CREATE TABLE journal (
+        id INTEGER NOT NULL PRIMARY KEY, at TEXT NOT NULL, who TEXT NOT NULL, what TEXT NOT NULL,
+        changes TEXT NOT NULL, why TEXT NOT NULL, undoes INTEGER REFERENCES journal (id),
+        prev_hash TEXT NOT NULL, hash TEXT NOT NULL)""",
+    "CREATE INDEX journal_who ON journal (who, id)",
+    # A stock that was added and taken back again leaves its movements behind, so they name it without a key.
+    """CREATE TABLE movement (
+        id INTEGER NOT NULL PRIMARY KEY, stock TEXT NOT NULL, mg INTEGER, reason TEXT NOT NULL,
+        journal INTEGER NOT NULL REFERENCES journal (id))""",
+    "CREATE INDEX movement_stock ON movement (stock, id)",
+    *_append_only("journal"),
+    *_append_only("movement"),
+),)

@@ -1,0 +1,109 @@
+"""The lines that frame every screen: where one is, what happened, and which keys do what."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from .canvas import Canvas
+from .paint import BAD, BOLD, CURSOR, PLAIN, WARN, Line, Run, fit, wrap
+
+SIGNS = {"note": ("", PLAIN), "done": ("done: ", PLAIN), "question": ("? ", WARN), "refused": ("! ", BAD),
+         "wait": ("… ", PLAIN)}
+
+
+class TitleLine(Canvas):
+    """The screens by their numbers, the one that is open marked, and a remark at the right."""
+
+    def __init__(self, names: Sequence[tuple[str, str]], current: str) -> None:
+        super().__init__(id="title")
+        self.names = tuple(names)
+        self.current = current
+        self.remark = ""
+
+    def show(self, remark: str) -> None:
+        """Show a remark."""
+        self.remark = remark
+        self.paint()
+
+    def draw(self, width: int, height: int) -> list[Line]:
+        """One line."""
+        line: Line = []
+        for key, name in self.names:
+            # Brackets as well as reverse video: some terminals have only one of them.
+            line += [(f"[{key} {name}]", CURSOR) if name == self.current else (f" {key} {name} ", PLAIN)]
+        used = sum(len(text) for text, _ in line)
+        return [[*line, (" " + fit(self.remark, max(0, width - used - 1), "right"), PLAIN)]]
+
+
+class StatusLine(Canvas):
+    """What happened last, in words; a question is asked here."""
+
+    def __init__(self) -> None:
+        super().__init__(id="status")
+        self.kind = "note"
+        self.message = ""
+
+    def show(self, message: str, kind: str = "note") -> None:
+        """Show a message of a kind (a key of SIGNS)."""
+        self.message, self.kind = message, kind
+        self.paint()
+
+    def draw(self, width: int, height: int) -> list[Line]:
+        """As many lines as there are; what does not fit is said to be in the list of messages."""
+        sign, style = SIGNS[self.kind]
+        lines = wrap(sign + self.message, width)
+        if len(lines) > height:
+            more = " … (! shows all)"
+            lines = [*lines[:height - 1], fit(lines[height - 1], width - len(more)).rstrip("… ") + more]
+        return [[(text, style)] for text in lines]
+
+
+class OneLine(Canvas):
+    """A line of runs that its screen sets whole."""
+
+    def __init__(self, *, id: str) -> None:
+        super().__init__(id=id)
+        self.runs: Line = []
+
+    def show(self, *runs: Run) -> None:
+        """Show these runs."""
+        self.runs = list(runs)
+        self.paint()
+
+    def draw(self, width: int, height: int) -> list[Line]:
+        """One line."""
+        return [self.runs]
+
+
+class KeyBar(Canvas):
+    """Keys and what they do, as many as fit."""
+
+    def __init__(self) -> None:
+        super().__init__(id="keys")
+        self.keys: tuple[tuple[str, str], ...] = ()
+
+    def show(self, keys: Sequence[tuple[str, str]]) -> None:
+        """Show these pairs of key and label; the last one always finds room."""
+        self.keys = tuple(keys)
+        self.paint()
+
+    def draw(self, width: int, height: int) -> list[Line]:
+        """The keys in reading order, whole ones only."""
+        if not self.keys:
+            return []
+        *others, last = self.keys
+        lines: list[Line] = [[]]
+        room = width
+        for n, (key, label) in enumerate([*others, last]):
+            size = len(key) + len(label) + 3
+            spare = len(last[0]) + len(last[1]) + 1 if len(lines) == height and n < len(others) else 0
+            if size - 2 + spare > room:
+                if len(lines) == height:
+                    if n < len(others):
+                        continue
+                    break
+                lines.append([])
+                room = width
+            lines[-1] += [(key, BOLD), (f" {label}  ", PLAIN)]
+            room -= size
+        return lines

@@ -1,0 +1,127 @@
+"""Runs of styled text, the few styles there are, and what becomes of both on a plain terminal.
+
+Every state is told by a word or a sign; a colour only repeats it. Styles use the terminal's own colours, so
+that one costs a few bytes and a person's palette holds.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+
+from rich.cells import cell_len
+from rich.style import Style
+
+Run = tuple[str, Style | None]
+Line = list[Run]
+Cell = tuple[str, Style | None]  # one column of the screen; the second half of a wide character is ""
+
+PLAIN: Style | None = None
+BOLD = Style(bold=True)
+DIM = Style(dim=True)
+CURSOR = Style(reverse=True)
+WEAK_CURSOR = Style(underline=True)
+BAD = Style(bold=True, color="red")
+WARN = Style(bold=True, color="yellow")
+_COLOURLESS = {BAD: BOLD, WARN: BOLD}
+
+# One character for one, so that columns stay where they are.
+_ASCII = str.maketrans({
+    "–": "-", "—": "-", "−": "-", "·": ".", "•": "*", "…": "~", "²": "2", "³": "3", "°": " ", "│": "|",
+    "─": "-", "█": "#", "░": ".", "▌": "#", "◆": "O", "→": ">", "←": "<", "▸": ">", "◂": "<", "↑": "^", "↓": "v",
+    "≤": "<", "≥": ">", "×": "x", "±": "~", "ρ": "r", "’": "'", "Σ": "S", "ω": "w",
+})
+
+
+@dataclass
+class Look:
+    """How this terminal is drawn on; one a process, for a process has one terminal."""
+
+    ascii: bool = False
+    colour: bool = True
+
+
+LOOK = Look()
+
+
+def look_of(environment: Mapping[str, str]) -> Look:
+    """The look that an environment asks for: TERM, the locale and NO_COLOR."""
+    term = environment.get("TERM", "")
+    locale = environment.get("LC_ALL") or environment.get("LC_CTYPE") or environment.get("LANG") or ""
+    utf8 = "utf-8" in locale.lower() or "utf8" in locale.lower()
+    old = term.startswith("vt") or term in ("ansi", "dumb")
+    return Look(ascii=old or not utf8, colour=not (environment.get("NO_COLOR") or old))
+
+
+def adopt(environment: Mapping[str, str] | None = None) -> None:
+    """Draw as the environment (by default this process's) asks."""
+    found = look_of(os.environ if environment is None else environment)
+    LOOK.ascii, LOOK.colour = found.ascii, found.colour
+
+
+def shown(text: str) -> str:
+    """Text as this terminal can draw it."""
+    if not LOOK.ascii or text.isascii():
+        return text
+    return "".join(c if c.isascii() else "?" * cell_len(c) for c in text.translate(_ASCII))
+
+
+def coloured(style: Style | None) -> Style | None:
+    """A style as this terminal shows it."""
+    return style if LOOK.colour or style is None else _COLOURLESS.get(style, style)
+
+
+def fit(text: str, width: int, align: str = "left") -> str:
+    """Text in exactly so many columns; what is too long ends in an ellipsis.
+
+    >>> fit("heavy neutral", 8), fit("31.5", 6, "right")
+    ('heavy n…', '  31.5')
+    """
+    if width <= 0:
+        return ""
+    if text.isascii():
+        if len(text) > width:
+            return text[:width - 1] + "…"
+        return text.rjust(width) if align == "right" else text.ljust(width)
+    return _fit_wide(text, width, align)
+
+
+def _fit_wide(text: str, width: int, align: str) -> str:
+    if cell_len(text) > width:
+        while text and cell_len(text) > width - 1:
+            text = text[:-1]
+        text += "…"
+    blank = " " * (width - cell_len(text))
+    return blank + text if align == "right" else text + blank
+
+
+def cells(line: Iterable[Run], width: int) -> list[Cell]:
+    """A line as exactly `width` screen columns."""
+    found: list[Cell] = []
+    for text, style in line:
+        text, style = shown(text), coloured(style)
+        if text.isascii():
+            found.extend((c, style) for c in text)
+        else:
+            for c in text:
+                wide = cell_len(c)
+                if wide:
+                    found.append((c, style))
+                    found.extend([("", style)] * (wide - 1))
+                elif found:
+                    found[-1] = (found[-1][0] + c, found[-1][1])
+        if len(found) >= width:
+            break
+    if len(found) > width and found[width][0] == "":
+        found[width - 1] = (" ", found[width - 1][1])  # half of a wide character would shift the row
+    del found[width:]
+    found.extend([(" ", None)] * (width - len(found)))
+    return found
+
+
+def wrap(text: str, width: int, indent: str = "") -> list[str]:
+    """Words of a text on lines of at most `width` columns, later lines indented."""
+    import textwrap
+
+    return textwrap.wrap(text, max(width, 10), subsequent_indent=indent, break_on_hyphens=False) or [""]

@@ -1,0 +1,135 @@
+"""Which stocks may serve a target, and why another one may not."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from .errors import TargetError
+from .laws import knows_viscosity
+from .requirements import Requirement
+from .stocks import GROUPS, KINDS, Stock, StockTable
+from .target import ShareRule, Target
+
+
+@dataclass(frozen=True)
+class LeftOut:
+    """A stock that the product would allow, and why it does not serve."""
+
+    stock: str
+    reason: str
+    cell: str = ""  # the cell that is unknown, if that is the reason
+
+
+def check_rules(target: Target, table: StockTable) -> None:
+    """TargetError when a share rule, a hold or a whole-number rule contradicts itself or names nothing."""
+    names = {*table.codes, *(s.oil for s in table.stocks if s.oil), *KINDS}
+    for rule in target.rules:
+        group = rule.of.lower().startswith("group ")
+        if (group and rule.of[6:].strip().upper() not in GROUPS) or (not group and rule.of not in names):
+            raise TargetError(f"share rule on {rule.of!r}: there is no such stock, oil, kind or group; "
+                              "mend the rule or add the stock", where=rule.source)
+        if not 0.0 <= rule.low <= rule.high <= 1.0:
+            raise TargetError(f"share rule on {rule.of}: low {100 * rule.low:g} % and high "
+                              f"{100 * rule.high:g} % must be in order and within 0 to 100 %",
+                              where=rule.source)
+    for code, share in target.held.items():
+        table.index(code)
+        if not 0.0 <= share <= 1.0:
+            raise TargetError(f"{code} is held at {100 * share:g} %; a share lies within 0 to 100 %",
+                              where=code)
+    for code in target.left_out:
+        table.index(code)
+    lows: dict[str, float] = {}
+    for rule in target.rules:
+        if rule.of in table.codes:
+            lows[rule.of] = max(lows.get(rule.of, 0.0), rule.low)
+    if sum(lows.values()) > 1.0 + 1e-9:
+        raise TargetError(f"share rules contradict: the least shares of {', '.join(lows)} sum to "
+                          f"{100 * sum(lows.values()):g} %, more than 100 %", where=target.product)
+    if target.max_stocks is not None and target.max_stocks < 1:
+        raise TargetError("the most stocks in a recipe must be 1 or more", where=target.product)
+    if target.min_share is not None and not 0.0 <= target.min_share <= 1.0:
+        raise TargetError(f"the least share {100 * target.min_share:g} % must lie within 0 to 100 %",
+                          where=target.product)
+    for name, value in (("batch", target.batch_kg), ("cost ceiling", target.max_cost_per_t)):
+        if value is not None and not (np.isfinite(value) and value > 0.0):
+            raise TargetError(f"the {name} must be a number above 0, not {value:g}", where=target.product)
+
+
+def candidates(table: StockTable, target: Target) -> list[int]:
+    """Positions of the stocks that the product permits, whatever is known of them.
+
+    With only_listed nothing unnamed; otherwise base stocks unless capped at 0, and every other kind only
+    where a line names it (by stock, oil or kind). What the operator leaves out stays out.
+    """
+    return [i for i, stock in enumerate(table.stocks)
+            if stock.code not in target.left_out and (stock.code in target.held or _permitted(stock, target))]
+
+
+def _permitted(stock: Stock, target: Target) -> bool:
+    rules = [rule for rule in target.rules if rule.of == stock.code or stock.matches(rule.of)]
+    if any(rule.high <= 0.0 for rule in rules):
+        return False
+    # A group names base stocks only: rework of a group must be named for itself.
+    named = any(stock.kind == "base" or not rule.of.lower().startswith("group ") for rule in rules)
+    return named or (stock.kind == "base" and not target.only_listed)
+
+
+def serving(table: StockTable, permitted: Sequence[int], target: Target,
+            requirements: Sequence[Requirement]) -> tuple[list[int], tuple[LeftOut, ...]]:
+    """Positions of the permitted stocks of which all that is needed is known, and the others with reasons.
+
+    Raises TargetError, naming stock and cell, where a share rule or a hold demands a stock that is out.
+    """
+    viscous = knows_viscosity(target.law, table)
+    keep, out = [], []
+    for i in permitted:
+        reason = _reason(table.stocks[i], bool(viscous[i]), target, requirements)
+        if reason is None:
+            keep.append(i)
+        else:
+            out.append(reason)
+    _check_demands(table, keep, out, target)
+    return keep, tuple(out)
+
+
+def _reason(stock: Stock, viscous: bool, target: Target,
+            requirements: Sequence[Requirement]) -> LeftOut | None:
+    if stock.price_per_t is None:
+        return LeftOut(stock.code, "its price is unknown", "price_per_t")
+    if stock.available_kg is None:
+        return LeftOut(stock.code, "its quantity is unknown", "on_hand_kg")
+    if stock.blending_kv is None:
+        return LeftOut(stock.code, "its KV40 and KV100 are unknown", "kv40")
+    if not viscous:
+        return LeftOut(stock.code, f"the law {target.law} needs its density, which is unknown", "density15")
+    for need in requirements:
+        if need.entry.basis not in ("mass", "volume") or need.unknown_ok:
+            continue
+        value = stock.density15 if need.code == "density15" else stock.values.get(need.code)
+        if value is None:
+            return LeftOut(stock.code, f"its {need.entry.name} is unknown and the product limits it",
+                           need.code)
+        if need.entry.basis == "volume" and stock.density15 is None:
+            return LeftOut(stock.code, f"its density is unknown and {need.entry.name} mixes by volume",
+                           "density15")
+    if stock.available_kg <= 0.0:
+        return LeftOut(stock.code, "nothing pumpable is left in the tank")
+    return None
+
+
+def _check_demands(table: StockTable, keep: Sequence[int], out: Sequence[LeftOut], target: Target) -> None:
+    unknown = {x.stock: x for x in out if x.cell}
+    demands = [ShareRule(code, share) for code, share in target.held.items()]
+    for rule in [r for r in target.rules if r.low > 0.0] + [d for d in demands if d.low > 0.0]:
+        if any(table.stocks[i].matches(rule.of) for i in keep):
+            continue
+        missing = next((unknown[s.code] for s in table.stocks
+                        if s.matches(rule.of) and s.code in unknown), None)
+        if missing:
+            raise TargetError(f"stock {missing.stock}, cell {missing.cell}: at least {100 * rule.low:g} % of "
+                              f"{rule.of} is demanded but {missing.reason}; enter it or change the rule",
+                              where=missing.stock)

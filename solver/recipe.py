@@ -1,0 +1,251 @@
+"""The least-cost recipe of a target, and its proof; and the same reading of shares typed by hand.
+
+    minimise Σ x_i price_i   over   Σ x_i = 1,  rows(x) ≤ 0,  lo ≤ x ≤ hi,  VI(x) ≥ v
+
+Rows are exact for every property under every law (rows.py); the VI is handled exactly on pieces of the
+KV100 window (windows.py). Every figure of a Recipe is recomputed from its shares.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from .allowed import LeftOut, candidates
+from .errors import StockError, TargetError
+from .gauge import property_gauge
+from .laws import check_law, knows_viscosity, viscosity_gauge
+from .linear import Stopwatch
+from .properties import Array, lookup, stock_codes
+from .requirements import COST, Requirement, required
+from .rows import Model, as_table, build
+from .stocks import Stock, StockTable
+from .target import LAWS, Target
+from .viscosity_index import indices
+from .windows import Outcome, search
+
+BINDING = 1e-3  # a limit binds when its margin is below this part of the method's reproducibility
+GAP = 1.5e-6  # a search ends when cost and bound agree to this part of the cost
+
+
+@dataclass(frozen=True)
+class LimitResult:
+    """One limit, and how a blend stands to it. Figures in the property's unit; None: open or unknown."""
+
+    property: str
+    low: float | None
+    high: float | None
+    guard: float
+    held_low: float | None  # the limit moved inward by its guard: what the recipe must meet
+    held_high: float | None
+    value: float | None
+    met: bool | None  # None: the value is unknown
+    margin: float | None  # to the nearer held side; negative outside
+    binding: str  # "", "low" or "high"
+    sources: tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class Recipe:
+    """Shares with everything that is read off them. None everywhere means unknown."""
+
+    status: str  # "optimal", "infeasible", "stopped", or "by hand"
+    law: str
+    shares: Mapping[str, float] | None  # stock → mass fraction, only those used; None: no blend at all
+    predicted: Mapping[str, float | None] = field(default_factory=dict)
+    limits: tuple[LimitResult, ...] = ()
+    spread_pct: Mapping[str, float | None] = field(default_factory=dict)
+    cost_per_t: float | None = None
+    bound_per_t: float | None = None  # no blend that meets the target costs less
+    gap: float | None = None  # (cost − bound)/cost
+    charges_kg: Mapping[str, float] | None = None
+    batch_kg: float | None = None
+    left_out: tuple[LeftOut, ...] = ()
+    to_be_tested: tuple[str, ...] = ()
+    reasons: tuple[str, ...] = ()  # why infeasible or stopped, in words
+
+    @property
+    def binding(self) -> tuple[str, ...]:
+        """Codes of the limits that bind."""
+        return tuple(x.property for x in self.limits if x.binding)
+
+    @property
+    def meets_all(self) -> bool:
+        """Is every limit met whose value is known?"""
+        return self.shares is not None and all(x.met is not False for x in self.limits)
+
+
+def design(stocks: StockTable | Iterable[Stock], target: Target, *, time_limit: float = 10.0,
+           node_limit: int = 400) -> Recipe:
+    """The least-cost recipe of a target over a plant's stocks.
+
+    status "optimal" with gap = (cost − bound)/cost; "infeasible" with the nearest blend (least sum of
+    misses, each in units of the method's reproducibility) or shares None where the shares cannot reach
+    100 %; "stopped" when time_limit [s] or node_limit ran out, with the best blend known, if any.
+
+    Raises TargetError, StockError or RangeError on bad input.
+    """
+    model = build(stocks, target)
+    watch = Stopwatch(time_limit)
+    outcome = least_cost(model, watch, node_limit)
+    if outcome.x is not None:
+        reasons = () if outcome.status == "optimal" else (_why_stopped(outcome, time_limit),)
+        return recipe_of(model, outcome.x, outcome.status, bound=outcome.bound, reasons=reasons)
+    if outcome.status == "stopped":
+        return empty(model, "stopped", ("the time or node limit was reached before a blend was found; "
+                                        "give it more time or allow fewer stocks",))
+    from .nearest import nearest
+
+    return nearest(model, Stopwatch(max(1.0, watch.left)))
+
+
+def least_cost(model: Model, watch: Stopwatch, node_limit: int = 400) -> Outcome:
+    """The cheapest blend of a model, with its bound."""
+    impossible = bool(model.short) or any(need.empty for need in model.requirements)
+    if impossible or len(model.table) == 0:
+        return Outcome("infeasible", None, np.inf, np.inf)
+    price = model.table.price
+    held = model.polytope()
+    outcome = search(model, held, price, watch, gap=GAP, node_limit=node_limit)
+    if outcome.status == "infeasible":
+        # Limits that leave a single point need the last hair of room.
+        outcome = search(model, held.loose(), price, watch, gap=GAP, node_limit=node_limit)
+        if outcome.x is not None and model.missed(outcome.x):
+            return Outcome("infeasible", None, np.inf, np.inf)
+    return outcome
+
+
+def _why_stopped(outcome: Outcome, time_limit: float) -> str:
+    return (f"stopped at the limit of {time_limit:g} s or of nodes; this is the best blend known, at most "
+            f"{100.0 * outcome.gap:.2g} % dearer than the least cost")
+
+
+def empty(model: Model, status: str, reasons: tuple[str, ...]) -> Recipe:
+    """A recipe without shares: the limits stand, their values are unknown."""
+    limits = [_limit_result(need, None) for need in model.requirements]
+    return Recipe(status, model.target.law, None, {}, tuple(limits), left_out=model.left_out,
+                  to_be_tested=model.to_be_tested, batch_kg=model.target.batch_kg, reasons=reasons)
+
+
+def recipe_of(model: Model, x: Array, status: str, *, bound: float | None = None,
+              reasons: tuple[str, ...] = ()) -> Recipe:
+    """A Recipe of shares x, shape (n,) over the model's stocks: every figure recomputed from them."""
+    made = _read(model.table, x, model.target, model.requirements)
+    gap = None
+    if bound is not None and made.cost_per_t is not None:
+        gap = max(0.0, made.cost_per_t - bound) / max(abs(made.cost_per_t), 1e-12)
+    return replace(made, status=status, bound_per_t=bound, gap=gap, left_out=model.left_out,
+                   to_be_tested=model.to_be_tested, reasons=reasons)
+
+
+def evaluate(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float],
+             target: Target | None = None, *, law: str | None = None) -> Recipe:
+    """The same reading of given shares (mass fractions that sum to 1 within 1e-4), status "by hand".
+
+    With a target its limits are judged; without one only the blend is predicted. A property is None
+    where a stock that is used lacks it. Raises StockError for an unknown stock or one without viscosity,
+    TargetError for shares that do not sum to 100 %.
+    """
+    table = as_table(stocks)
+    goal = target or Target("")
+    goal = replace(goal, law=check_law(law or goal.law))
+    x = np.zeros(len(table))
+    for code, share in shares.items():
+        if not (np.isfinite(share) and share >= 0.0):
+            raise TargetError(f"{code}: a share of {100 * share:g} % cannot be; shares lie within 0 to 100 %",
+                              where=code)
+        x[table.index(code)] += share
+    if abs(x.sum() - 1.0) > 1.0001e-4:
+        raise TargetError(f"the shares sum to {100 * x.sum():.4g} %, not to 100 %; mend them", where="shares")
+    x /= x.sum()
+    used = np.flatnonzero(x > 0.0)
+    needs, tests = required(goal, table.where(candidates(table, goal))) if target is not None else ((), ())
+    made = _read(table.where(used), x[used], goal, needs)
+    return replace(made, to_be_tested=tests)
+
+
+def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement, ...]) -> Recipe:
+    lacking = (x > 0.0) & ~knows_viscosity(target.law, table)
+    if lacking.any():
+        stock = table.stocks[int(np.flatnonzero(lacking)[0])]
+        cell = "kv40" if stock.blending_kv is None else "density15"
+        raise StockError(f"{stock.code}: the law {target.law} needs its {cell}, which is unknown; enter it "
+                         "or leave the stock out", stock=stock.code, cell=cell)
+    predicted = predict_all(table, x, target.law, tuple(need.code for need in needs))
+    allowed = {need.code: _with_unknown(table, x, need) for need in needs if need.unknown_ok}
+    limits = [_limit_result(need, allowed.get(need.code, predicted.get(need.code)))
+              for need in needs]
+    priced = bool(np.isfinite(table.price[x > 0.0]).all())
+    cost = float(np.where(x > 0.0, table.price, 0.0) @ x) if priced else None
+    if target.max_cost_per_t is not None:
+        limits.append(_cost_result(target.max_cost_per_t, cost))
+    shares = {code: float(v) for code, v in zip(table.codes, x, strict=True) if v > 0.0}
+    batch = target.batch_kg
+    charges = None if batch is None else {code: v * batch for code, v in shares.items()}
+    return Recipe("by hand", target.law, shares, predicted, tuple(limits), spread(table, x, target.law),
+                  cost, charges_kg=charges, batch_kg=batch)
+
+
+def predict_all(table: StockTable, x: Array, law: str, also: tuple[str, ...] = ()) -> dict[str, float | None]:
+    """Every property of the registry that the blend x, shape (n,), has, by code; None where unknown."""
+    used = x > 0.0
+    found: dict[str, float | None] = {}
+    for code, celsius in (("kv40", 40.0), ("kv100", 100.0)):
+        found[code] = viscosity_gauge(law, table, celsius).read(x)
+    found["vi"] = _finite(float(indices(found["kv40"], found["kv100"])))
+    temperatures = sorted({key for s in table.stocks for key in s.values if key.startswith("ccs")})
+    for code in dict.fromkeys(["density15", *stock_codes(), *temperatures, *also]):
+        if code in found:
+            continue
+        entry = lookup(code)
+        if entry.basis == "law" and entry.temperature is not None:
+            found[code] = viscosity_gauge(law, table, entry.temperature).read(x)
+            continue
+        gauge = property_gauge(table, entry)
+        found[code] = None if np.any(used & (gauge.den == 0.0)) else _finite(gauge.read(x))
+    return found
+
+
+def _finite(value: float) -> float | None:
+    return value if np.isfinite(value) else None
+
+
+def _with_unknown(table: StockTable, x: Array, need: Requirement) -> float | None:
+    """Value over the stocks of which it is known, where the operator lets unknown ones serve."""
+    if need.entry.basis not in ("mass", "volume"):
+        return predict_all(table, x, "refutas").get(need.code)
+    return _finite(property_gauge(table, need.entry).read(x))
+
+
+def spread(table: StockTable, x: Array, law: str) -> dict[str, float | None]:
+    """100·(largest − smallest)/(the chosen law's value) over every law computable for the same shares."""
+    used = np.flatnonzero(x > 0.0)
+    kept, y = table.where(used), x[used]
+    able = [each for each in LAWS if knows_viscosity(each, kept).all()]
+    found: dict[str, float | None] = {}
+    for code, celsius in (("kv40", 40.0), ("kv100", 100.0)):
+        values = {each: viscosity_gauge(each, kept, celsius).read(y) for each in able}
+        found[code] = (100.0 * (max(values.values()) - min(values.values())) / values[law]
+                       if law in values else None)
+    return found
+
+
+def _limit_result(need: Requirement, value: float | None) -> LimitResult:
+    margin, binding, met = None, "", None
+    if value is not None:
+        sides = [(value - need.held_low, "low")] if need.held_low is not None else []
+        sides += [(need.held_high - value, "high")] if need.held_high is not None else []
+        margin, side = min(sides)
+        met = need.miss(value) <= need.tolerance()
+        binding = side if abs(margin) <= max(BINDING * need.unit_of_miss(), need.tolerance()) else ""
+    return LimitResult(need.code, need.low, need.high, need.guard, need.held_low, need.held_high, value,
+                       met, margin, binding, need.sources)
+
+
+def _cost_result(ceiling: float, cost: float | None) -> LimitResult:
+    margin = None if cost is None else ceiling - cost
+    met = None if margin is None else margin >= -1e-6 * ceiling
+    binding = "high" if margin is not None and abs(margin) <= 1e-5 * ceiling else ""
+    return LimitResult(COST, None, ceiling, 0.0, None, ceiling, cost, met, margin, binding, ("cost ceiling",))

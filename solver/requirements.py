@@ -1,0 +1,143 @@
+"""A target's limits brought together: grade and lines intersected, guards applied, one per property."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from .errors import TargetError
+from .grades import Grade, grade
+from .properties import Property, lookup
+from .stocks import StockTable
+from .target import Limit, Target
+
+COST = "cost_per_t"  # the code under which the cost ceiling appears among the limits
+
+
+@dataclass(frozen=True)
+class Requirement:
+    """What all lines together ask of one property, before (low, high) and after (held_*) the guard."""
+
+    code: str
+    low: float | None
+    high: float | None
+    guard: float  # in the property's unit; of two sides guarded in %, the smaller
+    held_low: float | None
+    held_high: float | None
+    sources: tuple[str, ...]
+    unknown_ok: bool = False
+
+    @property
+    def entry(self) -> Property:
+        """The registry entry."""
+        return lookup(self.code)
+
+    @property
+    def empty(self) -> bool:
+        """Can no value at all satisfy it?"""
+        return (self.held_low is not None and self.held_high is not None
+                and self.held_low > self.held_high + 1e-9 * max(1.0, abs(self.held_high)))
+
+    def unit_of_miss(self) -> float:
+        """The size of one unit of miss: the method's reproducibility at the limit."""
+        at = self.held_high if self.held_high is not None else self.held_low
+        return self.entry.reproducibility(at if at is not None else 0.0)
+
+    def miss(self, value: float) -> float:
+        """How far outside the held limits a value lies, in the property's unit; 0 inside."""
+        over = value - self.held_high if self.held_high is not None else 0.0
+        under = self.held_low - value if self.held_low is not None else 0.0
+        return max(0.0, over, under)
+
+    def tolerance(self) -> float:
+        """Rounding allowed when a value is checked against the held limits: 1e-6 of it, VI 1e-4."""
+        if self.code == "vi":
+            return 1e-4
+        largest = max(abs(v) for v in (self.held_low, self.held_high, self.unit_of_miss()) if v is not None)
+        return 1e-6 * largest
+
+    def why_empty(self) -> str:
+        """In words, why nothing fits between its sides."""
+        unit = f" {self.entry.unit}" if self.entry.unit else ""
+        low, high = self.held_low or 0.0, self.held_high or 0.0
+        guard = f" with a guard of {self.guard:g}" if self.guard else ""
+        return (f"{self.entry.name}: at least {low:g}{unit} and at most {high:g}{unit} leave nothing "
+                f"between them{guard} (asked by {' and '.join(self.sources)})")
+
+
+def check_limit(limit: Limit) -> None:
+    """TargetError when one line contradicts itself or is not made of numbers."""
+    entry = lookup(limit.property)
+    for name in ("low", "high", "guard", "guard_pct"):
+        value = getattr(limit, name)
+        if value is not None and not np.isfinite(value):
+            raise TargetError(f"{limit.property}: {name} is not a finite number", where=limit.source)
+    if limit.guard < 0.0 or limit.guard_pct < 0.0:
+        raise TargetError(f"{limit.property}: a guard cannot be negative; 0 or empty means none",
+                          where=limit.source)
+    if limit.low is not None and limit.high is not None and limit.low > limit.high:
+        raise TargetError(f"{limit.property}: low {limit.low:g} is above high {limit.high:g}; "
+                          "swap them or open one side", where=limit.source)
+    for value in (limit.low, limit.high):
+        # A density or KV limit of another unit would otherwise pass for an impossible wish.
+        if value is not None and entry.basis == "law" and value <= 0.0:
+            raise TargetError(f"{limit.property}: a limit of {value:g} mm²/s is not above 0",
+                              where=limit.source)
+        if value is not None and entry.code == "density15" and value < 10.0:
+            raise TargetError(f"density15: {value:g} looks like kg/L; write {1000.0 * value:g} (kg/m³)",
+                              where=limit.source)
+
+
+def merge(limits: Iterable[Limit]) -> tuple[Requirement, ...]:
+    """Intersect all limits of each property, in order of first mention; the largest guard holds."""
+    by_property: dict[str, list[Limit]] = {}
+    for limit in limits:
+        check_limit(limit)
+        by_property.setdefault(limit.property, []).append(limit)
+    merged = []
+    for code, lines in by_property.items():
+        low = max((x.low for x in lines if x.low is not None), default=None)
+        high = min((x.high for x in lines if x.high is not None), default=None)
+        if low is None and high is None:
+            raise TargetError(f"{code}: neither low nor high is given, and the grade sets none; "
+                              "give one or delete the line", where=lines[0].source)
+        merged.append(_guarded(code, low, high, lines))
+    return tuple(merged)
+
+
+def _guarded(code: str, low: float | None, high: float | None, lines: list[Limit]) -> Requirement:
+    plain = max(x.guard for x in lines)
+    percent = max(x.guard_pct for x in lines)
+    guards = [max(plain, percent / 100.0 * abs(side)) for side in (low, high) if side is not None]
+    held_low = None if low is None else low + max(plain, percent / 100.0 * abs(low))
+    held_high = None if high is None else high - max(plain, percent / 100.0 * abs(high))
+    sources = tuple(dict.fromkeys(x.source or "the product" for x in lines))
+    return Requirement(code, low, high, min(guards), held_low, held_high, sources,
+                       any(x.unknown_ok for x in lines))
+
+
+def required(target: Target, candidates: StockTable) -> tuple[tuple[Requirement, ...], tuple[str, ...]]:
+    """The requirements of a target, and what stays to be tested.
+
+    A grade's limit that needs data the candidates may lack (CCS) is held only where every candidate has
+    it; otherwise it joins what is to be tested. Raises TargetError for an unknown grade or property, a
+    line that contradicts itself, or a target without any limit.
+    """
+    by_grade = grade(target.grade) if target.grade.strip() else Grade("", ())
+    limits = list(by_grade.limits)
+    tests = list(by_grade.to_be_tested)
+    for limit in by_grade.if_known:
+        lacking = int(np.sum(~np.isfinite(candidates.column(limit.property))))
+        if lacking == 0 and len(candidates):
+            limits.append(limit)
+        else:
+            entry = lookup(limit.property)
+            tests.insert(0, f"{entry.name} at most {limit.high:g} {entry.unit} "
+                            f"({lacking} of {len(candidates)} stocks have no value)")
+    limits += [replace(x, source=x.source or "the product") for x in target.limits]
+    if not limits:
+        raise TargetError(f"{target.product}: a product without limits; give it a grade or a limit",
+                          where=target.product)
+    return merge(limits), tuple(tests)

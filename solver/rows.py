@@ -1,0 +1,194 @@
+"""Target + stocks → the linear rows, each carrying the name of the limit it speaks for.
+
+The only limit that is no row is the viscosity index: it becomes rows on pieces of the KV100 window
+(windows.py). Everything that a recipe, a range, a reason or a batch size needs is read off `Model`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from .allowed import LeftOut, candidates, check_rules, serving
+from .gauge import Gauge, property_gauge
+from .laws import check_law, viscosity_gauge
+from .linear import HOLD, Polytope, Whole, scale
+from .properties import Array
+from .requirements import COST, Requirement, required
+from .stocks import Stock, StockTable
+from .target import Target
+from .viscosity_index import LOWEST_KV100
+
+
+@dataclass(frozen=True)
+class Row:
+    """Σ x_i coef_i ≤ 0, and the limit or rule that it speaks for."""
+
+    name: str  # property code, COST, or the `of` of a share rule
+    side: str  # "low" or "high"
+    coef: Array  # (n,), scaled to a largest coefficient of 1
+    hold: float = 0.0  # how far inside it is held
+
+
+@dataclass(frozen=True)
+class Model:
+    """One target over the stocks that may serve it, ready to be solved."""
+
+    target: Target
+    table: StockTable  # only the stocks that may serve
+    requirements: tuple[Requirement, ...]
+    gauges: dict[str, Gauge]
+    rows: tuple[Row, ...]
+    lo: Array  # (n,) least mass fraction by rules and holds
+    hi: Array  # (n,) most, by rules, holds and quantity on hand
+    vi: Requirement | None
+    to_be_tested: tuple[str, ...] = ()
+    left_out: tuple[LeftOut, ...] = ()
+    short: tuple[str, ...] = field(default=())  # bounds that contradict each other, in words
+
+    @property
+    def whole(self) -> Whole | None:
+        """The target's whole-number rules, if any can bind."""
+        target = self.target
+        if target.max_stocks is None and not target.min_share:
+            return None
+        least = np.where(self.table.counted, target.min_share or 0.0, 0.0)
+        for i, code in enumerate(self.table.codes):
+            if code in target.held:  # the operator's own word on a share stands before the rule
+                least[i] = 0.0
+        return Whole(self.table.counted, target.max_stocks, least)
+
+    def polytope(self, whole: bool = True) -> Polytope:
+        """The linear part of the problem, with the whole-number rules or without."""
+        n = len(self.table)
+        rows = np.array([r.coef for r in self.rows]) if self.rows else np.zeros((0, n))
+        return Polytope(rows, np.array([r.hold for r in self.rows]), self.lo, self.hi,
+                        whole=self.whole if whole else None)
+
+    def full(self, x: Array) -> dict[str, float]:
+        """Shares by stock code, only those used."""
+        return {code: float(v) for code, v in zip(self.table.codes, x, strict=True) if v > 0.0}
+
+    def missed(self, x: Array) -> list[Requirement]:
+        """The property requirements, VI included, that a blend does not meet on exact recomputation."""
+        return [need for need in self.requirements
+                if (value := self.read(need.code, x)) is not None
+                and need.miss(value) > need.tolerance()]
+
+    def read(self, code: str, x: Array) -> float | None:
+        """Exact value of a required property of a blend; None where it cannot be known."""
+        if code == "vi":
+            from .viscosity_index import indices
+
+            value = float(indices(self.gauges["kv40"].read(x), self.gauges["kv100"].read(x)))
+        else:
+            value = self.gauges[code].read(x)
+        return value if np.isfinite(value) else None
+
+
+def as_table(stocks: StockTable | Iterable[Stock]) -> StockTable:
+    """A StockTable of whatever was given."""
+    return stocks if isinstance(stocks, StockTable) else StockTable(stocks)
+
+
+def build(stocks: StockTable | Iterable[Stock], target: Target) -> Model:
+    """Model of a target over a plant's stocks.
+
+    Raises TargetError for a target that contradicts itself or names what is not there, or where a rule
+    demands a stock of which something needed is unknown; StockError for a held stock that is not there.
+    """
+    table = as_table(stocks)
+    check_law(target.law)
+    check_rules(target, table)
+    permitted = candidates(table, target)
+    needs, tests = required(target, table.where(permitted))
+    keep, left_out = serving(table, permitted, target, needs)
+    kept = table.where(keep)
+    lo, hi, short = _bounds(kept, target, table)
+    gauges = _gauges(kept, target, needs)
+    rows = [*_property_rows(needs, gauges), *_share_rows(kept, target, table)]
+    if target.max_cost_per_t is not None:
+        rows.append(_row(COST, "high", kept.price - target.max_cost_per_t, HOLD))
+    vi = next((need for need in needs if need.code == "vi"), None)
+    if vi is not None:
+        rows.append(_row("vi", "low", gauges["kv100"].row(LOWEST_KV100, "low"), HOLD))
+    return Model(target, kept, needs, gauges, tuple(rows), lo, hi, vi, tests, left_out, short)
+
+
+def without_guards(target: Target) -> Target:
+    """The same target with every guard at 0."""
+    return replace(target, limits=tuple(
+        replace(x, guard=0.0, guard_pct=0.0) for x in target.limits
+        if x.low is not None or x.high is not None))
+
+
+def _gauges(table: StockTable, target: Target, needs: Iterable[Requirement]) -> dict[str, Gauge]:
+    gauges = {code: viscosity_gauge(target.law, table, t) for code, t in (("kv40", 40.0), ("kv100", 100.0))}
+    for need in needs:
+        entry = need.entry
+        if entry.basis == "law" and entry.temperature is not None:
+            gauges[need.code] = viscosity_gauge(target.law, table, entry.temperature)
+        elif entry.basis in ("mass", "volume"):
+            gauges[need.code] = property_gauge(table, entry)
+    return gauges
+
+
+def _row(name: str, side: str, coef: Array, hold: float = 0.0) -> Row:
+    return Row(name, side, scale(coef), hold)
+
+
+def _property_rows(needs: Iterable[Requirement], gauges: dict[str, Gauge]) -> list[Row]:
+    rows = []
+    for need in needs:
+        if need.code == "vi":
+            continue
+        gauge = gauges[need.code]
+        # A window with no width cannot be held from both sides; its rows then stand exactly.
+        narrow = need.held_low is not None and need.held_high is not None and (
+            need.held_high - need.held_low <= 1e-4 * max(abs(need.held_high), need.unit_of_miss()))
+        for side, value in (("low", need.held_low), ("high", need.held_high)):
+            if value is not None:
+                rows.append(_row(need.code, side, gauge.row(value, side), 0.0 if narrow else HOLD))
+    return rows
+
+
+def _share_rows(kept: StockTable, target: Target, table: StockTable) -> list[Row]:
+    """Rules on oils, kinds and groups as rows; rules on one stock are bounds."""
+    rows = []
+    for rule in target.rules:
+        if rule.of in table.codes:
+            continue
+        inside = np.array([1.0 if s.matches(rule.of) else 0.0 for s in kept.stocks])
+        if rule.high < 1.0:
+            rows.append(_row(rule.of, "high", inside - rule.high))
+        if rule.low > 0.0:
+            rows.append(_row(rule.of, "low", rule.low - inside))
+    return rows
+
+
+def _bounds(kept: StockTable, target: Target, table: StockTable) -> tuple[Array, Array, tuple[str, ...]]:
+    n = len(kept)
+    lo, hi = np.zeros(n), np.ones(n)
+    short = [f"{rule.of}: at least {100 * rule.low:g} % is asked, and none of it can serve"
+             for rule in target.rules if rule.low > 0.0 and not any(s.matches(rule.of) for s in kept.stocks)]
+    short += [f"{code}: held at {100 * share:g} %, and it cannot serve"
+              for code, share in target.held.items() if share > 0.0 and code not in kept.codes]
+    for i, stock in enumerate(kept.stocks):
+        for rule in target.rules:
+            if rule.of == stock.code:
+                lo[i], hi[i] = max(lo[i], rule.low), min(hi[i], rule.high)
+        if stock.code in target.held:
+            lo[i] = hi[i] = target.held[stock.code]
+        if target.batch_kg is not None:
+            most = float(kept.available[i]) / target.batch_kg
+            if most < lo[i] - 1e-12:
+                short.append(f"{stock.code}: {100 * lo[i]:g} % of {target.batch_kg:g} kg is "
+                             f"{lo[i] * target.batch_kg:,.0f} kg, and the tank can give "
+                             f"{float(kept.available[i]):,.0f} kg")
+            hi[i] = min(hi[i], most)
+        if lo[i] > hi[i] + 1e-12 and not short:
+            short.append(f"{stock.code}: the rules ask at least {100 * lo[i]:g} % and at most "
+                         f"{100 * hi[i]:g} %")
+    return lo, hi, tuple(short)
