@@ -346,9 +346,6 @@ class Console(App[int]):
             self.exit(0)
 
 
-for _code, _ in commands.SCREENS:
-    setattr(Console, f"do_go_{_code}", lambda self, code=_code: self.go(code))
-
 
 def fault(error: Exception) -> str:
     """A fault of the program in a line."""

@@ -136,7 +136,10 @@ def required(target: Target, candidates: StockTable) -> tuple[tuple[Requirement,
             entry = lookup(limit.property)
             tests.insert(0, f"{entry.name} at most {limit.high:g} {entry.unit} "
                             f"({lacking} of {len(candidates)} stocks have no value)")
-    limits += [replace(x, source=x.source or "the product") for x in target.limits]
+    fallen = {x.property for x in by_grade.if_known} - {x.property for x in limits}
+    # A guard on a grade's limit that is only to be tested has nothing to stand on.
+    limits += [replace(x, source=x.source or "the product") for x in target.limits
+               if x.low is not None or x.high is not None or x.property not in fallen]
     if not limits:
         raise TargetError(f"{target.product}: a product without limits; give it a grade or a limit",
                           where=target.product)

@@ -106,7 +106,8 @@ def figures(value: float, count: int = 4) -> str:
     """
     if value == 0.0 or not math.isfinite(value):
         return f"{value:g}"
-    return f"{value:.{max(0, count - 1 - math.floor(math.log10(abs(value))))}f}"
+    exponent = int(f"{value:.{count - 1}e}".partition("e")[2])  # after rounding: 9.9999 has the one of 10
+    return f"{value:.{max(0, count - 1 - exponent)}f}"
 
 
 def derived(stock: Stock) -> tuple[float | None, float | None]:

@@ -71,7 +71,7 @@ def text_of(product: Product, cell: str) -> str:
         return "yes" if value else "no"
     if value is None:
         return ""
-    return harmless(value) if isinstance(value, str) else repr(float(value)).removesuffix(".0")
+    return harmless(value) if isinstance(value, str) else _plain(value)
 
 
 def edit_product(plant: Plant, product: str, cell: str, typed: str) -> Edit:
@@ -174,11 +174,16 @@ def set_limit(plant: Plant, product: str, prop: str, low: str = "", high: str = 
 def _limit_value(typed: str, prop: str) -> float | None:
     if not typed.strip():
         return None
-    value = amount(typed.strip(), prop) if prop != "vi" else amount_plain(typed.strip())
-    return check.limit_value(repr(float(value)), prop)
+    value = amount(typed.strip(), prop) if prop != "vi" else _number(typed.strip())
+    return check.limit_value(_plain(value), prop)
 
 
-def amount_plain(typed: str) -> float:
+def _plain(value: float) -> str:
+    """Every digit of a number, without a point where there is nothing behind it."""
+    return repr(float(value)).removesuffix(".0")
+
+
+def _number(typed: str) -> float:
     """A number without a unit."""
     from solver.scales import parse
 
@@ -193,10 +198,10 @@ def _guard(typed: str, prop: str) -> tuple[float, float]:
     number, unit = split(typed)
     entry = lookup(prop)
     if unit == "" or unit == entry.unit.lower():
-        return check.guard(repr(number))
+        return check.guard(_plain(number))
     if entry.unit == "°C" and unit in ("f", "°f"):
-        return check.guard(repr(number / 1.8))  # a difference of temperatures has no offset
-    return check.guard(repr(amount(typed, prop)))
+        return check.guard(_plain(number / 1.8))  # a difference of temperatures has no offset
+    return check.guard(_plain(amount(typed, prop)))
 
 
 def _refuse_limit(asked: Product, prop: str, cells: Row) -> None:
@@ -233,7 +238,7 @@ def _window(cells: Row) -> str:
 def limit_texts(limit: Limit) -> tuple[str, str, str]:
     """Low, high and guard of a line as they may be typed back."""
     def text(value: float | None) -> str:
-        return "" if value is None else repr(float(value)).removesuffix(".0")
+        return "" if value is None else _plain(value)
 
     guard = f"{text(limit.guard_pct)}%" if limit.guard_pct else text(limit.guard or None)
     return text(limit.low), text(limit.high), guard
@@ -361,6 +366,8 @@ def retire_product(plant: Plant, product: str) -> str:
 
 def keep_trial(plant: Plant, trial: Trial) -> str:
     """Keep shares under a name; DeskError when the name is taken or cannot be a name."""
+    if not trial.name.strip():
+        raise DeskError("the trial needs a name; type one such as lean")
     try:
         name = check.code(trial.name.strip())
         check.plain(trial.note)

@@ -299,7 +299,9 @@ def _stock_faults(cells: Cells, stock: Stock) -> None:
         what, _, fix = doubt.says.partition("; ")
         if doubt.cell in ("kv40", "kv100") and not cells.cells.get(doubt.cell):
             fix = "enter it"
-        cells.fault(doubt.cell, what.removeprefix(f"{doubt.cell} ") if "kv" in doubt.cell else what, fix or "check the figure")
+        if "kv" in doubt.cell:
+            what = what.removeprefix(f"{doubt.cell} ")  # the fault names its column itself
+        cells.fault(doubt.cell, what, fix or "check the figure")
 
 
 def _product(cells: Cells) -> tuple[str, Row]:

@@ -118,7 +118,7 @@ def plain(text: str) -> str:
 def code(text: str) -> str:
     """A code of a stock or product: short, not empty, nothing that could drive a terminal."""
     if not text:
-        raise CellError("the code is empty", "give each row a code")
+        raise CellError("the code is empty", "give one")
     plain(text)
     if len(text) > LONGEST_CODE:
         raise CellError(f"the code {shown(text)} has {len(text)} characters", f"keep it to {LONGEST_CODE}")

@@ -116,7 +116,7 @@ class Database:
                 self._rollback()
                 raise
             finally:
-                self._unsign()
+                self._unsign(who)
 
     def _rollback(self) -> None:
         # SQLite itself rolls back on a full disk, and a second ROLLBACK would hide the reason.
@@ -133,16 +133,18 @@ class Database:
         sign = self._sign_path()
         if sign is not None:
             try:
-                sign.write_text(json.dumps({"who": who, "pid": os.getpid()}), encoding="utf-8")
+                sign.write_text(_signature(who), encoding="utf-8")
             except OSError:
                 pass  # only a courtesy to the others
 
-    def _unsign(self) -> None:
+    def _unsign(self, who: str) -> None:
         sign = self._sign_path()
         if sign is not None:
             try:
-                sign.unlink(missing_ok=True)
-            except OSError:
+                # The next writer may have signed already.
+                if sign.read_text(encoding="utf-8") == _signature(who):
+                    sign.unlink()
+            except (OSError, ValueError):
                 pass
 
     def writer(self) -> str:
@@ -183,6 +185,10 @@ class Database:
             return ChangedSince("the plant has changed since it was read, and this no longer fits "
                                 f"({text}); look again and repeat the change")
         return PlantError(f"{place} cannot be read or written: {text}; check the disk and the rights")
+
+
+def _signature(who: str) -> str:
+    return json.dumps({"who": who, "pid": os.getpid()})
 
 
 def _address(path: Path | None, read_only: bool, new: bool) -> str:

@@ -59,12 +59,9 @@ def example_plant() -> Path:
 
 def example_folder() -> Path:
     """The catalogue folder of the example: inside the installed package, or beside it in a checkout."""
-    places = [Path(__file__).resolve().parents[2] / "stock_catalog_example"]
-    try:
-        places.insert(0, Path(str(resources.files("blendtui.stock_catalog_example"))))
-    except ModuleNotFoundError:
-        pass  # running from a checkout
-    for folder in places:
+    # Beside the CSV files there is no module, so they are found from the package that is one.
+    package = Path(str(resources.files("blendtui")))
+    for folder in (package / "stock_catalog_example", package.parent / "stock_catalog_example"):
         if (folder / "stocks.csv").is_file():
             return folder
     raise PlantError("the example plant is not where it was installed; install the program again, "

@@ -21,6 +21,10 @@ class Column:
     squeezes: bool = False  # a text that may be shown shorter; a number never is
 
 
+class Wide(str):
+    """A cell that takes the rest of its row."""
+
+
 Cell = str | Run
 CellOf = Callable[[int, int], Cell]
 
@@ -38,7 +42,7 @@ class Grid(Canvas):
         self.top = self.left = 0
         self.active = True  # has the keys: a grid beside another shows its cursor more faintly
         self.empty = ""  # what to say where there is no row
-        self.on_pick: Callable[[], None] | None = None
+        self.picked: Callable[[], None] | None = None
 
     def show(self, columns: Sequence[Column], count: int, cell: CellOf, *, row: int | None = None,
              column: int | None = None) -> None:
@@ -99,8 +103,8 @@ class Grid(Canvas):
         if 0 <= row < self.count and event.y >= self.head:  # type: ignore[attr-defined]
             self.row, self.column = row, n
             self.paint()
-            if self.on_pick:
-                self.on_pick()
+            if self.picked:
+                self.picked()
 
     def _reveal(self) -> None:
         """Move the view by half pages, never by a line: a move of the view sends the whole table."""
@@ -172,5 +176,8 @@ class Grid(Canvas):
             text, style = cell if isinstance(cell, tuple) else (cell, PLAIN)
             if row == self.row and n == self.column:
                 style = CURSOR if self.active else WEAK_CURSOR
+            if isinstance(text, Wide):
+                rest = sum(self.columns[m].width + 1 for m in visible if m >= n) - 1
+                return [*line, (fit(text, rest), style)]
             line += [(fit(text, column.width, column.align), style), (" ", PLAIN)]
         return line

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 import numpy as np
 
 from solver.stocks import Stock, StockTable
@@ -25,10 +27,10 @@ def random_plant(rng: np.random.Generator, size: int) -> StockTable:
     return StockTable(stocks)
 
 
-def random_target(rng: np.random.Generator, law: str, *, batch: bool = False) -> Target:
-    """Windows on both KVs and a VI minimum: an ISO-like window, a KV100 window around it, VI 90–130."""
+def random_target(rng: np.random.Generator, law: str, *, batch: bool = False, hardest: float = 130.0) -> Target:
+    """Windows on both KVs and a VI minimum: an ISO-like window, a KV100 window around it, VI 88 to hardest."""
     kv40 = float(np.exp(rng.uniform(np.log(20.0), np.log(220.0))))
-    vi = float(rng.uniform(88.0, 130.0))
+    vi = float(rng.uniform(88.0, hardest))
     # KV100 of an oil of this KV40 and a VI a little above the least one.
     grid = np.linspace(2.1, 60.0, 4000)
     kv100 = float(np.interp(kv40, kv40_at(vi + 3.0, grid), grid))
@@ -37,9 +39,15 @@ def random_target(rng: np.random.Generator, law: str, *, batch: bool = False) ->
     return Target("random", limits, law=law, batch_kg=20e3 if batch else None)
 
 
-def cases(seed: int, count: int, smallest: int = 12, largest: int = 60):  # type: ignore[no-untyped-def]
-    """`count` seeded cases (plant, target), laws in turn."""
-    for k in range(count):
-        rng = np.random.default_rng([seed, k])
-        table = random_plant(rng, int(rng.integers(smallest, largest + 1)))
-        yield table, random_target(rng, LAWS[k % len(LAWS)], batch=k % 3 == 0)
+def case(seed: int, k: int, smallest: int = 12, largest: int = 60,
+         hardest: float = 130.0) -> tuple[StockTable, Target]:
+    """Seeded case k: a plant and a target, laws in turn, a batch that can bind in every third."""
+    rng = np.random.default_rng([seed, k])
+    table = random_plant(rng, int(rng.integers(smallest, largest + 1)))
+    return table, random_target(rng, LAWS[k % len(LAWS)], batch=k % 3 == 0, hardest=hardest)
+
+
+def cases(seed: int, count: int, smallest: int = 12, largest: int = 60,
+          hardest: float = 130.0) -> Iterator[tuple[StockTable, Target]]:
+    """The first `count` seeded cases."""
+    return (case(seed, k, smallest, largest, hardest) for k in range(count))
