@@ -72,7 +72,7 @@ class Console(App[int]):
         self.said.append(("note", f"{plant.opened_note}" if plant.opened_note else str(plant.path)))
         self.been: list[str] = []  # screens to go back to
         self._tasks: deque[Task] = deque()
-        self._running = 0
+        self._pending_changes = 0
         self._gate = threading.Lock()
         self._draining = False
         self._leaving = False
@@ -120,12 +120,12 @@ class Console(App[int]):
     @property
     def busy(self) -> bool:
         """Is a change on its way to the plant?"""
-        return self._running > 0
+        return self._pending_changes > 0
 
     def task(self, work: Callable[[], Any], done: Callable[[Any], None],
              failed: Callable[[str], None] | None = None) -> None:
         """Do `work` in the plant's thread, after what was asked before; then `done` or `failed` here."""
-        self._running += 1
+        self._pending_changes += 1
         with self._gate:
             self._tasks.append((work, done, failed))
             start = not self._draining
@@ -154,7 +154,7 @@ class Console(App[int]):
 
     def on_finished(self, message: messages.Finished) -> None:
         """A task ended."""
-        self._running -= 1
+        self._pending_changes -= 1
         if message.refusal:
             if message.failed:
                 message.failed(message.refusal)

@@ -46,16 +46,16 @@ COMMANDS: tuple[Command, ...] = (
     _on(STOCKS, "a", "add", "add", "Add a stock under a new code."),
     _on(STOCKS, "c", "copy", "copy", "Copy the stock under the cursor, its quantity aside, under a new code."),
     _on(STOCKS, "d", "retire", "retire", "Take the stock under the cursor out of use; u brings it back."),
-    _on(STOCKS, "v", "add_value", "other value", "Give the stock a property that has no column yet, such as "
+    _on(STOCKS, "v", "add_value", "other", "Give the stock a property that has no column yet, such as "
         "ccs-25."),
 
     _on(TARGETS, "enter", "edit", "edit", "Edit the cell under the cursor; an empty text means not asked.",
         shown="Enter"),
     _on(TARGETS, "tab", "pane", "list/cells", "Go from the list of products to the cells of the chosen one and "
         "back.", shown="Tab", changes=False),
-    _on(TARGETS, "l", "limit", "new limit", "Add a limit on a property: low, high and guard are asked for one by "
+    _on(TARGETS, "l", "limit", "limit", "Add a limit on a property: low, high and guard are asked for one by "
         "one."),
-    _on(TARGETS, "s", "rule", "new share rule", "Add a rule on the share of a stock, an oil, a kind or a group."),
+    _on(TARGETS, "s", "rule", "share rule", "Add a rule on the share of a stock, an oil, a kind or a group."),
     _on(TARGETS, "x", "unknown", "unknown ok", "On a limit: let stocks serve whose value of that property is "
         "unknown, or no longer."),
     _on(TARGETS, "d", "drop", "drop", "Drop the limit or the share rule under the cursor; in the list of products, "
@@ -63,23 +63,23 @@ COMMANDS: tuple[Command, ...] = (
     _on(TARGETS, "a", "add", "add", "Add a product under a new code."),
     _on(TARGETS, "c", "copy", "copy", "Copy the product with its limits and rules under a new code."),
 
-    _on(RECIPE, "enter", "edit", "type share", "Type the share of the stock under the cursor by hand, in % or kg; "
+    _on(RECIPE, "enter", "edit", "share", "Type the share of the stock under the cursor by hand, in % or kg; "
         "the properties follow.", shown="Enter"),
-    _on(RECIPE, "f", "fill", "fill to 100", "Give the stock under the cursor what the typed shares lack of 100 %, "
+    _on(RECIPE, "f", "fill", "fill", "Give the stock under the cursor what the typed shares lack of 100 %, "
         "or take off what is too much."),
     _on(RECIPE, "b", "best", "best", "Go back to the least-cost recipe."),
     _on(RECIPE, "h", "hold", "hold", "Hold the stock under the cursor at a share, and find the best of the rest; "
         "on a held stock, let it go."),
-    _on(RECIPE, "x", "leave", "leave out", "Leave the stock under the cursor out, or let it in again."),
-    _on(RECIPE, "c", "free", "clear holds", "Let every held stock go and every left-out one in."),
-    _on(RECIPE, "n", "next", "next blend", "Step to the next feasible blend, cheapest first."),
-    _on(RECIPE, "p", "previous", "blend before", "Step to the feasible blend before."),
+    _on(RECIPE, "x", "leave", "out/in", "Leave the stock under the cursor out, or let it in again."),
+    _on(RECIPE, "c", "free", "clear", "Let every held stock go and every left-out one in."),
+    _on(RECIPE, "n", "next", "blends", "Step to the next feasible blend, cheapest first.", shown="n p"),
+    _on(RECIPE, "p", "previous", "blend before", "Step to the feasible blend before.", listed=False),
     _on(RECIPE, "t", "take", "take", "Take the blend that is shown: its shares become yours to type over."),
-    _on(RECIPE, "k", "keep", "keep trial", "Keep the blend that is shown as a trial, under a name."),
+    _on(RECIPE, "k", "keep", "keep", "Keep the blend that is shown as a trial, under a name."),
     _on(RECIPE, "m", "batch", "batch", "Type the size of the batch for this recipe."),
     _on(RECIPE, "L", "law", "law", "Go to the next blending law for this recipe."),
-    _on(RECIPE, "w", "write", "write sheet", "Write the recipe as a text sheet for the floor, and say where."),
-    _on(RECIPE, "tab", "pane", "shares/limits", "Go from the shares to the limits and remarks and back.",
+    _on(RECIPE, "w", "write", "write", "Write the recipe as a text sheet for the floor, and say where."),
+    _on(RECIPE, "tab", "pane", "limits", "Go from the shares to the limits and remarks and back.",
         shown="Tab", changes=False),
 
     _on(TRIALS, "enter", "open", "open", "Open the trial under the cursor on the recipe screen.", shown="Enter"),
@@ -91,10 +91,6 @@ COMMANDS: tuple[Command, ...] = (
 
     _on(ALL, "u", "undo", "undo", "Take back your last change, on this screen or another, and say what it was."),
     _on(ALL, "r", "redo", "redo", "Do again what was undone last."),
-    _on(ALL, "] right_square_bracket", "next_product", "product", "Go to the next product: every screen speaks of "
-        "the same one.", shown="[ ]", changes=False),
-    _on(ALL, "[ left_square_bracket", "previous_product", "product before", "Go to the product before.",
-        changes=False, listed=False),
     *(_on(ALL, str(n), f"go_{code}", name.lower(), f"Go to the screen {name}.", changes=False, listed=False)
       for n, (code, name) in enumerate(SCREENS, 1)),
     Command(MOVES, "move", "move", ALL, "Move by cells, by pages, to the first and last column; with ctrl to the "
@@ -103,9 +99,13 @@ COMMANDS: tuple[Command, ...] = (
         "before.", shown="Esc", changes=False, listed=False),
     _on(ALL, "! exclamation_mark", "messages", "messages", "Show the messages of this session in full, newest "
         "first.", changes=False, listed=False),
-    _on(ALL, ": colon ctrl+p", "palette", "all commands", "List every command, and run the one that is chosen.",
+    _on(ALL, ": colon ctrl+p", "palette", "all", "List every command, and run the one that is chosen.",
         changes=False),
     _on(ALL, "q ctrl+q", "quit", "quit", "Leave; every change was saved when it was made.", changes=False),
+    _on(ALL, "] right_square_bracket", "next_product", "product", "Go to the next product: every screen speaks of "
+        "the same one.", shown="[ ]", changes=False),
+    _on(ALL, "[ left_square_bracket", "previous_product", "product before", "Go to the product before.",
+        changes=False, listed=False),
     _on(ALL, "? question_mark f1", "help", "help", "Show this list.", changes=False),
 )
 

@@ -78,6 +78,7 @@ class Solved:
     x: Array | None
     value: float
     bound: float  # no feasible x has a lower value
+    reduced: Array | None = None  # (n,) what one unit more of a stock at its lower bound would add
 
 
 class Stopwatch:
@@ -135,7 +136,8 @@ def _translate(result: Any, bound: float | None, problem: Polytope, c: Array) ->
     if result.status != 0 or result.x is None:
         return Solved("infeasible", None, np.inf, np.inf)
     x = tidy(result.x[:len(c)], problem)
-    return Solved("optimal", x, float(c @ x), float(c @ x) if bound is None else bound)
+    reduced = np.asarray(result.lower.marginals) if "lower" in result else None
+    return Solved("optimal", x, float(c @ x), float(c @ x) if bound is None else bound, reduced)
 
 
 def tidy(x: Array, problem: Polytope) -> Array:
@@ -152,6 +154,7 @@ def _solve_whole(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
     relaxed = _solve_plain(problem, c, watch)
     if relaxed.x is None or whole.kept_by(relaxed.x):
         return relaxed  # the rules do not bind (or nothing meets even the rest)
+    problem = _without_hopeless(problem, relaxed, c, watch)
     least = whole.least if len(whole.least) else np.zeros(len(c))
     counted = whole.counted & ((problem.hi >= least) | (problem.lo > 0.0)) & (problem.hi > 0.0)
     hi = np.where(whole.counted & ~counted, 0.0, problem.hi)
@@ -179,6 +182,27 @@ def _solve_whole(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
                   options={"time_limit": watch.left, "mip_rel_gap": 1e-9, "presolve": False})
     solved = _translate(result, result.mip_dual_bound, replace(problem, hi=hi), c)
     return _clean_choice(solved, problem, c, watch)
+
+
+def _without_hopeless(problem: Polytope, relaxed: Solved, c: Array, watch: Stopwatch) -> Polytope:
+    """Close the stocks that cannot be in the best answer.
+
+    Its least share of a stock outside the relaxed answer adds at least reduced·least to the relaxed value;
+    where that is more than a known answer costs, the stock is out. The known answers are the relaxed one's
+    stocks, all raised to their least share, or without the smallest of them.
+    """
+    whole, x = problem.whole, relaxed.x
+    if whole is None or x is None or relaxed.reduced is None or not np.any(whole.least > 0.0):
+        return problem
+    known = np.inf
+    for floor in (0.0, 0.5):
+        tried = _solve_plain(problem.on_support(np.where(x >= floor * whole.least, x, 0.0)), c, watch)
+        if tried.x is not None and whole.kept_by(tried.x):
+            known = min(known, tried.value)
+    slack = 1e-9 * max(1.0, abs(known))
+    hopeless = whole.counted & (x <= 0.0) & (problem.lo <= 0.0) & (
+        relaxed.reduced * whole.least > known - relaxed.bound + slack)
+    return replace(problem, hi=np.where(hopeless, 0.0, problem.hi))
 
 
 def _clean_choice(solved: Solved, problem: Polytope, c: Array, watch: Stopwatch) -> Solved:

@@ -144,7 +144,7 @@ class Page(Screen[Any]):
 
     # Typing
 
-    def type(self, label: str, text: str, then: Callable[[Ended], None],
+    def type_text(self, label: str, text: str, then: Callable[[Ended], None],
              drop: Callable[[], None] | None = None, *, whole: bool = True) -> None:
         """Begin to type on the edit line."""
         self.edit.start(label, text, then, drop or (lambda: self.say("dropped; nothing was changed")), whole=whole)
@@ -168,9 +168,9 @@ class Page(Screen[Any]):
                                 lambda refusal: again(ended.text))
 
         def again(typed: str) -> None:
-            self.type(label, typed, then, whole=False)
+            self.type_text(label, typed, then, whole=False)
 
-        self.type(label, text, then)
+        self.type_text(label, text, then)
 
     def _question(self, edit: Edit) -> None:
         take = f" · s takes {edit.suggestion}" if edit.suggestion else ""
@@ -183,7 +183,7 @@ class Page(Screen[Any]):
 
         def ask() -> None:
             label, text = steps[len(typed)]
-            self.type(f"{label} ({len(typed) + 1} of {len(steps)})" if len(steps) > 1 else label, text, took)
+            self.type_text(f"{label} ({len(typed) + 1} of {len(steps)})" if len(steps) > 1 else label, text, took)
 
         def took(ended: Ended) -> None:
             typed.append(ended.text.strip())

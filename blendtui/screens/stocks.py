@@ -21,12 +21,12 @@ from . import words
 from .base import Page
 from .state import StocksState
 
-FIRST = ("name", "kind", "api_group", "kv40", "kv100", "vi", "slope", "density15", "on_hand_kg", "unpumpable_kg",
-         "price_per_t", "flash", "pour")
+FIRST = ("name", "kv40", "kv100", "vi", "density15", "on_hand_kg", "price_per_t", "api_group", "kind", "flash", "pour",
+         "unpumpable_kg", "slope")
 LAST = ("blend_kv40", "blend_kv100", "oil", "tested_on", "source")
 DERIVED = {"vi": Column("vi", "VI", "", 4), "slope": Column("slope", "slope", "of line", 7)}
-TEXTS = {"name": 18, "kind": 9, "api_group": 5, "oil": 10, "tested_on": 10, "source": 11}
-HEADINGS = {"density15": ("density", "kg/m³ 15 °C"), "kv40": ("KV40", "mm²/s"), "kv100": ("KV100", "mm²/s"),
+TEXTS = {"name": 16, "kind": 15, "api_group": 5, "oil": 10, "tested_on": 10, "source": 11}
+HEADINGS = {"density15": ("density", "kg/m³"), "kv40": ("KV40", "mm²/s"), "kv100": ("KV100", "mm²/s"),
             "blend_kv40": ("blend KV40", "mm²/s"), "blend_kv100": ("blend KV100", "mm²/s")}
 
 
@@ -55,7 +55,7 @@ def columns(stocks: Iterable[Stock], wide: bool) -> tuple[Column, ...]:
             width = TEXTS[code] + (10 if wide and code == "name" else 0)
             found.append(Column(code, heading, unit, width, "left", True))
         else:
-            found.append(Column(code, heading, unit, max(7, len(heading), len(unit))))
+            found.append(Column(code, heading, unit, max(7, len(heading), len(unit), 8 if code in ("on_hand_kg", "price_per_t") else 0)))
     return tuple(found)
 
 
@@ -194,7 +194,7 @@ class StocksScreen(Page):
 
     def do_filter(self) -> None:
         """Type the words of the filter."""
-        self.type("show stocks with the words", self.state.words, self._filter)
+        self.type_text("show stocks with the words", self.state.words, self._filter)
 
     def _filter(self, ended: Ended) -> None:
         self.state = replace(self.state, words=" ".join(ended.text.split()))

@@ -42,14 +42,18 @@ class Row:
 def rows_of(product: Product) -> list[Row]:
     """The cells of a product, its limits with those its grade brings, and its share rules."""
     found = [Row("cell", c.code, (c.heading + (f", {c.unit}" if c.unit else ""),
-                                  desk.text_of(product, c.code) or "–", "", "")) for c in desk.PRODUCT_CELLS]
+                                  _shown(product, c.code), "", "")) for c in desk.PRODUCT_CELLS]
     found.append(Row("head", "", ("LIMITS  (l adds one)", "low", "high", "guard")))
-    found += [Row("grade", x.property, (lookup(x.property).label, *_bare(x)[:2], x.source.removeprefix("grade ")))
+    found += [Row("grade", x.property, (lookup(x.property).label, *_bare(x)[:2], "grade"))
               for x in _grade_limits(product)]
     found += [Row("limit", x.property, (lookup(x.property).label + (" ?ok" if x.unknown_ok else ""), *_bare(x)))
               for x in product.limits]
-    found.append(Row("head", "", ("SHARES, mass %  (s adds one)", "low", "high", "")))
+    found.append(Row("head", "", ("SHARES, %  (s adds one)", "low", "high", "")))
     return found + [Row("rule", r.of, (harmless(r.of), *rule_texts(r), "")) for r in product.rules]
+
+
+def _shown(product: Product, cell: str) -> str:
+    return desk.text_of(product, cell) or ("– (refutas)" if cell == "law" else "–")
 
 
 def _bare(limit: Limit) -> tuple[str, ...]:
@@ -141,7 +145,7 @@ class TargetsScreen(Page):
             if row.kind == "cell":
                 self.edit.show(of, row.texts[1])
             elif row.kind == "grade":
-                self.edit.show(of, f"{row.texts[1]} to {row.texts[2]}, from the grade {row.texts[3]}")
+                self.edit.show(of, f"{row.texts[1]} to {row.texts[2]}, from the grade {product.grade}")
             else:
                 self.edit.show(f"{of} {CELLS[column].code}" if column else of, row.texts[column] if column else "")
 

@@ -95,7 +95,7 @@ def summary(session: Session) -> Line:
 def tested(stock: Stock, today: date) -> str:
     """Source and age of a stock's test: `own 34 d`, `certificate 14 mo !` where it is old."""
     days = test_age(stock, today)
-    source = {"certificate": "cert."}.get(stock.source, stock.source) or "source ?"
+    source = {"certificate": "cert.", "typical": "typ."}.get(stock.source, stock.source) or "?"
     if days is None:
         return f"{source} no date"
     age = f"{days} d" if days < 60 else f"{days // 30} mo" if days < 730 else f"{days // 365} y"

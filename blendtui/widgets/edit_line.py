@@ -5,8 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 
+from rich.cells import cell_len
+
 from .canvas import Canvas
-from .paint import BOLD, CURSOR, PLAIN, WARN, Line
+from .paint import BOLD, CURSOR, PLAIN, WARN, Line, fit
 
 
 @dataclass(frozen=True)
@@ -116,7 +118,8 @@ class EditLine(Canvas):
         """One line; a long text moves so that the place being typed at stays in sight."""
         if self.typing is None:
             what, value = self.rest
-            return [[(what + (": " if what and value else ""), PLAIN), (value, BOLD)]]
+            label = what + (": " if what and value else "")
+            return [[(label, PLAIN), (fit(value, width - cell_len(label)).rstrip() if value else "", BOLD)]]
         now = self.typing
         label = f"{now.label} ▸ "
         room = max(8, width - len(label) - 1)

@@ -97,7 +97,7 @@ class KeyBar(Canvas):
         for n, (key, label) in enumerate([*others, last]):
             size = len(key) + len(label) + 3
             spare = len(last[0]) + len(last[1]) + 1 if len(lines) == height and n < len(others) else 0
-            if size - 2 + spare > room:
+            if (size + spare if spare else size - 2) > room:
                 if len(lines) == height:
                     if n < len(others):
                         continue

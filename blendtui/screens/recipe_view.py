@@ -1,0 +1,271 @@
+"""How a recipe is laid out: shares with their ranges, limits with their margins, remarks."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import date
+from typing import TYPE_CHECKING
+
+from blendtui.desk import blends, numbers
+from blendtui.desk.answers import Answer
+from blendtui.store.harmless import harmless
+from blendtui.widgets.grid import Cell, Column
+from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, fit, wrap
+from solver.scales import litres_at_15
+from solver.stocks import Stock
+
+from . import words
+
+if TYPE_CHECKING:
+    from solver.recipe import LimitResult, Recipe
+
+    from .state import RecipeState
+
+BAR = 12
+LIMIT_WIDTHS = (8, 8, 8, 6, 8)
+WORDS = {"held": "held", "out": "out", "cannot": "no"}
+
+
+@dataclass(frozen=True)
+class ShareRow:
+    """One stock of the recipe screen."""
+
+    stock: Stock
+    share: float  # mass fraction shown; 0: not used
+    mark: str  # "", "held", "out" (by the operator) or "cannot"
+    reason: str  # why it cannot serve
+    range: tuple[float, float] | None  # mass fractions over all blends that meet the target
+
+
+def share_rows(answer: Answer, recipe: Recipe) -> list[ShareRow]:
+    """Every stock that the product allows, in the answer's order, then any other that is used."""
+    by_code = {s.code: s for s in answer.stocks}
+    left_out = {x.stock: x.reason for x in answer.best.left_out}
+    shares = recipe.shares or {}
+    codes = [*answer.allowed, *(c for c in shares if c not in answer.allowed and c in by_code)]
+    rows = []
+    for code in codes:
+        mark = ("held" if code in answer.wishes.held else "out" if code in answer.wishes.left_out
+                else "cannot" if code in left_out else "")
+        rows.append(ShareRow(by_code[code], shares.get(code, 0.0), mark, left_out.get(code, ""),
+                             (answer.ranges or {}).get(code)))
+    return rows
+
+
+def scale_of(rows: list[ShareRow]) -> float:
+    """Mass fraction at the right end of the bars: the next tenth above every range and share."""
+    most = max([r.range[1] for r in rows if r.range] + [r.share for r in rows] + [0.1])
+    return min(1.0, -(-most // 0.1) * 0.1) if most < 1.0 else 1.0
+
+
+def bar(row: ShareRow, scale: float, width: int = BAR) -> str:
+    """The range as a bar with the share in it: `··███◆██······`.
+
+    A range or share that is not nothing has at least one column, whatever the scale.
+    """
+    def place(fraction: float) -> int:
+        return min(width - 1, max(0, int(fraction / scale * width)))
+
+    marks = ["·"] * width
+    if row.range:
+        for x in range(place(row.range[0]), place(row.range[1]) + 1):
+            marks[x] = "█"
+        if row.range[1] <= 0.0:
+            marks[0] = "·"
+    if row.share > 0.0:
+        marks[place(row.share)] = "◆"
+    return "".join(marks)
+
+
+def share_columns(scale: float, width: int) -> tuple[Column, ...]:
+    """Columns of the shares; a wide screen has room for the name and a longer bar."""
+    long = width >= 110
+    return (Column("stock", "stock", "", 9, "left", True), Column("mark", "", "", 4, "left"),
+            Column("share", "share", "%", 6), Column("kg", "mass", "kg", 7), Column("litres", "volume", "L 15 °C", 7),
+            Column("bar", "range", f"0–{100 * scale:.0f} %", 30 if long else BAR, "left"),
+            Column("range", "could be", "%, low–high", 12), Column("tested", "test", "source, age", 13, "left"),
+            *((Column("name", "name", "", width - 103, "left", True),) if long else ()))
+
+
+def share_cell(row: ShareRow, code: str, recipe: Recipe, scale: float, today: date, bar_width: int) -> Cell:
+    """One cell of the shares."""
+    if code == "stock":
+        return harmless(row.stock.code)
+    if code == "mark":
+        return WORDS.get(row.mark, "")
+    if code == "share":
+        return numbers.pct(row.share) if row.share else "–"
+    if code in ("kg", "litres"):
+        mass = (recipe.charges_kg or {}).get(row.stock.code)
+        if code == "kg" or mass is None or row.stock.density15 is None:
+            return numbers.kg(mass if code == "kg" else None)
+        return numbers.litres(litres_at_15(mass, row.stock.density15))
+    if code == "bar":
+        return bar(row, scale, bar_width)
+    if code == "range":
+        return f"{numbers.pct(row.range[0])}–{numbers.pct(row.range[1])}" if row.range else "–"
+    if code == "tested":
+        return words.tested(row.stock, today)
+    return harmless(row.stock.name)
+
+
+# Head
+
+def head(state: RecipeState, recipe: Recipe | None) -> list[Line]:
+    """What kind of answer this is, what it costs, and under which law and for which batch."""
+    if state.error:
+        return [[(line, BAD)] for line in wrap(f"! {state.error}", 79)][:2]
+    if recipe is None or state.answer is None:
+        return [[("working out the recipe …", PLAIN)]]
+    first: Line = [*_kind(state, recipe)]
+    if recipe.cost_per_t is not None:
+        first.append((f" · cost {numbers.cost(recipe.cost_per_t)} /t", BOLD))
+        if recipe.batch_kg is not None:
+            whole = numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)
+            first.append((f" · {whole} for {numbers.kg(recipe.batch_kg)} kg", PLAIN))
+    if recipe.gap is not None and state.blend is None and recipe.status in ("optimal", "stopped"):
+        first.append((f" · proof gap {100.0 * recipe.gap:.4f} %", PLAIN))
+    waiting = "working out the new recipe … · " if state.waiting else ""
+    return [first, [(waiting + " · ".join(_second(state.answer, recipe)), PLAIN)]]
+
+
+def _kind(state: RecipeState, recipe: Recipe) -> Line:
+    assert state.answer is not None
+    if state.blend is not None:
+        return [(f"feasible blend {state.blend + 1} of {len(state.answer.blends)}", BOLD)]
+    if recipe.status == "by hand" and recipe.shares:
+        total = sum(recipe.shares.values())
+        if abs(total - 1.0) > 1e-4:
+            return [*words.verdict(recipe)[:0], (f"! by hand, shares sum to {numbers.pct(total)} %", BAD)]
+    return words.verdict(recipe)
+
+
+def _second(answer: Answer, recipe: Recipe) -> list[str]:
+    told = [f"law {recipe.law}"]
+    dearer = _dearer(answer, recipe)
+    if dearer:
+        told.append(dearer)
+    if recipe.status == "infeasible":
+        return [*told, "nearest blend misses " + "; ".join(words.misses(recipe))] if recipe.shares else \
+            [*told, *recipe.reasons]
+    if "guard" in answer.done:
+        told.append(f"guards cost {numbers.cost(answer.guard_cost_per_t)} /t")
+    if "largest" in answer.done:
+        told.append(f"largest batch today {numbers.kg(answer.largest_batch_kg)} kg")
+    elif answer.best.shares:
+        told.append("ranges are being worked out …")
+    return told
+
+
+def _dearer(answer: Answer, recipe: Recipe) -> str:
+    if recipe is answer.best or None in (recipe.cost_per_t, answer.best.cost_per_t) or \
+            answer.best.status == "infeasible":
+        return ""
+    more = recipe.cost_per_t - answer.best.cost_per_t  # type: ignore[operator]
+    return f"{numbers.cost(abs(more))} /t {'dearer' if more >= 0 else 'cheaper'} than the best"
+
+
+# Limits and remarks
+
+def notes(answer: Answer, recipe: Recipe, today: date, width: int) -> list[Line]:
+    """The limits as a table, the other properties, and every remark, laid for a width."""
+    lines = limit_table(recipe, width)
+    for said in remarks(answer, recipe, today):
+        marked = said.startswith("!")
+        lines += [[(line, WARN if marked else PLAIN)] for line in wrap(said, width - 1, "  ")]
+    return lines
+
+
+def limit_table(recipe: Recipe, width: int) -> list[Line]:
+    """Each limit: value, window, guard, margin to the guarded limit, and a word on how it stands."""
+    name = min(36, width - sum(LIMIT_WIDTHS) - len(LIMIT_WIDTHS) - 11)
+    titles = ("value", "low", "high", "guard", "margin")
+    lines: list[Line] = [[(fit("limit, unit", name), BOLD),
+                          *((" " + fit(t, w, "right"), BOLD) for t, w in zip(titles, LIMIT_WIDTHS, strict=True))]]
+    for limit in recipe.limits:
+        lines.append(_limit_line(limit, name))
+    return lines
+
+
+def _limit_line(limit: LimitResult, name: int) -> Line:
+    code = limit.property
+    unit = words.unit(code)
+    label = words.heading(code) + (f", {unit}" if unit else "")
+    figures = (limit.value, limit.low, limit.high, limit.guard or None, limit.margin)
+    decimals = len(numbers.value(code, limit.value).partition(".")[2]) if numbers.is_kv(code) and limit.value else None
+    line: Line = [(fit(label, name), PLAIN)]
+    line += [(" " + fit(_figure(code, value, decimals), size, "right"), PLAIN)
+             for value, size in zip(figures, LIMIT_WIDTHS, strict=True)]
+    if limit.met is False:
+        return [*line, (" ! MISSED", BAD)]
+    if limit.met is None:
+        return [*line, (" ? unknown", WARN)]
+    return [*line, (f" binds {limit.binding}" if limit.binding else " inside", BOLD if limit.binding else PLAIN)]
+
+
+def _figure(code: str, value: float | None, decimals: int | None) -> str:
+    if value is None:
+        return ""
+    # A margin and a guard to the decimals of the value they belong to, not to figures of their own.
+    return numbers.value(code, value) if decimals is None else numbers.fixed(value, decimals)
+
+
+def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
+    """Everything else there is to say of a recipe, a sentence each; what must not be missed begins with !."""
+    said = [f"! {reason}" for reason in recipe.reasons]
+    if recipe.status == "infeasible" and recipe.shares:
+        said.append("! this is the nearest blend, not a recipe: it misses " + "; ".join(words.misses(recipe)))
+    binding = [f"{words.heading(x.property)} ({x.binding})" for x in recipe.limits if x.binding]
+    said.append("binds: " + (", ".join(binding) or "no limit; only shares or quantities"))
+    said += _others(recipe)
+    said += _spread(recipe)
+    said += _wished(answer)
+    said += [f"left out: {harmless(x.stock)}, {x.reason}" for x in answer.best.left_out]
+    said += [f"to be tested, not predicted: {test}" for test in answer.best.to_be_tested]
+    said += _old(answer, recipe, today)
+    if answer.ranges is not None:
+        said.append("ranges: each stock alone, over all blends inside the limits and the cost ceiling; they leave the "
+                    "whole-number rules out (most stocks, least share)")
+    if "blends" in answer.done and answer.blends:
+        said.append(f"{len(answer.blends)} feasible blends with different stocks: n and p step through them")
+    return said
+
+
+def _others(recipe: Recipe) -> list[str]:
+    limited = {x.property for x in recipe.limits}
+    shown = [f"{words.heading(code)} {words.amount(code, value)}" for code, value in recipe.predicted.items()
+             if value is not None and code not in limited and _figure(code, value, None).strip("0.-")]
+    return ["also predicted: " + ", ".join(shown)] if shown else []
+
+
+def _spread(recipe: Recipe) -> list[str]:
+    told, worst = [], 0.0
+    for code, value in recipe.spread_pct.items():
+        if value is not None:
+            told.append(f"{words.heading(code)} {numbers.fixed(value, 1)} %")
+            worst = max(worst, value)
+    if not told:
+        return []
+    warning = blends.spread_words(worst)
+    return [f"{'! ' if warning else ''}spread of the laws on these shares: {', '.join(told)}"
+            + (f": {warning}" if warning else "")]
+
+
+def _wished(answer: Answer) -> list[str]:
+    wishes: list[str] = [f"{harmless(c)} {numbers.pct(x)} %" for c, x in answer.wishes.held.items()]
+    said = ["held by you: " + ", ".join(wishes)] if wishes else []
+    if answer.wishes.left_out:
+        said.append("left out by you: " + ", ".join(harmless(c) for c in sorted(answer.wishes.left_out)))
+    return said
+
+
+def _old(answer: Answer, recipe: Recipe, today: date) -> list[str]:
+    used: Mapping[str, float] = recipe.shares or {}
+    old = [s.code for s in answer.stocks if s.code in used
+           and (s.source == "typical" or (words.test_age(s, today) or 0) > words.OLD_DAYS
+                or words.test_age(s, today) is None)]
+    if not old:
+        return []
+    return [f"! no test of its own within a year: {', '.join(harmless(c) for c in old)}; lots of one oil differ by "
+            "3 to 8 % in KV"]
