@@ -160,7 +160,7 @@ def _say(text: str) -> None:
 
 
 def _viscosity(options: argparse.Namespace) -> int:
-    from blendtui import answers, tables
+    from blendtui import as_json, as_text
     from solver.grades import iso_vg
     from solver.viscosity_index import LOWEST_KV100, viscosity_index
     from solver.walther import line
@@ -173,14 +173,14 @@ def _viscosity(options: argparse.Namespace) -> int:
             raise BadInput(f"--at {t:g} °C lies outside −80 to 300 °C, where the line may be read")
     vi = viscosity_index(kv40, kv100) if kv100 >= LOWEST_KV100 else None
     parts = (oil, vi, iso_vg(kv40), temperatures)
-    _print(options, answers.viscosity(*parts), tables.viscosity(*parts))
+    _print(options, as_json.viscosity(*parts), as_text.viscosity(*parts))
     return DONE
 
 
 def _predict(options: argparse.Namespace) -> int:
     from dataclasses import replace
 
-    from blendtui import answers, tables
+    from blendtui import as_json, as_text
     from blendtui.desk.plant import open_plant
     from solver.recipe import evaluate
 
@@ -196,12 +196,12 @@ def _predict(options: argparse.Namespace) -> int:
         recipe = evaluate(plant.stocks(), shares, law=options.law or "refutas")
     # The answer repeats the shares as they were given.
     recipe = replace(recipe, shares={code: share for code, share in shares.items() if share > 0.0})
-    _print(options, answers.prediction(recipe), tables.prediction(recipe))
+    _print(options, as_json.prediction(recipe), as_text.prediction(recipe))
     return DONE
 
 
 def _design(options: argparse.Namespace) -> int:
-    from blendtui import answers, tables
+    from blendtui import as_json, as_text
     from blendtui.desk import blends
     from blendtui.desk.plant import open_plant
     from blendtui.desk.targets import target_of
@@ -219,14 +219,14 @@ def _design(options: argparse.Namespace) -> int:
         feasible = recipe.status != "infeasible"
         ranges = blends.all_ranges(stocks, target) if options.ranges and feasible else None
         others = blends.other_sets(stocks, target, wanted) if wanted and feasible else []
-    answer = answers.design(recipe)
+    answer = as_json.design(recipe)
     if options.ranges:
         answer["ranges_pct"] = None if ranges is None else {
             code: [100.0 * low, 100.0 * high] for code, (low, high) in ranges.items()}
     if wanted:
-        answer["blends"] = [answers.other_blend(b) for b in others]
+        answer["blends"] = [as_json.other_blend(b) for b in others]
     extras = blends.Extras(None, ranges, tuple(others), None)
-    _print(options, answer, tables.design(options.product, recipe, stocks, extras))
+    _print(options, answer, as_text.design(options.product, recipe, stocks, extras))
     return DONE if feasible and recipe.shares is not None else NO_BLEND
 
 
@@ -263,22 +263,22 @@ def _export(options: argparse.Namespace) -> int:
 
 
 def _stocks(options: argparse.Namespace) -> int:
-    from blendtui import answers, tables
+    from blendtui import as_json, as_text
     from blendtui.desk.plant import open_plant
 
     with open_plant(options.plant) as plant:
         stocks = plant.stocks()
-    _print(options, {"stocks": [answers.stock(s) for s in stocks]}, tables.stocks(stocks))
+    _print(options, {"stocks": [as_json.stock(s) for s in stocks]}, as_text.stocks(stocks))
     return DONE
 
 
 def _products(options: argparse.Namespace) -> int:
-    from blendtui import answers, tables
+    from blendtui import as_json, as_text
     from blendtui.desk.plant import open_plant
 
     with open_plant(options.plant) as plant:
         products = plant.products()
-    _print(options, {"products": [answers.product(p) for p in products]}, tables.products(products))
+    _print(options, {"products": [as_json.product(p) for p in products]}, as_text.products(products))
     return DONE
 
 

@@ -121,10 +121,13 @@ def _equality(problem: Polytope) -> tuple[Array | None, Array | None]:
 
 def _solve_plain(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
     a_eq, b_eq = _equality(problem)
-    result = linprog(c, A_ub=problem.rows if len(problem.rows) else None,
-                     b_ub=-problem.hold if len(problem.rows) else None, A_eq=a_eq, b_eq=b_eq,
-                     bounds=np.column_stack([problem.lo, np.maximum(problem.lo, problem.hi)]),
-                     method="highs", options={"time_limit": watch.left})
+    for method in ("highs", "highs-ipm"):
+        result = linprog(c, A_ub=problem.rows if len(problem.rows) else None,
+                         b_ub=-problem.hold if len(problem.rows) else None, A_eq=a_eq, b_eq=b_eq,
+                         bounds=np.column_stack([problem.lo, np.maximum(problem.lo, problem.hi)]),
+                         method=method, options={"time_limit": watch.left})
+        if result.status != 4:  # numerical trouble: the other method answers instead
+            break
     return _translate(result, result.fun, problem, c)
 
 
@@ -133,6 +136,8 @@ def _translate(result: Any, bound: float | None, problem: Polytope, c: Array) ->
         x = None if result.x is None else tidy(result.x[:len(c)], problem)
         value = np.inf if x is None else float(c @ x)
         return Solved("stopped", x, value, -np.inf if bound is None else bound)
+    if result.status == 4:  # no verdict is not the verdict "infeasible"
+        return Solved("stopped", None, np.inf, -np.inf)
     if result.status != 0 or result.x is None:
         return Solved("infeasible", None, np.inf, np.inf)
     x = tidy(result.x[:len(c)], problem)

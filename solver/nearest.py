@@ -17,7 +17,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from .linear import Polytope, Stopwatch, scale, solve
-from .properties import Array
+from .properties import Array, lookup
 from .recipe import Recipe, empty, least_cost, recipe_of
 from .requirements import COST, Requirement
 from .rows import Model
@@ -35,13 +35,19 @@ class _Elastic:
     gradient: Callable[[Array], Array]
     low: float | None
     high: float | None
-    unit: float
+    unit_low: float  # one unit of miss below the low side …
+    unit_high: float  # … and above the high one
+
+    @property
+    def sides(self) -> list[tuple[float, float, float]]:
+        """(sign, limit, unit) of each side that is closed: sign·(value − limit) is the miss."""
+        found = [(1.0, self.high, self.unit_high), (-1.0, self.low, self.unit_low)]
+        return [(sign, limit, unit) for sign, limit, unit in found if limit is not None]
 
     def miss(self, x: Array) -> float:
+        """The miss of a blend, in units."""
         value = self.value(x)
-        over = value - self.high if self.high is not None else 0.0
-        under = self.low - value if self.low is not None else 0.0
-        return max(0.0, over, under) / self.unit
+        return max([0.0, *(sign * (value - limit) / unit for sign, limit, unit in self.sides)])
 
 
 def nearest(model: Model, watch: Stopwatch) -> Recipe:
@@ -112,20 +118,21 @@ def _elastics(model: Model) -> list[_Elastic]:
     found = [_of_requirement(model, need) for need in model.requirements]
     if model.vi is not None:
         g100 = model.gauges["kv100"]
-        found.append(_Elastic("kv100", g100.read, g100.gradient, LOWEST_KV100, None,
-                              0.0138 * LOWEST_KV100))
+        unit = lookup("kv100").reproducibility(LOWEST_KV100)
+        found.append(_Elastic("kv100", g100.read, g100.gradient, LOWEST_KV100, None, unit, unit))
     ceiling = model.target.max_cost_per_t
     if ceiling is not None:
         price = model.table.price
         found.append(_Elastic(COST, lambda x: float(price @ x), lambda x: price, None, ceiling,
-                              COST_UNIT * ceiling))
+                              COST_UNIT * ceiling, COST_UNIT * ceiling))
     return found
 
 
 def _of_requirement(model: Model, need: Requirement) -> _Elastic:
+    units = need.unit_of_miss("low"), need.unit_of_miss("high")
     if need.code == "vi":
         return _Elastic("vi", lambda x: _vi(model, x), lambda x: _vi_gradient(model, x), need.held_low,
-                        need.held_high, need.unit_of_miss())
+                        need.held_high, *units)
     gauge = model.gauges[need.code]
 
     def value(x: Array) -> float:
@@ -137,7 +144,7 @@ def _of_requirement(model: Model, need: Requirement) -> _Elastic:
     def gradient(x: Array) -> Array:
         return gauge.gradient(x) if float(x @ gauge.den) != 0.0 else np.zeros(len(x))
 
-    return _Elastic(need.code, value, gradient, need.held_low, need.held_high, need.unit_of_miss())
+    return _Elastic(need.code, value, gradient, need.held_low, need.held_high, *units)
 
 
 def _vi(model: Model, x: Array) -> float:
@@ -167,13 +174,11 @@ def _step(shares: Polytope, elastics: list[_Elastic], x: Array, reach: float,
     hold = list(shares.hold)
     for j, each in enumerate(elastics):
         value, slope = each.value(x), each.gradient(x)
-        slack = np.zeros(k)
-        slack[j] = -each.unit
-        for side, limit in ((1.0, each.high), (-1.0, each.low)):
-            if limit is None:
-                continue
-            # value + slope·(y − x) ≤ limit + unit·s, made homogeneous by Σ y = 1
-            coef = side * (slope + (value - float(slope @ x)) - limit)
+        for sign, limit, unit in each.sides:
+            # sign·(value + slope·(y − x) − limit) ≤ unit·s, made homogeneous by Σ y = 1
+            coef = sign * (slope + (value - float(slope @ x)) - limit)
+            slack = np.zeros(k)
+            slack[j] = -unit
             rows.append(np.concatenate([coef, slack]))
             hold.append(0.0)
     size = [float(np.max(np.abs(row[:n]))) or 1.0 for row in rows]
@@ -254,11 +259,10 @@ def _words(model: Model, elastics: list[_Elastic], x: Array, watch: Stopwatch) -
                     "without them a blend exists"]
     found = []
     for each in elastics:
-        if each.miss(x) * each.unit <= 1e-6 * max(1.0, abs(each.value(x))):
-            continue
         value = each.value(x)
-        side = "below" if each.low is not None and value < each.low else "above"
-        limit = each.low if side == "below" else each.high
-        found.append(f"{each.name} {value:.4g} is {abs(value - (limit or 0.0)):.3g} {side} the "
-                     f"{limit:.4g} that is held")
+        for sign, limit, _ in each.sides:
+            miss = sign * (value - limit)
+            if miss > 1e-6 * max(1.0, abs(value)):
+                found.append(f"{each.name} {value:.4g} is {miss:.3g} {'above' if sign > 0.0 else 'below'} the "
+                             f"{limit:.4g} that is held")
     return [f"no blend meets every limit; the nearest misses: {'; '.join(found)}"]

@@ -40,9 +40,10 @@ class Requirement:
         return (self.held_low is not None and self.held_high is not None
                 and self.held_low > self.held_high + 1e-9 * max(1.0, abs(self.held_high)))
 
-    def unit_of_miss(self) -> float:
-        """The size of one unit of miss: the method's reproducibility at the limit."""
-        at = self.held_high if self.held_high is not None else self.held_low
+    def unit_of_miss(self, side: str = "high") -> float:
+        """The size of one unit of miss: the method's reproducibility at the limit of that side."""
+        sides = (self.held_high, self.held_low) if side == "high" else (self.held_low, self.held_high)
+        at = sides[0] if sides[0] is not None else sides[1]
         return self.entry.reproducibility(at if at is not None else 0.0)
 
     def miss(self, value: float) -> float:
@@ -50,6 +51,11 @@ class Requirement:
         over = value - self.held_high if self.held_high is not None else 0.0
         under = self.held_low - value if self.held_low is not None else 0.0
         return max(0.0, over, under)
+
+    def units_missed(self, value: float) -> float:
+        """The miss in units of the method's reproducibility at the limit that is missed."""
+        low = self.held_low is not None and value < self.held_low
+        return self.miss(value) / self.unit_of_miss("low" if low else "high")
 
     def tolerance(self) -> float:
         """Rounding allowed when a value is checked against the held limits: 1e-6 of it, VI 1e-4."""

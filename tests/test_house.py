@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 ROOT = Path(__file__).parent.parent
-# Folder → what of the house it may import. cli, answers and tables stand with the screens.
+# Folder → what of the house it may import. cli, as_json and as_text stand with the screens.
 MAY = {"solver": {"solver"}, "blendtui/store": {"solver", "blendtui.store"},
        "blendtui/desk": {"solver", "blendtui.store", "blendtui.desk"}}
 

@@ -211,7 +211,7 @@ def test_the_nearest_blend_is_not_beaten_by_a_thousand_others() -> None:
             from solver.requirements import required
 
             needs = {need.code: need for need in required(aim, StockTable(plant))[0]}  # noqa: B023
-            return sum(needs[x.property].miss(x.value) / needs[x.property].unit_of_miss() for x in limits)
+            return sum(needs[x.property].units_missed(x.value) for x in limits)
 
         mine = total(recipe.limits)
         rng = np.random.default_rng(1)
