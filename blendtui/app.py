@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import asyncio
 import os
 import signal
+import sys
 import threading
 from collections import deque
 from collections.abc import Callable
@@ -20,30 +22,18 @@ from blendtui.desk import answers
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import Plant, open_plant
 from blendtui.screens import messages, overlays, recipe, stocks, targets, trials
+from blendtui.screens.layout import CSS
 from blendtui.screens.session import Session
 from blendtui.screens.state import RecipeState, Snapshot, read
 from blendtui.store.errors import PlantError
+from blendtui.store.harmless import harmless
 from blendtui.widgets import paint
 from solver.errors import SolverError
 
 POLL = 2.5  # s between two looks for another person's change
+REST = 0.15  # s between a recipe and the longer work on it: a fast typist's next wish may come first
 PATIENCE = 0.4  # s after which the screen says that it is waiting
 KEPT_MESSAGES = 200
-CSS = """
-Screen { layout: vertical; overflow: hidden; background: ansi_default; color: ansi_default; }
-#title, #edit, #answer, #caution { height: 1; }
-#status { height: 2; }
-#keys { height: 2; }
-.-wide #status { height: 1; }
-#stocks, #comparison, #notes, #text { height: 1fr; }
-#sides { layout: horizontal; height: 1fr; }
-#products { width: 22; height: 1fr; }
-#cells { width: 1fr; height: 1fr; margin-left: 1; }
-.-wide #products { width: 40; }
-#head { height: 2; }
-#shares { height: 9; }
-#trials { height: 8; }
-"""
 
 Task = tuple[Callable[[], Any], Callable[[Any], None], Callable[[str], None] | None]
 
@@ -76,6 +66,9 @@ class Console(App[int]):
         self._gate = threading.Lock()
         self._draining = False
         self._leaving = False
+        self.warned = False  # that typed shares are kept in no trial
+        self.answering = 0  # threads at work on a recipe
+        self.fault_said = ""  # the fault that ended the program, in a line
         self._newer = threading.Event()
 
     # Life
@@ -90,19 +83,31 @@ class Console(App[int]):
             pass  # not the main thread, or a system without it
 
     def _loop_signal(self, number: int) -> None:
-        import asyncio
-
         if threading.current_thread() is threading.main_thread():
             asyncio.get_running_loop().add_signal_handler(number, self._hung_up)
 
     def _hung_up(self) -> None:
-        """The terminal is gone: there is nothing left to draw on, and everything is saved already."""
+        """The terminal is gone: keep what was typed by hand, for every edit of the plant is saved already."""
+        for wishes in self.session.unkept():
+            try:
+                answers.keep_unfinished(self.plant, wishes)
+            except (PlantError, DeskError, SolverError):
+                pass  # a folder that is never changed, or no such product any more
         self.plant.close()
         os._exit(129)
 
     def _begin(self) -> None:
         self.session.ask()
         self.shows_changed()
+
+    def _fatal_error(self) -> None:
+        """Instead of Textual's traceback: the fault is told in a line once the screen is given back."""
+        error = sys.exc_info()[1]
+        self.fault_said = fault(error) if isinstance(error, Exception) else "a fault of this program"
+        if os.environ.get("BLENDTUI_DEBUG"):
+            super()._fatal_error()
+        else:
+            self._close_messages_no_wait()
 
     @property
     def page(self) -> Any:
@@ -111,7 +116,7 @@ class Console(App[int]):
 
     def say(self, message: str, kind: str = "note") -> None:
         """Say what happened, in the status line and in the list of messages."""
-        if message:
+        if message and self.said[-1] != (kind, message):
             self.said.append((kind, message))
         self.page.say(message, kind)
 
@@ -230,11 +235,11 @@ class Console(App[int]):
                 newer: threading.Event) -> None:
         """In a thread: the recipe, then what else the screens show of it, each with the request's number."""
         number = state.request
+        self.answering += 1
         try:
             found = self.answer_of(self.plant, stocks, state.wishes, before)
             self.post_message(messages.Answered(number, found))
-            # A moment's rest lets a fast typist's next wish come before the longer work begins.
-            if newer.wait(0.15) or get_current_worker().is_cancelled:
+            if newer.wait(REST) or get_current_worker().is_cancelled:
                 return
             for more in answers.further(found, newer.is_set):
                 self.post_message(messages.Answered(number, more))
@@ -242,6 +247,8 @@ class Console(App[int]):
             self.post_message(messages.Unanswered(number, str(error)))
         except Exception as error:  # an operator is told in a line, and may go on
             self.post_message(messages.Unanswered(number, fault(error)))
+        finally:
+            self.answering -= 1
 
     answer_of = staticmethod(answers.answer)
 
@@ -339,6 +346,11 @@ class Console(App[int]):
         """Leave, once everything is saved."""
         if self.page.edit.active:
             self.say("something is being typed: Enter keeps it, Esc drops it, then q leaves", "question")
+        elif self.session.unkept() and not self.warned:
+            self.warned = True
+            names = ", ".join(harmless(w.product) for w in self.session.unkept())
+            self.say(f"the shares typed by hand for {names} are kept in no trial: k on the screen Recipe keeps them, "
+                     "q again leaves without", "question")
         elif self.busy:
             self._leaving = True
             self.say("leaving as soon as the last change is saved …", "wait")
@@ -349,7 +361,7 @@ class Console(App[int]):
 
 def fault(error: Exception) -> str:
     """A fault of the program in a line."""
-    return f"a fault of this program ({type(error).__name__}: {str(error)[:120]}); nothing was changed by it"
+    return f"a fault of this program ({type(error).__name__}: {str(error)[:120]})"
 
 
 def run(path: Path | None) -> int:
@@ -360,9 +372,19 @@ def run(path: Path | None) -> int:
     paint.adopt()
     with open_plant(path) as plant:
         app = Console(plant)
+        loop = asyncio.new_event_loop()
         # Mouse reports cost bytes with every movement, which a slow line cannot spare.
-        app.run(mouse=not any(os.environ.get(name) for name in ("SSH_CONNECTION", "SSH_TTY", "SSH_CLIENT")))
-        return app.return_code or 0
+        app.run(mouse=not any(os.environ.get(name) for name in ("SSH_CONNECTION", "SSH_TTY", "SSH_CLIENT")), loop=loop)
+    if app.fault_said:
+        print(f"blendtui ended by {app.fault_said}; every change made before it is saved", file=sys.stderr)
+    code = app.return_code or 0
+    if app.answering:
+        # A search cannot be called off, and its thread would hold the operator at a dead screen until it ends.
+        sys.stdout.flush()
+        sys.stderr.flush()
+        os._exit(code)
+    loop.close()
+    return code
 
 
 __all__ = ["Console", "run"]

@@ -263,6 +263,7 @@ def _words(model: Model, elastics: list[_Elastic], x: Array, watch: Stopwatch) -
         for sign, limit, _ in each.sides:
             miss = sign * (value - limit)
             if miss > 1e-6 * max(1.0, abs(value)):
-                found.append(f"{each.name} {value:.4g} is {miss:.3g} {'above' if sign > 0.0 else 'below'} the "
+                name = "cost per t" if each.name == COST else lookup(each.name).name
+                found.append(f"{name} {value:.4g} is {miss:.3g} {'above' if sign > 0.0 else 'below'} the "
                              f"{limit:.4g} that is held")
     return [f"no blend meets every limit; the nearest misses: {'; '.join(found)}"]

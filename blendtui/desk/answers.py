@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
+from datetime import UTC, datetime
 from typing import TYPE_CHECKING
 
 from blendtui.store.plant import Plant
+from blendtui.store.records import Trial
 from solver.stocks import Stock, StockTable
 from solver.target import Target
 
@@ -82,6 +84,14 @@ def _allowed(stocks: tuple[Stock, ...], goal: Target, best: Recipe) -> tuple[str
     return tuple(sorted(codes, key=lambda code: (code not in shares, -shares.get(code, 0.0))))
 
 
+def keep_unfinished(plant: Plant, wishes: Wishes) -> str:
+    """Keep shares typed by hand as a trial when the console ends without being asked to."""
+    law = wishes.law or plant.product(wishes.product).law or "refutas"
+    name = f"unfinished {datetime.now(UTC):%Y-%m-%d %H:%M:%S}"
+    return targets.keep_trial(plant, Trial(name, wishes.product, dict(wishes.typed or {}), law,
+                                           note="kept when the terminal was closed"))
+
+
 def further(found: Answer, stale: Callable[[], bool]) -> Iterator[Answer]:
     """The answer with its ranges, then what the guards cost and the largest batch, then the other blends.
 
@@ -100,9 +110,7 @@ def further(found: Answer, stale: Callable[[], bool]) -> Iterator[Answer]:
 
 
 def _ranges(found: Answer) -> Answer:
-    from solver.choices import ranges
-
-    return replace(found, ranges=ranges(StockTable(found.stocks), found.target, time_limit=TIME_LIMIT))
+    return replace(found, ranges=blends.all_ranges(found.stocks, found.target, TIME_LIMIT))
 
 
 def _guard(found: Answer) -> Answer:
@@ -116,6 +124,4 @@ def _largest(found: Answer) -> Answer:
 
 
 def _blends(found: Answer) -> Answer:
-    from solver.sets import blends as sets
-
-    return replace(found, blends=tuple(sets(StockTable(found.stocks), found.target, time_limit=TIME_LIMIT)))
+    return replace(found, blends=tuple(blends.other_sets(found.stocks, found.target, time_limit=TIME_LIMIT)))

@@ -110,6 +110,8 @@ class Page(Screen[Any]):
             self.show_keys()
             return
         command = commands.find(self.NAME, event.key, event.character)
+        if command is None or command.action != "quit":
+            self.program.warned = False
         if command is None:
             key = event.character if event.is_printable and event.character else event.key
             self.say(f"the key {harmless(key, 20)} does nothing here; ? lists those that do")

@@ -12,7 +12,7 @@ from textual.screen import Screen
 from blendtui import commands
 from blendtui.widgets.edit_line import EditLine, Typing, typed
 from blendtui.widgets.grid import Column, Grid
-from blendtui.widgets.lines import KeyBar, OneLine
+from blendtui.widgets.lines import KeyBar, OneLine, StatusLine
 from blendtui.widgets.page_text import PageText
 from blendtui.widgets.paint import BOLD, PLAIN, WARN, Line, wrap
 
@@ -119,6 +119,7 @@ class PaletteScreen(Screen[Any]):
         self.edit = EditLine()
         self.edit.typing = Typing("command")
         self.grid = Grid(id="text")
+        self.help_line = StatusLine()
         self.keys = KeyBar()
         self.found: list[commands.Command] = []
 
@@ -126,6 +127,7 @@ class PaletteScreen(Screen[Any]):
         """What is typed, what is found, keys."""
         yield self.edit
         yield self.grid
+        yield self.help_line
         yield self.keys
 
     def on_mount(self) -> None:
@@ -148,6 +150,10 @@ class PaletteScreen(Screen[Any]):
         self.grid.show(shown, len(self.found), lambda r, c: (
             names[self.found[r].screen] if shown[c].code == "screen" else getattr(self.found[r], shown[c].code)),
             column=1)
+        self._explain()
+
+    def _explain(self) -> None:
+        self.help_line.show(self.found[self.grid.row].help if self.found else "")
 
     def on_key(self, event: events.Key) -> None:
         """Type, choose, carry out or leave."""
@@ -160,6 +166,7 @@ class PaletteScreen(Screen[Any]):
             self.dismiss(self.found[self.grid.row] if self.found else None)
         elif event.key in ("up", "down", "pageup", "pagedown"):
             self.grid.move(event.key)
+            self._explain()
         else:
             self.edit.typing = typed(self.edit.typing, event.key, event.character)
             self.edit.paint()

@@ -5,12 +5,13 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import replace
 from datetime import UTC, datetime
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 from textual.widget import Widget
 
 from blendtui import commands
-from blendtui.desk import blends, numbers, sheets
+from blendtui.desk import blends, numbers, sheet
 from blendtui.desk.answers import Wishes
 from blendtui.desk.errors import DeskError
 from blendtui.desk.stocks import Edit, amount
@@ -56,7 +57,8 @@ class RecipeScreen(Page):
     def refresh_page(self) -> None:
         """Show the newest answer."""
         state, recipe, width = self.session.state, self.session.shown, self.size.width
-        self.head.show(view.head(state, recipe))
+        lines, rest = view.head(state, recipe, width, 2)
+        self.head.show(lines)
         here = self.row.stock.code if self.row else ""
         if state.answer is None or recipe is None:
             self.rows = []
@@ -64,12 +66,12 @@ class RecipeScreen(Page):
             self.shares.show(view.share_columns(1.0, width), 0, lambda r, c: "")
             self.notes.show([])
         else:
-            self._show(state.answer, recipe, here)
+            self._show(state.answer, recipe, here, rest)
         self.caution.show((words.CAUTION, None))
         self._show_cell()
         super().refresh_page()
 
-    def _show(self, answer: view.Answer, recipe: Recipe, here: str) -> None:
+    def _show(self, answer: view.Answer, recipe: Recipe, here: str, rest: list[str]) -> None:
         width, today = self.size.width, self.program.today
         self.rows = view.share_rows(answer, recipe)
         scale = view.scale_of(self.rows)
@@ -81,7 +83,7 @@ class RecipeScreen(Page):
 
         at = next((n for n, r in enumerate(self.rows) if r.stock.code == here), None)
         self.shares.empty = "no stock may serve this product: its rules allow none, see Targets"
-        notes = view.notes(answer, recipe, today, width)
+        notes = view.notes(answer, recipe, today, width, rest)
         self._share_out(len(notes), len(self.rows) + 2)
         self.shares.show(columns, len(self.rows), cell, row=at)
         self.notes.show(notes)
@@ -324,6 +326,11 @@ class RecipeScreen(Page):
         if recipe is None or not recipe.shares:
             self.say("there are no shares to keep yet")
             return
+        total = sum(recipe.shares.values())
+        if abs(total - 1.0) > 1e-4:
+            self.program.say(f"the shares sum to {numbers.pct(total)} %, not to 100 %: put the cursor on a stock and "
+                             "press f to fill up", "refused")
+            return
         taken = {t.name for t in self.snapshot.trials if t.product == product}
         name = next(n for k in range(1, 10_000) if (n := f"{product}-{k}") not in taken)
         self.type_cell("name of the trial", name,
@@ -333,12 +340,16 @@ class RecipeScreen(Page):
         """Write the sheet for the floor."""
         recipe, product, program = self.session.shown, self.session.product, self.program
         answer = self.session.state.answer
-        if recipe is None or answer is None or not recipe.shares:
+        asked = self.snapshot.product(product)
+        if recipe is None or answer is None or asked is None or not recipe.shares:
             self.say("there is no recipe to write yet")
             return
-        asked = self.snapshot.product(product)
-        text = blends.floor_sheet(program.plant.path.name, asked or product, recipe, answer.stocks,
-                                  datetime.now(UTC).astimezone(), program.plant.who)
-        folder = program.sheets
-        self.type_cell(f"write the sheet in {folder} as", f"{product}-{program.today.isoformat()}.txt",
-                       lambda typed, sure: sheets.write(typed, folder, text, sure))
+        text = sheet.floor_sheet(program.plant.path.name, asked, recipe, answer.stocks,
+                                 datetime.now(UTC).astimezone(), program.plant.who)
+
+        def save(typed: str, sure: bool) -> Edit:
+            if not typed.strip():
+                raise DeskError("no file name: type where the sheet is to be written")
+            return Edit("saved", sheet.write_sheet(program.sheets / Path(typed.strip()).expanduser(), text))
+
+        self.type_cell("write the sheet to", str(program.sheets / f"{product}-{program.today.isoformat()}.txt"), save)

@@ -7,11 +7,13 @@ from dataclasses import dataclass
 from datetime import date
 from typing import TYPE_CHECKING
 
+from rich.cells import cell_len
+
 from blendtui.desk import blends, numbers
 from blendtui.desk.answers import Answer
 from blendtui.store.harmless import harmless
 from blendtui.widgets.grid import Cell, Column
-from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, fit, wrap
+from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, Run, fit, wrap
 from solver.scales import litres_at_15
 from solver.stocks import Stock
 
@@ -112,66 +114,77 @@ def share_cell(row: ShareRow, code: str, recipe: Recipe, scale: float, today: da
 
 # Head
 
-def head(state: RecipeState, recipe: Recipe | None) -> list[Line]:
-    """What kind of answer this is, what it costs, and under which law and for which batch."""
+def head(state: RecipeState, recipe: Recipe | None, width: int, height: int) -> tuple[list[Line], list[str]]:
+    """What kind of answer this is, what it costs, under which law; and what of it found no room."""
     if state.error:
-        return [[(line, BAD)] for line in wrap(f"! {state.error}", 79)][:2]
+        return [[(line, BAD)] for line in wrap(f"! {state.error}", width)], []
     if recipe is None or state.answer is None:
-        return [[("working out the recipe …", PLAIN)]]
-    first: Line = [*_kind(state, recipe)]
-    if recipe.cost_per_t is not None:
-        first.append((f" · cost {numbers.cost(recipe.cost_per_t)} /t", BOLD))
-        if recipe.batch_kg is not None:
-            whole = numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)
-            first.append((f" · {whole} for {numbers.kg(recipe.batch_kg)} kg", PLAIN))
-    if recipe.gap is not None and state.blend is None and recipe.status in ("optimal", "stopped"):
-        first.append((f" · proof gap {100.0 * recipe.gap:.4f} %", PLAIN))
-    waiting = "working out the new recipe … · " if state.waiting else ""
-    return [first, [(waiting + " · ".join(_second(state.answer, recipe)), PLAIN)]]
+        return [[("working out the recipe …", PLAIN)]], []
+    parts = [_kind(state, recipe), *((text, PLAIN) for text in _facts(state, state.answer, recipe))]
+    lines: list[Line] = [[]]
+    used = 0
+    for n, (text, style) in enumerate(parts):
+        size = cell_len(text) + (3 if used else 0)
+        if used and used + size > width:
+            if len(lines) == height:
+                return lines, [rest for rest, _ in parts[n:]]
+            lines.append([])
+            used, size = 0, cell_len(text)
+        lines[-1] += [(" · ", PLAIN), (text, style)] if used else [(text, style)]
+        used += size
+    return lines, []
 
 
-def _kind(state: RecipeState, recipe: Recipe) -> Line:
+def _kind(state: RecipeState, recipe: Recipe) -> Run:
     assert state.answer is not None
     if state.blend is not None:
-        return [(f"feasible blend {state.blend + 1} of {len(state.answer.blends)}", BOLD)]
+        return f"feasible blend {state.blend + 1} of {len(state.answer.blends)}", BOLD
     if recipe.status == "by hand" and recipe.shares:
         total = sum(recipe.shares.values())
         if abs(total - 1.0) > 1e-4:
-            return [*words.verdict(recipe)[:0], (f"! by hand, shares sum to {numbers.pct(total)} %", BAD)]
+            return f"! by hand, shares sum to {numbers.pct(total)} %", BAD
     return words.verdict(recipe)
 
 
-def _second(answer: Answer, recipe: Recipe) -> list[str]:
-    told = [f"law {recipe.law}"]
-    dearer = _dearer(answer, recipe)
-    if dearer:
-        told.append(dearer)
+def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
+    """Cost, misses, law and the slower figures, the most wanted first."""
+    told = ["working out the new recipe …"] if state.waiting else []
     if recipe.status == "infeasible":
-        return [*told, "nearest blend misses " + "; ".join(words.misses(recipe))] if recipe.shares else \
-            [*told, *recipe.reasons]
-    if "guard" in answer.done:
+        told.append("the nearest blend misses " + "; ".join(words.misses(recipe)) if recipe.shares
+                    else "; ".join(recipe.reasons))
+    if recipe.cost_per_t is not None:
+        told += [f"cost {numbers.cost(recipe.cost_per_t)} /t", *_dearer(answer, recipe)]
+        if recipe.batch_kg is not None:
+            whole = numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)
+            told.append(f"{whole} for {numbers.kg(recipe.batch_kg)} kg")
+    told.append(f"law {recipe.law}")
+    if recipe.gap is not None and state.blend is None and recipe.status in ("optimal", "stopped"):
+        told.append(f"proof gap {100.0 * recipe.gap:.4f} %")
+    if answer.guard_cost_per_t is not None:
         told.append(f"guards cost {numbers.cost(answer.guard_cost_per_t)} /t")
-    if "largest" in answer.done:
+    if answer.largest_batch_kg is not None:
         told.append(f"largest batch today {numbers.kg(answer.largest_batch_kg)} kg")
-    elif answer.best.shares:
+    elif answer.best.shares and "largest" not in answer.done:
         told.append("ranges are being worked out …")
     return told
 
 
-def _dearer(answer: Answer, recipe: Recipe) -> str:
-    if recipe is answer.best or None in (recipe.cost_per_t, answer.best.cost_per_t) or \
-            answer.best.status == "infeasible":
-        return ""
-    more = recipe.cost_per_t - answer.best.cost_per_t  # type: ignore[operator]
-    return f"{numbers.cost(abs(more))} /t {'dearer' if more >= 0 else 'cheaper'} than the best"
+def _dearer(answer: Answer, recipe: Recipe) -> list[str]:
+    best = answer.best
+    if recipe is best or recipe.cost_per_t is None or best.cost_per_t is None or best.status == "infeasible":
+        return []
+    more = recipe.cost_per_t - best.cost_per_t
+    if abs(more) < 0.005:
+        return ["as cheap as the best"]
+    return [f"{numbers.cost(abs(more))} /t {'dearer' if more >= 0 else 'cheaper'} than the best"]
 
 
 # Limits and remarks
 
-def notes(answer: Answer, recipe: Recipe, today: date, width: int) -> list[Line]:
-    """The limits as a table, the other properties, and every remark, laid for a width."""
+def notes(answer: Answer, recipe: Recipe, today: date, width: int, rest: list[str]) -> list[Line]:
+    """The limits as a table, what the head had no room for, and every remark, laid for a width."""
     lines = limit_table(recipe, width)
-    for said in remarks(answer, recipe, today):
+    for said in [*([" · ".join(rest)] if rest else []), *remarks(answer, recipe, today)]:
         marked = said.startswith("!")
         lines += [[(line, WARN if marked else PLAIN)] for line in wrap(said, width - 1, "  ")]
     return lines

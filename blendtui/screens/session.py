@@ -33,6 +33,7 @@ class Session:
         product = snapshot.products[0].product if snapshot.products else ""
         self.state = RecipeState(Wishes(product))
         self._ask = ask
+        self.wishes: dict[str, Wishes] = {}  # of every product spoken of, to come back to
         self.history: list[Wish | str] = []
         self.undone: list[Wish | str] = []
 
@@ -88,10 +89,18 @@ class Session:
     # Wishing
 
     def choose(self, product: str) -> None:
-        """Speak of another product; its wishes begin afresh."""
+        """Speak of another product, under the wishes it was left with."""
         if product != self.product:
-            self.state = replace(self.state, wishes=Wishes(product), answer=None, blend=None, error="")
+            self.wishes[self.product] = self.state.wishes
+            wishes = self.wishes.get(product, Wishes(product))
+            self.state = replace(self.state, wishes=wishes, answer=None, blend=None, error="")
             self.ask()
+
+    def unkept(self) -> list[Wishes]:
+        """Wishes with shares typed by hand that no trial holds."""
+        all_wishes = {**self.wishes, self.product: self.state.wishes}.values()
+        return [w for w in all_wishes if w.typed and not any(
+            t.product == w.product and dict(t.shares) == dict(w.typed) for t in self.snapshot.trials)]
 
     def wish(self, wishes: Wishes, what: str) -> None:
         """Change the wishes, in a way that can be taken back."""
@@ -105,6 +114,7 @@ class Session:
 
     def _adopt(self, wishes: Wishes) -> None:
         same = wishes.product == self.product
+        self.wishes[self.product] = self.state.wishes
         self.state = replace(self.state, wishes=wishes, blend=None, answer=self.state.answer if same else None)
         self.ask()
 

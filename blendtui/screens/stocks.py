@@ -55,7 +55,8 @@ def columns(stocks: Iterable[Stock], wide: bool) -> tuple[Column, ...]:
             width = TEXTS[code] + (10 if wide and code == "name" else 0)
             found.append(Column(code, heading, unit, width, "left", True))
         else:
-            found.append(Column(code, heading, unit, max(7, len(heading), len(unit), 8 if code in ("on_hand_kg", "price_per_t") else 0)))
+            least = 8 if code in ("on_hand_kg", "price_per_t") else 7
+            found.append(Column(code, heading, unit, max(least, len(heading), len(unit))))
     return tuple(found)
 
 

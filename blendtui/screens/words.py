@@ -6,7 +6,7 @@ from datetime import date
 from typing import TYPE_CHECKING
 
 from blendtui.desk import numbers
-from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line
+from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, Run
 from solver.stocks import Stock
 
 if TYPE_CHECKING:
@@ -64,17 +64,17 @@ def shares(recipe: Recipe) -> str:
     return ", ".join(f"{code} {numbers.pct(share)} %" for code, share in ordered)
 
 
-def verdict(recipe: Recipe) -> Line:
+def verdict(recipe: Recipe) -> Run:
     """What kind of answer this is, in words and with a sign."""
     if recipe.status == "optimal":
-        return [("least cost, proven", BOLD)]
+        return "least cost, proven", BOLD
     if recipe.status == "infeasible":
-        return [("! no blend meets it", BAD)]
+        return "! no blend meets it", BAD
     if recipe.status == "stopped":
-        return [("! stopped before the proof" if recipe.shares else "! stopped: no blend found yet", WARN)]
+        return "! stopped before the proof" if recipe.shares else "! stopped: no blend found yet", WARN
     if recipe.meets_all:
-        return [("by hand, inside all limits", BOLD)]
-    return [("! by hand, limits missed", BAD)]
+        return "by hand, inside all limits", BOLD
+    return "! by hand, limits missed", BAD
 
 
 def summary(session: Session) -> Line:
@@ -89,7 +89,7 @@ def summary(session: Session) -> Line:
         return [*start, ("working out the recipe …", PLAIN)]
     cost = f" {numbers.cost(recipe.cost_per_t)} /t" if recipe.cost_per_t is not None else ""
     told = "; ".join(misses(recipe)) or shares(recipe) or "; ".join(recipe.reasons)
-    return [*start, *verdict(recipe), (f"{cost} │ {told}", PLAIN)]
+    return [*start, verdict(recipe), (f"{cost} │ {told}", PLAIN)]
 
 
 def tested(stock: Stock, today: date) -> str:
