@@ -10,32 +10,37 @@ import threading
 from collections import deque
 from collections.abc import Callable
 from datetime import date
+from functools import partial
+from importlib import import_module
 from pathlib import Path
 from typing import Any, ClassVar
 
 from textual.app import App
 from textual.binding import Binding, BindingType
-from textual.worker import get_current_worker
 
 from blendtui import commands
 from blendtui.desk import answers
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import Plant, open_plant
-from blendtui.screens import messages, overlays, recipe, stocks, targets, trials
+from blendtui.screens import asker, messages
+from blendtui.screens.asker import Asker, fault
 from blendtui.screens.layout import CSS
 from blendtui.screens.session import Session
-from blendtui.screens.state import RecipeState, Snapshot, read
+from blendtui.screens.state import Snapshot, read
 from blendtui.store.errors import PlantError
 from blendtui.store.harmless import harmless
 from blendtui.widgets import paint
 from solver.errors import SolverError
 
 POLL = 2.5  # s between two looks for another person's change
-REST = 0.15  # s between a recipe and the longer work on it: a fast typist's next wish may come first
-PATIENCE = 0.4  # s after which the screen says that it is waiting
 KEPT_MESSAGES = 200
 
 Task = tuple[Callable[[], Any], Callable[[Any], None], Callable[[str], None] | None]
+
+
+def page_of(code: str) -> Any:
+    """A screen by its code; its module is loaded when it is first opened, which keeps the start short."""
+    return getattr(import_module(f"blendtui.screens.{code}"), f"{code.capitalize()}Screen")()
 
 
 class Console(App[int]):
@@ -47,8 +52,7 @@ class Console(App[int]):
     HORIZONTAL_BREAKPOINTS: ClassVar[list[tuple[int, str]] | None] = [(0, "-narrow"), (110, "-wide")]
     BINDINGS: ClassVar[list[BindingType]] = [Binding("ctrl+q", "leave", show=False, priority=True),
                                              Binding("ctrl+c", "leave", show=False, priority=True)]
-    MODES = {commands.STOCKS: stocks.StocksScreen, commands.TARGETS: targets.TargetsScreen,  # noqa: RUF012
-             commands.RECIPE: recipe.RecipeScreen, commands.TRIALS: trials.TrialsScreen}
+    MODES = {code: partial(page_of, code) for code, _ in commands.SCREENS}  # noqa: RUF012
     DEFAULT_MODE = commands.STOCKS
 
     def __init__(self, plant: Plant, *, today: date | None = None, sheets: Path | None = None) -> None:
@@ -57,19 +61,21 @@ class Console(App[int]):
         self.plant = plant
         self.today = today or date.today()
         self.sheets = sheets or Path.cwd()  # where floor sheets are written
-        self.session = Session(read(plant), self._ask)
+        self.asker = Asker(self)
+        self.session = Session(read(plant), self.asker.ask)
         self.said: deque[tuple[str, str]] = deque(maxlen=KEPT_MESSAGES)
         self.said.append(("note", f"{plant.opened_note}" if plant.opened_note else str(plant.path)))
         self.been: list[str] = []  # screens to go back to
+        self.going = ""  # the screen that is being opened
+        self.ahead: list[Any] = []  # keys typed before it was there
+        self._then: Callable[[Any], None] | None = None
         self._tasks: deque[Task] = deque()
         self._pending_changes = 0
         self._gate = threading.Lock()
         self._draining = False
         self._leaving = False
         self.warned = False  # that typed shares are kept in no trial
-        self.answering = 0  # threads at work on a recipe
         self.fault_said = ""  # the fault that ended the program, in a line
-        self._newer = threading.Event()
 
     # Life
 
@@ -77,24 +83,28 @@ class Console(App[int]):
         """Begin the slow work only once the first screen has been sent."""
         self.call_after_refresh(self._begin)
         self.set_interval(POLL, self._poll)
-        try:
-            self._loop_signal(signal.SIGHUP)
-        except (ValueError, NotImplementedError, RuntimeError):
-            pass  # not the main thread, or a system without it
-
-    def _loop_signal(self, number: int) -> None:
         if threading.current_thread() is threading.main_thread():
-            asyncio.get_running_loop().add_signal_handler(number, self._hung_up)
+            loop = asyncio.get_running_loop()
+            loop.add_signal_handler(signal.SIGHUP, self._hung_up)
+            loop.add_signal_handler(signal.SIGTERM, self._told_to_end)
+
+    def _told_to_end(self) -> None:
+        self._keep_unfinished()
+        self.exit(return_code=128 + signal.SIGTERM)
 
     def _hung_up(self) -> None:
-        """The terminal is gone: keep what was typed by hand, for every edit of the plant is saved already."""
+        """The terminal is gone: there is no screen to give back, only something to keep."""
+        self._keep_unfinished()
+        self.plant.close()
+        os._exit(128 + signal.SIGHUP)
+
+    def _keep_unfinished(self) -> None:
+        """Keep the shares typed by hand, for every edit of the plant is saved already."""
         for wishes in self.session.unkept():
             try:
                 answers.keep_unfinished(self.plant, wishes)
             except (PlantError, DeskError, SolverError):
                 pass  # a folder that is never changed, or no such product any more
-        self.plant.close()
-        os._exit(129)
 
     def _begin(self) -> None:
         self.session.ask()
@@ -137,7 +147,7 @@ class Console(App[int]):
             self._draining = True
         if start:
             self.run_worker(self._drain, thread=True, group="plant", exit_on_error=False)
-        self.set_timer(PATIENCE, self._say_waiting)
+        self.set_timer(asker.PATIENCE, self._say_waiting)
 
     def _say_waiting(self) -> None:
         if self.busy:
@@ -174,16 +184,18 @@ class Console(App[int]):
     def change(self, work: Callable[[], Any], done: Callable[[Any], None],
                failed: Callable[[str], None] | None = None) -> None:
         """Do a change to the plant; then read the plant again, ask for the recipe, and `done`."""
-        plant, before = self.plant, self.session.snapshot.revision
+        plant = self.plant
 
-        def both() -> tuple[Any, Snapshot | None]:
+        def both() -> tuple[Any, bool, Snapshot]:
+            before = plant.revision()
             result = work()
-            return result, read(plant) if plant.revision() != before else None
+            return result, plant.revision() != before, read(plant)
 
-        def then(pair: tuple[Any, Snapshot | None]) -> None:
-            result, snapshot = pair
-            if snapshot is not None:
+        def then(found: tuple[Any, bool, Snapshot]) -> None:
+            result, changed, snapshot = found
+            if changed:
                 self.session.edited()
+            if snapshot.revision != self.session.snapshot.revision:
                 self.adopt(snapshot)
             done(result)
 
@@ -219,37 +231,6 @@ class Console(App[int]):
 
     # The recipe
 
-    def _ask(self, state: RecipeState) -> None:
-        self._newer.set()
-        self._newer = newer = threading.Event()
-        before, stocks = state.answer, self.session.snapshot.stocks
-        self.run_worker(lambda: self._answer(state, stocks, before, newer), thread=True, group="recipe",
-                        exclusive=True, exit_on_error=False)
-        self.set_timer(PATIENCE, self._say_slow)
-
-    def _say_slow(self) -> None:
-        if self.session.state.waiting:
-            self.shows_changed()
-
-    def _answer(self, state: RecipeState, stocks: tuple, before: answers.Answer | None,
-                newer: threading.Event) -> None:
-        """In a thread: the recipe, then what else the screens show of it, each with the request's number."""
-        number = state.request
-        self.answering += 1
-        try:
-            found = self.answer_of(self.plant, stocks, state.wishes, before)
-            self.post_message(messages.Answered(number, found))
-            if newer.wait(REST) or get_current_worker().is_cancelled:
-                return
-            for more in answers.further(found, newer.is_set):
-                self.post_message(messages.Answered(number, more))
-        except (PlantError, DeskError, SolverError) as error:
-            self.post_message(messages.Unanswered(number, str(error)))
-        except Exception as error:  # an operator is told in a line, and may go on
-            self.post_message(messages.Unanswered(number, fault(error)))
-        finally:
-            self.answering -= 1
-
     answer_of = staticmethod(answers.answer)
 
     def on_answered(self, message: messages.Answered) -> None:
@@ -275,7 +256,7 @@ class Console(App[int]):
     def _take_back(self, what: str, wish: Callable, plant: Callable, note: Callable, verb: str) -> None:
         taken = wish()
         if taken is not None:
-            self.say(f"{verb}: {taken.what}", "done")
+            self.say(f"{verb}: {taken.what}")
             self.shows_changed()
             return
 
@@ -303,38 +284,59 @@ class Console(App[int]):
         self.session.choose(codes[(at + step) % len(codes)])
         self.shows_changed()
 
-    def go(self, screen: str) -> None:
-        """Open a screen."""
+    def go(self, screen: str, then: Callable[[Any], None] | None = None) -> None:
+        """Open a screen, and do `then` with it once it is there."""
         if screen != self.current_mode:
             self.been = [*[s for s in self.been if s != screen], self.current_mode][-4:]
-            self.switch_mode(screen)
+            self._switch(screen, then)
+        elif then:
+            then(self.page)
+
+    def _switch(self, screen: str, then: Callable[[Any], None] | None = None) -> None:
+        self.going, self._then = screen, then
+        self.switch_mode(screen)
+
+    def arrived(self, page: Any) -> None:
+        """A screen has come up: carry out what it was opened for, then the keys typed on the way."""
+        if self.going != page.NAME:
+            return
+        self.going, then, self._then = "", self._then, None
+        ahead, self.ahead = self.ahead, []
+        if then:
+            then(page)
+        for event in ahead:
+            page.on_key(event)
 
     def do_back(self) -> None:
         """Go to the screen before."""
-        if not self.been:
+        if self.been:
+            self._switch(self.been.pop())
+        else:
             self.say("this is where you came in; q leaves, 1 to 4 open the screens")
-            return
-        screen = self.been.pop()
-        self.switch_mode(screen)
 
     def do_help(self) -> None:
         """Show every command."""
+        from blendtui.screens import overlays
+
         self.push_screen(overlays.HelpScreen(self.page.NAME))
 
     def do_messages(self) -> None:
         """Show what was said, in full."""
+        from blendtui.screens import overlays
+
         self.push_screen(overlays.MessagesScreen(list(self.said)))
 
     def do_palette(self) -> None:
         """List the commands, and carry out the chosen one."""
+        from blendtui.screens import overlays
+
         self.push_screen(overlays.PaletteScreen(self.page.NAME), self._chosen)
 
     def _chosen(self, command: commands.Command | None) -> None:
         if command is None:
             return
         if command.screen not in (commands.ALL, self.page.NAME):
-            self.go(command.screen)
-            self.call_after_refresh(lambda: self.page.carry_out(command, command.keys[0]))
+            self.go(command.screen, lambda page: page.carry_out(command, command.keys[0]))
         else:
             self.page.carry_out(command, command.keys[0])
 
@@ -359,11 +361,6 @@ class Console(App[int]):
 
 
 
-def fault(error: Exception) -> str:
-    """A fault of the program in a line."""
-    return f"a fault of this program ({type(error).__name__}: {str(error)[:120]})"
-
-
 def run(path: Path | None) -> int:
     """Open a plant and show it until the operator leaves; the exit code.
 
@@ -378,7 +375,7 @@ def run(path: Path | None) -> int:
     if app.fault_said:
         print(f"blendtui ended by {app.fault_said}; every change made before it is saved", file=sys.stderr)
     code = app.return_code or 0
-    if app.answering:
+    if app.asker.at_work:
         # A search cannot be called off, and its thread would hold the operator at a dead screen until it ends.
         sys.stdout.flush()
         sys.stderr.flush()

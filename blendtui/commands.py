@@ -118,9 +118,11 @@ def of(screen: str) -> Iterator[Command]:
 
 def find(screen: str, key: str, character: str | None) -> Command | None:
     """The command that a key stands for on a screen, or None."""
-    for command in of(screen):
-        if key in command.keys or (character and character in command.keys):
-            return command
+    # The other case too: with the caps lock on the keys should mean what they say on the key line.
+    for typed in (key, character, (character or "").swapcase()):
+        for command in of(screen):
+            if typed and typed in command.keys:
+                return command
     return None
 
 

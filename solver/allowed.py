@@ -42,13 +42,7 @@ def check_rules(target: Target, table: StockTable) -> None:
                               where=code)
     for code in target.left_out:
         table.index(code)
-    lows: dict[str, float] = {}
-    for rule in target.rules:
-        if rule.of in table.codes:
-            lows[rule.of] = max(lows.get(rule.of, 0.0), rule.low)
-    if sum(lows.values()) > 1.0 + 1e-9:
-        raise TargetError(f"share rules contradict: the least shares of {', '.join(lows)} sum to "
-                          f"{100 * sum(lows.values()):g} %, more than 100 %", where=target.product)
+    _check_sums(target, table)
     if target.max_stocks is not None and target.max_stocks < 1:
         raise TargetError("the most stocks in a recipe must be 1 or more", where=target.product)
     if target.min_share is not None and not 0.0 <= target.min_share <= 1.0:
@@ -57,6 +51,21 @@ def check_rules(target: Target, table: StockTable) -> None:
     for name, value in (("batch", target.batch_kg), ("cost ceiling", target.max_cost_per_t)):
         if value is not None and not (np.isfinite(value) and value > 0.0):
             raise TargetError(f"the {name} must be a number above 0, not {value:g}", where=target.product)
+
+
+def _check_sums(target: Target, table: StockTable) -> None:
+    """TargetError when the least shares of stocks, of kinds, of groups or of oils sum to more than 100 %."""
+    oils = {s.oil for s in table.stocks if s.oil}
+    families = (set(table.codes), set(KINDS), {f"group {g}" for g in GROUPS}, oils - set(table.codes))
+    for family in families:
+        lows: dict[str, float] = {}
+        for rule in target.rules:
+            name = f"group {rule.of[6:].strip().upper()}" if rule.of.lower().startswith("group ") else rule.of
+            if name in family and rule.low > 0.0:
+                lows[name] = max(lows.get(name, 0.0), rule.low)
+        if sum(lows.values()) > 1.0 + 1e-9:
+            raise TargetError(f"share rules contradict: the least shares of {', '.join(lows)} sum to "
+                              f"{100 * sum(lows.values()):g} %, more than 100 %", where=target.product)
 
 
 def candidates(table: StockTable, target: Target) -> list[int]:

@@ -4,7 +4,8 @@
 
 and, where whole-number rules are given, x_k = 0 or x_k ≥ least for the stocks they count, with at most
 `most` of those above 0. Rows are scaled to about 1 and held a hair inside, so that the exact
-recomputation of a limit passes in spite of the solver's own tolerance of 1e-7.
+recomputation of a limit passes in spite of rounding; the bound that is returned is that of the rows
+themselves, corrected by their prices, so that the hair never makes it too high.
 """
 
 from __future__ import annotations
@@ -18,7 +19,9 @@ from scipy.optimize import Bounds, LinearConstraint, linprog, milp
 
 from .properties import Array
 
-HOLD = 1e-7
+HOLD = 1e-10  # how far inside rows are held at first: a hair, for a hair costs
+FIRM_HOLD = 1e-7  # and where the exact recomputation did not pass: the solver's own tolerance
+SLACK = -1e-7  # and where limits leave a single point: as far outside, to be judged exactly
 Status = Literal["optimal", "infeasible", "stopped"]
 
 
@@ -47,18 +50,19 @@ class Polytope:
     hi: Array  # (n,)
     total: float | None = 1.0
     whole: Whole | None = None
+    inside: float = HOLD  # what further rows are held by
 
-    def with_rows(self, extra: list[Array], hold: float = HOLD) -> Polytope:
+    def with_rows(self, extra: list[Array], hold: float | None = None) -> Polytope:
         """The same with further rows (scaled here)."""
         if not extra:
             return self
         scaled = np.array([scale(row) for row in extra])
         return replace(self, rows=np.vstack([self.rows, scaled]),
-                       hold=np.concatenate([self.hold, np.full(len(extra), hold)]))
+                       hold=np.concatenate([self.hold, np.full(len(extra), self.inside if hold is None else hold)]))
 
-    def loose(self) -> Polytope:
-        """The same without the hair that rows are held inside."""
-        return replace(self, hold=np.zeros_like(self.hold))
+    def held(self, hold: float) -> Polytope:
+        """The same with those rows that are held inside at all held by another amount."""
+        return replace(self, hold=np.where(self.hold != 0.0, hold, 0.0), inside=hold)
 
     def on_support(self, x: Array) -> Polytope:
         """Only the stocks that x uses, as a plain linear problem that keeps the whole-number rules."""
@@ -141,7 +145,11 @@ def _translate(result: Any, bound: float | None, problem: Polytope, c: Array) ->
     if result.status != 0 or result.x is None:
         return Solved("infeasible", None, np.inf, np.inf)
     x = tidy(result.x[:len(c)], problem)
-    reduced = np.asarray(result.lower.marginals) if "lower" in result else None
+    reduced = None
+    if "lower" in result:
+        reduced = np.asarray(result.lower.marginals)
+        # Weak duality: without the hair the same prices bound the value by this much less.
+        bound = float(result.fun) + float(np.minimum(result.ineqlin.marginals, 0.0) @ problem.hold)
     return Solved("optimal", x, float(c @ x), float(c @ x) if bound is None else bound, reduced)
 
 

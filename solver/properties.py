@@ -28,6 +28,7 @@ Array = NDArray[np.float64]
 Transform = Callable[[Any], Any]
 
 KELVIN = 273.15
+LEAST_KV = 0.21  # mm²/s: where the D341 line ends, and just above where every law's index does
 
 
 def _same(value: Any) -> Any:
@@ -154,6 +155,8 @@ def lookup(code: str) -> Property:
     match = _AT_TEMPERATURE.fullmatch(code)
     if match:
         celsius = float(match[2])
+        if match[2] != f"{celsius:g}":
+            raise TargetError(f"{code}: write {match[1]}{celsius:g}", where=code)
         if match[1] == "kv" and -60.0 <= celsius <= 200.0:
             return _kv(code, celsius)
         if match[1] == "ccs" and -45.0 <= celsius <= 0.0:
@@ -161,6 +164,14 @@ def lookup(code: str) -> Property:
         span = "−60 to 200" if match[1] == "kv" else "−45 to 0"
         raise TargetError(f"{code}: the temperature must lie between {span} °C", where=code)
     raise TargetError(f"unknown property {code!r}; known are {', '.join(known())}", where=code)
+
+
+def in_scale(entry: Property, value: float) -> bool:
+    """Is a value inside the scale of its index, so that a limit there can be a row?"""
+    if entry.basis == "law":
+        return value > LEAST_KV
+    with np.errstate(all="ignore"):
+        return bool(np.isfinite(entry.index(value)))
 
 
 def known() -> tuple[str, ...]:

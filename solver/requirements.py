@@ -9,10 +9,11 @@ import numpy as np
 
 from .errors import TargetError
 from .grades import Grade, grade
-from .properties import Property, lookup
+from .properties import Property, in_scale, lookup
 from .stocks import StockTable
 from .target import Limit, Target
 
+GRADE = "grade "  # how the source of a grade's limit begins
 COST = "cost_per_t"  # the code under which the cost ceiling appears among the limits
 
 
@@ -23,7 +24,7 @@ class Requirement:
     code: str
     low: float | None
     high: float | None
-    guard: float  # in the property's unit; of two sides guarded in %, the smaller
+    guard: float  # how far a side is moved, in the property's unit; of two that differ, the smaller
     held_low: float | None
     held_high: float | None
     sources: tuple[str, ...]
@@ -37,8 +38,27 @@ class Requirement:
     @property
     def empty(self) -> bool:
         """Can no value at all satisfy it?"""
-        return (self.held_low is not None and self.held_high is not None
-                and self.held_low > self.held_high + 1e-9 * max(1.0, abs(self.held_high)))
+        low, high = self.held_low, self.held_high
+        crossed = low is not None and high is not None and low > high + 1e-9 * max(1.0, abs(high))
+        return crossed or self.below_scale or self.above_scale
+
+    @property
+    def below_scale(self) -> bool:
+        """Is the highest value that is allowed lower than any oil's?"""
+        return self.held_high is not None and (
+            self.held_high < self.entry.lowest or not in_scale(self.entry, self.held_high))
+
+    @property
+    def above_scale(self) -> bool:
+        """Is the lowest value that is allowed higher than any oil's?"""
+        return self.held_low is not None and self.held_low > self.entry.highest
+
+    @property
+    def row_sides(self) -> list[tuple[str, float]]:
+        """(side, held limit) of each side that is a row; one that every oil meets is none."""
+        sides = [("low", self.held_low), ("high", self.held_high)]
+        return [(side, value) for side, value in sides
+                if value is not None and in_scale(self.entry, value)]
 
     def unit_of_miss(self, side: str = "high") -> float:
         """The size of one unit of miss: the method's reproducibility at the limit of that side."""
@@ -65,12 +85,16 @@ class Requirement:
         return 1e-6 * largest
 
     def why_empty(self) -> str:
-        """In words, why nothing fits between its sides."""
+        """In words, why no value satisfies it."""
         unit = f" {self.entry.unit}" if self.entry.unit else ""
-        low, high = self.held_low or 0.0, self.held_high or 0.0
         guard = f" with a guard of {self.guard:g}" if self.guard else ""
-        return (f"{self.entry.name}: at least {low:g}{unit} and at most {high:g}{unit} leave nothing "
-                f"between them{guard} (asked by {' and '.join(self.sources)})")
+        asked = f"(asked by {' and '.join(self.sources)})"
+        if self.below_scale:
+            return f"{self.entry.name}: no oil is at most {self.held_high:g}{unit}{guard} {asked}"
+        if self.above_scale:
+            return f"{self.entry.name}: no oil is at least {self.held_low:g}{unit}{guard} {asked}"
+        return (f"{self.entry.name}: at least {self.low:g}{unit} and at most {self.high:g}{unit} leave nothing "
+                f"between them{guard} {asked}")
 
 
 def check_limit(limit: Limit) -> None:
@@ -97,31 +121,43 @@ def check_limit(limit: Limit) -> None:
 
 
 def merge(limits: Iterable[Limit]) -> tuple[Requirement, ...]:
-    """Intersect all limits of each property, in order of first mention; the largest guard holds."""
+    """Intersect all limits of each property, each moved inward by its own guard, in order of first mention.
+
+    A line with only a guard puts it on the limits of the others (the grade's).
+    """
     by_property: dict[str, list[Limit]] = {}
     for limit in limits:
         check_limit(limit)
         by_property.setdefault(limit.property, []).append(limit)
-    merged = []
-    for code, lines in by_property.items():
-        low = max((x.low for x in lines if x.low is not None), default=None)
-        high = min((x.high for x in lines if x.high is not None), default=None)
-        if low is None and high is None:
-            raise TargetError(f"{code}: neither low nor high is given, and the grade sets none; "
-                              "give one or delete the line", where=lines[0].source)
-        merged.append(_guarded(code, low, high, lines))
-    return tuple(merged)
+    return tuple(_intersection(code, lines) for code, lines in by_property.items())
 
 
-def _guarded(code: str, low: float | None, high: float | None, lines: list[Limit]) -> Requirement:
-    plain = max(x.guard for x in lines)
-    percent = max(x.guard_pct for x in lines)
-    guards = [max(plain, percent / 100.0 * abs(side)) for side in (low, high) if side is not None]
-    held_low = None if low is None else low + max(plain, percent / 100.0 * abs(low))
-    held_high = None if high is None else high - max(plain, percent / 100.0 * abs(high))
+def _intersection(code: str, lines: list[Limit]) -> Requirement:
+    closed = [x for x in lines if x.low is not None or x.high is not None]
+    bare = [x for x in lines if x.low is None and x.high is None]
+    if not closed:
+        raise TargetError(f"{code}: neither low nor high is given, and the grade sets none; "
+                          "give one or delete the line", where=lines[0].source)
+    graded = [x for x in closed if x.source.startswith(GRADE)] or closed
+    lows, highs = [], []
+    for line in closed:
+        own = [line, *(bare if line in graded else [])]
+        if line.low is not None:
+            lows.append((line.low + max(_guard(x, line.low) for x in own), line.low))
+        if line.high is not None:
+            highs.append((line.high - max(_guard(x, line.high) for x in own), line.high))
+    held_low, held_high = max(lows, default=(None, None))[0], min(highs, default=(None, None))[0]
+    low, high = max((v for _, v in lows), default=None), min((v for _, v in highs), default=None)
+    moved = [held_low - low] if held_low is not None and low is not None else []
+    moved += [high - held_high] if held_high is not None and high is not None else []
     sources = tuple(dict.fromkeys(x.source or "the product" for x in lines))
-    return Requirement(code, low, high, min(guards), held_low, held_high, sources,
-                       any(x.unknown_ok for x in lines))
+    return Requirement(code, low, high, min((g for g in moved if g > 0.0), default=0.0), held_low, held_high,
+                       sources, any(x.unknown_ok for x in lines))
+
+
+def _guard(line: Limit, value: float) -> float:
+    """How far a line's guard moves a limit of this value, in the property's unit."""
+    return max(line.guard, line.guard_pct / 100.0 * abs(value))
 
 
 def required(target: Target, candidates: StockTable) -> tuple[tuple[Requirement, ...], tuple[str, ...]]:

@@ -18,7 +18,7 @@ from .linear import HOLD, Polytope, Whole, scale
 from .properties import Array
 from .requirements import COST, Requirement, required
 from .stocks import Stock, StockTable
-from .target import Target
+from .target import ShareRule, Target
 from .viscosity_index import LOWEST_KV100
 
 
@@ -30,6 +30,7 @@ class Row:
     side: str  # "low" or "high"
     coef: Array  # (n,), scaled to a largest coefficient of 1
     hold: float = 0.0  # how far inside it is held
+    of_shares: bool = False  # a share rule, which no nearest blend may break
 
 
 @dataclass(frozen=True)
@@ -135,7 +136,7 @@ def _gauges(table: StockTable, target: Target, needs: Iterable[Requirement]) -> 
     return gauges
 
 
-def _row(name: str, side: str, coef: Array, hold: float = 0.0) -> Row:
+def _row(name: str, side: str, coef: Array, hold: float) -> Row:
     return Row(name, side, scale(coef), hold)
 
 
@@ -145,12 +146,7 @@ def _property_rows(needs: Iterable[Requirement], gauges: dict[str, Gauge]) -> li
         if need.code == "vi":
             continue
         gauge = gauges[need.code]
-        # A window with no width cannot be held from both sides; its rows then stand exactly.
-        narrow = need.held_low is not None and need.held_high is not None and (
-            need.held_high - need.held_low <= 1e-4 * max(abs(need.held_high), need.unit_of_miss()))
-        for side, value in (("low", need.held_low), ("high", need.held_high)):
-            if value is not None:
-                rows.append(_row(need.code, side, gauge.row(value, side), 0.0 if narrow else HOLD))
+        rows += [_row(need.code, side, gauge.row(value, side), HOLD) for side, value in need.row_sides]
     return rows
 
 
@@ -158,14 +154,19 @@ def _share_rows(kept: StockTable, target: Target, table: StockTable) -> list[Row
     """Rules on oils, kinds and groups as rows; rules on one stock are bounds."""
     rows = []
     for rule in target.rules:
-        if rule.of in table.codes:
+        if _of_one_stock(rule, table):
             continue
         inside = np.array([1.0 if s.matches(rule.of) else 0.0 for s in kept.stocks])
         if rule.high < 1.0:
-            rows.append(_row(rule.of, "high", inside - rule.high))
+            rows.append(Row(rule.of, "high", scale(inside - rule.high), of_shares=True))
         if rule.low > 0.0:
-            rows.append(_row(rule.of, "low", rule.low - inside))
+            rows.append(Row(rule.of, "low", scale(rule.low - inside), of_shares=True))
     return rows
+
+
+def _of_one_stock(rule: ShareRule, table: StockTable) -> bool:
+    """Does the rule speak of one stock only, and of no oil that bears its code?"""
+    return rule.of in table.codes and not any(s.oil == rule.of and s.code != rule.of for s in table.stocks)
 
 
 def _bounds(kept: StockTable, target: Target, table: StockTable) -> tuple[Array, Array, tuple[str, ...]]:
@@ -177,7 +178,7 @@ def _bounds(kept: StockTable, target: Target, table: StockTable) -> tuple[Array,
               for code, share in target.held.items() if share > 0.0 and code not in kept.codes]
     for i, stock in enumerate(kept.stocks):
         for rule in target.rules:
-            if rule.of == stock.code:
+            if rule.of == stock.code and _of_one_stock(rule, table):
                 lo[i], hi[i] = max(lo[i], rule.low), min(hi[i], rule.high)
         if stock.code in target.held:
             lo[i] = hi[i] = target.held[stock.code]

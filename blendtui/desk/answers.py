@@ -12,11 +12,10 @@ from blendtui.store.records import Trial
 from solver.stocks import Stock, StockTable
 from solver.target import Target
 
-from . import blends, targets
-
 if TYPE_CHECKING:
     from solver.recipe import Recipe
 
+# The desk's other subjects are loaded inside the functions: the first screen is drawn without them.
 TIME_LIMIT = 5.0  # s, of one search
 
 
@@ -56,6 +55,8 @@ class Answer:
 
 def target(plant: Plant, wishes: Wishes) -> Target:
     """The target of a product under these wishes."""
+    from . import targets
+
     return targets.target_of(plant, wishes.product, wishes.law, wishes.batch_kg, wishes.held, wishes.left_out)
 
 
@@ -65,6 +66,8 @@ def answer(plant: Plant, stocks: tuple[Stock, ...], wishes: Wishes, before: Answ
     `before` is an answer for the same plant: where it already holds the least cost of this target only the typed
     shares are read again. Raises SolverError, PlantError or DeskError in one line.
     """
+    from . import blends
+
     goal = target(plant, wishes)
     if before is not None and before.stocks == stocks and before.target == goal:
         found = replace(before, wishes=wishes)
@@ -86,6 +89,8 @@ def _allowed(stocks: tuple[Stock, ...], goal: Target, best: Recipe) -> tuple[str
 
 def keep_unfinished(plant: Plant, wishes: Wishes) -> str:
     """Keep shares typed by hand as a trial when the console ends without being asked to."""
+    from . import targets
+
     law = wishes.law or plant.product(wishes.product).law or "refutas"
     name = f"unfinished {datetime.now(UTC):%Y-%m-%d %H:%M:%S}"
     return targets.keep_trial(plant, Trial(name, wishes.product, dict(wishes.typed or {}), law,
@@ -110,10 +115,14 @@ def further(found: Answer, stale: Callable[[], bool]) -> Iterator[Answer]:
 
 
 def _ranges(found: Answer) -> Answer:
+    from . import blends
+
     return replace(found, ranges=blends.all_ranges(found.stocks, found.target, TIME_LIMIT))
 
 
 def _guard(found: Answer) -> Answer:
+    from . import blends
+
     return replace(found, guard_cost_per_t=blends.guard_cost(StockTable(found.stocks), found.target, found.best))
 
 
@@ -124,4 +133,6 @@ def _largest(found: Answer) -> Answer:
 
 
 def _blends(found: Answer) -> Answer:
+    from . import blends
+
     return replace(found, blends=tuple(blends.other_sets(found.stocks, found.target, time_limit=TIME_LIMIT)))

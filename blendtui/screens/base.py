@@ -73,6 +73,7 @@ class Page(Screen[Any]):
         kind, message = self.program.said[-1]
         self.status.show(message, kind)
         self.refresh_page()
+        self.program.arrived(self)
 
     def refresh_page(self) -> None:
         """Show the present state: a screen adds what it shows, then calls this."""
@@ -99,10 +100,12 @@ class Page(Screen[Any]):
         """Feed the edit line, or carry out the command of the key."""
         event.stop()
         event.prevent_default()
-        if self._later:
+        if self.program.going:
+            self.program.ahead.append(event)
+        elif self._later:
             self._later.append(event)
-            return
-        self._key(event)
+        else:
+            self._key(event)
 
     def _key(self, event: events.Key) -> None:
         if self.edit.active:

@@ -157,6 +157,8 @@ def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
         if recipe.batch_kg is not None:
             whole = numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)
             told.append(f"{whole} for {numbers.kg(recipe.batch_kg)} kg")
+    elif recipe.shares:
+        told.append("cost unknown: the price of a stock is missing")
     told.append(f"law {recipe.law}")
     if recipe.gap is not None and state.blend is None and recipe.status in ("optimal", "stopped"):
         told.append(f"proof gap {100.0 * recipe.gap:.4f} %")
@@ -206,7 +208,8 @@ def _limit_line(limit: LimitResult, name: int) -> Line:
     unit = words.unit(code)
     label = words.heading(code) + (f", {unit}" if unit else "")
     figures = (limit.value, limit.low, limit.high, limit.guard or None, limit.margin)
-    decimals = len(numbers.value(code, limit.value).partition(".")[2]) if numbers.is_kv(code) and limit.value else None
+    lead = next((x for x in (limit.value, limit.low, limit.high) if x is not None), None)
+    decimals = len(numbers.kv(lead).partition(".")[2]) if numbers.is_kv(code) and lead is not None else None
     line: Line = [(fit(label, name), PLAIN)]
     line += [(" " + fit(_figure(code, value, decimals), size, "right"), PLAIN)
              for value, size in zip(figures, LIMIT_WIDTHS, strict=True)]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
@@ -100,7 +100,7 @@ class Session:
         """Wishes with shares typed by hand that no trial holds."""
         all_wishes = {**self.wishes, self.product: self.state.wishes}.values()
         return [w for w in all_wishes if w.typed and not any(
-            t.product == w.product and dict(t.shares) == dict(w.typed) for t in self.snapshot.trials)]
+            t.product == w.product and _same(t.shares, w.typed) for t in self.snapshot.trials)]
 
     def wish(self, wishes: Wishes, what: str) -> None:
         """Change the wishes, in a way that can be taken back."""
@@ -156,3 +156,8 @@ class Session:
         if self.undone:
             self.undone.pop()
         self.history.append(PLANT)
+
+
+def _same(one: Mapping[str, float], other: Mapping[str, float]) -> bool:
+    # A trial is kept in per cent: the way there and back costs the last digit.
+    return one.keys() == other.keys() and all(abs(one[c] - other[c]) < 1e-9 for c in one)

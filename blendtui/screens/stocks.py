@@ -56,7 +56,7 @@ def columns(stocks: Iterable[Stock], wide: bool) -> tuple[Column, ...]:
             found.append(Column(code, heading, unit, width, "left", True))
         else:
             least = 8 if code in ("on_hand_kg", "price_per_t") else 7
-            found.append(Column(code, heading, unit, max(least, len(heading), len(unit))))
+            found.append(Column(code, heading, unit, max(least, len(heading) + 1, len(unit))))
     return tuple(found)
 
 
@@ -126,7 +126,8 @@ class StocksScreen(Page):
     def _show_cell(self) -> None:
         stock, filtered = self.stock, f"filter {self.state.words!r}, " if self.state.words else ""
         place = f"row {self.grid.row + 1} of {len(self.rows)}" if self.rows else "no rows"
-        sort = f"by {self.state.sort}{' down' if self.state.down else ''}, " if self.state.sort else ""
+        by = next((c.heading for c in self.grid.columns if c.code == self.state.sort), "")
+        sort = f"by {by}{' down' if self.state.down else ''}, " if by else ""
         self.title_line.show(f"{filtered}{sort}{place}")
         if stock is None:
             self.edit.show("", "")

@@ -112,7 +112,8 @@ class TargetsScreen(Page):
         listed = (Column("product", "product", "", 9, "left", True), Column("grade", "grade", "", 11, "left", True),
                   *((Column("name", "name", "", 17, "left", True),) if wide else ()))
         at = next((n for n, p in enumerate(products) if p.product == self.session.product), 0)
-        self.products.empty = "no product yet; a adds one"
+        self.products.empty = "none yet"
+        self.cells.empty = "no product yet; a adds one"
         self.products.show(listed, len(products), lambda r, c: harmless(getattr(products[r], listed[c].code)), row=at)
         product = self.product
         self.rows = rows_of(product) if product else []

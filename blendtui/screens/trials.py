@@ -14,7 +14,7 @@ from blendtui.desk.errors import DeskError
 from blendtui.store.errors import PlantError
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Trial
-from blendtui.widgets.grid import Cell, Column, Grid
+from blendtui.widgets.grid import Cell, Column, Grid, Wide
 from blendtui.widgets.paint import BOLD
 from solver.errors import SolverError
 
@@ -45,6 +45,7 @@ class TrialsScreen(Page):
         self.comparison = Grid(id="comparison")
         self.comparison.active = False
         self.trials.picked = self._show_row
+        self.compared: tuple[tuple[Key, ...], int, int] | None = None  # what `read` is of
         self.read: dict[Key, Recipe | str] = {}  # each marked trial on today's stocks, or why it cannot be read
         self.lines: list[tuple[str, ...]] = []
 
@@ -89,6 +90,10 @@ class TrialsScreen(Page):
     # The comparison
 
     def _compare(self) -> None:
+        asked = (self.state.marked, self.snapshot.revision, self.size.width)
+        if asked == self.compared:
+            return
+        self.compared = asked
         wanted = [t for key in self.state.marked for t in self.snapshot.trials if (t.product, t.name) == key]
         if not wanted:
             self.lines = []
@@ -115,6 +120,8 @@ class TrialsScreen(Page):
 
     def _line(self, row: int, column: int) -> Cell:
         text = self.lines[row][column]
+        if column == 0 and not any(self.lines[row][1:]):
+            text = Wide(text)
         return (text, BOLD) if text.startswith("!") or text.isupper() else text
 
     # Commands
@@ -188,7 +195,9 @@ def comparison(trials: list[Trial], read: dict[Key, Recipe | str]) -> list[tuple
     def row(what: str, each) -> tuple[str, ...]:  # type: ignore[no-untyped-def]
         return (what, *("!" if isinstance(r, str) else each(r) for r in found))
 
-    rows = [("product", *(harmless(t.product) for t in trials)), ("law", *(t.law for t in trials)),
+    rows = [("! " + harmless(f"{t.name}: {r}"), *("" for _ in trials)) for t, r in zip(trials, found, strict=True)
+            if isinstance(r, str)]
+    rows += [("product", *(harmless(t.product) for t in trials)), ("law", *(t.law for t in trials)),
             row("cost, /t", lambda r: numbers.cost(r.cost_per_t)),
             row("limits", lambda r: "all met" if r.meets_all else f"! {len(words.misses(r)) or '?'} missed"),
             ("SHARES, mass %", *("" for _ in trials))]
@@ -200,7 +209,4 @@ def comparison(trials: list[Trial], read: dict[Key, Recipe | str]) -> list[tuple
         unit = words.unit(code)
         rows.append(row(f"{words.heading(code)}{', ' + unit if unit else ''}",
                         lambda r, code=code: numbers.value(code, r.predicted.get(code))))
-    rows += [("! " + harmless(t.name), *("" for _ in trials)) for t, r in zip(trials, found, strict=True)
-             if isinstance(r, str)]
-    rows += [(str(r), *("" for _ in trials)) for r in found if isinstance(r, str)]
     return rows

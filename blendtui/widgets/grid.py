@@ -106,6 +106,16 @@ class Grid(Canvas):
             if self.picked:
                 self.picked()
 
+    def on_mouse_scroll_down(self) -> None:
+        """The wheel moves the cursor, so that it is never out of sight."""
+        if self.move("down") and self.picked:
+            self.picked()
+
+    def on_mouse_scroll_up(self) -> None:
+        """The wheel moves the cursor."""
+        if self.move("up") and self.picked:
+            self.picked()
+
     def _reveal(self) -> None:
         """Move the view by half pages, never by a line: a move of the view sends the whole table."""
         if not self.size or not self.columns:

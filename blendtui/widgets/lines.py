@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from rich.cells import cell_len
+
 from .canvas import Canvas
 from .paint import BAD, BOLD, CURSOR, PLAIN, WARN, Line, Run, fit, wrap
 
@@ -59,7 +61,7 @@ class StatusLine(Canvas):
 
 
 class OneLine(Canvas):
-    """A line of runs that its screen sets whole."""
+    """A line of runs that its screen sets whole; where the last finds no room, it is seen to be cut."""
 
     def __init__(self, *, id: str) -> None:
         super().__init__(id=id)
@@ -72,7 +74,11 @@ class OneLine(Canvas):
 
     def draw(self, width: int, height: int) -> list[Line]:
         """One line."""
-        return [self.runs]
+        if not self.runs:
+            return []
+        *others, (text, style) = self.runs
+        room = width - sum(cell_len(run) for run, _ in others)
+        return [[*others, (fit(text, room) if cell_len(text) > room else text, style)]]
 
 
 class KeyBar(Canvas):

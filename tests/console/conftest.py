@@ -16,16 +16,17 @@ from textual.keys import _character_to_key
 from textual.pilot import Pilot
 from textual.worker import WorkerError
 
-from blendtui import app as console_app
 from blendtui.app import Console
 from blendtui.desk.plant import Plant, import_folder, open_plant
+from blendtui.screens import asker
 from blendtui.widgets import paint
 from blendtui.widgets.canvas import Canvas
 
 SIZES = ((80, 24), (120, 40))
 TODAY = date(2026, 6, 1)
 FILES = {
-    "stocks.csv": """stock,name,kind,api_group,on_hand_kg,unpumpable_kg,price_per_t,density15,kv40,kv100,flash,pour,tested_on,source
+    "stocks.csv": "stock,name,kind,api_group,on_hand_kg,unpumpable_kg,price_per_t,density15,kv40,kv100,flash,pour,"
+                  """tested_on,source
 LIGHT,Light neutral,base,I,60000,1000,800,870,30.2,5.23,214,-12,2026-05-01,own
 HEAVY,Heavy neutral,base,I,80000,0,870,882,98.6,10.92,252,-9,2024-01-10,certificate
 BRIGHT,Bright stock,base,I,50000,0,1100,899,480,31.7,302,-9,2026-05-01,own
@@ -72,7 +73,7 @@ def terminal(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> Iterator[None]:
     """A fixed terminal, and no file of the person who runs the tests."""
     monkeypatch.setenv("XDG_DATA_HOME", str(tmp_path / "data"))
     monkeypatch.delenv("NO_COLOR", raising=False)
-    monkeypatch.setattr(console_app, "REST", 0.0)
+    monkeypatch.setattr(asker, "REST", 0.0)
     paint.adopt({"TERM": "xterm-256color", "LANG": "C.UTF-8"})
     yield
     paint.adopt({"TERM": "xterm-256color", "LANG": "C.UTF-8"})
@@ -94,7 +95,7 @@ class Driver:
             except WorkerError:
                 pass  # an older request that a newer one called off
             await self.pilot.pause()
-            if not self.app.busy and not self.app.session.state.waiting and not self.app.answering:
+            if not self.app.busy and not self.app.session.state.waiting and not self.app.asker.at_work:
                 return
             await asyncio.sleep(0)
         raise AssertionError("the console does not come to rest")
