@@ -10,9 +10,9 @@ from dataclasses import replace
 
 import numpy as np
 
-from .linear import HOLD, Polytope, Stopwatch
+from .linear import Polytope, Stopwatch
 from .properties import Array
-from .recipe import least_cost
+from .recipe import exact_search
 from .rows import Model, build
 from .stocks import Stock, StockTable
 from .target import Target
@@ -31,12 +31,11 @@ def ranges(stocks: StockTable | Iterable[Stock], target: Target, *,
     model = build(stocks, target)
     watch = Stopwatch(time_limit)
     plain = replace(model, target=replace(target, max_stocks=None, min_share=None))
-    best = least_cost(plain, watch)
+    if model.short or any(need.empty for need in model.requirements) or len(model.table) == 0:
+        return None
+    best, problem = exact_search(plain, plain.polytope(whole=False), plain.table.price, watch)
     if best.x is None:
         return None
-    problem = plain.polytope(whole=False)
-    if _only_loose(plain, problem, watch):
-        problem = problem.loose()
     seen = [best.x]
     found = {}
     for i, code in enumerate(plain.table.codes):
@@ -44,11 +43,6 @@ def ranges(stocks: StockTable | Iterable[Stock], target: Target, *,
         high = _extreme(plain, problem, i, -1.0, seen, watch)
         found[code] = (max(0.0, low), min(1.0, high))
     return found
-
-
-def _only_loose(model: Model, problem: Polytope, watch: Stopwatch) -> bool:
-    """Do the limits leave so little room that nothing is left when they are held a hair inside?"""
-    return search(model, problem, model.table.price, watch, gap=1.0).x is None
 
 
 def _extreme(model: Model, problem: Polytope, i: int, sign: float, seen: list[Array],
@@ -85,8 +79,7 @@ def largest_batch(stocks: StockTable | Iterable[Stock], target: Target, *,
     bounds += [model.lo[i] - np.eye(n)[i] for i in range(n) if model.lo[i] > 0.0]
     base = model.polytope(whole=False)
     problem = replace(base, lo=np.zeros(n), hi=available / unit, total=None).with_rows(bounds, hold=0.0)
-    problem = replace(problem, hold=np.where(problem.hold > 0.0, 1e-2 * HOLD, 0.0))
-    outcome = search(model, problem, -np.ones(n), Stopwatch(time_limit), gap=1e-5)
+    outcome, _ = exact_search(model, problem, -np.ones(n), Stopwatch(time_limit), gap=1e-5)
     if outcome.x is None or outcome.x.sum() <= 1e-9:
         return None
     return float(outcome.x.sum()) * unit

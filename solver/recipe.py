@@ -17,7 +17,7 @@ from .allowed import LeftOut, candidates
 from .errors import StockError, TargetError
 from .gauge import property_gauge
 from .laws import check_law, knows_viscosity, viscosity_gauge
-from .linear import Stopwatch
+from .linear import FIRM_HOLD, HOLD, SLACK, Polytope, Stopwatch
 from .properties import Array, lookup, stock_codes
 from .requirements import COST, Requirement, required
 from .rows import Model, as_table, build
@@ -106,15 +106,22 @@ def least_cost(model: Model, watch: Stopwatch, node_limit: int = 400) -> Outcome
     impossible = bool(model.short) or any(need.empty for need in model.requirements)
     if impossible or len(model.table) == 0:
         return Outcome("infeasible", None, np.inf, np.inf)
-    price = model.table.price
-    held = model.polytope()
-    outcome = search(model, held, price, watch, gap=GAP, node_limit=node_limit)
-    if outcome.status == "infeasible":
-        # Limits that leave a single point need the last hair of room.
-        outcome = search(model, held.loose(), price, watch, gap=GAP, node_limit=node_limit)
-        if outcome.x is not None and model.missed(outcome.x):
-            return Outcome("infeasible", None, np.inf, np.inf)
-    return outcome
+    return exact_search(model, model.polytope(), model.table.price, watch, gap=GAP, node_limit=node_limit)[0]
+
+
+def exact_search(model: Model, problem: Polytope, c: Array, watch: Stopwatch, *, gap: float = GAP,
+                 gap_absolute: float = 0.0, node_limit: int = 400) -> tuple[Outcome, Polytope]:
+    """A search whose answer passes the exact recomputation, and the polytope that gave it.
+
+    Rows are held a hair inside; more where rounding left a limit missed, and a hair outside where limits
+    leave a single point that the solver would else miss. An answer counts only if it misses nothing.
+    """
+    for hold in (HOLD, FIRM_HOLD, SLACK):
+        held = problem.held(hold)
+        outcome = search(model, held, c, watch, gap=gap, gap_absolute=gap_absolute, node_limit=node_limit)
+        if outcome.status == "stopped" or (outcome.x is not None and not model.missed(outcome.x)):
+            return outcome, held
+    return Outcome("infeasible", None, np.inf, np.inf), problem
 
 
 def _why_stopped(outcome: Outcome, time_limit: float) -> str:
@@ -158,7 +165,7 @@ def evaluate(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float],
                               where=code)
         x[table.index(code)] += share
     if abs(x.sum() - 1.0) > 1.0001e-4:
-        raise TargetError(f"the shares sum to {100 * x.sum():.4g} %, not to 100 %; mend them", where="shares")
+        raise TargetError(f"the shares sum to {100 * x.sum():.7g} %, not to 100 %; mend them", where="shares")
     x /= x.sum()
     used = np.flatnonzero(x > 0.0)
     needs, tests = required(goal, table.where(candidates(table, goal))) if target is not None else ((), ())

@@ -21,7 +21,7 @@ from itertools import count as counter
 
 import numpy as np
 
-from .linear import Polytope, Stopwatch, solve
+from .linear import FIRM_HOLD, HOLD, SLACK, Polytope, Stopwatch, solve
 from .properties import Array
 from .recipe import GAP, Recipe, recipe_of
 from .rows import Model, build
@@ -61,9 +61,11 @@ def blends(stocks: StockTable | Iterable[Stock], target: Target, count: int = MO
         return []
     watch = Stopwatch(time_limit)
     problem = model.polytope(whole=False)
-    wanted = min(count, MOST_BLENDS)
-    return (_Sets(model, problem, watch).collect(wanted)
-            or _Sets(model, problem.loose(), watch).collect(wanted))
+    for hold in (HOLD, FIRM_HOLD, SLACK):
+        found = _Sets(model, problem.held(hold), watch).collect(min(count, MOST_BLENDS))
+        if found and all(recipe.meets_all for recipe in found):
+            return found
+    return []
 
 
 class _Sets:
