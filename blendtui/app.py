@@ -22,6 +22,7 @@ from blendtui import commands
 from blendtui.desk import answers
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import Plant, open_plant
+from blendtui.quiet import quiet
 from blendtui.screens import asker, messages
 from blendtui.screens.asker import Asker, fault
 from blendtui.screens.layout import CSS
@@ -371,7 +372,9 @@ def run(path: Path | None) -> int:
         app = Console(plant)
         loop = asyncio.new_event_loop()
         # Mouse reports cost bytes with every movement, which a slow line cannot spare.
-        app.run(mouse=not any(os.environ.get(name) for name in ("SSH_CONNECTION", "SSH_TTY", "SSH_CLIENT")), loop=loop)
+        with quiet():
+            app.run(mouse=not any(os.environ.get(name) for name in ("SSH_CONNECTION", "SSH_TTY", "SSH_CLIENT")),
+                    loop=loop)
     if app.fault_said:
         print(f"blendtui ended by {app.fault_said}; every change made before it is saved", file=sys.stderr)
     code = app.return_code or 0

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import textwrap
+from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
 from blendtui.desk import numbers
-from blendtui.desk.blends import Extras, spread_words
+from blendtui.desk.blends import spread_words
 from blendtui.desk.sheet import NOT_A_CERTIFICATE
 from blendtui.desk.stocks import derived
 from blendtui.store.harmless import harmless
@@ -22,13 +23,23 @@ STATUS = {"optimal": "least cost", "stopped": "stopped before the proof: best bl
           "infeasible": "NO BLEND meets every limit; this is the nearest", "by hand": "as given"}
 
 
-def table(heads: Sequence[str], rows: Sequence[Sequence[str]], left: int = 1) -> str:
+Ranges = Mapping[str, tuple[float, float]]
+WIDTH = 80  # columns of a printer
+KINDS = {"vi_improver": "VI impr.", "pour_depressant": "pour dep."}
+
+
+def wrap(text: str, indent: str = "") -> str:
+    """Text in lines of at most 80 columns."""
+    return "\n".join(textwrap.wrap(text, WIDTH, subsequent_indent=indent, break_on_hyphens=False))
+
+
+def table(heads: Sequence[str], rows: Sequence[Sequence[str]], left: int = 1, gap: str = "  ") -> str:
     """Columns padded to their widest cell; the first `left` to the left, the others to the right."""
     widths = [max(len(head), *(len(row[i]) for row in rows)) if rows else len(head)
               for i, head in enumerate(heads)]
 
     def line(cells: Sequence[str]) -> str:
-        return "  ".join(cell.ljust(w) if i < left else cell.rjust(w)
+        return gap.join(cell.ljust(w) if i < left else cell.rjust(w)
                          for i, (cell, w) in enumerate(zip(cells, widths, strict=True))).rstrip()
 
     return "\n".join([line(heads), line(["-" * w for w in widths]), *(line(row) for row in rows)])
@@ -51,29 +62,30 @@ def prediction(recipe: Recipe) -> str:
     return "\n\n".join([_shares(recipe, ()), _predicted(recipe), _law(recipe), NOT_A_CERTIFICATE])
 
 
-def design(product: str, recipe: Recipe, stocks: Sequence[Stock], extras: Extras | None) -> str:
+def design(product: str, recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None,
+           others: Sequence[Recipe]) -> str:
     """Text of `design`."""
-    parts = [_headline(product, recipe)]
-    parts += [f"! {harmless(reason)}" for reason in recipe.reasons]
+    parts = [wrap(_headline(product, recipe), "  ")]
+    parts += [wrap(f"! {harmless(reason)}", "  ") for reason in recipe.reasons]
     if recipe.shares is not None:
-        parts.append(_shares(recipe, stocks, extras))
+        parts.append(_shares(recipe, stocks, ranges))
     if recipe.limits:
         parts.append(_limits(recipe.limits))
     if recipe.to_be_tested:
-        parts.append("to be tested:\n" + "\n".join(f"  {x}" for x in recipe.to_be_tested))
+        parts.append("to be tested:\n" + "\n".join(wrap(f"  {x}", "    ") for x in recipe.to_be_tested))
     if recipe.left_out:
-        parts.append("left out:\n" + "\n".join(f"  {x.stock}: {x.reason}" for x in recipe.left_out))
-    if extras is not None and extras.blends:
-        parts.append(_blends(extras.blends))
+        parts.append("left out:\n" + "\n".join(wrap(f"  {x.stock}: {x.reason}", "    ") for x in recipe.left_out))
+    if others:
+        parts.append(_blends(others))
     if recipe.shares is not None:
         parts.append(_law(recipe))
     return "\n\n".join([*parts, NOT_A_CERTIFICATE])
 
 
 def _headline(product: str, recipe: Recipe) -> str:
-    text = f"{harmless(product)}: {STATUS[recipe.status]}"
     if recipe.shares is None:
-        return f"{harmless(product)}: NO BLEND, the shares allowed do not reach 100 %"
+        return f"{harmless(product)}: NO BLEND"
+    text = f"{harmless(product)}: {STATUS[recipe.status]}"
     if recipe.cost_per_t is not None:
         text += f"; {numbers.cost(recipe.cost_per_t)} per t"
         if recipe.batch_kg is not None:
@@ -84,19 +96,20 @@ def _headline(product: str, recipe: Recipe) -> str:
     return text
 
 
-def _shares(recipe: Recipe, stocks: Sequence[Stock], extras: Extras | None = None) -> str:
+def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = None) -> str:
     density = {s.code: s.density15 for s in stocks}
-    heads, rows = ["stock", "mass %", "kg", "L at 15 °C"], []
-    ranges = extras.ranges if extras is not None else None
+    charges = recipe.charges_kg
+    heads = ["stock", "mass %", *(["kg", "L at 15 °C"] if charges is not None else [])]
     codes = list(recipe.shares or {})
     if ranges is not None:
         heads += ["least %", "most %"]
         codes += [code for code in ranges if code not in codes]
+    rows = []
     for code in codes:
-        mass = (recipe.charges_kg or {}).get(code)
-        rho = density.get(code)
-        row = [code, numbers.pct((recipe.shares or {}).get(code, 0.0)), numbers.kg(mass),
-               numbers.litres(None if mass is None or rho is None else 1000.0 * mass / rho)]
+        row = [code, numbers.pct((recipe.shares or {}).get(code, 0.0))]
+        if charges is not None:
+            mass, rho = charges.get(code), density.get(code)
+            row += [numbers.kg(mass), numbers.litres(None if mass is None or rho is None else 1000.0 * mass / rho)]
         if ranges is not None:
             row += [numbers.pct(v) for v in ranges.get(code, (None, None))]
         rows.append(row)
@@ -115,13 +128,18 @@ def _predicted(recipe: Recipe) -> str:
 def _limits(limits: Sequence[LimitResult]) -> str:
     rows = []
     for x in limits:
-        name, unit = ("cost per t", "") if x.property == "cost_per_t" else (
-            lookup(x.property).name, lookup(x.property).unit)
+        label = "cost, per t" if x.property == "cost_per_t" else lookup(x.property).label
         word = {True: "met", False: "NOT MET", None: "unknown"}[x.met] + (", binds" if x.binding else "")
-        rows.append([name, unit, numbers.value(x.property, x.value), *(
+        rows.append([label, numbers.value(x.property, x.value), *(
             "" if v is None else numbers.value(x.property, v) for v in (x.low, x.high)),
-            f"{x.guard:.4g}" if x.guard else "", numbers.value(x.property, x.margin), word])
-    return table(["limit", "unit", "value", "at least", "at most", "guard", "margin", "verdict"], rows, left=2)
+            f"{x.guard:.3g}" if x.guard else "", _margin(x), word])
+    return table(["limit", "value", "at least", "at most", "guard", "margin", "verdict"], rows)
+
+
+def _margin(limit: LimitResult) -> str:
+    """The margin with as many decimals as its value has: what is below them is rounding."""
+    shown = numbers.value(limit.property, limit.value)
+    return numbers.fixed(limit.margin, len(shown.partition(".")[2]))
 
 
 def _law(recipe: Recipe) -> str:
@@ -135,30 +153,28 @@ def _law(recipe: Recipe) -> str:
 
 def _blends(blends: Sequence[Recipe]) -> str:
     rows = [[str(i), numbers.cost(b.cost_per_t), numbers.kv(b.predicted.get("kv40")),
-             numbers.kv(b.predicted.get("kv100")), numbers.vi(b.predicted.get("vi")),
-             ", ".join(f"{code} {numbers.pct(share)}" for code, share in (b.shares or {}).items())]
+             numbers.kv(b.predicted.get("kv100")), numbers.vi(b.predicted.get("vi"))]
             for i, b in enumerate(blends, 1)]
-    heads = ["blend", "cost per t", "KV40", "KV100", "VI", "shares, mass %"]
-    padded = table(heads[:-1], [row[:-1] for row in rows], left=0).split("\n")
-    tails = [heads[-1], "-" * len(heads[-1]), *(row[-1] for row in rows)]
-    return "\n".join(f"{a}  {b}" for a, b in zip(padded, tails, strict=True))
+    lines = table(["blend", "cost per t", "KV40, mm²/s", "KV100, mm²/s", "VI"], rows, left=0).split("\n")
+    for line, blend in zip(lines[2:], blends, strict=True):
+        shares = ", ".join(f"{code} {numbers.pct(share)}" for code, share in (blend.shares or {}).items())
+        lines[lines.index(line)] = line + "\n" + wrap(f"       mass %: {shares}", "               ")
+    return "\n".join(lines)
 
 
 def stocks(all_stocks: Sequence[Stock]) -> str:
     """Text of `stocks`."""
-    rows = [[harmless(s.code, 16), harmless(s.name, 32), s.kind, s.api_group, numbers.kg(s.on_hand_kg),
-             numbers.cost(s.price_per_t), numbers.fixed(s.density15, 1), numbers.kv(s.kv40),
-             numbers.kv(s.kv100), numbers.vi(derived(s)[0]), s.tested_on, s.source] for s in all_stocks]
-    return table(["stock", "name", "kind", "group", "on hand, kg", "price, /t", "kg/m³", "KV40, mm²/s",
-                  "KV100", "VI", "tested on", "source"], rows, left=4)
+    rows = [[harmless(s.code, 12), harmless(s.name, 17), KINDS.get(s.kind, s.kind), s.api_group,
+             numbers.kg(s.on_hand_kg), numbers.cost(s.price_per_t), numbers.fixed(s.density15, 0), numbers.kv(s.kv40),
+             numbers.kv(s.kv100), numbers.vi(derived(s)[0])] for s in all_stocks]
+    return table(["stock", "name", "kind", "API", "kg", "price/t", "kg/m³", "KV40", "KV100", "VI"], rows, left=4,
+                 gap=" ") + "\nKV in mm²/s; density at 15 °C; every cell: --json, or export"
 
 
 def products(all_products: Sequence[Product]) -> str:
     """Text of `products`."""
-    rows = [[harmless(p.product, 16), harmless(p.name, 36), p.grade, p.law or "refutas",
-             numbers.kg(p.batch_kg), str(len(p.limits)), str(len(p.rules)), harmless(p.note, 60)]
-            for p in all_products]
-    text = table(["product", "name", "grade", "law", "batch, kg", "limits", "share rules"],
-                 [row[:-1] for row in rows], left=4)
-    notes = [f"  {row[0]}: {row[-1]}" for row in rows if row[-1]]
+    rows = [[harmless(p.product, 12), harmless(p.name, 24), p.grade, p.law or "refutas",
+             numbers.kg(p.batch_kg), str(len(p.limits)), str(len(p.rules))] for p in all_products]
+    text = table(["product", "name", "grade", "law", "batch, kg", "limits", "rules"], rows, left=4, gap=" ")
+    notes = [wrap(f"  {harmless(p.product)}: {harmless(p.note)}", "    ") for p in all_products if p.note]
     return text + ("\n\nnotes:\n" + "\n".join(notes) if notes else "")

@@ -6,16 +6,16 @@ Exit 0 done, 2 bad input (one line on stderr, nothing on stdout), 3 no blend (th
 from __future__ import annotations
 
 import argparse
-import contextlib
 import json
 import math
 import os
 import sys
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import Any, NoReturn
 
 from blendtui.desk.errors import DeskError
+from blendtui.quiet import quiet
 from blendtui.store.errors import CatalogueError, PlantError
 from solver.errors import SolverError
 from solver.target import LAWS
@@ -42,13 +42,12 @@ class _Parser(argparse.ArgumentParser):
 
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command; returns the exit code."""
-    for stream in (sys.stdout, sys.stderr):
-        # A terminal of another character set shows "?" rather than ending the command.
-        if hasattr(stream, "reconfigure"):
-            stream.reconfigure(errors="replace")
+    _steady_streams()
     try:
         options = _parser().parse_args(argv)
-        return int(options.run(options))
+        code = int(options.run(options))
+        sys.stdout.flush()
+        return code
     except CatalogueError as error:
         every = getattr(options, "every_fault", False)
         return _refuse("\n".join(map(str, error.faults)) if every else str(error))
@@ -58,13 +57,25 @@ def main(argv: Sequence[str] | None = None) -> int:
         return 130
     except BrokenPipeError:
         # The reader of a pipe has gone; nothing more can be said to it.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        os.dup2(os.open(os.devnull, os.O_WRONLY), 1)
         return DONE
+    except OSError as error:
+        return _refuse(f"the answer could not be written: {(error.strerror or str(error)).lower()}")
     except Exception as error:
         if os.environ.get("BLENDTUI_DEBUG"):
             raise
         return _refuse(f"an unexpected fault ({type(error).__name__}: {error}); nothing was changed. Run again "
                        "with BLENDTUI_DEBUG=1 and report what it prints")
+
+
+def _steady_streams() -> None:
+    """Streams that can always be written: a closed one goes nowhere, and what a terminal cannot show is "?"."""
+    for name in ("stdin", "stdout", "stderr"):
+        if getattr(sys, name) is None:
+            setattr(sys, name, open(os.devnull, "r" if name == "stdin" else "w", encoding="utf-8"))  # noqa: SIM115
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")
 
 
 def _refuse(text: str) -> int:
@@ -75,19 +86,31 @@ def _refuse(text: str) -> int:
     return BAD_INPUT
 
 
-def _parser() -> argparse.ArgumentParser:
+def _shared(**default: Any) -> argparse.ArgumentParser:
+    """The options that every command takes, before its name or after it."""
     shared = argparse.ArgumentParser(add_help=False)
-    shared.add_argument("--plant", type=Path, default=argparse.SUPPRESS, metavar="PATH",
+    shared.add_argument("--plant", type=_path, metavar="PATH", default=default.get("plant", argparse.SUPPRESS),
                         help="a plant file, or a catalogue folder (opened without changing it)")
-    shared.add_argument("--json", action="store_true", default=argparse.SUPPRESS,
+    shared.add_argument("--json", action="store_true", default=default.get("json", argparse.SUPPRESS),
                         help="the answer as JSON, numbers unrounded")
-    parser = _Parser(prog="blendtui", parents=[shared], description="Least-cost lubricant blends from the "
-                     "stocks in the tanks. Without a command: the console.")
-    parser.set_defaults(run=_console, plant=None, json=False)
+    return shared
+
+
+def _path(text: str) -> Path:
+    if not text.strip():
+        raise argparse.ArgumentTypeError("a path cannot be empty")
+    return Path(text)
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = _Parser(prog="blendtui", parents=[_shared(plant=None, json=False)],
+                     description="Least-cost lubricant blends from the stocks in the tanks. "
+                                 "Without a command: the console.")
+    parser.set_defaults(run=_console)
     commands = parser.add_subparsers(title="commands", metavar="COMMAND", parser_class=_Parser)
 
     def add(name: str, run: Callable[[argparse.Namespace], int], words: str) -> argparse.ArgumentParser:
-        command = commands.add_parser(name, parents=[shared], help=words, description=words)
+        command = commands.add_parser(name, parents=[_shared()], help=words, description=words)
         command.set_defaults(run=run)
         return command
 
@@ -105,10 +128,10 @@ def _parser() -> argparse.ArgumentParser:
     command.add_argument("--ranges", action="store_true", help="least and most share of every allowed stock")
     command.add_argument("--blends", metavar="N", help="up to N (at most 8) blends of other stocks")
     command = add("import", _import, "make a plant file equal to a catalogue folder, all or nothing")
-    command.add_argument("folder", type=Path, metavar="FOLDER")
+    command.add_argument("folder", type=_path, metavar="FOLDER")
     command.set_defaults(every_fault=True)
     command = add("export", _export, "write the plant as a catalogue folder")
-    command.add_argument("folder", type=Path, metavar="FOLDER")
+    command.add_argument("folder", type=_path, metavar="FOLDER")
     add("stocks", _stocks, "list the stocks")
     add("products", _products, "list the products")
     return parser
@@ -132,25 +155,6 @@ def _print(options: argparse.Namespace, answer: Any, text: str) -> None:
         print(json.dumps(answer, ensure_ascii=False, allow_nan=False, indent=1))
     else:
         print(text)
-
-
-@contextlib.contextmanager
-def _quiet() -> Iterator[None]:
-    """Keep what compiled code prints (HiGHS now and then does) out of the answer on stdout."""
-    sys.stdout.flush()
-    try:
-        kept = os.dup(1)
-    except OSError:
-        yield
-        return
-    nowhere = os.open(os.devnull, os.O_WRONLY)
-    try:
-        os.dup2(nowhere, 1)
-        yield
-    finally:
-        os.dup2(kept, 1)
-        os.close(kept)
-        os.close(nowhere)
 
 
 def _say(text: str) -> None:
@@ -214,7 +218,7 @@ def _design(options: argparse.Namespace) -> int:
         stocks = plant.stocks()
         target = target_of(plant, options.product, options.law, batch)
     _say(f"designing {options.product} …")
-    with _quiet():
+    with quiet():
         recipe = blends.best(stocks, target, time_limit=30.0)
         feasible = recipe.status != "infeasible"
         ranges = blends.all_ranges(stocks, target) if options.ranges and feasible else None
@@ -225,15 +229,14 @@ def _design(options: argparse.Namespace) -> int:
             code: [100.0 * low, 100.0 * high] for code, (low, high) in ranges.items()}
     if wanted:
         answer["blends"] = [as_json.other_blend(b) for b in others]
-    extras = blends.Extras(None, ranges, tuple(others), None)
-    _print(options, answer, as_text.design(options.product, recipe, stocks, extras))
+    _print(options, answer, as_text.design(options.product, recipe, stocks, ranges, others))
     return DONE if feasible and recipe.shares is not None else NO_BLEND
 
 
 def _count(text: str | None) -> int:
     if text is None:
         return 0
-    if not text.isdigit() or not 1 <= int(text) <= 8:
+    if not (text.isascii() and text.isdigit() and 1 <= int(text) <= 8):
         raise BadInput(f"--blends {text}: give a whole number from 1 to 8")
     return int(text)
 

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from blendtui.store.plant import Plant
@@ -19,16 +19,6 @@ if TYPE_CHECKING:
 
 SPREAD_MARKED = 3.0  # % between the laws from which a prediction is marked
 SPREAD_DOUBTED = 10.0  # % from which a laboratory blend is needed before the number can be trusted
-
-
-@dataclass(frozen=True)
-class Extras:
-    """What the recipe screen shows beside the recipe; it takes longer, so it comes after."""
-
-    guard_cost_per_t: float | None  # cost with guards less cost without; None: one of them has no blend
-    ranges: Mapping[str, tuple[float, float]] | None  # stock → least and most mass fraction
-    blends: tuple[Recipe, ...]  # other sets of stocks, cheapest first
-    largest_batch_kg: float | None  # of any blend that meets the target, with today's tanks
 
 
 def best(stocks: Sequence[Stock], target: Target, time_limit: float = 5.0) -> Recipe:
@@ -59,26 +49,6 @@ def by_hand(stocks: Sequence[Stock], target: Target, shares: Mapping[str, float]
     batch = target.batch_kg
     return replace(made, shares=dict(shares), reasons=(words,),
                    charges_kg=None if batch is None else {c: s * batch for c, s in shares.items()})
-
-
-def largest_at(stocks: Iterable[Stock], recipe: Recipe) -> tuple[float, str] | None:
-    """The largest batch [kg] of just these shares that today's tanks allow, and the stock that ends first."""
-    available = {s.code: s.available_kg for s in stocks}
-    sizes = [(kg / share, code) for code, share in (recipe.shares or {}).items()
-             if share > 0.0 and (kg := available.get(code)) is not None]
-    return min(sizes, default=None)
-
-
-def extras(stocks: Sequence[Stock], target: Target, recipe: Recipe) -> Extras:
-    """What the guards cost, the range of every stock, the other sets of stocks, and the largest batch."""
-    from solver.choices import largest_batch
-
-    if recipe.status == "infeasible":
-        return Extras(None, None, (), None)
-    table = StockTable(stocks)
-    return Extras(guard_cost(table, target, recipe), all_ranges(stocks, target, time_limit=5.0),
-                  tuple(other_sets(stocks, target, time_limit=5.0)),
-                  largest_batch(table, target, time_limit=2.0))
 
 
 def all_ranges(stocks: Sequence[Stock], target: Target,
@@ -120,11 +90,6 @@ def spread_words(spread_pct: float | None) -> str:
 
 
 # Trials
-
-def trials(plant: Plant, product: str | None = None) -> list[Trial]:
-    """The trials kept, of one product or of all, newest last."""
-    return plant.trials(product)
-
 
 def keep_trial(plant: Plant, name: str, product: str, recipe: Recipe, note: str = "") -> str:
     """Keep a recipe's shares under a name, and say so in words. DeskError when they cannot be kept."""

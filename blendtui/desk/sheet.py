@@ -29,8 +29,17 @@ CAUTIONS = (
     "Static: bond, earth, fill from below, start slowly, wait before dipping.",
     "Never mix concentrates neat; keep additives within the temperature of their safety data sheet.")
 _ORDER = {"base": 0, "rework": 1, "vi_improver": 2, "additive": 3, "pour_depressant": 4}
-_PLAIN = str.maketrans({"–": "-", "²": "2", "³": "3", "°": " deg ", "·": ".", "−": "-", "≤": "<=", "≥": ">=",
-                        "…": "...", "×": "x"})
+_PLAIN = str.maketrans({"–": "-", "²": "2", "³": "3", "°": "deg", "·": ".", "−": "-", "≤": "<=", "≥": ">=",
+                        "…": "~", "×": "x"})
+
+
+def _ascii(text: str) -> str:
+    """What any printer can print, made before columns are padded."""
+    return harmless(text).translate(_PLAIN).encode("ascii", "replace").decode("ascii")
+
+
+def _cut(text: str, longest: int) -> str:
+    return _ascii(harmless(text, longest))
 
 
 def charge_order(stocks: Sequence[Stock]) -> list[Stock]:
@@ -44,19 +53,22 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
     if not recipe.shares:
         raise DeskError("there are no shares to write down yet")
     used = charge_order([s for s in stocks if recipe.shares.get(s.code, 0.0) > 0.0])
-    title = harmless(f"{product.product}  {product.name}".strip(), 60)
+    title = _cut(f"{product.product}  {product.name}".strip(), 60)
     lines = ["BLEND SHEET  " + title, "=" * WIDTH,
-             f"Plant {harmless(plant, 46)}",
-             f"Made {when:%Y-%m-%d %H:%M} by {harmless(who, 40)}",
+             f"Plant {_cut(plant, 70)}",
+             f"Made {when:%Y-%m-%d %H:%M} by {_cut(who, 40)}",
              f"Batch {numbers.kg(recipe.batch_kg)} kg   law {recipe.law}   {_status(recipe)}", ""]
     lines += [*_charges(recipe, used), "", *_properties(recipe), ""]
     lines += [line for words in (*recipe.reasons, *(f"To be tested: {t}" for t in recipe.to_be_tested))
-              for line in textwrap.wrap(words, WIDTH)]
+              for line in textwrap.wrap(_ascii(words), WIDTH)]
     lines += ["", *(line for c in (*CAUTIONS, NOT_A_CERTIFICATE)
                     for line in textwrap.wrap("* " + c, WIDTH, subsequent_indent="  ")), "",
               "Charged by ____________________   Checked by ____________________", ""]
-    text = "\n".join(line.rstrip() for line in lines).translate(_PLAIN)
-    return text.encode("ascii", "replace").decode("ascii")
+    return _ascii_lines(lines)
+
+
+def _ascii_lines(lines: Sequence[str]) -> str:
+    return "\n".join(_ascii(line).rstrip() for line in lines)
 
 
 def _status(recipe: Recipe) -> str:
@@ -71,7 +83,7 @@ def _charges(recipe: Recipe, used: Sequence[Stock]) -> list[str]:
     for stock in used:
         mass = (recipe.charges_kg or {}).get(stock.code)
         volume = None if mass is None or stock.density15 is None else 1000.0 * mass / stock.density15
-        lines.append(f"[ ]  {harmless(stock.code, 13):<14}{harmless(stock.name, 25):<26}"
+        lines.append(f"[ ]  {_cut(stock.code, 13):<14}{_cut(stock.name, 25):<26}"
                      f"{numbers.pct(shares[stock.code]):>8}{numbers.kg(mass):>12}{numbers.litres(volume):>13}")
     total = recipe.batch_kg if recipe.charges_kg is None else sum(recipe.charges_kg.values())
     lines += ["-" * WIDTH, f"{'':5}{'total':<40}{numbers.pct(sum(shares.values())):>8}{numbers.kg(total):>12}"]
@@ -85,7 +97,7 @@ def _properties(recipe: Recipe) -> list[str]:
     held = {limit.property for limit in recipe.limits}
     for code in ("kv40", "kv100", "vi", "density15"):
         if code not in held and (value := recipe.predicted.get(code)) is not None:
-            lines.append(f"{lookup(code).label:<34}{numbers.value(code, value):>12}")
+            lines.append(f"{_ascii(lookup(code).label):<34}{numbers.value(code, value):>12}")
     spread = recipe.spread_pct
     lines.append(f"spread of the laws, %: KV40 {numbers.fixed(spread.get('kv40'), 1)}, "
                  f"KV100 {numbers.fixed(spread.get('kv100'), 1)}")
@@ -96,7 +108,7 @@ def _property(limit: LimitResult) -> str:
     label = "cost, per t" if limit.property == "cost_per_t" else lookup(limit.property).label
     low, high = (("" if v is None else numbers.value(limit.property, v)) for v in (limit.low, limit.high))
     word = {True: "met", False: "NOT MET", None: "unknown"}[limit.met]
-    return f"{label:<34}{numbers.value(limit.property, limit.value):>12}{low:>12}{high:>12}  {word}"
+    return f"{_ascii(label):<34}{numbers.value(limit.property, limit.value):>12}{low:>12}{high:>12}  {word}"
 
 
 def write_sheet(path: Path, text: str) -> str:
