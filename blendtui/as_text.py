@@ -115,7 +115,7 @@ def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = Non
         rows.append(row)
     text = table(heads, rows)
     if ranges is not None:
-        text += "\nleast and most: over all blends that meet the target; whole-number rules left out"
+        text += "\nleast, most: over all blends that meet the target; whole-number rules left out"
     return text
 
 
@@ -148,7 +148,7 @@ def _law(recipe: Recipe) -> str:
             f"KV100 {numbers.fixed(spread.get('kv100'), 1)} %")
     widest = max((v for v in spread.values() if v is not None), default=None)
     words = spread_words(widest)
-    return text + (f"\n! {words}" if words else "")
+    return wrap(text, "  ") + ("\n" + wrap(f"! {words}", "  ") if words else "")
 
 
 def _blends(blends: Sequence[Recipe]) -> str:

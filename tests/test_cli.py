@@ -171,6 +171,23 @@ def test_a_folder_is_opened_without_being_changed(capsys: pytest.CaptureFixture[
     assert {p.name: (p.read_bytes(), p.stat().st_mtime_ns) for p in folder.iterdir()} == before
 
 
+def test_options_stand_before_the_command_or_after_it(capsys: pytest.CaptureFixture[str], folder: Path) -> None:
+    before = run(capsys, "--plant", str(folder), "--json", "stocks")
+    assert before == run(capsys, "stocks", "--plant", str(folder), "--json")
+    assert len(json.loads(before[1])["stocks"]) == 3
+    code, out, err = run(capsys, "--plant", str(folder / "nowhere"), "stocks")
+    assert (code, out) == (2, "")
+    assert "there is no plant at" in err
+
+
+def test_text_fits_a_printer(capsys: pytest.CaptureFixture[str]) -> None:
+    for argv in (["stocks"], ["products"], ["design", "HYD-46", "--ranges", "--blends", "8"], ["design", "HYD-46X"],
+                 ["design", "MULT-1030"], ["predict", "LN15A=60", "MN50=40"]):
+        _, out, _ = run(capsys, *argv, "--plant", str(EXAMPLE))
+        long = [line for line in out.split("\n") if len(line) > 80]
+        assert not long, long
+
+
 REFUSED = [
     (["predict", "N150=50", "N500=49"], "the shares sum to 99 %, not to 100 %; mend them"),
     (["predict", "N150=50", "NOPE=50"], "no stock 'NOPE'; the plant has N150, N500, BS"),
@@ -184,6 +201,8 @@ REFUSED = [
     (["design", "P46", "--law", "x"], "unknown law 'x'"),
     (["design", "P46", "--batch", "0"], "--batch 0: a batch is more than 0 kg"),
     (["design", "P46", "--batch", "lots"], "--batch: 'lots' is not a number"),
+    (["predict", "N150=50.011", "N500=50"], "the shares sum to 100.011 %, not to 100 %"),
+    (["design", "P46", "--blends", "²"], "--blends ²: give a whole number from 1 to 8"),
     (["design", "P46", "--blends", "9"], "--blends 9: give a whole number from 1 to 8"),
     (["viscosity", "--kv40", "5", "--kv100", "7"], "oil thins as it warms; are the two swapped?"),
     (["viscosity", "--kv40", "inf", "--kv100", "7"], "--kv40: 'inf' is not a number"),

@@ -89,11 +89,11 @@ def _allowed(stocks: tuple[Stock, ...], goal: Target, best: Recipe) -> tuple[str
 
 def keep_unfinished(plant: Plant, wishes: Wishes) -> str:
     """Keep shares typed by hand as a trial when the console ends without being asked to."""
-    from . import targets
+    from . import trials
 
     law = wishes.law or plant.product(wishes.product).law or "refutas"
     name = f"unfinished {datetime.now(UTC):%Y-%m-%d %H:%M:%S}"
-    return targets.keep_trial(plant, Trial(name, wishes.product, dict(wishes.typed or {}), law,
+    return trials.keep_trial(plant, Trial(name, wishes.product, dict(wishes.typed or {}), law,
                                            note="kept when the terminal was closed"))
 
 

@@ -11,7 +11,7 @@ from blendtui.store.records import Trial
 from solver.stocks import Stock, StockTable
 from solver.target import Target
 
-from . import targets
+from . import trials
 from .errors import DeskError
 
 if TYPE_CHECKING:
@@ -98,12 +98,12 @@ def keep_trial(plant: Plant, name: str, product: str, recipe: Recipe, note: str 
     total = sum(recipe.shares.values())
     if abs(total - 1.0) > 1e-4:
         raise DeskError(f"the shares sum to {100 * total:.2f} %, not to 100 %; mend them before keeping them")
-    return targets.keep_trial(plant, Trial(name, product, dict(recipe.shares), recipe.law, note=note))
+    return trials.keep_trial(plant, Trial(name, product, dict(recipe.shares), recipe.law, note=note))
 
 
 def drop_trial(plant: Plant, product: str, name: str) -> str:
     """Drop a trial, and say so in words; undo brings it back."""
-    return targets.drop_trial(plant, product, name)
+    return trials.drop_trial(plant, product, name)
 
 
 def compare(stocks: Sequence[Stock], target: Target, kept: Sequence[Trial]) -> list[Recipe]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
 
 from blendtui.store import cells as check
 from blendtui.store import edits
@@ -16,6 +17,9 @@ from solver.stocks import GROUPS, KINDS, SOURCES, Stock
 from solver.target import ShareRule
 
 from .errors import DeskError
+
+if TYPE_CHECKING:
+    from solver.doubts import Doubt
 
 KV = ("kv40", "kv100", "blend_kv40", "blend_kv100")
 MASS = ("on_hand_kg", "unpumpable_kg")
@@ -41,6 +45,7 @@ class Edit:
     status: str  # "saved", "question" (nothing saved until it is confirmed) or "unchanged"
     message: str
     suggestion: str | None = None  # what to type instead, where there is an obvious value
+    refused: bool = False  # a question that cannot be answered with "keep it"
 
 
 def _property_cell(code: str) -> Cell:
@@ -147,7 +152,9 @@ def edit_cell(plant: Plant, code: str, cell_code: str, typed: str, confirmed: bo
     changed = stock
     for c, v in stale.items():
         changed = edits.with_cell(changed, c, v)
-    remark = _refuse_faults(stock, changed, set(stale))
+    remark, remedy = _refuse_faults(stock, changed, set(stale), confirmed)
+    if remedy:
+        return remedy
     refuse_orphans(plant, stock, changed)
     question = None if confirmed else _question(stock, changed)
     if question:
@@ -183,10 +190,13 @@ def _typed(stock: Stock, column: Cell, typed: str) -> tuple[dict[str, Value], st
     if code in KV:
         from solver.scales import parse_kv_pair
 
+        prefix = code.removesuffix("kv40").removesuffix("kv100")
         pair = parse_kv_pair(typed)
         if pair is not None:
-            prefix = code.removesuffix("kv40").removesuffix("kv100")
             return {f"{prefix}kv40": pair.kv40, f"{prefix}kv100": pair.kv100}, pair.note
+        if typed.count("/") == 1 and not typed.endswith("mm²/s") and not typed.endswith("mm2/s"):
+            cold, hot = (amount(part, code) for part in typed.split("/"))
+            return {f"{prefix}kv40": cold, f"{prefix}kv100": hot}, "read as KV40/KV100"
     value = amount(typed, code, stock.density15)
     if code in MASS and value > check.LARGEST_KG:
         raise DeskError(f"{harmless(typed, 40)} is more than {check.LARGEST_KG:g} kg; check the unit")
@@ -243,10 +253,11 @@ def _by_mass(typed: str, unit: str) -> float:
     return parse(typed, "number")
 
 
-def _refuse_faults(old: Stock, new: Stock, edited: set[str]) -> str:
-    """DeskError on what cannot be true; otherwise a remark on what is still missing.
+def _refuse_faults(old: Stock, new: Stock, edited: set[str], confirmed: bool) -> tuple[str, Edit | None]:
+    """A remark on what is still missing, or a refusal that names the value that would do.
 
     A stock is typed in cell by cell, so that a KV without its partner is no reason to refuse the first.
+    Raises DeskError on what cannot be true and has no obvious remedy, or was insisted on.
     """
     from solver.doubts import faults
 
@@ -256,8 +267,22 @@ def _refuse_faults(old: Stock, new: Stock, edited: set[str]) -> str:
         if value_of(new, doubt.cell) is None:
             missing = missing or doubt.says
         elif doubt.cell in edited or (doubt.cell, doubt.says) not in before:
-            raise DeskError(f"{new.code}: {doubt.says}")
-    return missing
+            says, remedy = f"{new.code}: {doubt.says}", _remedy(new, doubt)
+            if remedy and not confirmed:
+                return "", Edit("question", says, remedy, refused=True)
+            raise DeskError(says)
+    return missing, None
+
+
+def _remedy(stock: Stock, doubt: Doubt) -> str | None:
+    """What to type instead of something that cannot be true, where it is obvious."""
+    if doubt.suggestion is None:
+        return None
+    if doubt.cell in KV:  # the two are swapped: both at once
+        prefix = doubt.cell.removesuffix("kv40").removesuffix("kv100")
+        cold, hot = value_of(stock, f"{prefix}kv40"), value_of(stock, f"{prefix}kv100")
+        return f"{hot:.12g}/{cold:.12g}"
+    return f"{doubt.suggestion:.12g}"
 
 
 def _question(old: Stock, new: Stock) -> Edit | None:

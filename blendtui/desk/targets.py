@@ -8,9 +8,10 @@ from dataclasses import dataclass
 from blendtui.store import cells as check
 from blendtui.store import edits
 from blendtui.store.catalogue import grade_name
+from blendtui.store.errors import ChangedSince
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
-from blendtui.store.records import Change, Product, Row, Trial, Value
+from blendtui.store.records import Change, Product, Row, Value
 from blendtui.store.rules import Rule, contradictions
 from blendtui.store.state import change_of
 from solver.errors import TargetError
@@ -74,13 +75,19 @@ def text_of(product: Product, cell: str) -> str:
     return harmless(value) if isinstance(value, str) else _plain(value)
 
 
-def edit_product(plant: Plant, product: str, cell: str, typed: str) -> Edit:
-    """Give a product's cell what was typed; empty means not asked. DeskError or ScaleError on refusal."""
+def edit_product(plant: Plant, product: str, cell: str, typed: str, *, seen: Product | None = None) -> Edit:
+    """Give a product's cell what was typed; empty means not asked. DeskError or ScaleError on refusal.
+
+    `seen` is the product as the screen showed it: where the cell is another by now, ChangedSince says whose.
+    """
     if cell not in _BY_CODE:
         raise DeskError(f"a product has no {harmless(cell, 40)!r}; it has {', '.join(_BY_CODE)}")
     old, typed, heading = plant.product(product), typed.strip(), _BY_CODE[cell].heading
-    value = _read(cell, typed)
     before = getattr(old, cell)
+    if seen is not None and getattr(seen, cell) != before:
+        raise plant.changed_since(edits.product_cell(old, cell, None),
+                                  f"{product} {heading} is now {text_of(old, cell) or 'empty'}")
+    value = _read(cell, typed)
     if value == (int(before) if isinstance(before, bool) else before):
         return Edit("unchanged", f"{product} {heading}: unchanged")
     if cell == "grade":
@@ -146,11 +153,11 @@ def _percent(typed: str) -> float:
 # Limits
 
 def set_limit(plant: Plant, product: str, prop: str, low: str = "", high: str = "", guard: str = "", *,
-              unknown_ok: bool | None = None) -> Edit:
+              unknown_ok: bool | None = None, seen: Product | None = None) -> Edit:
     """Set a product's own limit on a property, units accepted; it replaces the product's lines on it.
 
     An empty low or high is open. The guard is in the property's unit, or with % of the limit's value.
-    `unknown_ok` lets stocks serve whose value is unknown; None leaves that as it is.
+    `unknown_ok` lets stocks serve whose value is unknown; None leaves that as it is. `seen`: as for a cell.
     """
     asked = plant.product(product)
     try:
@@ -160,6 +167,8 @@ def set_limit(plant: Plant, product: str, prop: str, low: str = "", high: str = 
     except check.CellError as error:
         raise DeskError(str(error)) from None
     own = [x for x in asked.limits if x.property == prop]
+    if seen is not None and [x for x in seen.limits if x.property == prop] != own:
+        raise _changed(plant, "product_limit", product, prop)
     cells["unknown_ok"] = int(any(x.unknown_ok for x in own) if unknown_ok is None else unknown_ok)
     _refuse_limit(asked, prop, cells)
     changes = [c for c in edits.set_line(plant, "product_limit", product, prop, cells) if not c.empty]
@@ -169,6 +178,15 @@ def set_limit(plant: Plant, product: str, prop: str, low: str = "", high: str = 
     plant.change(changes, said)
     others = f"; it replaces {len(own)} lines" if len(own) > 1 else ""
     return Edit("saved", said + others)
+
+
+def _changed(plant: Plant, table: str, product: str, of: str) -> ChangedSince:
+    """The error on a line that is no longer what the screen showed."""
+    present = edits.lines(plant, table, product, of)
+    if not present:
+        return ChangedSince(f"{product} {of}: the line was dropped meanwhile; look again and repeat the change")
+    key, row = present[0]
+    return plant.changed_since(change_of(table, key, row, None), f"{product} {of} is another by now")
 
 
 def _limit_value(typed: str, prop: str) -> float | None:
@@ -259,7 +277,8 @@ def drop_limit(plant: Plant, product: str, prop: str) -> str:
 
 # Share rules
 
-def set_rule(plant: Plant, product: str, of: str, low: str = "", high: str = "") -> Edit:
+def set_rule(plant: Plant, product: str, of: str, low: str = "", high: str = "", *,
+             seen: Product | None = None) -> Edit:
     """Set a product's share rule in mass % (or typed as `0.2 fraction`); it replaces its lines on that name.
 
     An empty low is 0, an empty high 100. A rule that contradicts another is refused.
@@ -277,6 +296,8 @@ def set_rule(plant: Plant, product: str, of: str, low: str = "", high: str = "")
                         "or add the stock")
     cells: Row = {"low_pct": _percent(low) if low.strip() else 0.0,
                   "high_pct": _percent(high) if high.strip() else 100.0}
+    if seen is not None and [r for r in seen.rules if r.of == of] != [r for r in asked.rules if r.of == of]:
+        raise _changed(plant, "share_rule", product, of)
     _refuse_contradiction(plant, asked, of, cells)
     changes = [c for c in edits.set_line(plant, "share_rule", product, of, cells) if not c.empty]
     if not changes:
@@ -360,34 +381,3 @@ def retire_product(plant: Plant, product: str) -> str:
     plant.product(product)
     plant.change([edits.retired("product", product)], f"{product} retired")
     return f"{product} retired"
-
-
-# Trials
-
-def keep_trial(plant: Plant, trial: Trial) -> str:
-    """Keep shares under a name; DeskError when the name is taken or cannot be a name."""
-    if not trial.name.strip():
-        raise DeskError("the trial needs a name; type one such as lean")
-    try:
-        name = check.code(trial.name.strip())
-        check.plain(trial.note)
-    except check.CellError as error:
-        raise DeskError(f"trial: {error}") from None
-    plant.product(trial.product)
-    if any(t.name == name for t in plant.trials(trial.product)):
-        raise DeskError(f"{trial.product} has a trial {name!r} already; keep this one under another name")
-    if not trial.shares:
-        raise DeskError("a trial without shares; make a recipe first")
-    plant.change(edits.new_trial(plant, Trial(name, trial.product, trial.shares, trial.law, trial.kept_at,
-                                              trial.kept_by, trial.note.strip())),
-                 f"{trial.product} trial {name} kept")
-    return f"{trial.product} trial {name} kept"
-
-
-def drop_trial(plant: Plant, product: str, name: str) -> str:
-    """Take a kept trial away; undo brings it back."""
-    changes = edits.dropped_trial(plant, product, name)
-    if not changes:
-        raise DeskError(f"{product} has no trial {harmless(name, 40)!r}")
-    plant.change(changes, f"{product} trial {name} dropped")
-    return f"{product} trial {name} dropped"

@@ -90,7 +90,8 @@ class Page(Screen[Any]):
             self.keys.show(commands.key_line(self.NAME))
         elif typing.asking:
             take = [("s", f"take {typing.suggestion}")] if typing.suggestion else []
-            self.keys.show([("y", "keep it as typed"), *take, ("Esc", "drop it")])
+            keep = [("y", "keep it as typed")] if typing.keepable else []
+            self.keys.show([*keep, *take, ("Esc", "drop it")])
         else:
             self.keys.show(TYPING_KEYS)
 
@@ -162,7 +163,7 @@ class Page(Screen[Any]):
             def finished(edit: Edit) -> None:
                 if edit.status == "question":
                     again(ended.text)
-                    self.edit.ask(edit.suggestion)
+                    self.edit.ask(edit.suggestion, keepable=not edit.refused)
                     self._question(edit)
                     return
                 self.program.say(edit.message, "done" if edit.status == "saved" else "note")
@@ -179,7 +180,8 @@ class Page(Screen[Any]):
 
     def _question(self, edit: Edit) -> None:
         take = f" · s takes {edit.suggestion}" if edit.suggestion else ""
-        self.program.say(f"{edit.message} – y keeps it{take} · Esc drops it", "question")
+        keep = "" if edit.refused else " · y keeps it"
+        self.program.say(f"{edit.message} –{(keep + take)[2:]} · Esc drops it", "question")
         self.show_keys()
 
     def type_through(self, steps: list[tuple[str, str]], then: Callable[[list[str]], None]) -> None:

@@ -200,7 +200,7 @@ class TargetsScreen(Page):
     def _edit_cell(self, product: Product, row: Row) -> None:
         plant, code = self.program.plant, product.product
         self.type_cell(f"{harmless(code)} {row.texts[0]}{HINTS.get(row.key, '')}", desk.text_of(product, row.key),
-                       lambda text, sure: desk.edit_product(plant, code, row.key, text))
+                       lambda text, sure: desk.edit_product(plant, code, row.key, text, seen=product))
 
     def _edit_limit(self, product: Product, row: Row) -> None:
         side = CELLS[max(1, self.cells.column)].code
@@ -209,7 +209,7 @@ class TargetsScreen(Page):
         plant, code = self.program.plant, product.product
 
         def save(text: str, sure: bool) -> Edit:
-            return desk.set_limit(plant, code, row.key, **{**texts, side: text})
+            return desk.set_limit(plant, code, row.key, **{**texts, side: text}, seen=product)
 
         hint = " (or % of the limit)" if side == "guard" else " (empty: open)"
         self.type_cell(f"{harmless(code)} {lookup(row.key).label} {side}{hint}", texts[side], save)
@@ -219,7 +219,8 @@ class TargetsScreen(Page):
         texts = {"low": row.texts[1], "high": row.texts[2]}
         plant, code = self.program.plant, product.product
         self.type_cell(f"{harmless(code)} share of {row.texts[0]}, {side}, %", texts[side],
-                       lambda text, sure: desk.set_rule(plant, code, row.key, **{**texts, side: text}))
+                       lambda text, sure: desk.set_rule(plant, code, row.key, **{**texts, side: text},
+                                                        seen=product))
 
     # Lines
 
@@ -255,7 +256,7 @@ class TargetsScreen(Page):
             return
         plant, code = self.program.plant, product.product
         self._line(lambda: desk.set_limit(plant, code, row.key, *desk.limit_texts(own),
-                                          unknown_ok=not own.unknown_ok))
+                                          unknown_ok=not own.unknown_ok, seen=product))
 
     def do_drop(self) -> None:
         """Drop the line under the cursor; in the list, the product."""

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
-from solver.stocks import Stock
+from solver.stocks import GROUPS, KINDS, Stock
 
 CLOSE = 1e-9
 
@@ -36,6 +36,12 @@ def contradictions(rules: Sequence[Rule], stocks: Iterable[Stock]) -> list[tuple
     if sum(demanded.values()) > 100.0 + CLOSE:
         found.append((last, f"the lows of {_names(demanded)} sum to {sum(demanded.values()):g} %, more than "
                             "100 %", "lower one of them"))
+    for family in (KINDS, tuple(f"group {g}" for g in GROUPS), {s.oil for s in known.values() if s.oil} - set(known)):
+        apart = {of: low for of, low in lows.items() if of in family and low > 0.0}
+        if sum(apart.values()) > 100.0 + CLOSE:
+            last = max(i for i, r in enumerate(rules) if r.of in apart)
+            found.append((last, f"the lows of {_names(apart)} sum to {sum(apart.values()):g} %, more than "
+                                "100 %", "lower one of them"))
     for i, cap in enumerate(rules):
         inside = {of: low for of, low in demanded.items() if of != cap.of and known[of].matches(cap.of)}
         if sum(inside.values()) > cap.high + CLOSE:

@@ -21,6 +21,7 @@ class Typing:
     whole: bool = False  # the next character takes the place of all the text
     asking: bool = False  # a question about the text is open in the status line
     suggestion: str | None = None
+    keepable: bool = True  # may the text be kept although it was questioned
 
 
 @dataclass(frozen=True)
@@ -63,10 +64,10 @@ class EditLine(Canvas):
         self._then, self._drop = then, drop
         self.paint()
 
-    def ask(self, suggestion: str | None) -> None:
-        """The text was questioned: y or Enter keeps it, s takes the suggestion, Esc drops it."""
+    def ask(self, suggestion: str | None, *, keepable: bool = True) -> None:
+        """The text was questioned: y or Enter keeps it (if it may be), s takes the suggestion, Esc drops it."""
         if self.typing is not None:
-            self.typing = replace(self.typing, asking=True, suggestion=suggestion, whole=False)
+            self.typing = replace(self.typing, asking=True, suggestion=suggestion, keepable=keepable, whole=False)
             self.paint()
 
     def stop(self) -> None:
@@ -101,7 +102,7 @@ class EditLine(Canvas):
         now = self.typing
         if not now.asking:
             return Ended(now.text) if key == "enter" else None
-        if key == "enter" or character in ("y", "Y"):
+        if now.keepable and (key == "enter" or character in ("y", "Y")):
             return Ended(now.text, confirmed=True)
         if character in ("s", "S") and now.suggestion is not None:
             return Ended(now.suggestion)

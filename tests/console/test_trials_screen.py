@@ -8,7 +8,7 @@ import pytest
 
 from blendtui.desk import stocks as desk
 from blendtui.desk.plant import open_plant
-from blendtui.desk.targets import keep_trial
+from blendtui.desk.trials import keep_trial
 from blendtui.store.records import Trial
 
 from .conftest import started

@@ -296,3 +296,21 @@ def test_a_retired_code_is_taken_up_again_with_nothing_of_the_old(plant):
     plant.undo()
     assert plant.state() == before
     assert plant.verify() is None
+
+
+@pytest.mark.parametrize(("cell", "typed", "suggestion", "then"), [
+    ("density15", "0.868", "868", {"density15": 868.0}),
+    ("kv100", "86", "86/30.2", {"kv40": 86.0, "kv100": 30.2})])
+def test_what_cannot_be_true_names_what_would_do(plant: Plant, cell: str, typed: str, suggestion: str,
+                                                 then: dict[str, float]) -> None:
+    asked = edit_cell(plant, "A", cell, typed)
+    assert (asked.status, asked.refused, asked.suggestion) == ("question", True, suggestion)
+    with pytest.raises(DeskError):
+        edit_cell(plant, "A", cell, typed, confirmed=True)
+    assert edit_cell(plant, "A", cell, suggestion, confirmed=True).status == "saved"
+    assert {c: getattr(plant.stock("A"), c) for c in then} == then
+
+
+def test_a_pair_is_read_as_both_viscosities(plant: Plant) -> None:
+    edit = edit_cell(plant, "A", "kv100", "480/31.5 cSt")
+    assert edit.message == "A KV40 30.2 → 480, KV100 5.23 → 31.5; read as KV40/KV100"

@@ -7,10 +7,10 @@ from pathlib import Path
 
 import pytest
 
-from blendtui.desk import stocks, targets
+from blendtui.desk import stocks, targets, trials
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import export_plant, open_plant
-from blendtui.store.errors import NoSuchRow
+from blendtui.store.errors import ChangedSince, NoSuchRow
 from blendtui.store.opening import import_folder
 from blendtui.store.plant import Plant
 from blendtui.store.records import Trial
@@ -277,13 +277,13 @@ def test_a_product_code_that_is_taken(plant):
 
 def test_a_trial_is_kept_once_and_dropped(plant):
     trial = Trial("lean", "H46", {"A": 0.25, "M": 0.75})
-    assert targets.keep_trial(plant, trial) == "H46 trial lean kept"
+    assert trials.keep_trial(plant, trial) == "H46 trial lean kept"
     (kept,) = plant.trials("H46")
     assert (kept.shares, kept.kept_by) == ({"A": 0.25, "M": 0.75}, "anna")
     with pytest.raises(DeskError, match=r"^H46 has a trial 'lean' already; keep this one under another "
                                         r"name$"):
-        targets.keep_trial(plant, trial)
-    assert targets.drop_trial(plant, "H46", "lean") == "H46 trial lean dropped"
+        trials.keep_trial(plant, trial)
+    assert trials.drop_trial(plant, "H46", "lean") == "H46 trial lean dropped"
     assert plant.trials() == []
     plant.undo()
     assert plant.trials() == [kept]
@@ -291,8 +291,24 @@ def test_a_trial_is_kept_once_and_dropped(plant):
 
 def test_a_trial_needs_shares_and_a_name(plant):
     with pytest.raises(DeskError, match=r"^a trial without shares; make a recipe first$"):
-        targets.keep_trial(plant, Trial("x", "H46"))
+        trials.keep_trial(plant, Trial("x", "H46"))
     with pytest.raises(DeskError, match=r"^the trial needs a name; type one such as lean$"):
-        targets.keep_trial(plant, Trial(" ", "H46", {"A": 1.0}))
+        trials.keep_trial(plant, Trial(" ", "H46", {"A": 1.0}))
     with pytest.raises(DeskError, match=r"^H46 has no trial 'gone'$"):
-        targets.drop_trial(plant, "H46", "gone")
+        trials.drop_trial(plant, "H46", "gone")
+
+
+def test_a_line_that_another_changed_is_not_written_over(tmp_path: Path, plant: Plant) -> None:
+    seen = plant.product("H46")
+    with open_plant(plant.path, who="ben") as other:
+        targets.edit_product(other, "H46", "batch_kg", "9 t")
+        targets.set_limit(other, "H46", "vi", "101")
+        targets.set_rule(other, "H46", "A", "1", "40")
+    for change in (lambda: targets.edit_product(plant, "H46", "batch_kg", "7 t", seen=seen),
+                   lambda: targets.set_limit(plant, "H46", "vi", "90", seen=seen),
+                   lambda: targets.set_rule(plant, "H46", "A", "2", "30", seen=seen)):
+        with pytest.raises(ChangedSince, match=r"ben changed it at .* look again and repeat the change"):
+            change()
+    now = plant.product("H46")
+    assert now.batch_kg == 9000.0
+    assert targets.edit_product(plant, "H46", "batch_kg", "7 t", seen=now).status == "saved"

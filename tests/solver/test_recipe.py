@@ -349,3 +349,79 @@ def test_the_batch_scales_the_charges(weights: list[float], factor: float) -> No
 def test_the_order_of_the_stocks_does_not_matter() -> None:
     forward, backward = design(PLANT, WIDE), design(PLANT[::-1], WIDE)
     assert forward.cost_per_t == pytest.approx(backward.cost_per_t, rel=2e-6)
+
+
+def test_each_line_has_its_own_guard() -> None:
+    # The line's guard stands on the line's own limits; the grade's are not moved by it.
+    wide = Target("t", (Limit("kv40", 30.0, 60.0, guard=5.0),), grade="ISO VG 46")
+    held = design(PLANT, wide).limits[0]
+    assert (held.low, held.high, held.held_low, held.held_high, held.guard) == (41.4, 50.6, 41.4, 50.6, 0.0)
+    two = Target("t", (Limit("kv40", 42.0, guard=1.0), Limit("kv40", 42.5)))
+    assert design(PLANT, two).limits[0].held_low == 43.0
+
+
+@pytest.mark.parametrize(("limit", "words"), [
+    (Limit("kv100", None, 7.0, guard=8.0), "KV at 100 °C: no oil is at most -1 mm²/s with a guard of 8"),
+    (Limit("pour", None, -10.0, guard=300.0), "pour point: no oil is at most -310 °C with a guard of 300"),
+    (Limit("flash", 500.0), "flash point: no oil is at least 500 °C")])
+def test_a_limit_off_the_scale_is_infeasible_in_words(limit: Limit, words: str) -> None:
+    recipe = design(only("N150", "N500", "BS", "P4", "P40"), Target("t", (limit,)))
+    assert recipe.status == "infeasible"
+    assert recipe.reasons[0].startswith(words)
+    assert recipe.shares is not None
+
+
+def test_a_low_limit_below_every_scale_asks_nothing() -> None:
+    assert design(PLANT, Target("t", (Limit("kv40", 0.1, 50.0),))).status == "optimal"
+
+
+def test_narrow_windows_cost_what_they_must() -> None:
+    # Where rows are nearly parallel, holding them a hair inside would cost; two stocks leave only one answer.
+    for law in LAWS:
+        for share in (0.2, 0.6):
+            made = evaluate(only("N150", "BS"), {"N150": 1 - share, "BS": share}, law=law)
+            limits = tuple(Limit(code, v * (1 - 1e-5), v * (1 + 1e-5)) for code in ("kv40", "kv60", "kv100")
+                           if (v := evaluate(only("N150", "BS"), {"N150": 1 - share, "BS": share},
+                                             Target("t", (Limit("kv60", 1.0),), law=law)).predicted[code]))
+            found = design(only("N150", "BS"), Target("t", limits, law=law))
+            assert found.status == "optimal"
+            assert found.cost_per_t == pytest.approx(made.cost_per_t, rel=2e-5)
+            assert found.bound_per_t <= made.cost_per_t
+            exact = tuple(Limit(x.property, x.low / (1 - 1e-5), x.low / (1 - 1e-5)) for x in limits)
+            assert design(only("N150", "BS"), Target("t", exact, law=law)).status in ("optimal", "stopped")
+
+
+def test_the_nearest_blend_keeps_share_rules_and_whole_numbers() -> None:
+    plant = [replace(s, oil="sulfur" if s.code == "P40" else "") for s in only("N150", "N500", "BS", "P4", "P40")]
+    limits = (Limit("kv40", 200.0, 240.0), Limit("vi", 170.0), Limit("sulfur", None, 0.3))
+    capped = design(plant, Target("t", limits, (ShareRule("sulfur", high=0.05),)))
+    assert capped.status == "infeasible"
+    assert capped.shares.get("P40", 0.0) <= 0.05 + 1e-7
+    free = design(plant, Target("t", limits))
+    ruled = design(plant, Target("t", limits, max_stocks=2, min_share=0.1))
+    assert len(ruled.shares) <= 2
+    assert min(ruled.shares.values()) >= 0.1 - 1e-7
+    kv40 = {x.property: x.met for x in ruled.limits}
+    assert kv40["kv40"]  # two stocks are enough to meet the window, whatever the VI
+    assert free.shares is not None
+
+
+def test_least_shares_that_add_up_to_too_much() -> None:
+    rules = (ShareRule("N150", low=0.6), ShareRule("group IV", low=0.3), ShareRule("N500", low=0.2))
+    recipe = design(PLANT, replace(WIDE, rules=rules))
+    assert recipe.shares is None
+    assert recipe.reasons[0].startswith("the least shares asked add up to 110 %: N150 60 %, group IV 30 %")
+    with pytest.raises(TargetError, match="the least shares of base, rework sum to 110 %"):
+        design(PLANT, replace(WIDE, rules=(ShareRule("base", low=0.6), ShareRule("rework", low=0.5))))
+
+
+def test_an_oil_may_bear_the_code_of_a_stock() -> None:
+    plant = [N150, replace(stock("B", 31.0, 5.3, 868.0, 500.0), oil="N150"), N500]
+    recipe = design(plant, Target("t", (Limit("kv40", 41.4, 50.6),), (ShareRule("N150", high=0.3),)))
+    assert recipe.status == "infeasible" or (
+        recipe.shares.get("N150", 0.0) + recipe.shares.get("B", 0.0) <= 0.3 + 1e-7)
+
+
+def test_one_way_to_write_a_temperature() -> None:
+    with pytest.raises(TargetError, match="kv40.0: write kv40"):
+        design(PLANT, Target("t", (Limit("kv40.0", 41.0),)))
