@@ -23,7 +23,7 @@ from .gauge import Gauge, weights
 from .properties import Array
 from .stocks import StockTable
 from .target import LAWS
-from .walther import kv_of, lines, log_t, w_of
+from .walther import kv_of, log_t, w_of
 
 
 def vbn(kv: Any) -> Any:
@@ -66,11 +66,11 @@ def viscosity_gauge(law: str, table: StockTable, celsius: float) -> Gauge:
     """
     index, value = index_of_law(law)
     known = knows_viscosity(law, table)
-    kv = np.where(known[:, None], table.kv, [2.0, 1.0])
-    a, b = lines(kv)
+    a, b = table.lines
     omega = np.where(known, np.where(known, weights(table, basis_of(law)), 1.0), 0.0)
     if law == "refutas":
-        at = kv[:, 0] if celsius == 40.0 else kv[:, 1] if celsius == 100.0 else kv_of(a - b * log_t(celsius))
+        given = {40.0: table.kv[:, 0], 100.0: table.kv[:, 1]}.get(celsius)
+        at = np.where(known, kv_of(a - b * log_t(celsius)) if given is None else given, 1.0)
         if np.any(at[known] < 0.21):
             thin = table.codes[int(np.flatnonzero(known & (at < 0.21))[0])]
             raise RangeError(f"{thin} is thinner than 0.21 mm²/s at {celsius:g} °C, "

@@ -22,6 +22,7 @@ from .properties import Array
 HOLD = 1e-10  # how far inside rows are held at first: a hair, for a hair costs
 FIRM_HOLD = 1e-7  # and where the exact recomputation did not pass: the solver's own tolerance
 SLACK = -1e-7  # and where limits leave a single point: as far outside, to be judged exactly
+PRESOLVE = False  # it costs more than it saves on so few rows
 Status = Literal["optimal", "infeasible", "stopped"]
 
 
@@ -129,7 +130,7 @@ def _solve_plain(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
         result = linprog(c, A_ub=problem.rows if len(problem.rows) else None,
                          b_ub=-problem.hold if len(problem.rows) else None, A_eq=a_eq, b_eq=b_eq,
                          bounds=np.column_stack([problem.lo, np.maximum(problem.lo, problem.hi)]),
-                         method=method, options={"time_limit": watch.left})
+                         method=method, options={"time_limit": watch.left, "presolve": PRESOLVE})
         if result.status != 4:  # numerical trouble: the other method answers instead
             break
     return _translate(result, result.fun, problem, c)
@@ -191,8 +192,7 @@ def _solve_whole(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
     result = milp(np.concatenate([c, np.zeros(k)]), constraints=constraints,
                   integrality=np.concatenate([np.zeros(n), np.ones(k)]),
                   bounds=Bounds(np.concatenate([problem.lo, forced]), np.concatenate([hi, np.ones(k)])),
-                  # Presolve costs more than it saves on so few rows.
-                  options={"time_limit": watch.left, "mip_rel_gap": 1e-9, "presolve": False})
+                  options={"time_limit": watch.left, "mip_rel_gap": 1e-9, "presolve": PRESOLVE})
     solved = _translate(result, result.mip_dual_bound, replace(problem, hi=hi), c)
     return _clean_choice(solved, problem, c, watch)
 

@@ -17,6 +17,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any, Literal
 
 import numpy as np
@@ -139,6 +140,7 @@ def _ccs(code: str, celsius: float) -> Property:
                     temperature=celsius, note="logarithm linear by mass: unvalidated")
 
 
+@lru_cache(maxsize=1024)
 def lookup(code: str) -> Property:
     """Return the registry entry of a property code.
 

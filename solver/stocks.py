@@ -10,6 +10,7 @@ import numpy as np
 
 from .errors import StockError
 from .properties import Array
+from .walther import lines
 
 KINDS = ("base", "vi_improver", "additive", "pour_depressant", "rework")
 GROUPS = ("I", "II", "III", "IV", "V")
@@ -117,6 +118,12 @@ class StockTable:
         """Blending KV at 40 and 100 °C [mm²/s], shape (n, 2)."""
         pairs = [s.blending_kv or (np.nan, np.nan) for s in self.stocks]
         return np.array(pairs, dtype=np.float64).reshape(len(pairs), 2)
+
+    @cached_property
+    def lines(self) -> tuple[Array, Array]:
+        """a and b, each of shape (n,), of each stock's D341 line; of a stand-in where a KV is unknown."""
+        known = np.isfinite(self.kv).all(axis=1, keepdims=True)
+        return lines(np.where(known, self.kv, [2.0, 1.0]))
 
     @cached_property
     def counted(self) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:

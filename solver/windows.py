@@ -308,12 +308,12 @@ def _branch(run: _Search, lo: float, hi: float, node_limit: int) -> Outcome:
         if piece.bound >= run.best - run.tolerance(run.best):
             closed = min(closed, piece.bound)
             continue
-        at = run.curves[0][0].snap(run.at(x))
-        cuts = run.cuts(at, piece.left, piece.right, x)
+        points = _points_inside(run, piece)
+        cuts = next((rows for at in points if (rows := run.cuts(at, piece.left, piece.right, x))), [])
         if cuts:
             push(piece.left, piece.right, piece.bound, piece.rows + cuts)
         else:
-            split = _split(run, piece, at)
+            split = points[0] if points else 0.5 * (piece.left + piece.right)
             push(piece.left, split, piece.bound, piece.rows)
             push(split, piece.right, piece.bound, piece.rows)
     bound = min([run.best, closed, *(piece.bound for piece in heap)])
@@ -323,14 +323,12 @@ def _branch(run: _Search, lo: float, hi: float, node_limit: int) -> Outcome:
     return Outcome("optimal" if done else "stopped", run.best_x, run.best, bound, run.solves)
 
 
-def _split(run: _Search, piece: _Piece, at: float) -> float:
-    """Where to split a piece: at the best blend if inside it, else at the outer optimum, else halfway."""
+def _points_inside(run: _Search, piece: _Piece) -> list[float]:
+    """Where to cut or split a piece: at the best blend, then at the outer optimum, if inside it."""
     edge = 1e-6 * (piece.right - piece.left)
-    best = [run.curves[0][0].snap(run.at(run.best_x))] if run.best_x is not None else []
-    for point in [*best, at]:
-        if piece.left + edge < point < piece.right - edge:
-            return point
-    return 0.5 * (piece.left + piece.right)
+    blends = ([run.best_x] if run.best_x is not None else []) + [piece.x]
+    points = [run.curves[0][0].snap(run.at(x)) for x in blends]
+    return [at for at in points if piece.left + edge < at < piece.right - edge]
 
 
 def _window(run: _Search) -> tuple[float, float]:

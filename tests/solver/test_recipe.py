@@ -423,5 +423,5 @@ def test_an_oil_may_bear_the_code_of_a_stock() -> None:
 
 
 def test_one_way_to_write_a_temperature() -> None:
-    with pytest.raises(TargetError, match="kv40.0: write kv40"):
+    with pytest.raises(TargetError, match=r"kv40\.0: write kv40"):
         design(PLANT, Target("t", (Limit("kv40.0", 41.0),)))
