@@ -86,13 +86,13 @@ def _headline(product: str, recipe: Recipe) -> str:
     if recipe.shares is None:
         return f"{harmless(product)}: NO BLEND"
     text = f"{harmless(product)}: {STATUS[recipe.status]}"
+    if recipe.gap is not None and recipe.status == "optimal":
+        text += f", proven to {max(1e-4, 100.0 * recipe.gap):.1g} %"
     if recipe.cost_per_t is not None:
         text += f"; {numbers.cost(recipe.cost_per_t)} per t"
         if recipe.batch_kg is not None:
             text += (f", {numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)} for "
                      f"{numbers.kg(recipe.batch_kg)} kg")
-    if recipe.gap is not None and recipe.status != "infeasible":
-        text += f"; nothing is cheaper by {max(1e-5, 100.0 * recipe.gap):.1g} %"
     return text
 
 
@@ -129,11 +129,11 @@ def _limits(limits: Sequence[LimitResult]) -> str:
     rows = []
     for x in limits:
         label = "cost, per t" if x.property == "cost_per_t" else lookup(x.property).label
-        word = {True: "met", False: "NOT MET", None: "unknown"}[x.met] + (", binds" if x.binding else "")
+        word = {True: "binds" if x.binding else "met", False: "NOT MET", None: "unknown"}[x.met]
         rows.append([label, numbers.value(x.property, x.value), *(
             "" if v is None else numbers.value(x.property, v) for v in (x.low, x.high)),
             f"{x.guard:.3g}" if x.guard else "", _margin(x), word])
-    return table(["limit", "value", "at least", "at most", "guard", "margin", "verdict"], rows)
+    return table(["limit", "value", "low", "high", "guard", "margin", "verdict"], rows)
 
 
 def _margin(limit: LimitResult) -> str:

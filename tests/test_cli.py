@@ -182,7 +182,7 @@ def test_options_stand_before_the_command_or_after_it(capsys: pytest.CaptureFixt
 
 def test_text_fits_a_printer(capsys: pytest.CaptureFixture[str]) -> None:
     for argv in (["stocks"], ["products"], ["design", "HYD-46", "--ranges", "--blends", "8"], ["design", "HYD-46X"],
-                 ["design", "MULT-1030"], ["predict", "LN15A=60", "MN50=40"]):
+                 ["design", "MULT-1030"], ["design", "BASE-10W"], ["predict", "LN15A=60", "MN50=40"]):
         _, out, _ = run(capsys, *argv, "--plant", str(EXAMPLE))
         long = [line for line in out.split("\n") if len(line) > 80]
         assert not long, long
