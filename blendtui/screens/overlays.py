@@ -46,8 +46,8 @@ class TextScreen(Screen[None]):
         self.page_text.show(list(self.lines(self.size.width)))
 
     def lines(self, width: int) -> Iterable[Line]:
-        """The text."""
-        raise NotImplementedError
+        """The text for a width; each overlay has its own."""
+        return ()
 
     def on_key(self, event: events.Key) -> None:
         """Move, or leave."""

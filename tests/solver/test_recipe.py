@@ -10,9 +10,11 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from solver.errors import SolverError, StockError, TargetError
+from solver.laws import viscosity_gauge
 from solver.recipe import design, evaluate
 from solver.stocks import Stock, StockTable
 from solver.target import LAWS, Limit, ShareRule, Target
+from solver.viscosity_index import indices
 
 
 def stock(code: str, kv40: float | None, kv100: float | None, density: float | None, price: float | None = 800.0,
@@ -425,3 +427,20 @@ def test_an_oil_may_bear_the_code_of_a_stock() -> None:
 def test_one_way_to_write_a_temperature() -> None:
     with pytest.raises(TargetError, match=r"kv40\.0: write kv40"):
         design(PLANT, Target("t", (Limit("kv40.0", 41.0),)))
+
+
+def test_a_vi_at_most_is_the_mirror_image() -> None:
+    # Cheap stocks of high VI, and a VI of at most 100 asked: no random blend that meets it costs less.
+    plant = StockTable([stock("A", 30.0, 5.6, 850.0, 500.0), stock("B", 95.0, 12.2, 860.0, 520.0),
+                        stock("C", 60.0, 7.2, 890.0, 900.0), stock("D", 20.0, 3.6, 880.0, 850.0)])
+    rng = np.random.default_rng(2)
+    blends = rng.dirichlet(np.full(4, 0.5), size=6000)
+    for law in LAWS:
+        recipe = design(plant, Target("t", (Limit("kv40", 41.4, 50.6), Limit("vi", None, 100.0)), law=law))
+        assert recipe.status == "optimal"
+        assert recipe.predicted["vi"] == pytest.approx(100.0, abs=1e-4)
+        kv40, kv100 = (np.asarray(g.value(g.index_of(blends))) for g in
+                       (viscosity_gauge(law, plant, t) for t in (40.0, 100.0)))
+        met = (kv40 >= 41.4) & (kv40 <= 50.6) & (indices(kv40, kv100) <= 100.0)
+        assert met.any()
+        assert float((blends @ plant.price)[met].min()) >= recipe.bound_per_t
