@@ -109,12 +109,15 @@ def scale(row: Array) -> Array:
     return row / largest if largest > 0.0 else row
 
 
-def solve(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
-    """Minimise c·x over a polytope. Both infeasible bounds and an empty set answer "infeasible"."""
+def solve(problem: Polytope, c: Array, watch: Stopwatch, known: float = np.inf) -> Solved:
+    """Minimise c·x over a polytope. Both infeasible bounds and an empty set answer "infeasible".
+
+    `known`: only answers cheaper than this are wanted, so what cannot be part of one may be passed over.
+    """
     if len(c) == 0 or np.any(problem.lo > problem.hi + 1e-12):
         return Solved("infeasible", None, np.inf, np.inf)
     if problem.whole is not None:
-        return _solve_whole(problem, c, watch)
+        return _solve_whole(problem, c, watch, known)
     return _solve_plain(problem, c, watch)
 
 
@@ -161,14 +164,14 @@ def tidy(x: Array, problem: Polytope) -> Array:
     return x * (problem.total / x.sum()) if problem.total is not None and x.sum() > 0.0 else x
 
 
-def _solve_whole(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
+def _solve_whole(problem: Polytope, c: Array, watch: Stopwatch, known: float) -> Solved:
     """With whole-number rules: a 0/1 choice y_k for every stock they count, x_k ≤ hi_k y_k."""
     whole = problem.whole
     assert whole is not None
     relaxed = _solve_plain(problem, c, watch)
     if relaxed.x is None or whole.kept_by(relaxed.x):
         return relaxed  # the rules do not bind (or nothing meets even the rest)
-    problem = _without_hopeless(problem, relaxed, c, watch)
+    problem = _without_hopeless(problem, relaxed, c, watch, known)
     least = whole.least if len(whole.least) else np.zeros(len(c))
     counted = whole.counted & ((problem.hi >= least) | (problem.lo > 0.0)) & (problem.hi > 0.0)
     hi = np.where(whole.counted & ~counted, 0.0, problem.hi)
@@ -197,7 +200,7 @@ def _solve_whole(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
     return _clean_choice(solved, problem, c, watch)
 
 
-def _without_hopeless(problem: Polytope, relaxed: Solved, c: Array, watch: Stopwatch) -> Polytope:
+def _without_hopeless(problem: Polytope, relaxed: Solved, c: Array, watch: Stopwatch, known: float) -> Polytope:
     """Close the stocks that cannot be in the best answer.
 
     Its least share of a stock outside the relaxed answer adds at least reduced·least to the relaxed value;
@@ -207,7 +210,6 @@ def _without_hopeless(problem: Polytope, relaxed: Solved, c: Array, watch: Stopw
     whole, x = problem.whole, relaxed.x
     if whole is None or x is None or relaxed.reduced is None or not np.any(whole.least > 0.0):
         return problem
-    known = np.inf
     for floor in (0.0, 0.5):
         tried = _solve_plain(problem.on_support(np.where(x >= floor * whole.least, x, 0.0)), c, watch)
         if tried.x is not None and whole.kept_by(tried.x):

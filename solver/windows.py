@@ -211,7 +211,7 @@ class _Search:
 
     def solve(self, problem: Polytope) -> Solved:
         self.solves += 1
-        solved = solve(problem, self.c, self.watch)
+        solved = solve(problem, self.c, self.watch, self.best)
         self.cut_short |= solved.status == "stopped"
         return solved
 
