@@ -65,6 +65,7 @@ class Console(App[int]):
         self.asker = Asker(self)
         self.session = Session(read(plant), self.asker.ask)
         self.said: deque[tuple[str, str]] = deque(maxlen=KEPT_MESSAGES)
+        self.said.extend(("note", note) for note in plant.notes)
         self.said.append(("note", f"{plant.opened_note}" if plant.opened_note else str(plant.path)))
         self.been: list[str] = []  # screens to go back to
         self.going = ""  # the screen that is being opened

@@ -12,13 +12,16 @@ import os
 import sys
 from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import Any, NoReturn
+from typing import TYPE_CHECKING, Any, NoReturn
 
 from blendtui.desk.errors import DeskError
 from blendtui.quiet import quiet
 from blendtui.store.errors import CatalogueError, PlantError
 from solver.errors import SolverError
 from solver.target import LAWS
+
+if TYPE_CHECKING:
+    from blendtui.desk.plant import Plant
 
 DONE, BAD_INPUT, NO_BLEND = 0, 2, 3
 HEADLESS = """blendtui opens its console on a terminal, and there is none here. Headless, for example:
@@ -163,6 +166,18 @@ def _say(text: str) -> None:
         print(text, file=sys.stderr)
 
 
+def _opened(options: argparse.Namespace) -> Plant:
+    """The plant of --plant; columns of a folder that nothing uses are told on stderr, never passed over."""
+    from blendtui.desk.plant import open_plant
+    from blendtui.store.harmless import harmless
+
+    plant = open_plant(options.plant)
+    for note in plant.notes:
+        if "column" in note:
+            print(f"note: {harmless(note)}", file=sys.stderr)
+    return plant
+
+
 def _viscosity(options: argparse.Namespace) -> int:
     from blendtui import as_json, as_text
     from solver.grades import iso_vg
@@ -185,7 +200,6 @@ def _predict(options: argparse.Namespace) -> int:
     from dataclasses import replace
 
     from blendtui import as_json, as_text
-    from blendtui.desk.plant import open_plant
     from solver.recipe import evaluate
 
     shares: dict[str, float] = {}
@@ -196,7 +210,7 @@ def _predict(options: argparse.Namespace) -> int:
         if code in shares:
             raise BadInput(f"{code} is given twice; give each stock one share")
         shares[code] = _number(typed, each, "share")
-    with open_plant(options.plant) as plant:
+    with _opened(options) as plant:
         recipe = evaluate(plant.stocks(), shares, law=options.law or "refutas")
     # The answer repeats the shares as they were given.
     recipe = replace(recipe, shares={code: share for code, share in shares.items() if share > 0.0})
@@ -207,14 +221,13 @@ def _predict(options: argparse.Namespace) -> int:
 def _design(options: argparse.Namespace) -> int:
     from blendtui import as_json, as_text
     from blendtui.desk import blends
-    from blendtui.desk.plant import open_plant
     from blendtui.desk.targets import target_of
 
     wanted = _count(options.blends)
     batch = None if options.batch is None else _number(options.batch, "--batch", "mass")
     if batch is not None and batch <= 0.0:
         raise BadInput(f"--batch {options.batch}: a batch is more than 0 kg")
-    with open_plant(options.plant) as plant:
+    with _opened(options) as plant:
         stocks = plant.stocks()
         target = target_of(plant, options.product, options.law, batch)
     _say(f"designing {options.product} …")
@@ -255,21 +268,20 @@ def _import(options: argparse.Namespace) -> int:
 
 
 def _export(options: argparse.Namespace) -> int:
-    from blendtui.desk.plant import export_plant, open_plant
+    from blendtui.desk.plant import export_plant
 
-    with open_plant(options.plant) as plant:
-        export_plant(plant, options.folder)
+    with _opened(options) as plant:
+        notes = export_plant(plant, options.folder)
         count = {"stocks": len(plant.stocks()), "products": len(plant.products())}
-    _print(options, {"folder": str(options.folder), **count},
-           f"exported {count['stocks']} stocks and {count['products']} products to {options.folder}")
+    words = f"exported {count['stocks']} stocks and {count['products']} products to {options.folder}"
+    _print(options, {"folder": str(options.folder), **count, "notes": list(notes)}, "\n".join([words, *notes]))
     return DONE
 
 
 def _stocks(options: argparse.Namespace) -> int:
     from blendtui import as_json, as_text
-    from blendtui.desk.plant import open_plant
 
-    with open_plant(options.plant) as plant:
+    with _opened(options) as plant:
         stocks = plant.stocks()
     _print(options, {"stocks": [as_json.stock(s) for s in stocks]}, as_text.stocks(stocks))
     return DONE
@@ -277,9 +289,8 @@ def _stocks(options: argparse.Namespace) -> int:
 
 def _products(options: argparse.Namespace) -> int:
     from blendtui import as_json, as_text
-    from blendtui.desk.plant import open_plant
 
-    with open_plant(options.plant) as plant:
+    with _opened(options) as plant:
         products = plant.products()
     _print(options, {"products": [as_json.product(p) for p in products]}, as_text.products(products))
     return DONE

@@ -237,6 +237,18 @@ def test_import_lists_every_fault(capsys: pytest.CaptureFixture[str], folder: Pa
     assert "more)" in err
 
 
+def test_a_column_that_nothing_uses_is_told(capsys: pytest.CaptureFixture[str], folder: Path) -> None:
+    lines = STOCKS.strip().split("\n")
+    text = "\n".join([lines[0] + ",shelf", *(line + ",7" for line in lines[1:])]) + "\n"
+    (folder / "stocks.csv").write_text(text, encoding="utf-8")
+    code, out, err = run(capsys, "design", "P46", "--plant", str(folder), "--json")
+    assert code == 0
+    assert json.loads(out)["status"] == "optimal"
+    assert err.startswith("note: stocks.csv: unknown column")
+    assert "shelf" in err
+    assert err.count("\n") == 1
+
+
 def test_a_name_cannot_drive_the_terminal(capsys: pytest.CaptureFixture[str], folder: Path) -> None:
     code, out, err = run(capsys, "design", "\x1b[2Jevil", "--plant", str(folder))
     assert (code, out) == (2, "")
