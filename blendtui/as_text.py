@@ -98,7 +98,7 @@ def _headline(product: str, recipe: Recipe) -> str:
 
 def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = None) -> str:
     density = {s.code: s.density15 for s in stocks}
-    charges = recipe.charges_kg
+    charges, shown = recipe.charges_kg, numbers.charges(recipe.charges_kg)
     heads = ["stock", "mass %", *(["kg", "L at 15 °C"] if charges is not None else [])]
     codes = list(recipe.shares or {})
     if ranges is not None:
@@ -109,7 +109,8 @@ def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = Non
         row = [code, numbers.pct((recipe.shares or {}).get(code, 0.0))]
         if charges is not None:
             mass, rho = charges.get(code), density.get(code)
-            row += [numbers.kg(mass), numbers.litres(None if mass is None or rho is None else 1000.0 * mass / rho)]
+            volume = None if mass is None or rho is None else 1000.0 * mass / rho
+            row += [shown.get(code, numbers.UNKNOWN), numbers.litres(volume)]
         if ranges is not None:
             row += [numbers.pct(v) for v in ranges.get(code, (None, None))]
         rows.append(row)

@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from .errors import TargetError
 from .laws import knows_viscosity
+from .properties import Array
 from .requirements import Requirement
 from .stocks import GROUPS, KINDS, Stock, StockTable
 from .target import ShareRule, Target
+
+CLOSE = 2e-6  # mass fraction to which shares are held against a rule: what a search leaves is smaller
 
 
 @dataclass(frozen=True)
@@ -66,6 +69,42 @@ def _check_sums(target: Target, table: StockTable) -> None:
         if sum(lows.values()) > 1.0 + 1e-9:
             raise TargetError(f"share rules contradict: the least shares of {', '.join(lows)} sum to "
                               f"{100 * sum(lows.values()):g} %, more than 100 %", where=target.product)
+
+
+def breaches(table: StockTable, x: Array, target: Target) -> tuple[str, ...]:
+    """What given shares x, shape (n,), break of a target's rules, in words: shares, list, tanks, numbers.
+
+    Limits on properties are not looked at here: a Recipe judges them one by one.
+    """
+    found = []
+    listed = set(candidates(table, replace(target, held={}, left_out=frozenset())))
+    for rule in target.rules:
+        share = float(sum(x[i] for i, s in enumerate(table.stocks) if s.code == rule.of or s.matches(rule.of)))
+        if not rule.low - CLOSE <= share <= rule.high + CLOSE:
+            found.append(f"{rule.of} {100 * share:.2f} %, the product asks {_span(rule)}")
+    capped = {rule.of for rule in target.rules if rule.high <= 0.0}
+    for i in np.flatnonzero(x > CLOSE):
+        stock = table.stocks[i]
+        if i not in listed and not any(stock.matches(of) for of in capped):
+            found.append(f"{stock.code} is not on the product's list")
+        kg, most = float(x[i]) * (target.batch_kg or 0.0), stock.available_kg
+        if most is not None and kg > most * (1.0 + CLOSE) + 1e-3:
+            found.append(f"{stock.code} needs {kg:,.0f} kg, {most:,.0f} kg can be pumped")
+    counted = [i for i in np.flatnonzero(x > CLOSE) if table.stocks[i].counted]
+    if target.max_stocks is not None and len(counted) > target.max_stocks:
+        found.append(f"{len(counted)} base stocks and rework, the product allows {target.max_stocks}")
+    least = target.min_share or 0.0
+    found += [f"{table.codes[i]} {100 * float(x[i]):.2f} %, the least share is {100 * least:g} %"
+              for i in counted if x[i] < least - CLOSE and table.codes[i] not in target.held]
+    return tuple(found)
+
+
+def _span(rule: ShareRule) -> str:
+    if rule.low == rule.high:
+        return f"{100 * rule.low:g} %"
+    if rule.low <= 0.0:
+        return f"at most {100 * rule.high:g} %"
+    return f"at least {100 * rule.low:g} %" + (f" and at most {100 * rule.high:g} %" if rule.high < 1.0 else "")
 
 
 def candidates(table: StockTable, target: Target) -> list[int]:

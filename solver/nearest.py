@@ -74,8 +74,9 @@ def _shortage(model: Model, shares: Polytope, watch: Stopwatch) -> list[str]:
     if most is None or least is None:
         return ["the share rules contradict each other: no set of shares keeps them all"]
     if least > 1.0 + 1e-9:
-        asked = ", ".join(f"{r.of} {100 * r.low:.4g} %" for r in target.rules if r.low > 0.0)
-        return [f"the least shares asked add up to {100 * least:.4g} %: {asked}"]
+        lows = {r.of: r.low for r in target.rules if r.low > 0.0} | dict(target.held)
+        asked = ", ".join(f"{of} {100 * low:.4g} %{' held' if of in target.held else ''}" for of, low in lows.items())
+        return [f"the least shares asked add up to {100 * least:.6g} %: {asked}"]
     if most < 1.0 - 1e-9:
         caps = ", ".join(f"{code} {100 * hi:.4g} %" for code, hi in
                          zip(model.table.codes, model.hi, strict=True) if hi < 1.0)

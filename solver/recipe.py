@@ -13,7 +13,7 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from .allowed import LeftOut, candidates
+from .allowed import LeftOut, breaches, candidates
 from .errors import StockError, TargetError
 from .gauge import property_gauge
 from .laws import check_law, knows_viscosity, viscosity_gauge
@@ -65,6 +65,7 @@ class Recipe:
     left_out: tuple[LeftOut, ...] = ()
     to_be_tested: tuple[str, ...] = ()
     reasons: tuple[str, ...] = ()  # why infeasible or stopped, in words
+    breaches: tuple[str, ...] = ()  # rules on shares, list, tanks and numbers that given shares break, in words
 
     @property
     def binding(self) -> tuple[str, ...]:
@@ -73,8 +74,8 @@ class Recipe:
 
     @property
     def meets_all(self) -> bool:
-        """Is every limit met whose value is known?"""
-        return self.shares is not None and all(x.met is not False for x in self.limits)
+        """Is every limit met whose value is known, and every rule kept?"""
+        return self.shares is not None and not self.breaches and all(x.met is not False for x in self.limits)
 
 
 def design(stocks: StockTable | Iterable[Stock], target: Target, *, time_limit: float = 10.0,
@@ -151,7 +152,7 @@ def evaluate(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float],
              target: Target | None = None, *, law: str | None = None) -> Recipe:
     """The same reading of given shares (mass fractions that sum to 1 within 1e-4), status "by hand".
 
-    With a target its limits are judged; without one only the blend is predicted. A property is None
+    With a target its limits and rules are judged; without one only the blend is predicted. A property is None
     where a stock that is used lacks it. Raises StockError for an unknown stock or one without viscosity,
     TargetError for shares that do not sum to 100 %.
     """
@@ -170,7 +171,7 @@ def evaluate(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float],
     used = np.flatnonzero(x > 0.0)
     needs, tests = required(goal, table.where(candidates(table, goal))) if target is not None else ((), ())
     made = _read(table.where(used), x[used], goal, needs)
-    return replace(made, to_be_tested=tests)
+    return replace(made, to_be_tested=tests, breaches=breaches(table, x, goal) if target is not None else ())
 
 
 def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement, ...]) -> Recipe:

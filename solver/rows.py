@@ -12,6 +12,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from .allowed import LeftOut, candidates, check_rules, serving
+from .errors import TargetError
 from .gauge import Gauge, property_gauge
 from .laws import check_law, viscosity_gauge
 from .linear import HOLD, Polytope, Whole, scale
@@ -181,7 +182,12 @@ def _bounds(kept: StockTable, target: Target, table: StockTable) -> tuple[Array,
             if rule.of == stock.code and _of_one_stock(rule, table):
                 lo[i], hi[i] = max(lo[i], rule.low), min(hi[i], rule.high)
         if stock.code in target.held:
-            lo[i] = hi[i] = target.held[stock.code]
+            held = target.held[stock.code]
+            if not lo[i] - 1e-9 <= held <= hi[i] + 1e-9:
+                raise TargetError(f"{stock.code} is held at {100 * held:g} %, and {target.product} asks at least "
+                                  f"{100 * lo[i]:g} % and at most {100 * hi[i]:g} %; let it go or change the rule",
+                                  where=stock.code)
+            lo[i] = hi[i] = held
         if target.batch_kg is not None:
             most = float(kept.available[i]) / target.batch_kg
             if most < lo[i] - 1e-12:

@@ -43,12 +43,16 @@ def by_hand(stocks: Sequence[Stock], target: Target, shares: Mapping[str, float]
     made = evaluate(table, {code: share / total for code, share in shares.items() if share > 0.0}, target)
     if abs(total - 1.0) <= 1e-6:
         return made
-    off = 100.0 * (total - 1.0)
-    words = (f"the shares sum to {100.0 * total:.2f} %: {abs(off):.2f} % "
-             f"{'too much' if off > 0 else 'missing'}; properties are those of the same proportions")
     batch = target.batch_kg
-    return replace(made, shares=dict(shares), reasons=(words,),
+    return replace(made, shares=dict(shares), reasons=(off_by(total),),
                    charges_kg=None if batch is None else {c: s * batch for c, s in shares.items()})
+
+
+def off_by(total: float) -> str:
+    """In words, how far shares that sum to `total` are from 100 %."""
+    off = 100.0 * (total - 1.0)
+    return (f"the shares sum to {100.0 * total:.2f} %: {abs(off):.2f} % {'too much' if off > 0 else 'missing'}; "
+            "properties are those of the same proportions")
 
 
 def all_ranges(stocks: Sequence[Stock], target: Target,

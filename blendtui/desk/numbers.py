@@ -6,6 +6,7 @@ A unit stands in the heading or beside the number, never here. None is unknown a
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 
 UNKNOWN = "–"
 
@@ -67,6 +68,20 @@ def kg(value: float | None) -> str:
     ('12346', '45.7', '4.57', '0.457')
     """
     return _finer(value)
+
+
+def charges(masses: Mapping[str, float] | None) -> dict[str, str]:
+    """Masses [kg] as shown, adding up as shown: the largest takes what rounding leaves over.
+
+    >>> charges({"A": 8352.4, "B": 1780.4, "C": 1741.4, "D": 125.8})
+    {'A': '8353', 'B': '1780', 'C': '1741', 'D': '126'}
+    """
+    shown = {code: kg(mass) for code, mass in (masses or {}).items()}
+    if masses and len(masses) > 1:
+        largest = max(masses, key=lambda code: masses[code])
+        rest = sum(float(text) for code, text in shown.items() if code != largest)
+        shown[largest] = kg(sum(masses.values()) - rest)
+    return shown
 
 
 def litres(value: float | None) -> str:

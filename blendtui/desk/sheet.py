@@ -14,6 +14,7 @@ from solver.properties import lookup
 from solver.stocks import Stock
 
 from . import numbers
+from .blends import spread_words
 from .errors import DeskError
 
 if TYPE_CHECKING:
@@ -49,17 +50,31 @@ def charge_order(stocks: Sequence[Stock]) -> list[Stock]:
 
 def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[Stock], when: datetime,
                 who: str) -> str:
-    """The sheet as text, ASCII only, no line longer than 80 columns. DeskError without shares."""
+    """The sheet as text, ASCII only, no line longer than 80 columns.
+
+    DeskError without shares, or where they do not sum to 100 %. A blend that misses a limit or breaks a rule is
+    headed so.
+    """
     if not recipe.shares:
         raise DeskError("there are no shares to write down yet")
+    total = sum(recipe.shares.values())
+    if abs(total - 1.0) > 1e-4:
+        raise DeskError(f"the shares sum to {100 * total:.2f} %, not to 100 %; mend them before writing a sheet")
     used = charge_order([s for s in stocks if recipe.shares.get(s.code, 0.0) > 0.0])
     title = _cut(f"{product.product}  {product.name}".strip(), 60)
     lines = ["BLEND SHEET  " + title, "=" * WIDTH,
              f"Plant {_cut(plant, 70)}",
              f"Made {when:%Y-%m-%d %H:%M} by {_cut(who, 40)}",
              f"Batch {numbers.kg(recipe.batch_kg)} kg   law {recipe.law}   {_status(recipe)}", ""]
+    if not recipe.meets_all:
+        lines += ["*** DO NOT BLEND: this does not meet the product as it stands ***"]
+        lines += [line for words in recipe.breaches
+                  for line in textwrap.wrap(_ascii(f"! {words}"), WIDTH, subsequent_indent="  ")] + [""]
     lines += [*_charges(recipe, used), "", *_properties(recipe), ""]
-    lines += [line for words in (*recipe.reasons, *(f"To be tested: {t}" for t in recipe.to_be_tested))
+    spread = max((v for v in recipe.spread_pct.values() if v is not None), default=None)
+    warning = spread_words(spread)
+    lines += [line for words in (*recipe.reasons, *([f"! {warning}"] if warning else []),
+                                 *(f"To be tested: {t}" for t in recipe.to_be_tested))
               for line in textwrap.wrap(_ascii(words), WIDTH)]
     lines += ["", *(line for c in (*CAUTIONS, NOT_A_CERTIFICATE)
                     for line in textwrap.wrap("* " + c, WIDTH, subsequent_indent="  ")), "",
@@ -79,12 +94,17 @@ def _status(recipe: Recipe) -> str:
 def _charges(recipe: Recipe, used: Sequence[Stock]) -> list[str]:
     head = f"{'':5}{'stock':<14}{'name':<26}{'mass %':>8}{'kg':>12}{'L at 15 C':>13}"
     lines = [head, "-" * WIDTH]
-    shares = recipe.shares or {}
+    shares, masses = recipe.shares or {}, numbers.charges(recipe.charges_kg)
     for stock in used:
         mass = (recipe.charges_kg or {}).get(stock.code)
         volume = None if mass is None or stock.density15 is None else 1000.0 * mass / stock.density15
-        lines.append(f"[ ]  {_cut(stock.code, 13):<14}{_cut(stock.name, 25):<26}"
-                     f"{numbers.pct(shares[stock.code]):>8}{numbers.kg(mass):>12}{numbers.litres(volume):>13}")
+        # The tank often stands at the end of a name, so a long name goes on below and is never cut.
+        code, name = (textwrap.wrap(_ascii(text), width) or [""]
+                      for text, width in ((stock.code, 13), (stock.name, 25)))
+        lines.append(f"[ ]  {code[0]:<14}{name[0]:<26}{numbers.pct(shares[stock.code]):>8}"
+                     f"{_ascii(masses.get(stock.code, numbers.UNKNOWN)):>12}{_ascii(numbers.litres(volume)):>13}")
+        for n in range(1, max(len(code), len(name))):
+            lines.append(f"{'':5}{code[n] if n < len(code) else '':<14}{name[n] if n < len(name) else ''}")
     total = recipe.batch_kg if recipe.charges_kg is None else sum(recipe.charges_kg.values())
     lines += ["-" * WIDTH, f"{'':5}{'total':<40}{numbers.pct(sum(shares.values())):>8}{numbers.kg(total):>12}"]
     return lines

@@ -444,3 +444,26 @@ def test_a_vi_at_most_is_the_mirror_image() -> None:
         met = (kv40 >= 41.4) & (kv40 <= 50.6) & (indices(kv40, kv100) <= 100.0)
         assert met.any()
         assert float((blends @ plant.price)[met].min()) >= recipe.bound_per_t
+
+
+def test_given_shares_are_held_against_the_rules_too() -> None:
+    rules = (ShareRule("N150"), ShareRule("N500", high=0.3), ShareRule("PACK", 0.0085, 0.0085))
+    target = Target("t", (Limit("kv40", 20.0, 80.0),), rules, only_listed=True, batch_kg=2e6, max_stocks=2,
+                    min_share=0.05)
+    shares = {"N150": 0.61, "N500": 0.37, "BS": 0.02}
+    recipe = evaluate(PLANT, shares, target)
+    assert not recipe.meets_all
+    assert all(x.met for x in recipe.limits)
+    assert recipe.breaches == (
+        "N500 37.00 %, the product asks at most 30 %", "PACK 0.00 %, the product asks 0.85 %",
+        "N150 needs 1,220,000 kg, 1,000,000 kg can be pumped", "BS is not on the product's list",
+        "3 base stocks and rework, the product allows 2", "BS 2.00 %, the least share is 5 %")
+    best = design(PLANT, replace(target, batch_kg=1000.0))
+    assert evaluate(PLANT, best.shares, replace(target, batch_kg=1000.0)).breaches == ()
+
+
+def test_a_hold_outside_the_rule_is_refused() -> None:
+    target = replace(WIDE, rules=(ShareRule("N500", 0.1, 0.2),), held={"N500": 0.5})
+    with pytest.raises(TargetError, match="N500 is held at 50 %, and wide asks at least 10 % and at most 20 %; "
+                                          "let it go or change the rule"):
+        design(PLANT, target)

@@ -1,0 +1,76 @@
+"""The floor sheet: what it says, what it refuses, that it fits a printer; and shares typed by hand."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import replace
+from datetime import datetime
+from pathlib import Path
+
+import pytest
+
+from blendtui.desk import blends, numbers, sheet
+from blendtui.desk.errors import DeskError
+from blendtui.desk.plant import Plant, open_plant
+from blendtui.desk.targets import target_of
+
+EXAMPLE = Path(__file__).parent.parent.parent / "stock_catalog_example"
+NOON = datetime(2026, 6, 1, 12, 0)
+
+
+@pytest.fixture(scope="module")
+def plant() -> Iterator[Plant]:
+    with open_plant(EXAMPLE) as opened:
+        yield opened
+
+
+def made(plant: Plant, product: str, **shares: float):  # type: ignore[no-untyped-def]
+    stocks, target = plant.stocks(), target_of(plant, product)
+    recipe = blends.by_hand(stocks, target, shares) if shares else blends.best(stocks, target)
+    return sheet.floor_sheet("north works", plant.product(product), recipe, stocks, NOON, "anna"), recipe
+
+
+def test_every_product_has_a_sheet_that_prints(plant: Plant) -> None:
+    for product in plant.products():
+        text, recipe = made(plant, product.product)
+        assert text.isascii()
+        assert max(map(len, text.split("\n"))) <= 80
+        assert ("DO NOT BLEND" in text) == (recipe.status == "infeasible")
+        for code in recipe.shares:
+            assert f"[ ]  {code}" in text
+            stock = plant.stock(code)
+            assert all(word in text for word in stock.name.split())  # the tank's number is never cut off
+
+
+def test_the_kilograms_add_up_as_printed(plant: Plant) -> None:
+    text, recipe = made(plant, "HYD-32")
+    lines = [line.split() for line in text.split("\n") if line.startswith("[ ]")]
+    printed = sum(float(line[-2]) for line in lines)
+    assert printed == pytest.approx(recipe.batch_kg, abs=0.06)
+    assert sum(float(t) for t in numbers.charges(recipe.charges_kg).values()) == pytest.approx(12000.0, abs=0.06)
+
+
+def test_shares_off_a_hundred_are_refused(plant: Plant) -> None:
+    with pytest.raises(DeskError, match=r"the shares sum to 90\.00 %, not to 100 %; mend them before writing"):
+        made(plant, "HYD-32", LN15A=0.9)
+
+
+def test_a_forgotten_package_and_an_empty_tank_head_the_sheet(plant: Plant) -> None:
+    stocks = plant.stocks()
+    target = replace(target_of(plant, "HYD-32"), batch_kg=200000.0)
+    recipe = blends.by_hand(stocks, target, {"LN15A": 0.7, "HT04": 0.15, "MN50": 0.15})
+    assert not recipe.meets_all
+    text = sheet.floor_sheet("north works", plant.product("HYD-32"), recipe, stocks, NOON, "anna")
+    assert "*** DO NOT BLEND" in text
+    assert "! HP85 0.00 %, the product asks 0.85 %" in text
+    assert "! LN15A needs 140,000 kg, 60,500 kg can be pumped" in text
+
+
+def test_a_sheet_is_never_written_over(tmp_path: Path) -> None:
+    where = tmp_path / "a.txt"
+    assert sheet.write_sheet(where, "one") == f"sheet written to {where}"
+    with pytest.raises(DeskError, match="is there already; choose another name"):
+        sheet.write_sheet(where, "two")
+    assert where.read_text() == "one"
+    with pytest.raises(DeskError, match=r"cannot write .*; choose another place"):
+        sheet.write_sheet(tmp_path / "no" / "b.txt", "x")
