@@ -148,7 +148,7 @@ def edit_cell(plant: Plant, code: str, cell_code: str, typed: str, confirmed: bo
     new, note = _typed(stock, column, typed)
     stale = {c: v for c, v in new.items() if value_of(stock, c) != v}
     if not stale:
-        return Edit("unchanged", f"{code} {column.heading}: unchanged")
+        return Edit("unchanged", "; ".join(x for x in (f"{code} {column.heading}: unchanged", note) if x))
     changed = stock
     for c, v in stale.items():
         changed = edits.with_cell(changed, c, v)
@@ -200,7 +200,16 @@ def _typed(stock: Stock, column: Cell, typed: str) -> tuple[dict[str, Value], st
     value = amount(typed, code, stock.density15)
     if code in MASS and value > check.LARGEST_KG:
         raise DeskError(f"{harmless(typed, 40)} is more than {check.LARGEST_KG:g} kg; check the unit")
+    if code == "on_hand_kg":
+        return _to_the_milligram(value)
     return {code: value}, ""
+
+
+def _to_the_milligram(kg: float) -> tuple[dict[str, Value], str]:
+    """A quantity as the plant keeps it, in whole milligrams, and a note where that is not what was typed."""
+    kept = round(kg * 1e6) / 1e6
+    same = math.isclose(kg, kept, rel_tol=1e-9)
+    return {"on_hand_kg": kept}, "" if same else f"kept to the milligram: {kept:.12g} kg"
 
 
 def _text(code: str, typed: str) -> str:

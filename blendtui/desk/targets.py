@@ -137,6 +137,8 @@ def _read(cell: str, typed: str) -> Value:
     if value <= 0.0:
         raise DeskError(f"{_BY_CODE[cell].heading} {value:g} is not above 0; check the figure, "
                         "or leave it empty")
+    if cell == "batch_kg" and value > check.LARGEST_KG:
+        raise DeskError(f"{harmless(typed, 40)} is more than {check.LARGEST_KG:g} kg; check the unit")
     return value
 
 

@@ -7,8 +7,11 @@ from blendtui.store import edits
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.store.records import Trial
+from solver.target import LAWS
 
 from .errors import DeskError
+
+NOISE = 1e-6  # of a share: what a search or a sum leaves behind
 
 
 def keep_trial(plant: Plant, trial: Trial) -> str:
@@ -18,6 +21,9 @@ def keep_trial(plant: Plant, trial: Trial) -> str:
     try:
         name = check.code(trial.name.strip())
         check.plain(trial.note)
+        check.word(trial.law, LAWS, "law")
+        for code in trial.shares:
+            check.code(code)
     except check.CellError as error:
         raise DeskError(f"trial: {error}") from None
     plant.product(trial.product)
@@ -25,6 +31,10 @@ def keep_trial(plant: Plant, trial: Trial) -> str:
         raise DeskError(f"{trial.product} has a trial {name!r} already; keep this one under another name")
     if not trial.shares:
         raise DeskError("a trial without shares; make a recipe first")
+    for code, share in trial.shares.items():
+        if not -NOISE <= share <= 1.0 + NOISE:  # false for a NaN too
+            raise DeskError(f"{trial.product} trial {name}: the share of {harmless(code, 40)} is {100 * share:.6g} %; "
+                            "a share lies between 0 and 100 %")
     plant.change(edits.new_trial(plant, Trial(name, trial.product, trial.shares, trial.law, trial.kept_at,
                                               trial.kept_by, trial.note.strip())),
                  f"{trial.product} trial {name} kept")

@@ -6,7 +6,7 @@ from collections import defaultdict
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from solver.properties import is_stock_code
+from solver.properties import is_stock_code, lookup, stock_codes
 from solver.stocks import GROUPS, KINDS, SOURCES, Stock
 from solver.target import LAWS
 
@@ -14,21 +14,23 @@ from . import cells as c
 from . import state
 from .cells import Cells
 from .csv_read import Sheet, read_sheet
-from .edits import STOCK_CELLS, row_key
+from .edits import row_key
 from .errors import CatalogueError, Fault, NoPlant
 from .harmless import harmless
 from .reads import milligrams
 from .records import Row
 from .rules import Rule, contradictions
-from .schema import STOCK_NUMBERS, STOCK_TEXT
+from .schema import PRODUCT_CELLS, STOCK_CELLS, STOCK_NUMBERS, STOCK_TEXT
 from .state import Key
 
 STOCKS = ("stock", *STOCK_TEXT, "on_hand_kg", *STOCK_NUMBERS, "tested_on", "source")
-PRODUCTS = ("product", "name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks", "min_share_pct",
-            "only_listed", "note")
+PRODUCTS = ("product", *PRODUCT_CELLS)
 LIMITS = ("product", "property", "low", "high", "guard", "unknown")
 SHARES = ("product", "of", "low_pct", "high_pct")
 TRIALS = ("product", "name", "law", "stock", "share_pct", "note", "kept_at", "kept_by")
+REQUIRED = {"stocks.csv": ("stock", "kv40", "kv100"), "products.csv": ("product",),
+            "limits.csv": ("product", "property"), "shares.csv": ("product", "of"),
+            "trials.csv": ("product", "name", "stock", "share_pct")}
 
 
 @dataclass
@@ -43,16 +45,21 @@ class Catalogue:
 
 def read_catalogue(folder: Path) -> Catalogue:
     """Read and check a folder. CatalogueError carries every fault; NoPlant when there is no such folder."""
-    if not folder.is_dir():
-        raise NoPlant(f"{folder} is not a folder; name the folder that holds stocks.csv and products.csv")
-    return _Reading(folder).run()
+    try:
+        if not folder.is_dir():
+            raise NoPlant(f"{folder} is not a folder; name the folder that holds stocks.csv and products.csv")
+        return _Reading(folder, sorted(x.name for x in folder.iterdir())).run()
+    except OSError as error:
+        raise NoPlant(f"{folder} cannot be read: {(error.strerror or str(error)).lower()}; "
+                      "check the path and the rights") from None
 
 
 class _Reading:
     """One pass over the five files, faults gathered on the way."""
 
-    def __init__(self, folder: Path) -> None:
+    def __init__(self, folder: Path, held: list[str]) -> None:
         self.folder = folder
+        self.held = held  # names of everything in it
         self.faults: list[Fault] = []
         self.notes: list[str] = []
         self.state = state.empty()
@@ -61,39 +68,36 @@ class _Reading:
         self.guards: list[tuple[Cells, str, str]] = []  # lines that only guard another limit
 
     def run(self) -> Catalogue:
-        stocks = self._sheet("stocks.csv", STOCKS, ("stock", "kv40", "kv100"), needed=True)
-        products = self._sheet("products.csv", PRODUCTS, ("product",), needed=True)
-        limits = self._sheet("limits.csv", LIMITS, ("product", "property"))
-        shares = self._sheet("shares.csv", SHARES, ("product", "of"))
-        trials = self._sheet("trials.csv", TRIALS, ("product", "name", "stock", "share_pct"))
+        stocks = self._sheet("stocks.csv", STOCKS, needed=True)
+        products = self._sheet("products.csv", PRODUCTS, needed=True)
+        limits = self._sheet("limits.csv", LIMITS)
+        shares = self._sheet("shares.csv", SHARES)
+        trials = self._sheet("trials.csv", TRIALS)
         self._read_stocks(stocks)
         self._read_products(products)
         self._read_limits(limits)
         self._read_shares(shares, stocks)
         self._read_trials(trials)
         self._products_ask_something(products, limits)
-        for file in sorted(self.folder.iterdir()):
-            if file.suffix.lower() == ".csv" and file.name not in ("stocks.csv", "products.csv", "limits.csv",
-                                                                   "shares.csv", "trials.csv"):
-                self.notes.append(f"{harmless(file.name, 60)} is not read")
+        self.notes += [f"{harmless(file, 60)} is not read" for file in self.held
+                       if file.lower().endswith(".csv") and file not in REQUIRED]
         if self.faults:
-            order = ("stocks.csv", "products.csv", "limits.csv", "shares.csv", "trials.csv")
+            order = tuple(REQUIRED)
             raise CatalogueError(sorted(self.faults, key=lambda f: (order.index(f.file), f.row)))
         return Catalogue(self.folder, self.state, tuple(self.notes), trials is not None)
 
-    def _sheet(self, name: str, known: tuple[str, ...], required: tuple[str, ...], *,
-               needed: bool = False) -> Sheet | None:
-        path = self.folder / name
-        if not path.exists():
+    def _sheet(self, name: str, known: tuple[str, ...], *, needed: bool = False) -> Sheet | None:
+        if name not in self.held:
             if needed:
                 self.faults.append(Fault(name, 0, "", f"there is no such file in {self.folder}",
-                                         f"add it with the columns {', '.join(required)}"))
+                                         f"add it with the columns {', '.join(REQUIRED[name])}"))
             return None
-        sheet = read_sheet(path, known, required)
+        sheet = read_sheet(self.folder / name, known, REQUIRED[name],
+                           property_spelt if name == "stocks.csv" else None)
         self.faults += sheet.faults
         unknown = [x for x in sheet.columns
                    if x not in known and not (name == "stocks.csv" and is_stock_code(x))]
-        if unknown and name != "trials.csv":
+        if unknown:
             self.notes.append(f"{name}: unknown column{'s' * (len(unknown) > 1)} "
                               f"{harmless(', '.join(unknown), 200)}: kept, not used")
         return sheet
@@ -256,12 +260,22 @@ class _Reading:
             if (*key, stock) in self.state["trial_share"]:
                 cells.fault("stock", f"trial {c.shown(name)} has {c.shown(stock)} twice", "join the two rows")
             self.state["trial_share"][*key, stock] = {"share_pct": share, "position": places[key]}
+            self._extras(sheet, "trial_share", (*key, stock), cells, TRIALS)
             places[key] += 1
             if stock and stock not in self.stocks:
                 strangers.add(stock)
         if strangers:
             self.notes.append(f"trials.csv names stocks that are not in stocks.csv: "
                               f"{harmless(', '.join(sorted(strangers)), 200)}")
+
+
+def property_spelt(heading: str) -> str | None:
+    """Code of the property that a heading means in another spelling: `CCS-25`, `Flash point`, `sulphur`."""
+    plain = heading.lower().replace("−", "-")
+    for code in (plain.replace(" ", "_"), plain.replace(" ", ""), plain.replace(" ", "").replace("_", "")):
+        if is_stock_code(code):
+            return code
+    return next((code for code in stock_codes() if lookup(code).name.lower() == plain.replace("_", " ")), None)
 
 
 def _free(rows: dict[Key, Row], product: str, of: str) -> Key:

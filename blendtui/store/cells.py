@@ -18,6 +18,7 @@ LONGEST_TEXT = 1000
 LARGEST_KG = 1e9
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 _COMMA = re.compile(r"[+-]?[0-9]+,[0-9]+")
+_EITHER = re.compile(r"[+-]?[1-9][0-9]{0,2},[0-9]{3}")  # a comma of decimals or of thousands
 _THOUSANDS = re.compile(r"[+-]?[0-9]{1,3}(?:[, '][0-9]{3})+(?:\.[0-9]*)?")
 _DATE = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}")
 
@@ -59,6 +60,9 @@ def _no_number(text: str) -> CellError:
     plain = text.replace("−", "-")
     if _NUMBER.fullmatch(plain):
         return CellError(f"{shown(text)} has a typographic minus", f"write {plain}")
+    if _EITHER.fullmatch(text):
+        return CellError(f"{shown(text)} can be read in two ways",
+                         f"write {text.replace(',', '')} or {text.replace(',', '.')}")
     if _COMMA.fullmatch(text):
         return CellError(f"{shown(text)} has a decimal comma", f"write {text.replace(',', '.')}")
     if _THOUSANDS.fullmatch(text):

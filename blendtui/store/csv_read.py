@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -24,8 +24,12 @@ class Sheet:
     faults: list[Fault] = field(default_factory=list)
 
 
-def read_sheet(path: Path, known: tuple[str, ...], required: tuple[str, ...]) -> Sheet:
-    """Read a file; what is wrong with its shape is in `.faults`, and rows of a wrong shape are left out."""
+def read_sheet(path: Path, known: tuple[str, ...], required: tuple[str, ...],
+               respelt: Callable[[str], str | None] | None = None) -> Sheet:
+    """Read a file; what is wrong with its shape is in `.faults`, and rows of a wrong shape are left out.
+
+    `respelt` gives the heading that is meant by one which is not known, where there is one.
+    """
     sheet = Sheet(path.name)
     text = _text(path, sheet)
     if text is None:
@@ -37,7 +41,7 @@ def read_sheet(path: Path, known: tuple[str, ...], required: tuple[str, ...]) ->
         return sheet
     header_row, header = records[0]
     sheet.columns = tuple(c.strip() for c in header)
-    _check_header(sheet, header_row, known, required)
+    _check_header(sheet, header_row, known, required, respelt)
     if not sheet.faults:
         good = [(row, cells) for row, cells in records[1:] if _right_length(sheet, row, cells)]
         sheet.rows = list(_through_pandas(sheet.columns, good))
@@ -45,6 +49,9 @@ def read_sheet(path: Path, known: tuple[str, ...], required: tuple[str, ...]) ->
 
 
 def _text(path: Path, sheet: Sheet) -> str | None:
+    if path.exists() and not path.is_file():
+        sheet.faults.append(Fault(path.name, 0, "", "is not a file", "move it away and put the CSV file there"))
+        return None
     try:
         raw = path.read_bytes()
     except OSError as error:
@@ -85,7 +92,8 @@ def _records(text: str, sheet: Sheet) -> list[tuple[int, list[str]]]:
     return records
 
 
-def _check_header(sheet: Sheet, row: int, known: tuple[str, ...], required: tuple[str, ...]) -> None:
+def _check_header(sheet: Sheet, row: int, known: tuple[str, ...], required: tuple[str, ...],
+                  respelt: Callable[[str], str | None] | None) -> None:
     columns = sheet.columns
 
     def fault(column: str, what: str, fix: str) -> None:
@@ -101,9 +109,11 @@ def _check_header(sheet: Sheet, row: int, known: tuple[str, ...], required: tupl
             fault(column, "the heading holds a control character", "type the heading again")
         elif columns.count(column) > 1:
             fault(column, "two columns have this heading", "keep one of them")
-        elif column not in known and column.lower().replace(" ", "_") in known:
-            fault(column, "the heading is not spelt as it must be",
-                  f"write {column.lower().replace(' ', '_')}")
+        elif column not in known:
+            plain = column.lower().replace(" ", "_")
+            meant = plain if plain in known else respelt(column) if respelt else None
+            if meant not in (None, column):
+                fault(column, "the heading is not spelt as it must be", f"write {meant}")
     spelt = [c.lower().replace(" ", "_") for c in columns]
     for column in required:
         if column not in columns and column not in spelt:

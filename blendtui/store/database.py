@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import json
 import os
+import shutil
 import sqlite3
 from collections.abc import Iterator
 from contextlib import contextmanager
 from datetime import UTC, datetime
 from pathlib import Path
 
+from . import connect
 from .errors import (
     ChangedSince,
     NewerPlant,
@@ -23,7 +25,7 @@ from .harmless import harmless
 from .places import writable
 from .schema import APPLICATION_ID, MIGRATIONS
 
-MAGIC = b"SQLite format 3\x00"
+ROOM = 100_000  # bytes: SQLite cannot work beside a plant with less
 
 
 def now() -> str:
@@ -36,17 +38,24 @@ class Database:
 
     def __init__(self, path: Path | None, *, timeout: float = 5.0, new: bool = False,
                  shown: Path | None = None) -> None:
-        self.path = path
         self.shown = shown or path or "the plant"  # what messages call it
+        # A link may lie elsewhere than its file, but what SQLite keeps beside the file lies beside the file.
+        self.path = None if path is None else path.resolve()
         self.timeout = timeout
-        self.read_only = path is not None and not new and not writable(path)
-        if path is not None and not new:
-            _check_header(path)
+        self.read_only = self.path is not None and not new and not writable(self.path)
+        if self.path is not None and not new:
+            connect.look(self.path, self.shown)
+        self._open(new or path is None)
+
+    def _open(self, new: bool) -> None:
+        self._seen: connect.Fingerprint | None = None  # of the file, where this is a copy of it
         with self.words():
-            self.con = sqlite3.connect(_address(path, self.read_only, new), uri=True, isolation_level=None,
-                                       timeout=timeout, check_same_thread=False)
+            if self.read_only and self.path is not None:
+                self.con, self._seen = connect.to_read(self.path, self.shown, self.timeout)
+            else:
+                self.con = connect.connect(self.path, "mode=rwc" if new else "mode=rw", self.timeout)
             try:
-                self._settle(new or path is None)
+                self._settle(new)
             except BaseException:
                 self.con.close()
                 raise
@@ -55,23 +64,28 @@ class Database:
         con = self.con
         con.execute("PRAGMA foreign_keys = ON")
         con.execute("PRAGMA synchronous = FULL")
+        # Without it INSERT OR REPLACE would pass by the triggers that keep the past from being deleted.
+        con.execute("PRAGMA recursive_triggers = ON")
         if new:
             con.execute("PRAGMA journal_mode = WAL")
             con.execute(f"PRAGMA application_id = {APPLICATION_ID}")
         elif con.execute("PRAGMA application_id").fetchone()[0] != APPLICATION_ID:
-            raise NotAPlant(f"{self.path} is a database of another program, not a plant file; "
+            raise NotAPlant(f"{self.shown} is a database of another program, not a plant file; "
                             "open a plant file or a catalogue folder")
-        self._migrate()
+        self._migrate(new)
 
-    def _migrate(self) -> None:
+    def _migrate(self, new: bool) -> None:
         version = self.con.execute("PRAGMA user_version").fetchone()[0]
         if version > len(MIGRATIONS):
-            raise NewerPlant(f"{self.path} was written by a newer version of this program (schema {version}, "
+            raise NewerPlant(f"{self.shown} was written by a newer version of this program (schema {version}, "
                              f"this one knows {len(MIGRATIONS)}); install the newer version to open it")
+        if version < 1 and not new:
+            raise NotAPlant(f"{self.shown} is damaged (it says that its schema is {version}, which no plant has); "
+                            "open a backup of it")
         if version == len(MIGRATIONS):
             return
         if self.read_only:
-            raise ReadOnlyPlant(f"{self.path} needs to be brought up to date but may not be written; "
+            raise ReadOnlyPlant(f"{self.shown} needs to be brought up to date but may not be written; "
                                 "open it once from an account that may write it")
         self.con.execute("BEGIN IMMEDIATE")
         try:
@@ -93,6 +107,7 @@ class Database:
     @contextmanager
     def reading(self) -> Iterator[sqlite3.Connection]:
         """A consistent view: every query inside sees the same moment."""
+        self._renew()
         with self.words():
             self.con.execute("BEGIN")
             try:
@@ -100,11 +115,19 @@ class Database:
             finally:
                 self._rollback()
 
+    def _renew(self) -> None:
+        """Copy the file again where this is a copy and the file has moved on."""
+        if self._seen is None or self.path is None or connect.fingerprint(self.path) == self._seen:
+            return
+        self.con.close()
+        connect.look(self.path, self.shown)
+        self._open(False)
+
     @contextmanager
     def writing(self, who: str) -> Iterator[sqlite3.Connection]:
         """One transaction: all of it is kept, or nothing."""
         if self.read_only:
-            raise ReadOnlyPlant(f"{self.path} may not be written (it or its folder is read-only for you); "
+            raise ReadOnlyPlant(f"{self.shown} may not be written (it or its folder is read-only for you); "
                                 "copy it to a folder of your own, or ask for the right to write")
         with self.words():
             self.con.execute("BEGIN IMMEDIATE")
@@ -133,7 +156,13 @@ class Database:
         sign = self._sign_path()
         if sign is not None:
             try:
-                sign.write_text(_signature(who), encoding="utf-8")
+                # Never through a link, and never waiting for the reader of a pipe.
+                how = os.O_WRONLY | os.O_CREAT | os.O_TRUNC | os.O_NOFOLLOW | os.O_NONBLOCK
+                handle = os.open(sign, how, 0o644)
+                try:
+                    os.write(handle, _signature(who).encode())
+                finally:
+                    os.close(handle)
             except OSError:
                 pass  # only a courtesy to the others
 
@@ -141,8 +170,8 @@ class Database:
         sign = self._sign_path()
         if sign is not None:
             try:
-                # The next writer may have signed already.
-                if sign.read_text(encoding="utf-8") == _signature(who):
+                # The next writer may have signed already; on a full disk one's own signature is empty.
+                if sign.is_file() and sign.read_text(encoding="utf-8") in (_signature(who), ""):
                     sign.unlink()
             except (OSError, ValueError):
                 pass
@@ -151,12 +180,12 @@ class Database:
         """Who is writing the plant at this moment, or "" when that is not known."""
         sign = self._sign_path()
         try:
-            signed = json.loads(sign.read_text(encoding="utf-8")) if sign else {}
+            signed = json.loads(sign.read_text(encoding="utf-8")) if sign and sign.is_file() else {}
             os.kill(int(signed["pid"]), 0)
             return harmless(str(signed["who"]), 60)
         except PermissionError:
             return harmless(str(signed["who"]), 60)  # alive, but another user's
-        except (OSError, ValueError, KeyError, TypeError):
+        except (OSError, ValueError, KeyError, TypeError, OverflowError):
             return ""
 
     @contextmanager
@@ -168,50 +197,37 @@ class Database:
             raise self._explain(error) from error
 
     def _explain(self, error: sqlite3.Error) -> PlantError:
-        text, place = str(error), self.shown
-        if "locked" in text or "busy" in text:
+        # By SQLite's number, not by its text; errors of Python's own binding have none.
+        code, place = getattr(error, "sqlite_errorcode", 0) & 0xFF, self.shown
+        if code in (sqlite3.SQLITE_BUSY, sqlite3.SQLITE_LOCKED):
             who = self.writer()
             return PlantBusy(f"{who or 'another program'} has been writing {place} for more than "
                              f"{self.timeout:g} s; nothing was saved: wait a moment and try again", who=who)
-        if "full" in text:
+        if code == sqlite3.SQLITE_FULL or (code in (sqlite3.SQLITE_IOERR, sqlite3.SQLITE_CANTOPEN) and self._full()):
             return PlantFull(f"the disk that holds {place} is full; nothing was saved: free some space "
                              "and try again")
-        if "readonly" in text or "read-only" in text:
+        if code == sqlite3.SQLITE_READONLY:
             return ReadOnlyPlant(f"{place} may not be written; copy it to a folder of your own, "
                                  "or ask for the right to write")
-        if "malformed" in text or "not a database" in text:
-            return NotAPlant(f"{place} is damaged ({text}); open a backup of it")
-        if isinstance(error, sqlite3.IntegrityError):
-            return ChangedSince("the plant has changed since it was read, and this no longer fits "
-                                f"({text}); look again and repeat the change")
-        return PlantError(f"{place} cannot be read or written: {text}; check the disk and the rights")
+        if code == sqlite3.SQLITE_NOTADB:
+            return NotAPlant(f"{place} is not a plant file; open a plant file or a catalogue folder, "
+                             "or make one: blendtui import FOLDER --plant FILE")
+        if code == sqlite3.SQLITE_CONSTRAINT:
+            return ChangedSince("the plant has changed since it was read, and this no longer fits; "
+                                "look again and repeat the change")
+        if code in (sqlite3.SQLITE_IOERR, sqlite3.SQLITE_CANTOPEN, sqlite3.SQLITE_PERM, sqlite3.SQLITE_AUTH):
+            return PlantError(f"{place} cannot be read or written: the disk refuses it; nothing was saved: "
+                              "check the disk and the rights of the file and its folder")
+        if isinstance(error, sqlite3.ProgrammingError):
+            return PlantError(f"{place} is closed; open it again")
+        return NotAPlant(f"{place} is damaged; open a backup of it")
+
+    def _full(self) -> bool:
+        try:
+            return self.path is not None and shutil.disk_usage(self.path.parent).free < ROOM
+        except OSError:
+            return False
 
 
 def _signature(who: str) -> str:
     return json.dumps({"who": who, "pid": os.getpid()})
-
-
-def _address(path: Path | None, read_only: bool, new: bool) -> str:
-    if path is None:
-        return ":memory:"
-    address = path.resolve().as_uri()
-    if not read_only:
-        return address + ("?mode=rwc" if new else "?mode=rw")
-    # Beside a read-only file SQLite can make no shared memory; without a log there is none to share.
-    log = path.with_name(path.name + "-wal")
-    alone = not (log.exists() and log.stat().st_size)
-    return address + "?mode=ro" + ("&immutable=1" if alone else "")
-
-
-def _check_header(path: Path) -> None:
-    try:
-        with path.open("rb") as file:
-            head = file.read(len(MAGIC))
-    except OSError as error:
-        raise NotAPlant(f"{path} cannot be read: {(error.strerror or str(error)).lower()}; "
-                        "check the path and the rights") from None
-    if not head:
-        raise NotAPlant(f"{path} is empty, not a plant file; make one: blendtui import FOLDER --plant {path}")
-    if head != MAGIC:
-        raise NotAPlant(f"{path} is not a plant file; open a plant file or a catalogue folder, "
-                        f"or make one: blendtui import FOLDER --plant FILE")

@@ -12,11 +12,10 @@ from .database import now
 from .plant import Plant
 from .reads import milligrams
 from .records import Change, Product, Row, Trial, Value
-from .schema import STOCK_NUMBERS, STOCK_TEST, STOCK_TEXT
+from .schema import STOCK_CELLS
 from .state import change_of
 
 Line = tuple[tuple[Value, ...], Row]  # key and cells of a row
-STOCK_CELLS = (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST)
 
 
 def stock_cell(stock: Stock, cell: str, value: Value) -> Change:
@@ -49,6 +48,10 @@ def new_stock(plant: Plant, stock: Stock) -> list[Change]:
     cells: Row = {c: getattr(stock, c) for c in STOCK_CELLS}
     cells |= {"position": next_position(plant, "stock"), "retired": 0}
     changes = [change_of("stock", (stock.code,), None, cells)]
+    # An older version could leave the quantity of a stock that was taken back under its code.
+    stray = plant.row("quantity", stock.code) or {}
+    if stray.get("mg") is not None:
+        changes.append(change_of("quantity", (stock.code,), stray, {"mg": None}))
     return [*changes, *(change_of("stock_value", (stock.code, p), None, {"value": v})
                         for p, v in stock.values.items())]
 
@@ -128,12 +131,16 @@ def new_trial(plant: Plant, trial: Trial) -> list[Change]:
     changes = [change_of("trial", key, None, {"law": trial.law, "note": trial.note,
                                               "kept_at": trial.kept_at or now(),
                                               "kept_by": trial.kept_by or plant.who})]
-    shares = enumerate(trial.shares.items())
-    return changes + [change_of("trial_share", (*key, code), None,
-                                {"share_pct": 100.0 * share, "position": n}) for n, (code, share) in shares]
+    for place, (code, share) in enumerate(trial.shares.items()):
+        # 100 times a share that is 1 but for rounding may be a hair more than the whole.
+        percent = min(max(100.0 * share, 0.0), 100.0)
+        changes.append(change_of("trial_share", (*key, code), None, {"share_pct": percent, "position": place}))
+    return changes
 
 
 def dropped_trial(plant: Plant, product: str, name: str) -> list[Change]:
-    """Take a kept trial out."""
-    return [change_of(table, key, row, None) for table in ("trial_share", "trial")
-            for key, row in plant.table(table).items() if key[:2] == (product, name)]
+    """Take a kept trial out, with the cells of unknown columns that belong to it."""
+    present = [(key, row) for key, row in plant.table("trial_share").items() if key[:2] == (product, name)]
+    trial = plant.row("trial", product, name)
+    gone = [] if trial is None else [change_of("trial", (product, name), trial, None)]
+    return drop_lines(plant, "trial_share", present) + gone

@@ -1,11 +1,11 @@
 """What can go wrong with a plant, each in one line that says what, where and what to do.
 
 PlantError (an Exception)
-├── NoPlant          there is nothing at that path
+├── NoPlant          there is nothing at that path, or nothing that may be looked at
 ├── NotAPlant        what is there is no plant file, or is damaged
 ├── NewerPlant       a newer version of the program wrote the file
 ├── NetworkPlace     the file lies on a network mount
-├── ReadOnlyPlant    the file, its folder or a catalogue folder may not be written
+├── ReadOnlyPlant    the file, its folder or a catalogue folder may not be written, and what is asked needs it
 ├── PlantFull        the disk is full
 ├── PlantBusy        another program has been writing for too long; carries .who
 ├── ChangedSince     a cell changed after it was read; carries .who, .what and .at
@@ -25,7 +25,7 @@ class PlantError(Exception):
 
 
 class NoPlant(PlantError):
-    """There is nothing at that path."""
+    """There is nothing at that path, or nothing that may be looked at."""
 
 
 class NotAPlant(PlantError):

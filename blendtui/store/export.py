@@ -24,36 +24,68 @@ Table = tuple[list[str], list[list[str]]]
 def write_catalogue(state: State, folder: Path) -> tuple[str, ...]:
     """Write what is live in a state; returns notes on what stays behind.
 
-    The files are made in a temporary folder beside it, read back and checked, and only then moved in one by
-    one. A folder that holds other things than a catalogue is refused.
+    The files are made in a temporary folder, read back and checked. A new folder then gets its name as a whole; in
+    one that is there they are moved in one by one. Only files that are a catalogue's are ever replaced or removed.
     """
-    _refuse_foreign(folder)
-    tables = {"stocks.csv": _stocks(state), "products.csv": _products(state), "limits.csv": _limits(state),
-              "shares.csv": _shares(state), "trials.csv": _trials(state)}
     try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        with tempfile.TemporaryDirectory(prefix=f".{folder.name}.", dir=folder.parent) as temporary:
+        folder = folder.resolve()
+        present = folder.exists() and _refuse_foreign(folder)
+        tables = {"stocks.csv": _stocks(state), "products.csv": _products(state), "limits.csv": _limits(state),
+                  "shares.csv": _shares(state), "trials.csv": _trials(state)}
+        tables = {file: table for file, table in tables.items() if table[1] or file in FILES[:2]}
+        place = folder if present else folder.parent
+        place.mkdir(parents=True, exist_ok=True)
+        with tempfile.TemporaryDirectory(prefix=f".{folder.name[:40]}.", dir=place) as temporary:
+            made = Path(temporary) / "made"  # within, for the temporary folder itself is closed to others
+            made.mkdir()
             for file, (header, rows) in tables.items():
-                if rows or file in FILES[:2]:
-                    _write(Path(temporary) / file, header, rows)
-            _read_back(Path(temporary), tables)
-            folder.mkdir(exist_ok=True)
-            for file in FILES:
-                if (Path(temporary) / file).exists():
-                    os.replace(Path(temporary) / file, folder / file)
-                else:
-                    (folder / file).unlink(missing_ok=True)
+                _write(made / file, header, rows)
+            _read_back(made, tables)
+            if not present:
+                os.rename(made, folder)  # fails where a folder with files, or a file, has come up meanwhile
+            else:
+                _move_in(made, folder)
     except OSError as error:
         raise PlantError(f"cannot write {folder}: {(error.strerror or str(error)).lower()}; choose another "
                          "folder, or free some space") from None
+    except RuntimeError:
+        raise PlantError(f"{folder} is a link that leads back to itself; choose another folder") from None
     return _left_behind(state)
 
 
-def _refuse_foreign(folder: Path) -> None:
-    if folder.exists() and not folder.is_dir():
+def _move_in(made: Path, folder: Path) -> None:
+    for file in FILES:
+        if (made / file).exists():
+            os.replace(made / file, folder / file)
+        else:
+            (folder / file).unlink(missing_ok=True)
+
+
+def _refuse_foreign(folder: Path) -> bool:
+    """True for a folder that an export may write into; PlantError where it could spoil what is another's."""
+    if not folder.is_dir():
         raise PlantError(f"{folder} is a file; name a folder for the export")
-    if folder.is_dir() and any(folder.iterdir()) and not (folder / "stocks.csv").is_file():
+    held = {x.name for x in folder.iterdir()}
+    if held and "stocks.csv" not in held:
         raise PlantError(f"{folder} holds other things than a catalogue; name a new or an empty folder")
+    for file in FILES:
+        if file in held and not _is_of_a_catalogue(folder / file):
+            raise PlantError(f"{folder / file} is not a catalogue's {file}, so it is left alone and nothing was "
+                             "written; move it away, or name a new folder")
+    return True
+
+
+def _is_of_a_catalogue(path: Path) -> bool:
+    """Is this a regular file with the columns that its name promises?"""
+    if not path.is_file():
+        return False
+    try:
+        with path.open(encoding="utf-8-sig", newline="") as file:
+            header = next(csv.reader(file), [])
+    except (UnicodeDecodeError, csv.Error):
+        return False
+    spelt = {cell.strip().lower().replace(" ", "_") for cell in header}
+    return spelt.issuperset(names.REQUIRED[path.name])
 
 
 def _write(path: Path, header: list[str], rows: list[list[str]]) -> None:
@@ -69,10 +101,14 @@ def _read_back(folder: Path, tables: dict[str, Table]) -> None:
         names.read_catalogue(folder)
     except CatalogueError as error:
         fault, more = error.faults[0], len(error.faults) - 1
-        # The file and its rows are gone by now, so name the stock or product.
-        of = tables[fault.file][1][fault.row - 2][0] if fault.row > 1 else fault.file
+        # The file and its rows are gone by now, so name the stock, the product or the trial.
+        of = fault.file
+        if fault.row > 1:
+            row = tables[fault.file][1][fault.row - 2]
+            of = f"trial {row[1]} of {row[0]}" if fault.file == "trials.csv" else row[0]
+        out = "drop that trial" if fault.file == "trials.csv" else f"retire {of}"
         raise PlantError(f"nothing was exported, for it would not import back: {of} {fault.column}: "
-                         f"{fault.what}; {fault.fix}, or retire {of}"
+                         f"{fault.what}; {fault.fix}, or {out}"
                          f"{f' (and {more} more)' if more else ''}") from None
 
 
@@ -161,13 +197,13 @@ def _shares(state: State) -> Table:
 
 def _trials(state: State) -> Table:
     place = {code: n for n, (code, _) in enumerate(_live(state, "product"))}
-    rows: list[tuple[tuple[Value, ...], list[str]]] = []
+    rows: list[tuple[tuple[Value, ...], Key, list[str]]] = []
     for key, row in state["trial_share"].items():
         if key[0] not in place:
             continue
         trial = state["trial"][key[0], key[1]]
         cells = {"product": key[0], "name": key[1], "stock": key[2], **row, **trial}
         order = (place[str(key[0])], trial["kept_at"], key[1], row["position"])
-        rows.append((order, [text(cells[x]) for x in names.TRIALS]))
+        rows.append((order, key, [text(cells[x]) for x in names.TRIALS]))
     rows.sort(key=lambda item: item[0])
-    return list(names.TRIALS), [cells for _, cells in rows]
+    return _with_extras(state, "trial_share", list(names.TRIALS), [item[1:] for item in rows])

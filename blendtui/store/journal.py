@@ -9,6 +9,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
 from .database import now
+from .harmless import harmless
 from .records import Change, Entry, Value
 
 START = "0" * 64  # what stands for the hash before the first entry
@@ -90,29 +91,40 @@ def undoable(con: sqlite3.Connection, who: str) -> tuple[int | None, int | None]
     return (done[-1] if done else None), (undone[-1] if undone else None)
 
 
-def last_change(con: sqlite3.Connection, change: Change, before: int) -> Entry | None:
-    """The latest entry with a number below `before` that changed a cell which `change` speaks of."""
-    cells = set(change.before or {}) | set(change.after or {})
+def last_change(con: sqlite3.Connection, change: Change, before: int, cells: set[str]) -> Entry | None:
+    """The latest entry with a number below `before` that changed one of these cells of the row of `change`."""
     rows = con.execute(f"SELECT {COLUMNS} FROM journal WHERE id < ? ORDER BY id DESC", (before,))
     for row in rows:
         found = entry(row)
         for other in found.changes:
-            touched = set(other.before or {}) | set(other.after or {})
-            if other.table == change.table and dict(other.key) == dict(change.key) and cells & touched:
+            if other.table == change.table and dict(other.key) == dict(change.key) and cells & touched(other):
                 return found
     return None
+
+
+def touched(change: Change) -> set[str]:
+    """The cells that a change gives another value; all of them where the row comes or goes."""
+    before, after = change.before or {}, change.after or {}
+    return {c for c in {*before, *after} if c not in before or c not in after or before[c] != after[c]}
 
 
 def broken(con: sqlite3.Connection) -> str | None:
     """The first entry that does not fit the chain, in words, or None when all of it holds."""
     expected, before = 1, START
     for row in con.execute(f"SELECT {COLUMNS} FROM journal ORDER BY id"):
-        said = f"journal entry {row[0]} ({row[1]}, {row[2]}: {row[3]})"
+        said = harmless(f"journal entry {row[0]} ({row[1]}, {row[2]}: {row[3]})", 300)
         if row[0] != expected:
             return f"journal entry {expected} is missing: someone took it out of the file"
         if row[7] != before:
             return f"{said} does not follow the entry before it: one of the two was replaced"
-        if row[8] != digest(row):
+        if row[8] != _digest_of(row):
             return f"{said} was altered after it was written"
         expected, before = expected + 1, row[8]
     return None
+
+
+def _digest_of(row: Sequence[Any]) -> str:
+    try:
+        return digest(row)
+    except (TypeError, ValueError):
+        return ""  # bytes, or halves of characters: nothing that this program ever wrote

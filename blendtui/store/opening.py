@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import os
 import tempfile
 from collections.abc import Iterator
@@ -11,15 +10,18 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from . import state
+from . import connect, state
 from .database import Database
 from .errors import NoPlant, NotAPlant, PlantError, ReadOnlyPlant
-from .places import example_folder, example_plant, make_folder, refuse_network
+from .harmless import harmless
+from .places import example_folder, example_plant, home, make_folder, refuse_network
 from .plant import Plant
-from .records import Value
+from .records import Change
 
 if TYPE_CHECKING:
     from .catalogue import Catalogue
+
+LONGEST_NAME = 240  # bytes: SQLite puts files of longer names beside a plant
 
 
 @dataclass(frozen=True)
@@ -44,7 +46,7 @@ def open_plant(path: Path | str | None = None, *, who: str | None = None, create
     """
     if path is None:
         return _open_example(who, timeout)
-    place = Path(path).expanduser()
+    place = home(path)
     kind = _kind(place)
     if kind == "folder":
         return _open_folder(place, who)
@@ -57,7 +59,7 @@ def open_plant(path: Path | str | None = None, *, who: str | None = None, create
         make_plant(place, None, who=who)
     refuse_network(place)
     plant = Plant(Database(place, timeout=timeout), place, who=who)
-    plant.opened_note = f"plant file {place}" + (" (read only)" if plant.read_only else "")
+    plant.opened_note = f"plant file {_spelt(place)}" + (" (read only)" if plant.read_only else "")
     return plant
 
 
@@ -67,23 +69,33 @@ def _kind(place: Path) -> str:
             return "folder"
         if place.is_file():
             return "file"
-        return "other" if place.exists() else "nothing"
+        if place.exists():
+            return "other"
+        if not place.is_symlink():
+            return "nothing"
+        aim = os.readlink(place)
     except OSError as error:
         raise NoPlant(f"{place} cannot be looked at: {(error.strerror or str(error)).lower()}; "
                       "check the path and the rights") from None
+    raise NoPlant(f"{place} is a link to {aim}, which is not there; mend the link, or name the file itself")
+
+
+def _spelt(place: Path) -> str:
+    return harmless(str(place))
 
 
 def _open_example(who: str | None, timeout: float) -> Plant:
     place = example_plant()
-    first = not place.exists()
+    first = _kind(place) == "nothing"
     if first:
         from .catalogue import read_catalogue
 
         make_folder(place.parent)
-        make_plant(place, read_catalogue(example_folder()), who=who)
+        # Another start at the same moment may have been quicker, and its copy is as good.
+        first = make_plant(place, read_catalogue(example_folder()), who=who)
     plant = open_plant(place, who=who, timeout=timeout)
-    plant.opened_note = (f"first start: the example plant was copied to {place}" if first
-                         else f"the example plant, {place}")
+    plant.opened_note = (f"first start: the example plant was copied to {_spelt(place)}" if first
+                         else f"the example plant, {_spelt(place)}")
     return plant
 
 
@@ -92,14 +104,20 @@ def _open_folder(folder: Path, who: str | None) -> Plant:
 
     catalogue = read_catalogue(folder)
     plant = Plant(Database(None), folder, folder=True, who=who, notes=catalogue.notes,
-                  opened_note=f"catalogue folder {folder} (read only)")
+                  opened_note=f"catalogue folder {_spelt(folder)} (read only)")
     plant.fill(state.difference(state.empty(), catalogue.state), f"read from {folder}")
     return plant
 
 
-def make_plant(path: Path, catalogue: Catalogue | None, *, who: str | None = None) -> None:
-    """Make a plant file, complete or not at all, from a catalogue or empty."""
+def make_plant(path: Path, catalogue: Catalogue | None, *, who: str | None = None) -> bool:
+    """Make a plant file, complete or not at all, from a catalogue or empty. False: another made it meanwhile.
+
+    Never replaces anything. Refused where a plant that is gone left changes behind: the new file would take them in.
+    """
     refuse_network(path.parent)
+    if len(os.fsencode(path.name)) > LONGEST_NAME:
+        raise PlantError(f"{path} has a name of {len(os.fsencode(path.name))} bytes; keep it to {LONGEST_NAME}")
+    _refuse_leftovers(path)
     with beside(path) as temporary:
         plant = Plant(Database(temporary, new=True, shown=path), temporary, who=who)
         with plant:
@@ -107,27 +125,63 @@ def make_plant(path: Path, catalogue: Catalogue | None, *, who: str | None = Non
                 plant.fill([], "an empty plant was made")
             else:
                 plant.fill(state.difference(state.empty(), catalogue.state), f"imported {catalogue.folder}")
-        try:
-            os.link(temporary, path)  # unlike a rename it never replaces what another has made meanwhile
-        except FileExistsError:
-            pass
-        except OSError:
-            os.replace(temporary, path)
+        _refuse_leftovers(path)
+        return _put(temporary, path)
+
+
+def _refuse_leftovers(path: Path) -> None:
+    left = connect.leftovers(path)
+    if os.path.lexists(path):
+        return  # another has made it, and what stands beside it is its own
+    if left:
+        raise PlantError(f"{left[0]} was left by a plant {path.name} that is gone, with its last changes in it; put "
+                         f"that plant back beside it, or delete {left[0].name}, and try again")
+    try:
+        connect.clear_leftovers(path)
+    except OSError as error:
+        raise _unwritable(path, error) from None
+
+
+def _put(temporary: Path, path: Path) -> bool:
+    """Give a finished file its name; False when that is taken."""
+    try:
+        os.link(temporary, path)  # unlike a rename it never replaces what another has made meanwhile
+        return True
+    except FileExistsError:
+        return False
+    except OSError:
+        pass  # a disk that knows no links
+    try:
+        # The name is taken with an empty file of our own, so that the rename replaces nothing else.
+        os.close(os.open(path, os.O_CREAT | os.O_EXCL | os.O_WRONLY, 0o600))
+    except FileExistsError:
+        return False
+    except OSError as error:
+        raise _unwritable(path, error) from None
+    try:
+        os.replace(temporary, path)
+    except OSError as error:
+        path.unlink(missing_ok=True)
+        raise _unwritable(path, error) from None
+    return True
+
+
+def _unwritable(path: Path, error: OSError) -> PlantError:
+    return PlantError(f"cannot write {path}: {(error.strerror or str(error)).lower()}; choose another place")
 
 
 @contextmanager
 def beside(path: Path) -> Iterator[Path]:
     """A temporary path in the folder where `path` will be; it and what SQLite puts beside it are removed."""
     try:
-        folder = Path(tempfile.mkdtemp(prefix=f".{path.name}.", dir=path.parent))
+        folder = Path(tempfile.mkdtemp(prefix=f".{path.name[:40]}.", dir=path.parent))
     except FileNotFoundError:
         raise NoPlant(f"there is no folder {path.parent}; make it first, or choose another place") from None
     except PermissionError:
         raise ReadOnlyPlant(f"the folder {path.parent} may not be written; choose another place, "
                             "or ask for the right to write") from None
     except OSError as error:
-        raise PlantError(f"cannot write in {path.parent}: {(error.strerror or str(error)).lower()}; "
-                         "choose another place") from None
+        raise _unwritable(path, error) from None
     try:
         yield folder / path.name
     finally:
@@ -145,18 +199,16 @@ def import_folder(folder: Path | str, path: Path | str | None = None, *, who: st
     """
     from .catalogue import read_catalogue
 
-    catalogue = read_catalogue(Path(folder).expanduser())
-    place = example_plant() if path is None else Path(path).expanduser()
+    catalogue = read_catalogue(home(folder))
+    place = example_plant() if path is None else home(path)
     kind = _kind(place)
     if kind == "folder":
         raise PlantError(f"{place} is a folder; an import goes into a plant file: name one, such as "
                          f"{place / 'my.plant'}")
-    if kind == "nothing":
-        if path is None:
-            make_folder(place.parent)
-        make_plant(place, catalogue, who=who)
-        changes, retired = sum(map(len, catalogue.state.values())), ()
-    else:
+    changes, retired = sum(map(len, catalogue.state.values())), ()
+    if kind == "nothing" and path is None:
+        make_folder(place.parent)
+    if kind != "nothing" or not make_plant(place, catalogue, who=who):
         with open_plant(place, who=who, timeout=timeout) as plant:
             changes, retired = _take_over(plant, catalogue)
     return Imported(place, len(catalogue.state["stock"]), len(catalogue.state["product"]), changes, retired,
@@ -164,44 +216,20 @@ def import_folder(folder: Path | str, path: Path | str | None = None, *, who: st
 
 
 def _take_over(plant: Plant, catalogue: Catalogue) -> tuple[int, tuple[str, ...]]:
-    old = plant.state()
-    new, retired = merged(old, catalogue)
-    changes = state.difference(old, new)
-    plant.change(changes, f"imported {catalogue.folder}")
-    return len(changes), retired
+    from .merging import changes
 
+    retired: tuple[str, ...] = ()
 
-_OWNED = {"stock": ("stock_value", "quantity"), "product": ("product_limit", "share_rule")}
+    def made(old: state.State) -> list[Change]:
+        nonlocal retired
+        found, retired = changes(old, catalogue.state, catalogue.has_trials)
+        return found
 
-
-def merged(old: state.State, catalogue: Catalogue) -> tuple[state.State, tuple[str, ...]]:
-    """The state after an import, and what it retires: rows that the catalogue lacks stay, marked retired."""
-    new = {table: dict(rows) for table, rows in catalogue.state.items()}
-    retired: list[str] = []
-    for owner, tables in _OWNED.items():
-        gone = {key[0] for key in old[owner] if key not in new[owner]}
-        for key in gone:
-            new[owner][key,] = {**old[owner][key,], "retired": 1}
-            if not old[owner][key,]["retired"]:
-                retired.append(str(key))
-        for table in tables:
-            new[table].update({k: row for k, row in old[table].items() if k[0] in gone})
-        new["extra"].update({k: row for k, row in old["extra"].items()
-                             if _belongs(k, (owner, *tables), gone)})
-    for table in ("trial", "trial_share"):
-        # A folder without trials.csv says nothing of trials; one with it speaks for its own products only.
-        new[table].update({k: row for k, row in old[table].items()
-                           if not catalogue.has_trials or (k[0],) not in catalogue.state["product"]})
-    return new, tuple(sorted(retired))
-
-
-def _belongs(key: state.Key, tables: tuple[str, ...], owners: set[Value]) -> bool:
-    """Is this the key of an extra cell of one of these tables and owners?"""
-    return key[0] in tables and json.loads(str(key[1]))[0] in owners
+    return plant.change_whole(made, f"imported {catalogue.folder}"), retired
 
 
 def export_plant(plant: Plant, folder: Path | str) -> tuple[str, ...]:
     """Write the plant as a catalogue folder that imports back to the same; notes of what stays behind."""
     from .export import write_catalogue
 
-    return write_catalogue(plant.state(), Path(folder).expanduser())
+    return write_catalogue(plant.state(), home(folder))

@@ -7,13 +7,13 @@ import re
 from importlib import resources
 from pathlib import Path
 
-from .errors import NetworkPlace, PlantError
+from .errors import NetworkPlace, NoPlant, PlantError
 
 # SQLite's locks are not reliable over these, and two writers at once would spoil the file.
 NETWORK = frozenset({
     "nfs", "nfs4", "cifs", "smb", "smb2", "smb3", "smbfs", "9p", "afs", "ncpfs", "ceph", "glusterfs",
     "lustre", "davfs", "sshfs", "fuse.sshfs", "fuse.rclone", "fuse.s3fs", "fuse.glusterfs", "fuse.cephfs",
-    "fuse.davfs",
+    "fuse.davfs", "fuse.davfs2", "fuse.gcsfuse", "fuse.vmhgfs-fuse", "virtiofs", "vboxsf", "drvfs", "beegfs", "gfs2",
 })
 MOUNTS = Path("/proc/mounts")
 
@@ -66,6 +66,14 @@ def example_folder() -> Path:
             return folder
     raise PlantError("the example plant is not where it was installed; install the program again, "
                      "or open a plant of your own with --plant PATH")
+
+
+def home(path: Path | str) -> Path:
+    """The path with a leading ~ spelt out; NoPlant when there is no such user."""
+    try:
+        return Path(path).expanduser()
+    except RuntimeError:
+        raise NoPlant(f"{path}: there is no such user; spell the path out, or write ./{path}") from None
 
 
 def make_folder(folder: Path) -> None:

@@ -3,16 +3,17 @@
 from __future__ import annotations
 
 import getpass
+import sqlite3
 import threading
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from types import TracebackType
 
 from solver.stocks import Stock
 
-from . import journal, reads, state
+from . import audit, journal, reads, state
 from .database import Database
-from .errors import ChangedSince, NothingToUndo, ReadOnlyPlant
+from .errors import ChangedSince, NotAPlant, NothingToUndo, ReadOnlyPlant
 from .harmless import harmless
 from .records import Change, Entry, Product, Row, Trial
 from .state import Key
@@ -118,14 +119,25 @@ class Plant:
         """The first entry of a new plant, which is never undone."""
         return self._write(changes, what, why)
 
+    def change_whole(self, make: Callable[[state.State], Sequence[Change]], what: str) -> int:
+        """Change the plant by what `make` says of its whole state, which stays still meanwhile; how many changes."""
+        self._refuse_folder()
+        with self._lock, self._database.writing(self.who) as con:
+            changes = make(state.read(con))
+            self._record(con, changes, what, "")
+            return len(changes)
+
     def _write(self, changes: Sequence[Change], what: str, why: str) -> int:
         with self._lock, self._database.writing(self.who) as con:
-            last = journal.revision(con)
-            if not changes and last:
-                return last
-            number = journal.append(con, self.who, harmless(what), changes, why)
-            state.apply(con, changes, number, what)
-            return number
+            return self._record(con, changes, what, why)
+
+    def _record(self, con: sqlite3.Connection, changes: Sequence[Change], what: str, why: str) -> int:
+        last, what = journal.revision(con), harmless(what)
+        if not changes and last:
+            return last
+        number = journal.append(con, self.who, what, changes, harmless(why))
+        state.apply(con, changes, number, what)
+        return number
 
     def changed_since(self, change: Change, said: str) -> ChangedSince:
         """The error that tells a screen which shows an old value of a cell whose the new one is."""
@@ -167,6 +179,13 @@ class Plant:
             return journal.newest(con, limit)
 
     def verify(self) -> str | None:
-        """Recheck the journal's chain and the plant against it: the first thing that is wrong, or None."""
-        with self._lock, self._database.reading() as con:
-            return journal.broken(con) or reads.differs(con)
+        """Recheck the file, the journal's chain, and the plant against it: the first thing that is wrong, or None.
+
+        Damage is what it looks for, so that is told and never raised.
+        """
+        with self._lock:
+            try:
+                with self._database.reading() as con:
+                    return audit.wrong(con)
+            except NotAPlant as error:
+                return str(error)

@@ -9,15 +9,10 @@ from typing import Any
 from solver.stocks import Stock
 from solver.target import Limit, ShareRule
 
-from . import journal, state
 from .errors import NoSuchRow
 from .harmless import harmless
 from .records import Product, Trial
-from .schema import QUANTITY, STOCK_NUMBERS, STOCK_TEST, STOCK_TEXT
-
-_STOCK_CELLS = (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST)
-_PRODUCT_CELLS = ("name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks", "min_share_pct",
-                  "only_listed", "note")
+from .schema import PRODUCT_CELLS, QUANTITY, STOCK_CELLS
 
 
 def _one(where: str, code: str | None) -> tuple[str, tuple[str, ...]]:
@@ -32,9 +27,9 @@ def stocks(con: sqlite3.Connection, include_retired: bool = False, code: str | N
                                          f"{only} ORDER BY property", given):
         values[name][prop] = value
     mg = dict(con.execute(f"{QUANTITY}{only.replace('stock', 'm.stock')} GROUP BY m.stock", given))
-    rows = con.execute(f"SELECT stock, {', '.join(_STOCK_CELLS)} FROM stock WHERE retired <= ?{only} "
+    rows = con.execute(f"SELECT stock, {', '.join(STOCK_CELLS)} FROM stock WHERE retired <= ?{only} "
                        "ORDER BY position, stock", (int(include_retired), *given))
-    return [Stock(code=row[0], **dict(zip(_STOCK_CELLS, row[1:], strict=True)), values=values.get(row[0], {}),
+    return [Stock(code=row[0], **dict(zip(STOCK_CELLS, row[1:], strict=True)), values=values.get(row[0], {}),
                   on_hand_kg=kilograms(mg.get(row[0]))) for row in rows]
 
 
@@ -70,14 +65,14 @@ def products(con: sqlite3.Connection, include_retired: bool = False,
                                            f"WHERE 1 = 1{only} "
                                            "ORDER BY product, position, of_name, line", given):
         rules[name].append(ShareRule(of, low / 100.0, high / 100.0, source=f"share rule on {of}"))
-    rows = con.execute(f"SELECT product, {', '.join(_PRODUCT_CELLS)} FROM product WHERE retired <= ?{only} "
+    rows = con.execute(f"SELECT product, {', '.join(PRODUCT_CELLS)} FROM product WHERE retired <= ?{only} "
                        "ORDER BY position, product", (int(include_retired), *given))
     return [_product(row, limits, rules) for row in rows]
 
 
 def _product(row: tuple[Any, ...], limits: dict[str, list[Limit]],
              rules: dict[str, list[ShareRule]]) -> Product:
-    cells = dict(zip(_PRODUCT_CELLS, row[1:], strict=True))
+    cells = dict(zip(PRODUCT_CELLS, row[1:], strict=True))
     cells["only_listed"] = bool(cells["only_listed"])
     return Product(row[0], **cells, limits=tuple(limits.get(row[0], ())), rules=tuple(rules.get(row[0], ())))
 
@@ -101,17 +96,6 @@ def trials(con: sqlite3.Connection, product: str | None = None) -> list[Trial]:
     rows = con.execute("SELECT trial, product, law, kept_at, kept_by, note FROM trial WHERE 1 = 1"
                        f"{only} ORDER BY kept_at, product, trial", given)
     return [Trial(row[0], row[1], shares[row[1], row[0]], *row[2:]) for row in rows]
-
-
-def differs(con: sqlite3.Connection) -> str | None:
-    """The first cell that is not what the journal says it is, in words, or None."""
-    told, found = state.replay(journal.oldest_first(con)), state.read(con)
-    # A quantity unknown is no row at all in the file and a null in the journal.
-    told["quantity"] = {k: row for k, row in told["quantity"].items() if row["mg"] is not None}
-    changes = state.difference(told, found)
-    if not changes:
-        return None
-    return f"the plant was changed past its journal: {harmless(changes[0].words())}"
 
 
 def _shown(code: str) -> str:

@@ -22,14 +22,16 @@ class Table:
 STOCK_TEXT = ("name", "oil", "kind", "api_group")
 STOCK_NUMBERS = ("unpumpable_kg", "price_per_t", "density15", "kv40", "kv100", "blend_kv40", "blend_kv100")
 STOCK_TEST = ("tested_on", "source")
+PRODUCT_CELLS = ("name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks", "min_share_pct",
+                 "only_listed", "note")
+STOCK_CELLS = (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST)
 
 TABLES: dict[str, Table] = {
-    "stock": Table(("stock",), (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST, "position", "retired")),
+    "stock": Table(("stock",), (*STOCK_CELLS, "position", "retired")),
     "stock_value": Table(("stock", "property"), ("value",)),
     # Not a table of the file: the sum of a stock's movements, which only grows by further movements.
     "quantity": Table(("stock",), ("mg",)),
-    "product": Table(("product",), ("name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks",
-                                    "min_share_pct", "only_listed", "note", "position", "retired")),
+    "product": Table(("product",), (*PRODUCT_CELLS, "position", "retired")),
     "product_limit": Table(("product", "property", "line"),
                            ("low", "high", "guard", "guard_pct", "unknown_ok", "position")),
     "share_rule": Table(("product", "of_name", "line"), ("low_pct", "high_pct", "position")),

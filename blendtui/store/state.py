@@ -16,6 +16,13 @@ from .harmless import harmless
 from .records import Change, Entry, Row, Value
 from .schema import QUANTITY, TABLES
 
+FEW = 20  # rows that are looked up one by one
+OWNER = {"stock_value": "stock", "quantity": "stock", "product_limit": "product", "share_rule": "product",
+         "trial": "product", "trial_share": "trial"}
+LONE_RULE = """
+SELECT r.product, r.of_name, r.line FROM share_rule r JOIN product p ON p.product = r.product AND p.retired = 0
+WHERE r.of_name = ? AND NOT EXISTS (SELECT 1 FROM stock s WHERE s.retired = 0 AND r.of_name IN (s.stock, s.oil))
+"""
 Key = tuple[Value, ...]
 State = dict[str, dict[Key, Row]]
 
@@ -67,21 +74,21 @@ def change_of(table: str, key: Key, before: Row | None, after: Row | None) -> Ch
     return Change(table, dict(zip(TABLES[table].keys, key, strict=True)), before, after)
 
 
-def replay(entries: Iterable[Entry]) -> State:
-    """The state that the journal says the plant has."""
-    state = empty()
-    for entry in entries:
-        for change in entry.changes:
-            rows, key = state[change.table], tuple(change.key[k] for k in TABLES[change.table].keys)
-            if change.after is None:
-                rows.pop(key, None)
-            else:
-                rows[key] = {**rows.get(key, {}), **change.after}
-    return state
+def replay(entry: Entry, state: State) -> None:
+    """Make a state what it is after a journal entry."""
+    for change in entry.changes:
+        rows, key = state[change.table], tuple(change.key[k] for k in TABLES[change.table].keys)
+        if change.after is None:
+            rows.pop(key, None)
+        else:
+            rows[key] = {**rows.get(key, {}), **change.after}
 
 
 def apply(con: sqlite3.Connection, changes: Sequence[Change], number: int, reason: str) -> None:
-    """Apply changes inside an open transaction; ChangedSince when a row is not as `before` says."""
+    """Apply changes inside an open transaction; ChangedSince when a row is not as `before` says.
+
+    So it is when a row goes that others have put something on meanwhile: a quantity, a value, a line, a rule.
+    """
     for (table, adds), run in groupby(changes, key=lambda c: (c.table, c.before is None)):
         group = list(run)
         if table == "quantity":
@@ -91,18 +98,75 @@ def apply(con: sqlite3.Connection, changes: Sequence[Change], number: int, reaso
         else:
             for change in group:
                 _check(con, change, number)
+                _refuse_children(con, change, number)
                 _update(con, change)
+    _refuse_lone_rules(con, changes, number)
 
 
 def _insert(con: sqlite3.Connection, table: str, group: list[Change], number: int) -> None:
     spec = TABLES[table]
     names = spec.keys + spec.columns
     rows = [tuple({**change.key, **(change.after or {})}[n] for n in names) for change in group]
-    if len(rows) < 20:  # one by one the row that is there already can be named
-        for change in group:
-            if present(con, change) is not None:
-                raise since(con, change, number)
+    there = _there(con, group)
+    for change, row in zip(group, rows, strict=True):
+        if row[:len(spec.keys)] in there:
+            raise since(con, change, number)
+    _refuse_orphans(con, group, number)
     con.executemany(f"INSERT INTO {table} ({', '.join(names)}) VALUES ({', '.join('?' * len(names))})", rows)
+
+
+def _there(con: sqlite3.Connection, group: list[Change]) -> set[Key]:
+    """Keys of those rows of a group that are in the file."""
+    table = group[0].table
+    if len(group) > FEW:
+        return set(con.execute(f"SELECT {', '.join(TABLES[table].keys)} FROM {table}"))
+    return {_key(c) for c in group if present(con, c) is not None}
+
+
+def _key(change: Change) -> Key:
+    return tuple(change.key[k] for k in TABLES[change.table].keys)
+
+
+def _refuse_orphans(con: sqlite3.Connection, group: list[Change], number: int) -> None:
+    """ChangedSince when the stock, product or trial that these rows belong to is gone."""
+    owner = OWNER.get(group[0].table) if group else None
+    if owner is None:
+        return
+    width = len(TABLES[owner].keys)
+    owners = {_key(c)[:width]: change_of(owner, _key(c)[:width], None, None) for c in group}
+    there = _there(con, list(owners.values()))
+    for key, change in owners.items():
+        if key not in there:
+            raise since(con, change, number, f"{owner} {' '.join(map(str, key))} is no longer there")
+
+
+def _refuse_children(con: sqlite3.Connection, change: Change, number: int) -> None:
+    """ChangedSince when a row is to go that others still stand on."""
+    if change.after is not None:
+        return
+    for table, owner in OWNER.items():
+        if owner != change.table:
+            continue
+        keys = TABLES[table].keys
+        where = " AND ".join(f"{k} = ?" for k in keys[:len(_key(change))])
+        if table == "quantity":
+            row = present(con, change_of(table, _key(change), None, None)) or {}
+            found = _key(change) if row["mg"] is not None else None
+        else:
+            found = con.execute(f"SELECT {', '.join(keys)} FROM {table} WHERE {where}", _key(change)).fetchone()
+        if found:
+            raise since(con, change_of(table, tuple(found), None, None), number)
+
+
+def _refuse_lone_rules(con: sqlite3.Connection, changes: Sequence[Change], number: int) -> None:
+    """ChangedSince when a stock has gone that a product's share rule names, and no other has that name as its oil."""
+    for change in changes:
+        if change.table != "stock" or not (change.after is None or change.after.get("retired") == 1):
+            continue
+        found = con.execute(LONE_RULE, (change.key["stock"],)).fetchone()
+        if found:
+            raise since(con, change_of("share_rule", tuple(found), None, None), number,
+                        f"{found[0]} has a share rule on {found[1]}")
 
 
 def _where(change: Change) -> tuple[str, list[Value]]:
@@ -139,6 +203,7 @@ def _update(con: sqlite3.Connection, change: Change) -> None:
 
 def _move(con: sqlite3.Connection, group: list[Change], number: int, reason: str) -> None:
     """Quantities change by movements only; a movement of null says that the quantity is unknown from here."""
+    _refuse_orphans(con, [c for c in group if _mg(c.after) is not None], number)
     now = {stock: mg for (stock,), mg in _quantities(con, group)}
     rows = []
     for change in group:
@@ -150,7 +215,7 @@ def _move(con: sqlite3.Connection, group: list[Change], number: int, reason: str
 
 
 def _quantities(con: sqlite3.Connection, group: list[Change]) -> Iterable[tuple[Key, int | None]]:
-    if len(group) > 20:
+    if len(group) > FEW:
         return [(key, row["mg"]) for key, row in read_table(con, "quantity").items()]
     return [((c.key["stock"],), (present(con, c) or {})["mg"]) for c in group]
 
@@ -160,13 +225,22 @@ def _mg(cells: object) -> int | None:
 
 
 def since(con: sqlite3.Connection, change: Change, number: int, said: str = "") -> ChangedSince:
-    """The error that says who changed the cells of a change, when and how, before entry `number`."""
+    """The error that says who changed the cells that differ, when and how, before entry `number`."""
     of = " ".join(str(v) for k, v in change.key.items() if k != "line")
-    cells = ", ".join(c for c in (change.before or change.after or {}) if c not in ("mg", "value"))
-    cell = harmless(said or (f"{of} {cells}".strip() if len(cells) < 60 else of))
-    last = journal.last_change(con, change, number)
+    differ = _differing(con, change)
+    cells = ", ".join(c for c in TABLES[change.table].columns if c in differ and c not in ("mg", "value"))
+    cell = harmless(said or (f"{of} {cells}".strip() if change.before is not None and len(cells) < 60 else of))
+    last = journal.last_change(con, change, number, differ)
     if last is None:
         return ChangedSince(f"{cell} is no longer as it was read; look again and repeat the change")
     return ChangedSince(f"{cell}: {harmless(last.who, 60)} changed it at {last.at} "
                         f"({harmless(last.what, 120)}); look again and repeat the change",
                         who=last.who, what=last.what, at=last.at)
+
+
+def _differing(con: sqlite3.Connection, change: Change) -> set[str]:
+    """Cells that are not as a change says they were; every cell where the row itself is what differs."""
+    row, before = present(con, change), change.before
+    if row is None or before is None:
+        return set(TABLES[change.table].columns)
+    return {c for c, v in before.items() if row[c] != v} or set(before)

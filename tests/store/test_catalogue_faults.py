@@ -27,6 +27,8 @@ def product(**cells: str) -> str:
 @pytest.mark.parametrize(("cells", "line"), [
     ({"kv40": "thick"}, "kv40: 'thick' is not a number; write a number such as 31.5, or leave the cell empty"),
     ({"kv40": "31,5"}, "kv40: '31,5' has a decimal comma; write 31.5"),
+    ({"price_per_t": "40,000"}, "price_per_t: '40,000' can be read in two ways; write 40000 or 40.000"),
+    ({"price_per_t": "0,500"}, "price_per_t: '0,500' has a decimal comma; write 0.500"),
     ({"price_per_t": "1,234.50"}, "price_per_t: '1,234.50' has marks between thousands; write 1234.50"),
     ({"flash": "−5"}, "flash: '−5' has a typographic minus; write -5"),
     ({"kv40": "nan"}, "kv40: 'nan' is not a quantity; leave the cell empty where the value is unknown"),
@@ -253,3 +255,11 @@ def test_lines_are_read_in_their_order_with_guards(folder):
         ("flash", 200.0, None, 5.0, 0.0, True), ("kv40", None, None, 0.0, 2.0, False),
         ("kv40", 42.0, None, 1.0, 0.0, False)]
     assert [(r.of, r.low, r.high) for r in product.rules] == [("group I", 0.0, 0.5), ("A", 0.1, 1.0)]
+
+
+@pytest.mark.parametrize(("heading", "right"), [
+    ("Flash", "flash"), ("CCS-25", "ccs-25"), ("ccs −25", "ccs-25"), ("Base Number", "base_number"),
+    ("Sulphur", "sulfur"), ("Flash point", "flash"), ("Density15", "density15")])
+def test_a_property_in_another_spelling(faults, heading, right):
+    assert faults(stocks=f"stock,kv40,kv100,{heading}\nA,30,5,1\n") == [
+        f"stocks.csv row 1, {heading}: the heading is not spelt as it must be; write {right}"]

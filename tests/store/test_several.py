@@ -1,0 +1,104 @@
+"""Several people at one plant: what one takes back must not take away what another has put on it since."""
+
+from __future__ import annotations
+
+import pytest
+
+from blendtui.desk import stocks as desk
+from blendtui.desk import targets
+from blendtui.store import edits, opening
+from blendtui.store.errors import ChangedSince
+from blendtui.store.opening import import_folder, open_plant
+from blendtui.store.state import change_of
+from solver.stocks import Stock
+
+
+@pytest.fixture
+def other(path, plant):
+    """The same plant opened by bertil."""
+    with open_plant(path, who="bertil", timeout=0.2) as opened:
+        yield opened
+
+
+def refused(act, who: str, words: str) -> None:
+    with pytest.raises(ChangedSince) as caught:
+        act()
+    assert caught.value.who == who
+    assert words in str(caught.value)
+
+
+def test_a_stock_that_another_gave_a_quantity_is_not_taken_back(plant, other):
+    desk.add_stock(plant, "NEW")
+    desk.edit_cell(other, "NEW", "on_hand_kg", "5000", confirmed=True)
+    refused(plant.undo, "bertil", "NEW: bertil changed it at ")
+    assert other.stock("NEW").on_hand_kg == 5000.0
+    other.undo()
+    plant.undo()
+    assert plant.row("quantity", "NEW") == {"mg": None}
+    desk.add_stock(plant, "NEW")
+    assert (plant.stock("NEW").on_hand_kg, plant.verify()) == (None, None)
+
+
+def test_a_quantity_needs_its_stock(plant, other):
+    desk.add_stock(plant, "NEW")
+    change = edits.stock_cell(other.stock("NEW"), "on_hand_kg", 5.0)
+    plant.undo()
+    refused(lambda: other.change([change], "late"), "anna", "stock NEW is no longer there: anna changed it at ")
+    assert ("NEW",) not in plant.table("quantity")
+
+
+def test_a_quantity_left_by_an_older_version_goes_when_its_code_is_used_again(plant):
+    plant._database.con.execute("INSERT INTO movement (stock, mg, reason, journal) VALUES ('NEW', 7, 'left', 1)")
+    desk.add_stock(plant, "NEW")
+    assert plant.stock("NEW").on_hand_kg is None
+
+
+def test_values_lines_and_rules_of_others_hold_their_owner(plant, other):
+    desk.add_stock(plant, "NEW")
+    desk.edit_cell(other, "NEW", "flash", "200", confirmed=True)
+    refused(plant.undo, "bertil", "NEW flash: bertil changed it at ")
+    other.undo()
+    targets.set_rule(other, "P46", "NEW", "", "5")
+    refused(plant.undo, "bertil", "P46 has a share rule on NEW: bertil changed it at ")
+    other.undo()
+    plant.undo()
+    targets.add_product(plant, "PX", "ISO VG 46")
+    targets.set_limit(other, "PX", "vi", "95")
+    refused(plant.undo, "bertil", "PX vi: bertil changed it at ")
+    assert plant.verify() is None
+
+
+def test_a_stock_is_not_retired_again_once_a_rule_demands_it(plant, other):
+    desk.add_stock(plant, "NEW")
+    desk.retire_stock(plant, "NEW")
+    plant.undo()
+    targets.set_rule(other, "P46", "NEW", "2", "5")
+    refused(plant.redo, "bertil", "P46 has a share rule on NEW")
+
+
+def test_a_refusal_names_who_changed_the_cells_that_differ(plant, other):
+    desk.add_stock(plant, "NEW")
+    desk.edit_cell(other, "NEW", "price_per_t", "5", confirmed=True)
+    desk.edit_cell(plant, "NEW", "name", "n", confirmed=True)
+    plant.undo()
+    refused(plant.undo, "bertil", "NEW price_per_t: bertil changed it at ")
+
+
+def test_many_rows_added_twice_are_named(plant, other):
+    changes = [c for n in range(30) for c in edits.new_stock(plant, Stock(f"Q{n}"))]
+    plant.change(changes, "thirty")
+    refused(lambda: other.change(changes, "again"), "anna", "Q0: anna changed it at ")
+
+
+def test_an_import_works_on_the_plant_as_it_is_when_written(plant, other, path, tmp_path, monkeypatch):
+    """Another's edit between the reading of the folder and the writing is part of what the import changes."""
+    take = opening._take_over
+
+    def late(opened, catalogue):
+        desk.edit_cell(other, "A", "price_per_t", "999", confirmed=True)
+        return take(opened, catalogue)
+
+    monkeypatch.setattr(opening, "_take_over", late)
+    assert import_folder(tmp_path / "catalogue", path, who="anna").changes == 1
+    assert plant.journal(1)[0].changes == (
+        change_of("stock", ("A",), {"price_per_t": 999.0}, {"price_per_t": 820.0}),)
