@@ -8,7 +8,7 @@ from .grades import api_group
 from .properties import lookup
 from .stocks import GROUPS, KINDS, SOURCES, Stock
 from .viscosity_index import LOWEST_KV100, viscosity_index
-from .walther import HIGHEST_KV
+from .walther import HIGHEST_KV, line
 
 LOWEST_STOCK_KV = 0.3  # mm²/s
 _WORDS = (("kind", KINDS), ("api_group", ("", *GROUPS)), ("source", ("", *SOURCES)))
@@ -111,7 +111,11 @@ def _kv_doubts(stock: Stock) -> list[Doubt]:
     if not LOWEST_STOCK_KV <= stock.kv100 < stock.kv40:
         return []
     if stock.kv100 < LOWEST_KV100:
-        return []
+        slope = line(stock.kv40, stock.kv100).slope
+        if 2.0 <= slope <= 5.0:
+            return []
+        return [Doubt("kv100", f"KV40 {stock.kv40:g} and KV100 {stock.kv100:g} mean a slope of {slope:.1f}; thin oils "
+                               "lie between 3 and 4.5. Is one of them from another oil?")]
     vi = viscosity_index(stock.kv40, stock.kv100)
     if vi > 200.0 or vi < -50.0:
         return [Doubt("kv100", f"KV40 {stock.kv40:g} and KV100 {stock.kv100:g} mean a viscosity index of "
@@ -132,7 +136,8 @@ def _temperature_doubts(stock: Stock) -> list[Doubt]:
         hint = f"; was it °F? that is {in_c:g} °C" if flash > 330.0 else ""
         found.append(Doubt("flash", f"flash point {flash:g} °C is unusual (120 to 310){hint}",
                            in_c if hint else None))
-    if pour is not None and pour > 15.0:
+    if pour is not None and pour > 5.0:
         in_c = round((pour - 32.0) / 1.8, 1)
-        found.append(Doubt("pour", f"pour point {pour:g} °C is high; was it °F? that is {in_c:g} °C", in_c))
+        found.append(Doubt("pour", f"pour point {pour:g} °C is high; was it °F ({in_c:g} °C), or a minus forgotten?",
+                           -pour if pour <= 15.0 else in_c))
     return found

@@ -143,7 +143,7 @@ def edit_cell(plant: Plant, code: str, cell_code: str, typed: str, confirmed: bo
     """
     column, stock, typed = cell(cell_code), plant.stock(code), typed.strip()
     _refuse_stale(plant, stock, column.code, seen)
-    if typed in ("=", text_of(stock, column), edit_text(stock, column.code)):
+    if typed in ("=", edit_text(stock, column.code)):
         return Edit("unchanged", f"{code} {column.heading}: unchanged")
     new, note = _typed(stock, column, typed)
     stale = {c: v for c, v in new.items() if value_of(stock, c) != v}
@@ -193,7 +193,8 @@ def _typed(stock: Stock, column: Cell, typed: str) -> tuple[dict[str, Value], st
         prefix = code.removesuffix("kv40").removesuffix("kv100")
         pair = parse_kv_pair(typed)
         if pair is not None:
-            return {f"{prefix}kv40": pair.kv40, f"{prefix}kv100": pair.kv100}, pair.note
+            # Six figures: what a Saybolt time is worth, and a person can read back.
+            return {f"{prefix}kv{t}": float(f"{v:.6g}") for t, v in ((40, pair.kv40), (100, pair.kv100))}, pair.note
         if typed.count("/") == 1 and not typed.endswith("mm²/s") and not typed.endswith("mm2/s"):
             cold, hot = (amount(part, code) for part in typed.split("/"))
             return {f"{prefix}kv40": cold, f"{prefix}kv100": hot}, "read as KV40/KV100"
@@ -241,7 +242,7 @@ def amount(typed: str, code: str, density15: float | None = None) -> float:
     if entry.basis == "law":
         return parse(typed, "kv")
     if entry.unit == "°C":
-        return parse(typed, "temperature")
+        return round(parse(typed, "temperature"), 2)
     if entry.unit == "mPa·s":
         return parse(typed, "dynamic")
     return _by_mass(typed, entry.unit)
@@ -290,6 +291,8 @@ def _remedy(stock: Stock, doubt: Doubt) -> str | None:
     if doubt.cell in KV:  # the two are swapped: both at once
         prefix = doubt.cell.removesuffix("kv40").removesuffix("kv100")
         cold, hot = value_of(stock, f"{prefix}kv40"), value_of(stock, f"{prefix}kv100")
+        if cold == hot:
+            return None
         return f"{hot:.12g}/{cold:.12g}"
     return f"{doubt.suggestion:.12g}"
 

@@ -111,7 +111,7 @@ def test_what_cannot_be_placed_is_refused_by_the_scales(plant, code, cell, typed
 
 @pytest.mark.parametrize(("cell", "typed", "message", "suggestion"), [
     ("flash", "430", "A: flash point 430 °C is unusual (120 to 310); was it °F? that is 221.1 °C", "221.1"),
-    ("pour", "16", "A: pour point 16 °C is high; was it °F? that is -8.9 °C", "-8.9"),
+    ("pour", "16", "A: pour point 16 °C is high; was it °F (-8.9 °C), or a minus forgotten?", "-8.9"),
     ("price_per_t", "0.82", "A: price 0.82 per tonne is low; was it meant per kg?", "820"),
     ("kv100", "12", "A: KV40 30.2 and KV100 12 mean a viscosity index of 416; base stocks lie between 0 and 180. "
                     "Is one of them in SUS, or from another oil?", None),
