@@ -23,14 +23,14 @@ from blendtui.desk import answers
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import Plant, open_plant
 from blendtui.quiet import quiet
-from blendtui.screens import asker, messages
+from blendtui.screens import asker, messages, words
 from blendtui.screens.asker import Asker, fault
 from blendtui.screens.layout import CSS
 from blendtui.screens.session import Session
 from blendtui.screens.state import Snapshot, read
 from blendtui.store.errors import PlantError
 from blendtui.store.harmless import harmless
-from blendtui.widgets import paint
+from blendtui.widgets import paint, pasting
 from solver.errors import SolverError
 
 POLL = 2.5  # s between two looks for another person's change
@@ -67,16 +67,19 @@ class Console(App[int]):
         self.said: deque[tuple[str, str]] = deque(maxlen=KEPT_MESSAGES)
         self.said.extend(("note", note) for note in plant.notes)
         self.said.append(("note", f"{plant.opened_note}" if plant.opened_note else str(plant.path)))
-        self.been: list[str] = []  # screens to go back to
+        unfinished = [t for t in self.session.snapshot.trials if t.name.startswith("unfinished ")]
+        if unfinished:
+            names = ", ".join(f"{harmless(t.product)} {harmless(t.name)}" for t in unfinished[:3])
+            self.said.append(("note", f"{len(unfinished)} kept when a terminal closed: {names}; 4 opens the trials"))
         self.going = ""  # the screen that is being opened
-        self.ahead: list[Any] = []  # keys typed before it was there
+        self.ahead: list[Any] = []  # keys and pastes that came before it was there
         self._then: Callable[[Any], None] | None = None
         self._tasks: deque[Task] = deque()
         self._pending_changes = 0
         self._gate = threading.Lock()
         self._draining = False
         self._leaving = False
-        self.warned = False  # that typed shares are kept in no trial
+        self.warned = False  # of what is forgotten on leaving
         self.fault_said = ""  # the fault that ended the program, in a line
 
     # Life
@@ -264,8 +267,9 @@ class Console(App[int]):
 
         def then(pair: tuple[str, Snapshot]) -> None:
             note()
+            now = words.changed_cell(self.session.snapshot, pair[1]) if what == "undo" else ""
             self.adopt(pair[1])
-            self.say(pair[0])
+            self.say(pair[0] + (f"; {now}" if now else ""))
 
         self.task(lambda: (plant(), read(self.plant)), then)
 
@@ -289,14 +293,10 @@ class Console(App[int]):
     def go(self, screen: str, then: Callable[[Any], None] | None = None) -> None:
         """Open a screen, and do `then` with it once it is there."""
         if screen != self.current_mode:
-            self.been = [*[s for s in self.been if s != screen], self.current_mode][-4:]
-            self._switch(screen, then)
+            self.going, self._then = screen, then
+            self.switch_mode(screen)
         elif then:
             then(self.page)
-
-    def _switch(self, screen: str, then: Callable[[Any], None] | None = None) -> None:
-        self.going, self._then = screen, then
-        self.switch_mode(screen)
 
     def arrived(self, page: Any) -> None:
         """A screen has come up: carry out what it was opened for, then the keys typed on the way."""
@@ -307,14 +307,11 @@ class Console(App[int]):
         if then:
             then(page)
         for event in ahead:
-            page.on_key(event)
+            page.take_event(event)
 
     def do_back(self) -> None:
-        """Go to the screen before."""
-        if self.been:
-            self._switch(self.been.pop())
-        else:
-            self.say("this is where you came in; q leaves, 1 to 4 open the screens")
+        """Esc where there is nothing to drop."""
+        self.say("Esc leaves nothing here; 1 to 4 open the screens")
 
     def do_help(self) -> None:
         """Show every command."""
@@ -342,6 +339,11 @@ class Console(App[int]):
         else:
             self.page.carry_out(command, command.keys[0])
 
+    def _forgotten(self) -> str:
+        """In words, what is wished but saved nowhere."""
+        lost = [(w.product, words.forgotten(w, kept)) for w, kept in self.session.all_wishes()]
+        return "; ".join(f"{harmless(product)}: {', '.join(told)}" for product, told in lost if told)
+
     def action_leave(self) -> None:
         """ctrl+q and ctrl+c."""
         self.do_quit()
@@ -350,17 +352,14 @@ class Console(App[int]):
         """Leave, once everything is saved."""
         if self.page.edit.active:
             self.say("something is being typed: Enter keeps it, Esc drops it, then q leaves", "question")
-        elif self.session.unkept() and not self.warned:
+        elif not self.warned and (told := self._forgotten()):
             self.warned = True
-            names = ", ".join(harmless(w.product) for w in self.session.unkept())
-            self.say(f"the shares typed by hand for {names} are kept in no trial: k on the screen Recipe keeps them, "
-                     "q again leaves without", "question")
+            self.say(f"q again leaves and forgets {told}", "question")
         elif self.busy:
             self._leaving = True
             self.say("leaving as soon as the last change is saved …", "wait")
         else:
             self.exit(0)
-
 
 
 def run(path: Path | None) -> int:
@@ -369,6 +368,7 @@ def run(path: Path | None) -> int:
     Raises PlantError in one line when the plant cannot be opened.
     """
     paint.adopt()
+    pasting.guard()
     with open_plant(path) as plant:
         app = Console(plant)
         loop = asyncio.new_event_loop()

@@ -95,13 +95,14 @@ COMMANDS: tuple[Command, ...] = (
       for n, (code, name) in enumerate(SCREENS, 1)),
     Command(MOVES, "move", "move", ALL, "Move by cells, by pages, to the first and last column; with ctrl to the "
             "first and last row.", "arrows, PgUp, PgDn, Home, End", listed=False),
-    _on(ALL, "escape", "back", "back", "Drop what is being typed; else take the filter off; else go to the screen "
-        "before.", shown="Esc", changes=False, listed=False),
+    _on(ALL, "escape", "back", "drop typing", "Drop what is being typed; else take the filter off. It never leaves a "
+        "screen.", shown="Esc", changes=False, listed=False),
     _on(ALL, "! exclamation_mark", "messages", "messages", "Show the messages of this session in full, newest "
         "first.", changes=False, listed=False),
     _on(ALL, ": colon ctrl+p", "palette", "all", "List every command, and run the one that is chosen.",
         changes=False),
-    _on(ALL, "q ctrl+q", "quit", "quit", "Leave; every change was saved when it was made.", changes=False),
+    _on(ALL, "q ctrl+q", "quit", "quit", "Leave; every change was saved when it was made, and what would be "
+        "forgotten is said first.", changes=False),
     _on(ALL, "] right_square_bracket", "next_product", "product", "Go to the next product: every screen speaks of "
         "the same one.", shown="[ ]", changes=False),
     _on(ALL, "[ left_square_bracket", "previous_product", "product before", "Go to the product before.",

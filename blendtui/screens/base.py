@@ -12,9 +12,11 @@ from textual.screen import Screen
 from textual.widget import Widget
 
 from blendtui import commands
+from blendtui.desk.errors import DeskError
 from blendtui.store.harmless import harmless
-from blendtui.widgets.edit_line import EditLine, Ended
+from blendtui.widgets.edit_line import EditLine, Ended, cut
 from blendtui.widgets.lines import KeyBar, StatusLine, TitleLine
+from solver.errors import SolverError
 
 if TYPE_CHECKING:
     from blendtui.app import Console
@@ -24,6 +26,7 @@ if TYPE_CHECKING:
     from .state import Snapshot
 
 TITLES = tuple((str(n), name) for n, (_, name) in enumerate(commands.SCREENS, 1))
+WIDE = 110  # columns from which a screen is laid wide
 TYPING_KEYS = [("Enter", "keep"), ("Ctrl+U", "empty it"), ("← →", "move in it"), ("Esc", "drop it")]
 
 
@@ -39,7 +42,9 @@ class Page(Screen[Any]):
         self.status = StatusLine()
         self.edit = EditLine()
         self.keys = KeyBar()
-        self._later: deque[events.Key] = deque()
+        self._later: deque[events.Key | events.Paste] = deque()
+        self._hint = ""  # the last one said in the status line
+        self._swallowing = False  # a number is being typed at a cell that takes none
 
     def body(self) -> Iterable[Widget]:
         """The widgets between the title and the status line."""
@@ -71,7 +76,7 @@ class Page(Screen[Any]):
     def on_screen_resume(self) -> None:
         """Show what has changed while another screen was open."""
         kind, message = self.program.said[-1]
-        self.status.show(message, kind)
+        self.say(message, kind)
         self.refresh_page()
         self.program.arrived(self)
 
@@ -80,8 +85,31 @@ class Page(Screen[Any]):
         self.show_keys()
 
     def say(self, message: str, kind: str = "note") -> None:
-        """Show a message in the status line."""
-        self.status.show(message, kind)
+        """Show a message in the status line; a long one takes blank lines of the body."""
+        typing = self.edit.active and not (self.edit.typing and self.edit.typing.asking)
+        self.status.show(message, kind, "Esc, then ! shows all" if typing else "! shows all")
+        self._grow()
+
+    def spare(self) -> int:
+        """Blank lines that the body has now; each screen counts its own."""
+        return 0
+
+    def _grow(self) -> None:
+        width, styles = self.size.width, self.status.styles
+        if not width or not self.status.size:
+            return
+        usual = 1 if width >= WIDE else 2
+        height = min(self.status.needs(width), usual + max(0, self.spare() + self.status.size.height - usual))
+        if height > usual:
+            styles.height = height
+        elif self.status.size.height > usual:
+            styles.clear_rule("height")
+            self.status.refresh(layout=True)
+
+    def refuse(self, message: str) -> None:
+        """Nothing can be typed here: say why, and let no digit of what is typed nevertheless open a screen."""
+        self.say(message)
+        self._swallowing = True
 
     def show_keys(self) -> None:
         """The keys that mean something now."""
@@ -101,14 +129,38 @@ class Page(Screen[Any]):
         """Feed the edit line, or carry out the command of the key."""
         event.stop()
         event.prevent_default()
+        self.take_event(event)
+
+    def on_paste(self, event: events.Paste) -> None:
+        """Pasted text goes where typed text goes, and nowhere else."""
+        event.stop()
+        self.take_event(event)
+
+    def take_event(self, event: events.Key | events.Paste) -> None:
+        """Take a key or a paste, after those that wait."""
         if self.program.going:
             self.program.ahead.append(event)
         elif self._later:
             self._later.append(event)
+        elif isinstance(event, events.Paste):
+            self._paste(event)
         else:
             self._key(event)
 
+    def _paste(self, event: events.Paste) -> None:
+        if self.edit.active:
+            self.edit.paste(event.text)
+        else:
+            self.say("nothing is being typed here: Enter first, then paste")
+
     def _key(self, event: events.Key) -> None:
+        if self._swallowing and event.character and event.character in "0123456789.,":
+            self.say("no number can be typed at this cell; another key goes on")
+            return
+        self._swallowing = False
+        if self.edit.typing and self.edit.typing.asking and event.character == "!":
+            self.program.do_messages()
+            return
         if self.edit.active:
             self.edit.feed(event.key, event.character)
             self.show_keys()
@@ -127,12 +179,11 @@ class Page(Screen[Any]):
     def feed_later(self) -> None:
         """The plant is free again: carry out the keys that had to wait."""
         while self._later and not self.program.busy:
-            self._key(self._later.popleft())
-
-    def on_paste(self, event: events.Paste) -> None:
-        """Pasted text goes where typed text goes."""
-        event.stop()
-        self.edit.paste(event.text)
+            event = self._later.popleft()
+            if isinstance(event, events.Paste):
+                self._paste(event)
+            else:
+                self._key(event)
 
     def carry_out(self, command: commands.Command, key: str) -> None:
         """Carry out a command: this screen's own way, or the program's."""
@@ -152,7 +203,13 @@ class Page(Screen[Any]):
 
     def type_text(self, label: str, text: str, then: Callable[[Ended], None],
              drop: Callable[[], None] | None = None, *, whole: bool = True) -> None:
-        """Begin to type on the edit line."""
+        """Begin to type on the edit line; a hint in brackets that finds no room there is said above it."""
+        name, _, hint = label.partition(" (")
+        if hint and cut(label, self.size.width) != label:
+            self._hint, label = f"{name}: {hint.removesuffix(')')}", name
+            self.say(self._hint)
+        elif self._hint and self.status.message == self._hint:
+            self.say("")  # the hint of the step before
         self.edit.start(label, text, then, drop or (lambda: self.say("dropped; nothing was changed")), whole=whole)
         self.show_keys()
 
@@ -184,13 +241,31 @@ class Page(Screen[Any]):
         self.program.say(f"{edit.message} –{(keep + take)[2:]} · Esc drops it", "question")
         self.show_keys()
 
-    def type_through(self, steps: list[tuple[str, str]], then: Callable[[list[str]], None]) -> None:
-        """Ask for several things one after another: (label, text to begin with) each; then take them all."""
+    def type_checked(self, label: str, text: str, read: Callable[[str], Any], then: Callable[[Any], None]) -> None:
+        """Type something that `read` makes sense of; what cannot be read comes back to the line."""
+        def took(ended: Ended) -> None:
+            try:
+                found = read(ended.text.strip())
+            except (SolverError, DeskError) as error:
+                self.type_text(label, ended.text, took, whole=False)
+                self.program.say(str(error), "refused")
+                return
+            then(found)
+
+        self.type_text(label, text, took)
+
+    def type_through(self, steps: list[tuple[str, str]], then: Callable[[list[str]], None],
+                     before: int = 0) -> None:
+        """Ask for several things one after another: (label, text to begin with) each; then take them all.
+
+        `before`: steps that were asked already and count with these.
+        """
+        count = len(steps) + before
         typed: list[str] = []
 
         def ask() -> None:
             label, text = steps[len(typed)]
-            self.type_text(f"{label} ({len(typed) + 1} of {len(steps)})" if len(steps) > 1 else label, text, took)
+            self.type_text(step(len(typed) + before + 1, count, label) if count > 1 else label, text, took)
 
         def took(ended: Ended) -> None:
             typed.append(ended.text.strip())
@@ -200,3 +275,8 @@ class Page(Screen[Any]):
                 then(typed)
 
         ask()
+
+
+def step(number: int, count: int, label: str) -> str:
+    """The label of one step of several: `2 of 3: low (empty: open)`."""
+    return f"{number} of {count}: {label}"

@@ -12,16 +12,14 @@ from textual.widget import Widget
 
 from blendtui import commands
 from blendtui.desk import blends, numbers, sheet
-from blendtui.desk.answers import Wishes
+from blendtui.desk.answers import Answer, Wishes
 from blendtui.desk.errors import DeskError
 from blendtui.desk.stocks import Edit, amount
 from blendtui.store.harmless import harmless
-from blendtui.widgets.edit_line import Ended
 from blendtui.widgets.grid import Cell, Grid
 from blendtui.widgets.head import Head
 from blendtui.widgets.lines import OneLine
 from blendtui.widgets.page_text import PageText
-from solver.errors import SolverError
 from solver.target import LAWS
 
 from . import recipe_view as view
@@ -49,6 +47,7 @@ class RecipeScreen(Page):
         self.notes = PageText(id="notes")
         self.caution = OneLine(id="caution")
         self.rows: list[view.ShareRow] = []
+        self.noted: tuple[object, ...] = ()  # what the remarks are of: on another they begin at the top
 
     def body(self) -> Iterable[Widget]:
         """Head, shares, remarks, and the caution that always stands."""
@@ -63,6 +62,7 @@ class RecipeScreen(Page):
         if state.answer is None or recipe is None:
             self.rows = []
             self.shares.empty = ""
+            self.shares.foot = None
             self.shares.show(view.share_columns(1.0, width), 0, lambda r, c: "")
             self.notes.show([])
         else:
@@ -71,7 +71,7 @@ class RecipeScreen(Page):
         self._show_cell()
         super().refresh_page()
 
-    def _show(self, answer: view.Answer, recipe: Recipe, here: str, rest: list[str]) -> None:
+    def _show(self, answer: Answer, recipe: Recipe, here: str, rest: list[str]) -> None:
         width, today = self.size.width, self.program.today
         self.rows = view.share_rows(answer, recipe)
         scale = view.scale_of(self.rows)
@@ -84,14 +84,17 @@ class RecipeScreen(Page):
         at = next((n for n, r in enumerate(self.rows) if r.stock.code == here), None)
         self.shares.empty = "no stock may serve this product: its rules allow none, see Targets"
         notes = view.notes(answer, recipe, today, width, rest)
-        self._share_out(len(notes), len(self.rows) + 2)
+        self.shares.foot = lambda column: view.total_cell(recipe, answer.stocks, columns[column].code)
+        self._share_out(len(notes), len(self.rows) + 3)
         self.shares.show(columns, len(self.rows), cell, row=at)
-        self.notes.show(notes)
+        of = (self.session.product, self.session.state.blend, self.wishes.typed is None)
+        self.notes.show(notes, keep=of == self.noted)
+        self.noted = of
 
     def _share_out(self, notes: int, shares: int) -> None:
         """Give the shares the lines they need, the remarks at least a third."""
         room = max(8, self.size.height - FRAME)
-        height = max(4, min(shares, max(room - notes, room * 3 // 5)))
+        height = max(5, min(shares, max(room - notes, room * 3 // 5)))
         if self.shares.styles.height is None or self.shares.styles.height.value != height:
             self.shares.styles.height = height
 
@@ -119,6 +122,10 @@ class RecipeScreen(Page):
         self.edit.show(f"{harmless(row.stock.code)}{name}",
                        f"{numbers.pct(row.share)} % · {numbers.kg(have)} kg pumpable{why}")
 
+    def spare(self) -> int:
+        """Blank lines under the remarks."""
+        return self.notes.size.height - len(self.notes.lines)
+
     def move(self, key: str) -> None:
         """Move in the shares or in the remarks."""
         if self.notes.active:
@@ -145,16 +152,7 @@ class RecipeScreen(Page):
 
     def _type_wish(self, label: str, text: str, make: Callable[[str], tuple[Wishes, str]]) -> None:
         """Type something that becomes a wish; what cannot be read comes back to the line."""
-        def then(ended: Ended) -> None:
-            try:
-                wishes, what = make(ended.text.strip())
-            except (SolverError, DeskError) as error:
-                self.type_text(label, ended.text, then, whole=False)
-                self.program.say(str(error), "refused")
-                return
-            self._wish(wishes, what)
-
-        self.type_text(label, text, then)
+        self.type_checked(label, text, make, lambda made: self._wish(*made))
 
     def _here(self) -> tuple[view.ShareRow, Recipe] | None:
         row, recipe = self.row, self.session.shown
@@ -212,6 +210,7 @@ class RecipeScreen(Page):
 
     def do_best(self) -> None:
         """Back to the least cost."""
+        self.noted = ()
         if self.session.state.blend is not None:
             self.session.step(None)
         if self.wishes.typed is not None:
@@ -299,7 +298,9 @@ class RecipeScreen(Page):
 
     def _step(self, by: int) -> None:
         state = self.session.state
-        if state.answer is None or "blends" not in state.answer.done:
+        if state.error:
+            self.say(f"there is no blend to step to: {state.error}", "refused")
+        elif state.answer is None or "blends" not in state.answer.done:
             self.say("the feasible blends are being worked out; a moment", "wait")
         elif not state.answer.blends:
             self.say("there is no feasible blend to step to", "refused")

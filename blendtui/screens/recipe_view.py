@@ -21,12 +21,13 @@ from . import words
 
 if TYPE_CHECKING:
     from solver.recipe import LimitResult, Recipe
+    from solver.target import Target
 
     from .state import RecipeState
 
 BAR = 12
 LIMIT_WIDTHS = (8, 8, 8, 6, 8)
-WORDS = {"held": "held", "out": "out", "cannot": "no"}
+WORDS = {"held": "held", "out": "out", "cannot": "no", "broken": "!"}
 
 
 @dataclass(frozen=True)
@@ -35,21 +36,23 @@ class ShareRow:
 
     stock: Stock
     share: float  # mass fraction shown; 0: not used
-    mark: str  # "", "held", "out" (by the operator) or "cannot"
+    mark: str  # "", "held", "out" (by the operator), "cannot", or "broken": its share breaks a rule
     reason: str  # why it cannot serve
     range: tuple[float, float] | None  # mass fractions over all blends that meet the target
 
 
 def share_rows(answer: Answer, recipe: Recipe) -> list[ShareRow]:
-    """Every stock that the product allows, in the answer's order, then any other that is used."""
+    """Every stock that the product allows or the shown recipe uses: those it uses first, largest first."""
     by_code = {s.code: s for s in answer.stocks}
     left_out = {x.stock: x.reason for x in answer.best.left_out}
     shares = recipe.shares or {}
     codes = [*answer.allowed, *(c for c in shares if c not in answer.allowed and c in by_code)]
+    codes.sort(key=lambda code: -shares.get(code, 0.0))
+    broken = {c for c in codes if any(b.startswith(f"{c} ") for b in recipe.breaches)}
     rows = []
     for code in codes:
-        mark = ("held" if code in answer.wishes.held else "out" if code in answer.wishes.left_out
-                else "cannot" if code in left_out else "")
+        mark = ("broken" if code in broken else "held" if code in answer.wishes.held
+                else "out" if code in answer.wishes.left_out else "cannot" if code in left_out else "")
         rows.append(ShareRow(by_code[code], shares.get(code, 0.0), mark, left_out.get(code, ""),
                              (answer.ranges or {}).get(code)))
     return rows
@@ -95,7 +98,8 @@ def share_cell(row: ShareRow, code: str, recipe: Recipe, scale: float, today: da
     if code == "stock":
         return harmless(row.stock.code)
     if code == "mark":
-        return WORDS.get(row.mark, "")
+        sign = WORDS.get(row.mark, "")
+        return (sign, BAD) if row.mark == "broken" else sign
     if code == "share":
         return numbers.pct(row.share) if row.share else "–"
     if code in ("kg", "litres"):
@@ -112,6 +116,22 @@ def share_cell(row: ShareRow, code: str, recipe: Recipe, scale: float, today: da
     return harmless(row.stock.name)
 
 
+def total_cell(recipe: Recipe, stocks: tuple[Stock, ...], code: str) -> str:
+    """One cell of the row under the shares: their sum in %, kg and litres."""
+    if code == "stock":
+        return "total"
+    if code == "share":
+        return numbers.pct(sum((recipe.shares or {}).values()))
+    charges = recipe.charges_kg
+    if charges is None or code not in ("kg", "litres"):
+        return ""
+    if code == "kg":
+        return numbers.kg(sum(charges.values()))
+    dense = {s.code: s.density15 for s in stocks}
+    volumes = [litres_at_15(mass, d) for c, mass in charges.items() if (d := dense.get(c)) is not None]
+    return numbers.litres(sum(volumes)) if len(volumes) == len(charges) else ""
+
+
 # Head
 
 def head(state: RecipeState, recipe: Recipe | None, width: int, height: int) -> tuple[list[Line], list[str]]:
@@ -120,7 +140,8 @@ def head(state: RecipeState, recipe: Recipe | None, width: int, height: int) -> 
         return [[(line, BAD)] for line in wrap(f"! {state.error}", width)], []
     if recipe is None or state.answer is None:
         return [[("working out the recipe …", PLAIN)]], []
-    parts = [_kind(state, recipe), *((text, PLAIN) for text in _facts(state, state.answer, recipe))]
+    facts = _facts(state, state.answer, recipe)
+    parts = [_kind(state, recipe), *((text, WARN if text.startswith("!") else PLAIN) for text in facts)]
     lines: list[Line] = [[]]
     used = 0
     for n, (text, style) in enumerate(parts):
@@ -142,13 +163,17 @@ def _kind(state: RecipeState, recipe: Recipe) -> Run:
     if recipe.status == "by hand" and recipe.shares:
         total = sum(recipe.shares.values())
         if abs(total - 1.0) > 1e-4:
-            return f"! by hand, shares sum to {numbers.pct(total)} %", BAD
+            rules = ", rules broken" if recipe.breaches else ""
+            return f"! by hand, shares sum to {numbers.pct(total)} %{rules}", BAD
     return words.verdict(recipe)
 
 
 def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
     """Cost, misses, law and the slower figures, the most wanted first."""
     told = ["working out the new recipe …"] if state.waiting else []
+    widest = max((x for x in recipe.spread_pct.values() if x is not None), default=0.0)
+    if widest > blends.SPREAD_DOUBTED:
+        told.append(f"! laws differ {numbers.fixed(widest, 0)} %: laboratory blend needed")
     if recipe.status == "infeasible":
         told.append("the nearest blend misses " + "; ".join(words.misses(recipe)) if recipe.shares
                     else "; ".join(recipe.reasons))
@@ -161,7 +186,7 @@ def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
         told.append("cost unknown: the price of a stock is missing")
     told.append(f"law {recipe.law}")
     if recipe.gap is not None and state.blend is None and recipe.status in ("optimal", "stopped"):
-        told.append(f"proof gap {100.0 * recipe.gap:.4f} %")
+        told.append(f"proven to {numbers.figures(max(1e-4, 100.0 * recipe.gap), 1)} %")
     if answer.guard_cost_per_t is not None:
         told.append(f"guards cost {numbers.cost(answer.guard_cost_per_t)} /t")
     if answer.largest_batch_kg is not None:
@@ -185,36 +210,55 @@ def _dearer(answer: Answer, recipe: Recipe) -> list[str]:
 
 def notes(answer: Answer, recipe: Recipe, today: date, width: int, rest: list[str]) -> list[Line]:
     """The limits as a table, what the head had no room for, and every remark, laid for a width."""
-    lines = limit_table(recipe, width)
+    lines: list[Line] = [[(line, BAD)] for b in recipe.breaches for line in wrap(f"! {b}", width - 1, "  ")]
+    lines += limit_table(recipe, answer.target, width)
     for said in [*([" · ".join(rest)] if rest else []), *remarks(answer, recipe, today)]:
         marked = said.startswith("!")
         lines += [[(line, WARN if marked else PLAIN)] for line in wrap(said, width - 1, "  ")]
     return lines
 
 
-def limit_table(recipe: Recipe, width: int) -> list[Line]:
+def limit_table(recipe: Recipe, target: Target, width: int) -> list[Line]:
     """Each limit: value, window, guard, margin to the guarded limit, and a word on how it stands."""
     name = min(36, width - sum(LIMIT_WIDTHS) - len(LIMIT_WIDTHS) - 11)
     titles = ("value", "low", "high", "guard", "margin")
     lines: list[Line] = [[(fit("limit, unit", name), BOLD),
                           *((" " + fit(t, w, "right"), BOLD) for t, w in zip(titles, LIMIT_WIDTHS, strict=True))]]
     for limit in recipe.limits:
-        lines.append(_limit_line(limit, name))
+        typed = next((x.guard_pct for x in target.limits if x.property == limit.property and x.guard_pct), None)
+        lines.append(_limit_line(limit, name, guard_text(limit, typed)))
     return lines
 
 
-def _limit_line(limit: LimitResult, name: int) -> Line:
+def guard_text(limit: LimitResult, typed_pct: float | None) -> str:
+    """The guard as it moves the limit: a figure where it is the same on both sides, else its per cent."""
+    sides = [abs(held - plain) for plain, held in ((limit.low, limit.held_low), (limit.high, limit.held_high))
+             if plain is not None and held is not None]
+    if not sides or max(sides) <= 0.0:
+        return ""
+    if max(sides) - min(sides) > 1e-9 * max(sides):
+        if typed_pct:
+            return f"{typed_pct:g}%"
+        return "uneven"
+    guard = sides[0]
+    text = numbers.fixed(guard, 0) if guard >= 99.95 else numbers.figures(guard, 3)
+    return text.rstrip("0").rstrip(".") if "." in text else text
+
+
+def _limit_line(limit: LimitResult, name: int, guard: str) -> Line:
     code = limit.property
     unit = words.unit(code)
     label = words.heading(code) + (f", {unit}" if unit else "")
-    figures = (limit.value, limit.low, limit.high, limit.guard or None, limit.margin)
     lead = next((x for x in (limit.value, limit.low, limit.high) if x is not None), None)
     decimals = len(numbers.kv(lead).partition(".")[2]) if numbers.is_kv(code) and lead is not None else None
     line: Line = [(fit(label, name), PLAIN)]
-    line += [(" " + fit(_figure(code, value, decimals), size, "right"), PLAIN)
-             for value, size in zip(figures, LIMIT_WIDTHS, strict=True)]
+    margin = _figure(code, limit.margin, decimals)
+    if limit.met is False and not margin.strip("-0."):
+        margin = words.fine(code, limit.margin)
+    texts = (*(_figure(code, x, decimals) for x in (limit.value, limit.low, limit.high)), guard, margin)
+    line += [(" " + fit(text, size, "right"), PLAIN) for text, size in zip(texts, LIMIT_WIDTHS, strict=True)]
     if limit.met is False:
-        return [*line, (" ! MISSED", BAD)]
+        return [*line, (" ! IN GUARD" if words.in_guard(limit) else " ! MISSED", BAD)]
     if limit.met is None:
         return [*line, (" ? unknown", WARN)]
     return [*line, (f" binds {limit.binding}" if limit.binding else " inside", BOLD if limit.binding else PLAIN)]
@@ -223,7 +267,7 @@ def _limit_line(limit: LimitResult, name: int) -> Line:
 def _figure(code: str, value: float | None, decimals: int | None) -> str:
     if value is None:
         return ""
-    # A margin and a guard to the decimals of the value they belong to, not to figures of their own.
+    # A margin to the decimals of the value they belong to, not to figures of their own.
     return numbers.value(code, value) if decimals is None else numbers.fixed(value, decimals)
 
 
@@ -237,6 +281,10 @@ def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
     said += _others(recipe)
     said += _spread(recipe)
     said += _wished(answer)
+    if answer.target.only_listed:
+        unlisted = sum(s.kind == "base" and s.code not in answer.allowed for s in answer.stocks)
+        if unlisted:
+            said.append(f"not on this product's list: {unlisted} stock{'s' if unlisted > 1 else ''}")
     said += [f"left out: {harmless(x.stock)}, {x.reason}" for x in answer.best.left_out]
     said += [f"to be tested, not predicted: {test}" for test in answer.best.to_be_tested]
     said += _old(answer, recipe, today)
@@ -244,7 +292,9 @@ def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
         said.append("ranges: each stock alone, over all blends inside the limits and the cost ceiling; they leave the "
                     "whole-number rules out (most stocks, least share)")
     if "blends" in answer.done and answer.blends:
-        said.append(f"{len(answer.blends)} feasible blends with different stocks: n and p step through them")
+        count = len(answer.blends)
+        said.append("1 feasible blend" if count == 1 else
+                    f"{count} feasible blends with different stocks: n and p step through them")
     return said
 
 

@@ -96,11 +96,15 @@ class Session:
             self.state = replace(self.state, wishes=wishes, answer=None, blend=None, error="")
             self.ask()
 
+    def all_wishes(self) -> list[tuple[Wishes, bool]]:
+        """The wishes of every product spoken of, and whether a trial holds the shares typed by hand."""
+        return [(w, w.typed is not None and any(t.product == w.product and _same(t.shares, w.typed)
+                                                for t in self.snapshot.trials))
+                for w in {**self.wishes, self.product: self.state.wishes}.values()]
+
     def unkept(self) -> list[Wishes]:
         """Wishes with shares typed by hand that no trial holds."""
-        all_wishes = {**self.wishes, self.product: self.state.wishes}.values()
-        return [w for w in all_wishes if w.typed and not any(
-            t.product == w.product and _same(t.shares, w.typed) for t in self.snapshot.trials)]
+        return [w for w, kept in self.all_wishes() if w.typed and not kept]
 
     def wish(self, wishes: Wishes, what: str) -> None:
         """Change the wishes, in a way that can be taken back."""

@@ -139,6 +139,10 @@ class StocksScreen(Page):
         name = f" {harmless(stock.name)}" if stock.name and column.code != "name" else ""
         self.edit.show(f"{harmless(stock.code)}{name} · {column.heading}{unit}", value)
 
+    def spare(self) -> int:
+        """Blank lines under the table."""
+        return self.grid.size.height - self.grid.needs()
+
     def move(self, key: str) -> None:
         """Move the cell cursor."""
         if self.grid.move(key):
@@ -150,11 +154,11 @@ class StocksScreen(Page):
         """Edit the cell under the cursor."""
         stock, code = self.stock, self.column.code
         if stock is None:
-            self.say("there is no stock here; a adds one")
+            self.refuse("there is no stock here; a adds one")
         elif code == "code":
-            self.say("a stock keeps its code; c copies it under a new one, then d takes this one out of use")
+            self.refuse("a stock keeps its code; c copies it under a new one, then d takes this one out of use")
         elif code in DERIVED:
-            self.say(f"{self.column.heading} follows from KV40 and KV100: edit those")
+            self.refuse(f"{self.column.heading} follows from KV40 and KV100: edit those")
         else:
             self._edit_cell(stock, code)
 
@@ -220,7 +224,7 @@ class StocksScreen(Page):
         self.say(f"{told}; unknown last" if self.state.sort else told)
 
     def do_back(self) -> None:
-        """Take the filter off, else go back."""
+        """Take the filter off."""
         if self.state.words:
             self._filter(Ended(""))
         else:

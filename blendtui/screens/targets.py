@@ -13,6 +13,7 @@ from blendtui.desk import targets as desk
 from blendtui.desk.stocks import Edit
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Product
+from blendtui.widgets.edit_line import Ended
 from blendtui.widgets.grid import Cell, Column, Grid, Wide
 from blendtui.widgets.lines import OneLine
 from blendtui.widgets.paint import BOLD, DIM
@@ -22,7 +23,7 @@ from solver.properties import lookup
 from solver.target import LAWS, Limit, ShareRule
 
 from . import words
-from .base import Page
+from .base import Page, step
 from .state import TargetsState
 
 CELLS = (Column("what", "asks for", "", 25, "left", True), Column("low", "low / value", "", 11),
@@ -133,7 +134,8 @@ class TargetsScreen(Page):
 
     def _show_cell(self) -> None:
         product, row = self.product, self.row
-        self.title_line.show(f"product {self.products.row + 1} of {len(self.snapshot.products)}")
+        count = len(self.snapshot.products)
+        self.title_line.show(f"product {self.products.row + 1} of {count}" if count else "no products")
         if product is None:
             self.edit.show("", "")
         elif self.state.listing:
@@ -149,6 +151,10 @@ class TargetsScreen(Page):
                 self.edit.show(of, f"{row.texts[1]} to {row.texts[2]}, from the grade {product.grade}")
             else:
                 self.edit.show(f"{of} {CELLS[column].code}" if column else of, row.texts[column] if column else "")
+
+    def spare(self) -> int:
+        """Blank lines under both tables."""
+        return min(grid.size.height - grid.needs() for grid in (self.products, self.cells))
 
     def move(self, key: str) -> None:
         """Move in the list or in the cells; past the edge into the other."""
@@ -195,7 +201,7 @@ class TargetsScreen(Page):
         elif row.kind == "rule":
             self._edit_rule(product, row)
         else:
-            self.say("this is a heading; l adds a limit, s adds a share rule")
+            self.refuse("this is a heading; l adds a limit, s adds a share rule")
 
     def _edit_cell(self, product: Product, row: Row) -> None:
         plant, code = self.program.plant, product.product
@@ -230,9 +236,19 @@ class TargetsScreen(Page):
         if product is None:
             return
         code, plant = product.product, self.program.plant
-        steps = [(f"{harmless(code)} new limit on which property (kv40 kv100 vi flash pour density15 …)", ""),
-                 ("low (empty: open)", ""), ("high (empty: open)", ""), ("guard (1.5 or 2%, empty: none)", "")]
-        self.type_through(steps, lambda t: self._line(lambda: desk.set_limit(plant, code, *t)))
+
+        def then(prop: str) -> None:
+            own = next((x for x in product.limits if x.property == prop), None)
+            texts = desk.limit_texts(own) if own else ("", "", "")
+            label = f"{harmless(code)} {words.heading(prop)}"
+            hints = ("low (empty: open)", "high (empty: open)", "guard (1.5 or 2%, empty: none)")
+            self.type_through([(f"{label} {hint}", text) for hint, text in zip(hints, texts, strict=True)],
+                              lambda t: self._line(lambda: desk.set_limit(plant, code, prop, *t, seen=product)), 1)
+            if own:
+                self.say(f"{harmless(code)} has a limit on {prop} already: its present values stand on the line")
+
+        self.type_checked(step(1, 4, f"{harmless(code)} new limit on which property (kv40 kv100 vi flash pour "
+                                     "density15 …)"), "", words.property_code, then)
 
     def do_rule(self) -> None:
         """Add a share rule, asked for part by part."""
@@ -240,9 +256,18 @@ class TargetsScreen(Page):
         if product is None:
             return
         code, plant = product.product, self.program.plant
-        steps = [(f"{harmless(code)} share of which stock, oil, kind or group (group II)", ""),
-                 ("least share, %", "0"), ("most share, %", "100")]
-        self.type_through(steps, lambda t: self._line(lambda: desk.set_rule(plant, code, *t)))
+
+        def then(ended: Ended) -> None:
+            of = ended.text.strip()
+            own = next((r for r in product.rules if r.of.casefold() == of.casefold()), None)
+            low, high = rule_texts(own) if own else ("0", "100")
+            of = own.of if own else of
+            self.type_through([(f"{harmless(of)} least share, %", low), (f"{harmless(of)} most share, %", high)],
+                              lambda t: self._line(lambda: desk.set_rule(plant, code, of, *t, seen=product)), 1)
+            if own:
+                self.say(f"{harmless(code)} has a rule on {harmless(of)} already: its present values stand on the line")
+
+        self.type_text(step(1, 3, f"{harmless(code)} share of which stock (or oil, kind, group: group II)"), "", then)
 
     def _line(self, make: Callable[[], Edit]) -> None:
         self.program.change(make, lambda edit: self.program.say(edit.message, "done"))

@@ -133,6 +133,10 @@ class TrialsScreen(Page):
         elif self.trials.move(key):
             self._show_row()
 
+    def spare(self) -> int:
+        """Blank lines under the comparison."""
+        return self.comparison.size.height - self.comparison.needs()
+
     def do_pane(self) -> None:
         """From the list to the comparison, and back."""
         self.state = replace(self.state, comparing=not self.state.comparing)
@@ -197,9 +201,13 @@ def comparison(trials: list[Trial], read: dict[Key, Recipe | str]) -> list[tuple
 
     rows = [("! " + harmless(f"{t.name}: {r}"), *("" for _ in trials)) for t, r in zip(trials, found, strict=True)
             if isinstance(r, str)]
+    rows += [("! " + harmless(f"{'ABCD'[n]} {t.name}: {b}", 200), *("" for _ in trials))
+             for n, (t, r) in enumerate(zip(trials, found, strict=True)) if not isinstance(r, str)
+             for b in r.breaches]
     rows += [("product", *(harmless(t.product) for t in trials)), ("law", *(t.law for t in trials)),
             row("cost, /t", lambda r: numbers.cost(r.cost_per_t)),
-            row("limits", lambda r: "all met" if r.meets_all else f"! {len(words.misses(r)) or '?'} missed"),
+            row("limits", lambda r: f"! {len(words.misses(r))} missed" if words.misses(r) else "all met"),
+            row("rules", lambda r: f"! {len(r.breaches)} broken" if r.breaches else "kept"),
             ("SHARES, mass %", *("" for _ in trials))]
     codes = dict.fromkeys(c for t in trials for c in t.shares)
     rows += [(harmless(c), *(numbers.pct(t.shares[c]) if c in t.shares else "" for t in trials)) for c in codes]

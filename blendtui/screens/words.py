@@ -6,13 +6,16 @@ from datetime import date
 from typing import TYPE_CHECKING
 
 from blendtui.desk import numbers
+from blendtui.store.harmless import harmless
 from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, Run
 from solver.stocks import Stock
 
 if TYPE_CHECKING:
+    from blendtui.desk.answers import Wishes
     from solver.recipe import LimitResult, Recipe
 
     from .session import Session
+    from .state import Snapshot
 
 CAUTION = "A calculated blend is not a certificate: the laboratory releases."
 OLD_DAYS = 365  # a test older than this is marked
@@ -45,12 +48,32 @@ def amount(code: str, value: float | None) -> str:
     return f"{numbers.value(code, value)} {unit(code)}".rstrip()
 
 
+def fine(code: str, value: float | None) -> str:
+    """A number with at least one digit that is not 0: a margin of 0.0004 is not shown as nothing."""
+    text = numbers.value(code, value)
+    return numbers.figures(value, 1) if value and not text.strip("-0.") else text
+
+
+def in_guard(limit: LimitResult) -> bool:
+    """Is a missed limit met but for its guard?"""
+    value = limit.value
+    return (limit.met is False and value is not None and (limit.low is None or value >= limit.low)
+            and (limit.high is None or value <= limit.high))
+
+
 def missed(limit: LimitResult) -> str:
-    """By how much a limit is missed: `KV100 0.310 mm²/s too low`."""
-    if limit.value is None or limit.margin is None:
-        return f"{heading(limit.property)} unknown"
-    low = limit.held_low is not None and limit.value < limit.held_low
-    return f"{heading(limit.property)} {amount(limit.property, abs(limit.margin))} too {'low' if low else 'high'}"
+    """By how much a limit is missed: `VI 109, 54 short of 163`, `VI 103, inside 102 but not its guard (104)`."""
+    code, value = limit.property, limit.value
+    if value is None or limit.margin is None:
+        return f"{heading(code)} unknown"
+    low = limit.held_low is not None and value < limit.held_low
+    side, held = (limit.low, limit.held_low) if low else (limit.high, limit.held_high)
+    start = f"{heading(code)} {numbers.value(code, value)}"
+    if in_guard(limit):
+        return f"{start}, inside {numbers.value(code, side)} but not its guard ({numbers.value(code, held)})"
+    by = f"{fine(code, abs(limit.margin))} {unit(code)}".rstrip()
+    guarded = " with its guard" if side != held else ""
+    return f"{start}, {by} {'short of' if low else 'above'} {numbers.value(code, held)}{guarded}"
 
 
 def misses(recipe: Recipe) -> list[str]:
@@ -72,9 +95,13 @@ def verdict(recipe: Recipe) -> Run:
         return "! no blend meets it", BAD
     if recipe.status == "stopped":
         return "! stopped before the proof" if recipe.shares else "! stopped: no blend found yet", WARN
-    if recipe.meets_all:
-        return "by hand, inside all limits", BOLD
-    return "! by hand, limits missed", BAD
+    outside = bool(misses(recipe))
+    if recipe.breaches:
+        return "! by hand, breaks the product's rules" + (" and misses limits" if outside else ""), BAD
+    if outside or not recipe.meets_all:
+        return "! by hand, limits missed", BAD
+    unknown = any(x.met is None for x in recipe.limits)
+    return f"by hand, inside all {'known ' if unknown else ''}limits", BOLD
 
 
 def summary(session: Session) -> Line:
@@ -88,8 +115,52 @@ def summary(session: Session) -> Line:
     if recipe is None:
         return [*start, ("working out the recipe …", PLAIN)]
     cost = f" {numbers.cost(recipe.cost_per_t)} /t" if recipe.cost_per_t is not None else ""
-    told = "; ".join(misses(recipe)) or shares(recipe) or "; ".join(recipe.reasons)
+    told = "; ".join([*recipe.breaches, *misses(recipe)]) or shares(recipe) or "; ".join(recipe.reasons)
     return [*start, verdict(recipe), (f"{cost} │ {told}", PLAIN)]
+
+
+def changed_cell(before: Snapshot, after: Snapshot) -> str:
+    """The one stock cell in which two readings of a plant differ, and its value now; else nothing."""
+    from blendtui.desk import stocks as desk
+
+    told = []
+    for new in after.stocks:
+        old = before.stock(new.code)
+        if old is not None and old != new:
+            told += [f"{harmless(new.code)} {c.heading} is {desk.text_of(new, c.code) or 'unknown'} now"
+                     for c in desk.cells_for([old, new]) if desk.value_of(old, c.code) != desk.value_of(new, c.code)]
+    return told[0] if len(told) == 1 else ""
+
+
+def forgotten(wishes: Wishes, kept: bool) -> list[str]:
+    """What of these wishes is lost when the program is left. `kept`: a trial holds the typed shares."""
+    told = ["shares typed by hand, kept in no trial (k on the screen Recipe keeps them)"] if (
+        wishes.typed and not kept) else []
+    told += [f"{harmless(c)} held at {numbers.pct(x)} %" for c, x in wishes.held.items()]
+    told += [f"{harmless(c)} left out" for c in sorted(wishes.left_out)]
+    if wishes.batch_kg is not None:
+        told.append(f"batch {numbers.kg(wishes.batch_kg)} kg")
+    if wishes.law and not (wishes.typed and kept):
+        told.append(f"law {wishes.law}")
+    return told
+
+
+def property_code(typed: str) -> str:
+    """The code of a property typed as its code or its name, in any case; TargetError in words for another."""
+    from solver.errors import TargetError
+    from solver.properties import lookup, stock_codes
+
+    text = " ".join(typed.lower().split())
+    names = {lookup(c).name.lower(): c for c in ("vi", "density15", *stock_codes())}
+    begun = [c for name, c in names.items() if text and name.startswith(text)]
+    for code in (text, names.get(text, ""), text.replace(" ", ""), begun[0] if len(begun) == 1 else ""):
+        try:
+            lookup(code)
+        except TargetError:
+            continue
+        return code
+    lookup(text)
+    raise AssertionError
 
 
 def tested(stock: Stock, today: date) -> str:

@@ -10,6 +10,8 @@ from rich.cells import cell_len
 from .canvas import Canvas
 from .paint import BOLD, CURSOR, PLAIN, WARN, Line, fit
 
+LEAST = 24  # columns of the text that is typed, at the least
+
 
 @dataclass(frozen=True)
 class Typing:
@@ -122,8 +124,8 @@ class EditLine(Canvas):
             label = what + (": " if what and value else "")
             return [[(label, PLAIN), (fit(value, width - cell_len(label)).rstrip() if value else "", BOLD)]]
         now = self.typing
-        label = f"{now.label} ▸ "
-        room = max(8, width - len(label) - 1)
+        label = f"{cut(now.label, width)} ▸ "
+        room = max(8, width - cell_len(label) - 1)
         first = max(0, now.at - room)
         text = now.text[first:first + room] + " "
         at = now.at - first
@@ -132,6 +134,12 @@ class EditLine(Canvas):
         if now.whole:
             return [[(label, BOLD), (text[:-1], CURSOR), (" ", CURSOR)]]
         return [[(label, BOLD), (text[:at], PLAIN), (text[at], CURSOR), (text[at + 1:], PLAIN)]]
+
+
+def cut(label: str, width: int) -> str:
+    """A label that leaves room for at least LEAST columns of text and the cursor."""
+    room = max(4, width - LEAST - 4)
+    return fit(label, room) if cell_len(label) > room else label
 
 
 def typed(now: Typing, key: str, character: str | None) -> Typing:

@@ -42,6 +42,7 @@ class Grid(Canvas):
         self.top = self.left = 0
         self.active = True  # has the keys: a grid beside another shows its cursor more faintly
         self.empty = ""  # what to say where there is no row
+        self.foot: Callable[[int], str] | None = None  # text of a column in a last line that always stands
         self.picked: Callable[[], None] | None = None
 
     def show(self, columns: Sequence[Column], count: int, cell: CellOf, *, row: int | None = None,
@@ -65,12 +66,21 @@ class Grid(Canvas):
 
     def needs(self) -> int:
         """Lines that show all of it."""
-        return self.head + max(1, self.count)
+        return self.head + max(1, self.count) + self._below
+
+    @property
+    def _below(self) -> int:
+        return 1 if self.foot else 0
+
+    @property
+    def room(self) -> int:
+        """Rows that can be in sight."""
+        return max(1, self.size.height - self.head - self._below)
 
     def move(self, key: str) -> bool:
         """Move the cursor by a key; False where it cannot go further."""
         before = self.row, self.column
-        page = max(1, self.size.height - self.head - 1)
+        page = max(1, self.room - 1)
         down = {"up": -1, "down": 1, "pageup": -page, "pagedown": page, "ctrl+home": -self.count,
                 "ctrl+end": self.count}.get(key, 0)
         across = {"left": -1, "right": 1, "home": -len(self.columns), "end": len(self.columns)}.get(key, 0)
@@ -100,7 +110,7 @@ class Grid(Canvas):
             x += self._width(n, self.size.width) + 1
             if event.x < x:  # type: ignore[attr-defined]
                 break
-        if 0 <= row < self.count and event.y >= self.head:  # type: ignore[attr-defined]
+        if 0 <= row < self.count and 0 <= event.y - self.head < self.room:  # type: ignore[attr-defined]
             self.row, self.column = row, n
             self.paint()
             if self.picked:
@@ -120,7 +130,7 @@ class Grid(Canvas):
         """Move the view by half pages, never by a line: a move of the view sends the whole table."""
         if not self.size or not self.columns:
             return
-        rows = max(1, self.size.height - self.head)
+        rows = self.room
         if not self.top <= self.row < self.top + rows:
             step = max(1, rows // 2)
             self.top = self.row - step if self.row >= self.top + rows else self.row - rows + step + 1
@@ -159,9 +169,21 @@ class Grid(Canvas):
                           for n in visible])
         if self.count == 0:
             return [*lines, [(self.empty, PLAIN)]]
-        for row in range(self.top, min(self.count, self.top + height - len(lines))):
-            lines.append(self._row(row, visible))
+        last = min(self.count, self.top + max(1, height - len(lines) - self._below))
+        lines += [self._row(row, visible) for row in range(self.top, last)]
+        if self.foot:
+            lines.append(self._foot(visible, self.top, self.count - last))
         return lines
+
+    def _foot(self, visible: list[int], above: int, below: int) -> Line:
+        """The last line, with how many rows are out of sight in the room behind its texts."""
+        assert self.foot is not None
+        texts = [(fit(text, self.columns[n].width, self.columns[n].align) + " ", text)
+                 for n in visible if (text := self.foot(n)) is not None]
+        while texts and not texts[-1][1]:
+            texts.pop()
+        marks = [f"{sign} {count} more" for sign, count in (("↑", above), ("↓", below)) if count > 0]
+        return [("".join(text for text, _ in texts), BOLD), ("  ".join(marks), DIM)]
 
     def _heading(self, visible: list[int], width: int) -> Line:
         line: Line = []

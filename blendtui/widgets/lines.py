@@ -44,18 +44,23 @@ class StatusLine(Canvas):
         super().__init__(id="status")
         self.kind = "note"
         self.message = ""
+        self.more = "! shows all"  # what to do about a message that is cut
 
-    def show(self, message: str, kind: str = "note") -> None:
-        """Show a message of a kind (a key of SIGNS)."""
-        self.message, self.kind = message, kind
+    def show(self, message: str, kind: str = "note", more: str = "! shows all") -> None:
+        """Show a message of a kind (a key of SIGNS); `more` says how to read what finds no room."""
+        self.message, self.kind, self.more = message, kind, more
         self.paint()
+
+    def needs(self, width: int) -> int:
+        """Lines that show all of it."""
+        return len(wrap(SIGNS[self.kind][0] + self.message, width))
 
     def draw(self, width: int, height: int) -> list[Line]:
         """As many lines as there are; what does not fit is said to be in the list of messages."""
         sign, style = SIGNS[self.kind]
         lines = wrap(sign + self.message, width)
         if len(lines) > height:
-            more = " … (! shows all)"
+            more = f" … ({self.more})"
             lines = [*lines[:height - 1], fit(lines[height - 1], width - len(more)).rstrip("… ") + more]
         return [[(text, style)] for text in lines]
 

@@ -9,7 +9,7 @@ from .paint import DIM, Line, fit
 
 
 class PageText(Canvas):
-    """Text that moves by half pages; its last line says when there is more."""
+    """Text that moves; its first and last line say when there is more."""
 
     def __init__(self, *, id: str) -> None:
         super().__init__(id=id)
@@ -28,8 +28,8 @@ class PageText(Canvas):
 
     def move(self, key: str) -> bool:
         """Move by a key; False where it cannot go further."""
-        half = max(1, self.size.height // 2)
-        step = {"up": -1, "down": 1, "pageup": -2 * half, "pagedown": 2 * half, "home": -len(self.lines),
+        page = max(1, self.size.height - 2)  # less the two lines that say how much is out of sight
+        step = {"up": -1, "down": 1, "pageup": -page, "pagedown": page, "home": -len(self.lines),
                 "end": len(self.lines), "ctrl+home": -len(self.lines), "ctrl+end": len(self.lines)}.get(key, 0)
         top = min(max(0, self.top + step), self._last_top())
         if top == self.top:
@@ -50,4 +50,6 @@ class PageText(Canvas):
         if below > 0 and seen:
             said = f"↓ {below + 1} more lines: Tab, then the arrows" if not self.active else f"↓ {below + 1} more lines"
             seen[-1] = [(fit(said, width), DIM)]
+        if self.top > 0 and len(seen) > 2:
+            seen[0] = [(fit(f"↑ {self.top + 1} more lines", width), DIM)]
         return seen

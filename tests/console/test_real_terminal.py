@@ -78,7 +78,7 @@ def test_from_the_first_start_to_a_saved_trial(start: Callable[..., Terminal], t
     terminal.press("3")
     terminal.until("[3 Recipe]")
     terminal.until("A calculated blend is not a certificate")
-    terminal.until("proof gap")
+    terminal.until("proven to")
     terminal.press("k")
     terminal.until("name of the trial")
     terminal.press("\x15night shift\r")
@@ -104,7 +104,7 @@ def test_odd_terminals_work(start: Callable[..., Terminal], path: Path, environm
     terminal = start("--plant", str(path), **environment)
     terminal.until("least cost, proven")
     terminal.press("3")
-    terminal.until("proof gap")
+    terminal.until("proven to")
     if "LC_ALL" in environment:
         assert all(c < 128 for c in terminal.sent)
     if "NO_COLOR" in environment or "LC_ALL" in environment:
@@ -142,6 +142,21 @@ def rest(terminal: Terminal) -> None:
         terminal.read()
         if len(terminal.sent) != before:
             quiet = time.monotonic()
+
+
+def test_keys_inside_a_paste_are_text(start: Callable[..., Terminal], path: Path) -> None:
+    terminal = start("--plant", str(path))
+    terminal.until("least cost, proven")
+    terminal.press("\x1b[200~\x1bq\rq\x1b[B3\x1b[201~")
+    terminal.until("nothing is being typed here")
+    terminal.press("\x1b[C\r")
+    terminal.until("name ▸")
+    terminal.press("\x1b[200~tank\x1b[B\rq\x1b[201~\r")
+    terminal.until("tank [B q")
+    terminal.press("q")
+    terminal.child.expect(pexpect.EOF)
+    with open_plant(path) as plant:
+        assert plant.stock("LIGHT").name == "tank [B q"
 
 
 def test_a_terminal_that_closes_loses_no_edit(start: Callable[..., Terminal], path: Path) -> None:

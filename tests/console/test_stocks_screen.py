@@ -96,7 +96,7 @@ async def test_undo_and_redo_in_words(path: Path, size: Size) -> None:
         assert driver.plant.stock("HEAVY").density15 == 880.5
         await driver.press("u")
         assert driver.plant.stock("HEAVY").density15 == 882.0
-        assert driver.status == "undone: HEAVY density 882 → 880.5"
+        assert driver.status == "undone: HEAVY density 882 → 880.5; HEAVY density is 882.0 now"
         await driver.press("r")
         assert driver.plant.stock("HEAVY").density15 == 880.5
         assert driver.status == "done again: HEAVY density 882 → 880.5"

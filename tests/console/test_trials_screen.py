@@ -61,7 +61,7 @@ async def test_a_trial_is_reopened_by_hand(path: Path, size: Size) -> None:
         assert driver.app.session.shown.status == "by hand"
         assert "trial T1 on today's stocks" in driver.status
         await driver.press("escape")
-        assert driver.app.current_mode == "trials"
+        assert driver.app.current_mode == "recipe"
 
 
 async def test_a_trial_is_dropped_and_brought_back(path: Path, size: Size) -> None:
