@@ -73,7 +73,7 @@ async def test_a_limit_is_added_edited_let_off_and_dropped(path: Path, size: Siz
         await driver.press("enter")
         await driver.type("20 F")
         limit = next(x for x in driver.plant.product("H46").limits if x.property == "pour")
-        assert limit.high == pytest.approx(-6.667, abs=5e-3)
+        assert limit.high == pytest.approx(-6.67)
         await driver.press("x")
         assert next(x for x in driver.plant.product("H46").limits if x.property == "pour").unknown_ok
         await driver.press("d")
