@@ -33,7 +33,9 @@ async def draw(name: str, keys: list[str], plant_file: Path) -> None:
                 await app.workers.wait_for_complete()
                 await pilot.pause()
             app.say("", "note")
-            (HERE / f"{name}.svg").write_text(app.export_screenshot(title="blendtui"), encoding="utf-8")
+            # Leading blanks of a text are part of the picture, whichever program shows it.
+            drawn = app.export_screenshot(title="blendtui").replace("<svg ", '<svg xml:space="preserve" ', 1)
+            (HERE / f"{name}.svg").write_text(drawn, encoding="utf-8")
 
 
 def main() -> None:
