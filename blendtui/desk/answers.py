@@ -30,11 +30,6 @@ class Wishes:
     left_out: frozenset[str] = frozenset()
     typed: Mapping[str, float] | None = None  # shares by hand, stock → mass fraction; None: the best is wanted
 
-    @property
-    def target_only(self) -> Wishes:
-        """The wishes that the least-cost recipe depends on."""
-        return replace(self, typed=None)
-
 
 @dataclass(frozen=True)
 class Answer:

@@ -145,7 +145,7 @@ class PaletteScreen(Screen[Any]):
         self.found = [c for c in commands.matching(self.edit.typing.text, self.of) if c.action != "move"]
         shown = (Column("key", "key", "", 6, "left"), Column("label", "command", "", 15, "left"),
                  Column("screen", "screen", "", 10, "left"),
-                 Column("help", "what it does", "", max(10, self.size.width - 35), "left", True))
+                 Column("help", "what it does", "", max(10, self.size.width - 35), "left"))
         self.grid.empty = "no command has these words"
         self.grid.show(shown, len(self.found), lambda r, c: (
             names[self.found[r].screen] if shown[c].code == "screen" else getattr(self.found[r], shown[c].code)),

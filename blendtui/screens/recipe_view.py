@@ -86,11 +86,11 @@ def bar(row: ShareRow, scale: float, width: int = BAR) -> str:
 def share_columns(scale: float, width: int) -> tuple[Column, ...]:
     """Columns of the shares; a wide screen has room for the name and a longer bar."""
     long = width >= 110
-    return (Column("stock", "stock", "", 9, "left", True), Column("mark", "", "", 4, "left"),
+    return (Column("stock", "stock", "", 9, "left"), Column("mark", "", "", 4, "left"),
             Column("share", "share", "%", 6), Column("kg", "mass", "kg", 7), Column("litres", "volume", "L 15 °C", 7),
-            Column("bar", "range", f"0–{100 * scale:.0f} %", 30 if long else BAR, "left"),
+            Column("bar", "range", f"0–{100 * scale:.0f} %", 26 if long else BAR, "left"),
             Column("range", "could be", "%, low–high", 12), Column("tested", "test", "source, age", 13, "left"),
-            *((Column("name", "name", "", width - 103, "left", True),) if long else ()))
+            *((Column("name", "name", "", width - 94, "left"),) if long else ()))
 
 
 def share_cell(row: ShareRow, code: str, recipe: Recipe, scale: float, today: date, bar_width: int) -> Cell:

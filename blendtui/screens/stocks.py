@@ -44,7 +44,7 @@ def columns(stocks: Iterable[Stock], wide: bool) -> tuple[Column, ...]:
     """Every cell a stock has as a column, those looked at most first."""
     cells = {c.code: c for c in desk.cells_for(stocks)}
     middle = [c for c in cells if c not in FIRST and c not in LAST]
-    found = [Column("code", "stock", "", 9, "left", True)]
+    found = [Column("code", "stock", "", 9, "left")]
     for code in (*FIRST, *middle, *LAST):
         if code in DERIVED:
             found.append(DERIVED[code])
@@ -53,7 +53,7 @@ def columns(stocks: Iterable[Stock], wide: bool) -> tuple[Column, ...]:
         heading, unit = HEADINGS.get(code, (cell.heading, cell.unit))
         if code in TEXTS:
             width = TEXTS[code] + (10 if wide and code == "name" else 0)
-            found.append(Column(code, heading, unit, width, "left", True))
+            found.append(Column(code, heading, unit, width, "left"))
         else:
             least = 8 if code in ("on_hand_kg", "price_per_t") else 7
             found.append(Column(code, heading, unit, max(least, len(heading) + 1, len(unit))))

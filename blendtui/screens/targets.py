@@ -14,7 +14,7 @@ from blendtui.desk.stocks import Edit
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Product
 from blendtui.widgets.edit_line import Ended
-from blendtui.widgets.grid import Cell, Column, Grid, Wide
+from blendtui.widgets.grid import Cell, Column, Grid, Wide, more_only
 from blendtui.widgets.lines import OneLine
 from blendtui.widgets.paint import BOLD, DIM
 from solver.errors import SolverError
@@ -26,7 +26,7 @@ from . import words
 from .base import Page, step
 from .state import TargetsState
 
-CELLS = (Column("what", "asks for", "", 25, "left", True), Column("low", "low / value", "", 11),
+CELLS = (Column("what", "asks for", "", 25, "left"), Column("low", "low / value", "", 11),
          Column("high", "high", "", 9), Column("guard", "guard", "", 7))
 HINTS = {"law": f" ({' '.join(LAWS)})", "only_listed": " (yes no)", "grade": " (ISO VG 46, SAE 30, SAE 80W-90)"}
 
@@ -86,6 +86,7 @@ class TargetsScreen(Page):
         self.state = TargetsState()
         self.products = Grid(id="products")
         self.cells = Grid(id="cells")
+        self.cells.foot = more_only
         self.cells.active = False
         self.products.picked = lambda: self._picked(True)
         self.cells.picked = lambda: self._picked(False)
@@ -110,8 +111,8 @@ class TargetsScreen(Page):
         """Show the products, and the chosen one's cells."""
         products = self.snapshot.products
         wide = self.size.width >= 110
-        listed = (Column("product", "product", "", 9, "left", True), Column("grade", "grade", "", 11, "left", True),
-                  *((Column("name", "name", "", 17, "left", True),) if wide else ()))
+        listed = (Column("product", "product", "", 9, "left"), Column("grade", "grade", "", 11, "left"),
+                  *((Column("name", "name", "", 17, "left"),) if wide else ()))
         at = next((n for n, p in enumerate(products) if p.product == self.session.product), 0)
         self.products.empty = "none yet"
         self.cells.empty = "no product yet; a adds one"

@@ -14,7 +14,7 @@ from blendtui.desk.errors import DeskError
 from blendtui.store.errors import PlantError
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Trial
-from blendtui.widgets.grid import Cell, Column, Grid, Wide
+from blendtui.widgets.grid import Cell, Column, Grid, Wide, more_only
 from blendtui.widgets.paint import BOLD
 from solver.errors import SolverError
 
@@ -26,10 +26,10 @@ if TYPE_CHECKING:
     from solver.recipe import Recipe
 
 MOST = 4
-LIST = (Column("mark", "", "", 2, "left"), Column("product", "product", "", 10, "left", True),
-        Column("name", "trial", "", 16, "left", True), Column("law", "law", "", 14, "left"),
-        Column("kept_at", "kept, UTC", "", 16, "left"), Column("kept_by", "by", "", 10, "left", True),
-        Column("note", "note", "", 24, "left", True))
+LIST = (Column("mark", "", "", 2, "left"), Column("product", "product", "", 10, "left"),
+        Column("name", "trial", "", 16, "left"), Column("law", "law", "", 14, "left"),
+        Column("kept_at", "kept, UTC", "", 16, "left"), Column("kept_by", "by", "", 10, "left"),
+        Column("note", "note", "", 24, "left"))
 Key = tuple[str, str]
 
 
@@ -43,6 +43,7 @@ class TrialsScreen(Page):
         self.state = TrialsState()
         self.trials = Grid(id="trials", fixed=3)
         self.comparison = Grid(id="comparison")
+        self.comparison.foot = more_only
         self.comparison.active = False
         self.trials.picked = self._show_row
         self.compared: tuple[tuple[Key, ...], int, int] | None = None  # what `read` is of
@@ -113,7 +114,7 @@ class TrialsScreen(Page):
 
     def _show_lines(self, wanted: list[Trial]) -> None:
         width = max(12, min(24, (self.size.width - 26) // max(1, len(wanted)) - 1))
-        shown = (Column("what", "compared", "", 24, "left", True),
+        shown = (Column("what", "compared", "", 24, "left"),
                  *(Column(t.name, f"{'ABCD'[n]} {harmless(t.name)}", "", width) for n, t in enumerate(wanted)))
         self.comparison.empty = "Space marks a trial; up to four stand here side by side, read on today's stocks"
         self.comparison.show(shown, len(self.lines), self._line)

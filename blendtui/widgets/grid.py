@@ -18,7 +18,6 @@ class Column:
     unit: str = ""
     width: int = 8
     align: str = "right"
-    squeezes: bool = False  # a text that may be shown shorter; a number never is
 
 
 class Wide(str):
@@ -27,6 +26,11 @@ class Wide(str):
 
 Cell = str | Run
 CellOf = Callable[[int, int], Cell]
+
+
+def more_only(column: int) -> str:
+    """A foot without texts: its line says only how many rows are out of sight."""
+    return ""
 
 
 class Grid(Canvas):

@@ -10,6 +10,7 @@ from blendtui.screens.recipe_view import ShareRow, bar
 from blendtui.widgets import paint
 from blendtui.widgets.canvas import changed, strip_of
 from blendtui.widgets.edit_line import Typing, typed
+from blendtui.widgets.grid import Column, Grid, more_only
 from blendtui.widgets.paint import BOLD, CURSOR, cells, fit, look_of
 from solver.stocks import Stock
 
@@ -113,3 +114,11 @@ async def test_a_small_terminal_and_a_resize_do_not_end_it(path: Path) -> None:
         await driver.pilot.resize_terminal(80, 24)
         await driver.settle()
         assert driver.page.keys.size.width == 80
+
+
+def test_a_grid_without_texts_in_its_foot_says_how_much_is_out_of_sight() -> None:
+    grid = Grid(id="any")
+    grid.columns, grid.count, grid.foot = (Column("what", "what", "", 10, "left"),), 12, more_only
+    grid.cell = lambda row, column: f"row {row}"
+    lines = ["".join(run[0] for run in line).rstrip() for line in grid.draw(40, 6)]
+    assert lines == ["what", "row 0", "row 1", "row 2", "row 3", "↓ 8 more"]
