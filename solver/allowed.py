@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from .errors import TargetError
-from .laws import knows_viscosity
+from .laws import basis_of, knows_viscosity
 from .properties import Array
 from .requirements import Requirement
 from .stocks import GROUPS, KINDS, Stock, StockTable
@@ -132,7 +132,7 @@ def serving(table: StockTable, permitted: Sequence[int], target: Target,
 
     Raises TargetError, naming stock and cell, where a share rule or a hold demands a stock that is out.
     """
-    viscous = knows_viscosity(target.law, table)
+    viscous = np.all([knows_viscosity(law, table) for law in (target.law, *target.also_laws)], axis=0)
     keep, out = [], []
     for i in permitted:
         reason = _reason(table.stocks[i], bool(viscous[i]), target, requirements)
@@ -153,7 +153,8 @@ def _reason(stock: Stock, viscous: bool, target: Target,
     if stock.blending_kv is None:
         return LeftOut(stock.code, "its KV40 and KV100 are unknown", "kv40")
     if not viscous:
-        return LeftOut(stock.code, f"the law {target.law} needs its density, which is unknown", "density15")
+        law = next(x for x in (target.law, *target.also_laws) if basis_of(x) == "volume")
+        return LeftOut(stock.code, f"the law {law} needs its density, which is unknown", "density15")
     for need in requirements:
         if need.entry.basis not in ("mass", "volume") or need.unknown_ok:
             continue

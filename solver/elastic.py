@@ -13,8 +13,8 @@ import numpy as np
 
 from .gauge import Gauge
 from .properties import Array, lookup
-from .requirements import COST, Requirement
-from .rows import Model
+from .requirements import COST, Requirement, ceiling
+from .rows import Model, View
 from .viscosity_index import LOWEST_KV100, indices
 
 COST_UNIT = 0.01  # of the ceiling
@@ -66,24 +66,27 @@ def total(elastics: list[Elastic], x: Array) -> Array:
 
 def elastics(model: Model) -> list[Elastic]:
     """Every limit of a model that may give: properties, VI, and the cost ceiling."""
-    found = [_of_requirement(model, need) for need in model.requirements]
-    if model.vi is not None:
-        unit = lookup("kv100").reproducibility(LOWEST_KV100)
-        found.append(_of_gauge("kv100", model.gauges["kv100"], LOWEST_KV100, None, unit, unit))
-    ceiling = model.target.max_cost_per_t
-    if ceiling is not None:
+    found = []
+    for number, view in enumerate(model.exact):
+        found += [_of_requirement(view, need) for need in model.requirements
+                  if number == 0 or need.entry.basis in ("law", "curve")]
+        if model.vi is not None:
+            unit = lookup("kv100").reproducibility(LOWEST_KV100)
+            found.append(_of_gauge("kv100", view.gauges["kv100"], LOWEST_KV100, None, unit, unit))
+    most = ceiling(model.target)
+    if most is not None:
         price = model.table.price
-        found.append(Elastic(COST, lambda x: x @ price, lambda x: price, None, ceiling, COST_UNIT * ceiling,
-                             COST_UNIT * ceiling))
+        found.append(Elastic(COST, lambda x: x @ price, lambda x: price, None, most, COST_UNIT * most,
+                             COST_UNIT * most))
     return found
 
 
-def _of_requirement(model: Model, need: Requirement) -> Elastic:
+def _of_requirement(view: View, need: Requirement) -> Elastic:
     units = need.unit_of_miss("low"), need.unit_of_miss("high")
     if need.code == "vi":
-        return Elastic("vi", lambda x: _vi(model, x), lambda x: _vi_gradient(model, x), need.held_low,
+        return Elastic("vi", lambda x: _vi(view, x), lambda x: _vi_gradient(view, x), need.held_low,
                        need.held_high, *units)
-    return _of_gauge(need.code, model.gauges[need.code], need.held_low, need.held_high, *units)
+    return _of_gauge(need.code, view.gauges[need.code], need.held_low, need.held_high, *units)
 
 
 def _of_gauge(code: str, gauge: Gauge, low: float | None, high: float | None, unit_low: float,
@@ -101,20 +104,20 @@ def _of_gauge(code: str, gauge: Gauge, low: float | None, high: float | None, un
     return Elastic(code, values, gradient, low, high, unit_low, unit_high)
 
 
-def _kvs(model: Model, x: Array) -> tuple[Array, Array]:
+def _kvs(view: View, x: Array) -> tuple[Array, Array]:
     """KV40 and KV100 of blends, the latter taken as at least 2, so that a thinner one still has a way to go."""
-    g40, g100 = model.gauges["kv40"], model.gauges["kv100"]
+    g40, g100 = view.gauges["kv40"], view.gauges["kv100"]
     return g40.value(g40.index_of(x)), np.maximum(LOWEST_KV100, g100.value(g100.index_of(x)))
 
 
-def _vi(model: Model, x: Array) -> Array:
-    return indices(*_kvs(model, x))
+def _vi(view: View, x: Array) -> Array:
+    return indices(*_kvs(view, x))
 
 
-def _vi_gradient(model: Model, x: Array) -> Array:
-    u, y = (float(v[0]) for v in _kvs(model, x[None, :]))
+def _vi_gradient(view: View, x: Array) -> Array:
+    u, y = (float(v[0]) for v in _kvs(view, x[None, :]))
     h = 1e-5
     below = max(LOWEST_KV100, y * (1 - h))
     by40 = float(indices(u * (1 + h), y) - indices(u * (1 - h), y)) / (2 * h * u)
     by100 = float(indices(u, y * (1 + h)) - indices(u, below)) / (y * (1 + h) - below)
-    return by40 * model.gauges["kv40"].gradient(x) + by100 * model.gauges["kv100"].gradient(x)
+    return by40 * view.gauges["kv40"].gradient(x) + by100 * view.gauges["kv100"].gradient(x)

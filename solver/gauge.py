@@ -6,14 +6,18 @@ Every property and every law here has the shape
 
 with `den` of one sign and value(J) monotone, so that "value ≤ L" is Σ x_i c_i ≤ 0 with
 c_i = ±(num_i − index(L)·den_i). Nothing else in the solver knows how a property mixes.
+
+What the laboratory has taught about a pair (pairs.py) is added to J and bends it. Such a gauge reads blends
+exactly; its rows are those of its tangent (`tangent`), and are followed step by step (tangent.py).
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
+from .pairs import Excesses
 from .properties import Array, Property, Transform
 from .stocks import StockTable
 
@@ -30,12 +34,20 @@ class Gauge:
     index: Transform  # value → J
     value: Transform  # J → value
     rising: bool = True  # does J rise with the value
+    excess: Excesses | None = None  # what is added to J, learnt from measured blends
 
     def index_of(self, x: Array) -> Array | np.float64:
         """J of blends; NaN where no stock in the blend has the property."""
         den = np.asarray(x) @ self.den
         with np.errstate(invalid="ignore", divide="ignore"):
-            return np.where(den != 0.0, (np.asarray(x) @ self.num) / den, np.nan)[()]
+            plain = np.where(den != 0.0, (np.asarray(x) @ self.num) / den, np.nan)[()]
+        return plain if self.excess is None else plain + self.excess.value(x)
+
+    def tangent(self, x: Array) -> Gauge:
+        """The gauge without excess that agrees with this one at the blend x, shape (n,), to first order."""
+        if self.excess is None:
+            return self
+        return replace(self, num=self.num + self.excess.lift(x, self.den), excess=None)
 
     def read(self, x: Array) -> float:
         """Value of one blend, in the property's unit; NaN where it cannot be known."""
@@ -52,16 +64,19 @@ class Gauge:
 
         side "high": value ≤ limit; side "low": value ≥ limit.
         """
+        assert self.excess is None, "a bent gauge has rows only along its tangent"
         up = self.sign * (1.0 if self.rising else -1.0) * (1.0 if side == "high" else -1.0)
         return up * (self.num - float(self.index(limit)) * self.den)
 
     def gradient(self, x: Array) -> Array:
         """d(value)/dx, shape (n,), at one blend x: the chain rule, with value(J) differenced."""
         den = float(x @ self.den)
-        j = float(x @ self.num) / den
+        linear = float(x @ self.num) / den
+        j = float(self.index_of(x))
         h = 1e-6 * max(1.0, abs(j))
         slope = (float(self.value(j + h)) - float(self.value(j - h))) / (2.0 * h)
-        return slope * (self.num - j * self.den) / den
+        along = (self.num - linear * self.den) / den
+        return np.asarray(slope * (along if self.excess is None else along + self.excess.gradient(x)))
 
 
 def weights(table: StockTable, basis: str) -> Array:

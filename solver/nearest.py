@@ -20,6 +20,7 @@ from .elastic import Elastic, elastics, total
 from .linear import Polytope, Stopwatch, Whole, scale, solve
 from .properties import Array
 from .recipe import GAP, Recipe, empty, least_cost, recipe_of
+from .requirements import ceiling
 from .rows import Model
 
 MIXTURES = np.linspace(0.0, 1.0, 21)[:, None]
@@ -37,7 +38,7 @@ def nearest(model: Model, watch: Stopwatch) -> Recipe:
     if solve(shares_only, model.table.price, watch).x is None:
         return empty(model, "infeasible", (*_shortage(model, shares_only, watch), *reasons))
     limits = elastics(model)
-    ends = [_descend(shares_only, limits, start, watch) for start in _starts(model, shares_only, limits, watch)]
+    ends = [descend(shares_only, limits, start, watch) for start in _starts(model, shares_only, limits, watch)]
     best = min(ends, key=lambda x: float(total(limits, x[None, :])[0]))
     if not model.missed(best) and not reasons and _within_ceiling(model, best):
         # Limits so narrow that the search for a proof found no room, and yet this blend meets them.
@@ -48,8 +49,8 @@ def nearest(model: Model, watch: Stopwatch) -> Recipe:
 
 
 def _within_ceiling(model: Model, x: Array) -> bool:
-    ceiling = model.target.max_cost_per_t
-    return ceiling is None or float(model.table.price @ x) <= ceiling * (1.0 + GAP)
+    most = ceiling(model.target)
+    return most is None or float(model.table.price @ x) <= most * (1.0 + GAP)
 
 
 def _shares_only(model: Model) -> Polytope:
@@ -127,7 +128,7 @@ def _starts(model: Model, shares: Polytope, limits: list[Elastic], watch: Stopwa
             break
     if whole is not None:
         # What would be nearest without the whole-number rules, brought back to them.
-        free = _descend(replace(shares, whole=None), limits, chosen[0], watch)
+        free = descend(replace(shares, whole=None), limits, chosen[0], watch)
         step = _step(shares, limits, free, 1.0, watch)
         chosen += [step] if step is not None else []
     return chosen
@@ -148,7 +149,8 @@ def _corners(model: Model, shares: Polytope, watch: Stopwatch) -> list[Array]:
     return found
 
 
-def _descend(shares: Polytope, limits: list[Elastic], x: Array, watch: Stopwatch) -> Array:
+def descend(shares: Polytope, limits: list[Elastic], x: Array, watch: Stopwatch) -> Array:
+    """The blend of least summed misses that shrinking steps from x lead to, share rules kept."""
     best, least, reach = x, float(total(limits, x[None, :])[0]), 1.0
     for _ in range(STEPS):
         if least <= 1e-9 or reach < 1e-7 or watch.over:

@@ -19,10 +19,10 @@ from .gauge import property_gauge
 from .laws import check_law, knows_viscosity, viscosity_gauge
 from .linear import FIRM_HOLD, HOLD, SLACK, Polytope, Stopwatch
 from .properties import Array, lookup, stock_codes
-from .requirements import COST, Requirement, required
+from .requirements import COST, Requirement, ceiling, required
 from .rows import Model, as_table, build
 from .stocks import Stock, StockTable
-from .target import LAWS, Target
+from .target import LAWS, Excess, Target
 from .viscosity_index import indices
 from .windows import Outcome, search
 
@@ -45,6 +45,7 @@ class LimitResult:
     margin: float | None  # to the nearer held side; negative outside
     binding: str  # "", "low" or "high"
     sources: tuple[str, ...]
+    by_law: Mapping[str, float] = field(default_factory=dict)  # value under each law, where several must hold
 
 
 @dataclass(frozen=True)
@@ -65,6 +66,9 @@ class Recipe:
     left_out: tuple[LeftOut, ...] = ()
     to_be_tested: tuple[str, ...] = ()
     reasons: tuple[str, ...] = ()  # why infeasible or stopped, in words
+    lessons: tuple[str, ...] = ()  # versions of the laboratory's lessons that were used
+    provisional: tuple[str, ...] = ()  # those of them that rest on fewer than four blends
+    also_laws: tuple[str, ...] = ()  # laws under which the limits were held besides `law`
     breaches: tuple[str, ...] = ()  # rules on shares, list, tanks and numbers that given shares break, in words
 
     @property
@@ -91,6 +95,8 @@ def design(stocks: StockTable | Iterable[Stock], target: Target, *, time_limit: 
     model = build(stocks, target)
     watch = Stopwatch(time_limit)
     outcome = least_cost(model, watch, node_limit)
+    if outcome.x is not None and model.bent:
+        return _followed(model, outcome, watch)
     if outcome.x is not None:
         reasons = () if outcome.status == "optimal" else (_why_stopped(outcome, time_limit),)
         return recipe_of(model, outcome.x, outcome.status, bound=outcome.bound, reasons=reasons)
@@ -102,8 +108,24 @@ def design(stocks: StockTable | Iterable[Stock], target: Target, *, time_limit: 
     return nearest(model, Stopwatch(max(1.0, watch.left)))
 
 
+def _followed(model: Model, outcome: Outcome, watch: Stopwatch) -> Recipe:
+    """The recipe of a model with rows that bend: followed to where it stays, which proves less."""
+    from .tangent import bound
+
+    assert outcome.x is not None
+    floor = bound(model, watch)
+    made = recipe_of(model, outcome.x, "stopped", bound=floor if np.isfinite(floor) else None)
+    if made.gap is not None and made.gap <= GAP:
+        return replace(made, status="optimal")
+    taught = ", ".join(made.lessons) or "of other pairs"
+    words = f"with what the laboratory has taught ({taught}) the limits bend: found step by step, not proven"
+    if made.bound_per_t is not None:
+        words += f"; no blend that meets the target costs less than {floor:.2f} per t"
+    return replace(made, reasons=(words,))
+
+
 def least_cost(model: Model, watch: Stopwatch, node_limit: int = 400) -> Outcome:
-    """The cheapest blend of a model, with its bound."""
+    """The cheapest blend of a model, with its bound; along the tangents where its rows bend."""
     impossible = bool(model.short) or any(need.empty for need in model.requirements)
     if impossible or len(model.table) == 0:
         return Outcome("infeasible", None, np.inf, np.inf)
@@ -116,10 +138,19 @@ def exact_search(model: Model, problem: Polytope, c: Array, watch: Stopwatch, *,
 
     Rows are held a hair inside; more where rounding left a limit missed, and a hair outside where limits
     leave a single point that the solver would else miss. An answer counts only if it misses nothing.
+    Where what the laboratory has taught bends rows, their tangents are followed to where the answer stays.
     """
+    def along(model: Model, problem: Polytope) -> Outcome:
+        return search(model, problem, c, watch, gap=gap, gap_absolute=gap_absolute, node_limit=node_limit)
+
     for hold in (HOLD, FIRM_HOLD, SLACK):
         held = problem.held(hold)
-        outcome = search(model, held, c, watch, gap=gap, gap_absolute=gap_absolute, node_limit=node_limit)
+        if model.bent:
+            from .tangent import follow
+
+            outcome, held, _ = follow(model, held, c, watch, along)
+        else:
+            outcome = along(model, held)
         if outcome.status == "stopped" or (outcome.x is not None and not model.missed(outcome.x)):
             return outcome, held
     return Outcome("infeasible", None, np.inf, np.inf), problem
@@ -132,7 +163,7 @@ def _why_stopped(outcome: Outcome, time_limit: float) -> str:
 
 def empty(model: Model, status: str, reasons: tuple[str, ...]) -> Recipe:
     """A recipe without shares: the limits stand, their values are unknown."""
-    limits = [_limit_result(need, None) for need in model.requirements]
+    limits = [_limit_result(need, {}) for need in model.requirements]
     return Recipe(status, model.target.law, None, {}, tuple(limits), left_out=model.left_out,
                   to_be_tested=model.to_be_tested, batch_kg=model.target.batch_kg, reasons=reasons)
 
@@ -181,27 +212,41 @@ def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement,
         cell = "kv40" if stock.blending_kv is None else "density15"
         raise StockError(f"{stock.code}: the law {target.law} needs its {cell}, which is unknown; enter it "
                          "or leave the stock out", stock=stock.code, cell=cell)
-    predicted = predict_all(table, x, target.law, tuple(need.code for need in needs))
+    codes = tuple(need.code for need in needs)
+    by_law = {law: predict_all(table, x, law, codes, target.excess)
+              for law in dict.fromkeys((target.law, *target.also_laws))}
+    predicted = by_law[target.law]
     allowed = {need.code: _with_unknown(table, x, need) for need in needs if need.unknown_ok}
-    limits = [_limit_result(need, allowed.get(need.code, predicted.get(need.code)))
+    limits = [_limit_result(need, {law: allowed.get(need.code, found.get(need.code)) for law, found in by_law.items()})
               for need in needs]
     priced = bool(np.isfinite(table.price[x > 0.0]).all())
     cost = float(np.where(x > 0.0, table.price, 0.0) @ x) if priced else None
-    if target.max_cost_per_t is not None:
-        limits.append(_cost_result(target.max_cost_per_t, cost))
+    most = ceiling(target)
+    if most is not None:
+        limits.append(_cost_result(most, cost))
     shares = {code: float(v) for code, v in zip(table.codes, x, strict=True) if v > 0.0}
     batch = target.batch_kg
     charges = None if batch is None else {code: v * batch for code, v in shares.items()}
+    used = lessons_used(table, x, target)
     return Recipe("by hand", target.law, shares, predicted, tuple(limits), spread(table, x, target.law),
-                  cost, charges_kg=charges, batch_kg=batch)
+                  cost, charges_kg=charges, batch_kg=batch, lessons=tuple(e.version for e in used),
+                  provisional=tuple(e.version for e in used if e.provisional), also_laws=target.also_laws)
 
 
-def predict_all(table: StockTable, x: Array, law: str, also: tuple[str, ...] = ()) -> dict[str, float | None]:
+def lessons_used(table: StockTable, x: Array, target: Target) -> tuple[Excess, ...]:
+    """Which of the laboratory's lessons speak of a pair that the blend x, shape (n,), holds."""
+    used = {name for s, share in zip(table.stocks, x, strict=True) if share > 0.0 for name in (s.code, s.oil) if name}
+    return tuple(e for e in target.excess
+                 if e.law in (target.law, *target.also_laws) and {e.first, e.second} <= used)
+
+
+def predict_all(table: StockTable, x: Array, law: str, also: tuple[str, ...] = (),
+                pairs: tuple[Excess, ...] = ()) -> dict[str, float | None]:
     """Every property of the registry that the blend x, shape (n,), has, by code; None where unknown."""
     used = x > 0.0
     found: dict[str, float | None] = {}
     for code, celsius in (("kv40", 40.0), ("kv100", 100.0)):
-        found[code] = viscosity_gauge(law, table, celsius).read(x)
+        found[code] = viscosity_gauge(law, table, celsius, pairs).read(x)
     found["vi"] = _finite(float(indices(found["kv40"], found["kv100"])))
     temperatures = sorted({key for s in table.stocks for key in s.values if key.startswith("ccs")})
     for code in dict.fromkeys(["density15", *stock_codes(), *temperatures, *also]):
@@ -209,7 +254,7 @@ def predict_all(table: StockTable, x: Array, law: str, also: tuple[str, ...] = (
             continue
         entry = lookup(code)
         if entry.basis == "law" and entry.temperature is not None:
-            found[code] = viscosity_gauge(law, table, entry.temperature).read(x)
+            found[code] = viscosity_gauge(law, table, entry.temperature, pairs).read(x)
             continue
         gauge = property_gauge(table, entry)
         found[code] = None if np.any(used & (gauge.den == 0.0)) else _finite(gauge.read(x))
@@ -240,16 +285,19 @@ def spread(table: StockTable, x: Array, law: str) -> dict[str, float | None]:
     return found
 
 
-def _limit_result(need: Requirement, value: float | None) -> LimitResult:
+def _limit_result(need: Requirement, by_law: Mapping[str, float | None]) -> LimitResult:
+    """How a limit stands: the value of the first law; margin and verdict of the law under which it is worst."""
+    known = {law: value for law, value in by_law.items() if value is not None}
     margin, binding, met = None, "", None
-    if value is not None:
-        sides = [(value - need.held_low, "low")] if need.held_low is not None else []
-        sides += [(need.held_high - value, "high")] if need.held_high is not None else []
+    if known:
+        sides = [(value - need.held_low, "low") for value in known.values() if need.held_low is not None]
+        sides += [(need.held_high - value, "high") for value in known.values() if need.held_high is not None]
         margin, side = min(sides)
-        met = need.miss(value) <= need.tolerance()
+        met = all(need.miss(value) <= need.tolerance() for value in known.values())
         binding = side if abs(margin) <= max(BINDING * need.unit_of_miss(), need.tolerance()) else ""
+    value = next(iter(by_law.values()), None)
     return LimitResult(need.code, need.low, need.high, need.guard, need.held_low, need.held_high, value,
-                       met, margin, binding, need.sources)
+                       met, margin, binding, need.sources, known if len(known) > 1 else {})
 
 
 def _cost_result(ceiling: float, cost: float | None) -> LimitResult:

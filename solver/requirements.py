@@ -14,6 +14,7 @@ from .stocks import StockTable
 from .target import Limit, Target
 
 GRADE = "grade "  # how the source of a grade's limit begins
+MOVED = "what-if"  # source of a limit that the operator has moved
 COST = "cost_per_t"  # the code under which the cost ceiling appears among the limits
 
 
@@ -185,4 +186,28 @@ def required(target: Target, candidates: StockTable) -> tuple[tuple[Requirement,
     if not limits:
         raise TargetError(f"{target.product}: a product without limits; give it a grade or a limit",
                           where=target.product)
-    return merge(limits), tuple(tests)
+    return _moved(merge(limits), target), tuple(tests)
+
+
+def _moved(needs: tuple[Requirement, ...], target: Target) -> tuple[Requirement, ...]:
+    """The requirements with those sides moved that the target moves; a limit that was not there is added."""
+    by_code = {need.code: need for need in needs}
+    for (code, side), value in target.moved.items():
+        if code == COST:
+            continue
+        if side not in ("low", "high"):
+            raise TargetError(f"{code}: a side is low or high, not {side!r}", where=code)
+        need = by_code.get(code) or Requirement(code, None, None, 0.0, None, None, ())
+        at = None if np.isnan(value) else float(value)
+        changed = {side: at, f"held_{side}": at}
+        lookup(code)
+        by_code[code] = replace(need, **changed, sources=tuple(dict.fromkeys([*need.sources, MOVED])))  # type: ignore[arg-type]
+    return tuple(need for need in by_code.values() if need.low is not None or need.high is not None)
+
+
+def ceiling(target: Target) -> float | None:
+    """The cost ceiling [currency/t] that is held: the target's own, or where it is moved to."""
+    at = target.moved.get((COST, "high"))
+    if at is None:
+        return target.max_cost_per_t
+    return None if np.isnan(at) else float(at)

@@ -17,7 +17,7 @@ from .gauge import Gauge, property_gauge
 from .laws import check_law, viscosity_gauge
 from .linear import HOLD, Polytope, Whole, scale
 from .properties import Array
-from .requirements import COST, Requirement, required
+from .requirements import COST, Requirement, ceiling, required
 from .stocks import Stock, StockTable
 from .target import ShareRule, Target
 from .viscosity_index import LOWEST_KV100
@@ -35,13 +35,45 @@ class Row:
 
 
 @dataclass(frozen=True)
+class View:
+    """How a model is read under one law: its gauges by property code, viscosities and all others."""
+
+    law: str
+    gauges: dict[str, Gauge]
+
+    def read(self, code: str, x: Array) -> float | None:
+        """Exact value of a property of a blend; None where it cannot be known."""
+        if code == "vi":
+            from .viscosity_index import indices
+
+            value = float(indices(self.gauges["kv40"].read(x), self.gauges["kv100"].read(x)))
+        else:
+            value = self.gauges[code].read(x)
+        return value if np.isfinite(value) else None
+
+    @property
+    def bent(self) -> bool:
+        """Has the laboratory taught anything that bends one of these gauges?"""
+        return any(gauge.excess is not None for gauge in self.gauges.values())
+
+    def tangent(self, x: Array) -> View:
+        """The view whose gauges agree with these at the blend x to first order, and have rows."""
+        return View(self.law, {code: gauge.tangent(x) for code, gauge in self.gauges.items()})
+
+
+@dataclass(frozen=True)
 class Model:
-    """One target over the stocks that may serve it, ready to be solved."""
+    """One target over the stocks that may serve it, ready to be solved.
+
+    `exact` reads blends, a view a law, the target's own law first; `views` are the same with rows: where
+    the laboratory has taught an excess they are tangents at one blend (tangent.py), elsewhere the same.
+    """
 
     target: Target
     table: StockTable  # only the stocks that may serve
     requirements: tuple[Requirement, ...]
-    gauges: dict[str, Gauge]
+    exact: tuple[View, ...]
+    views: tuple[View, ...]
     rows: tuple[Row, ...]
     lo: Array  # (n,) least mass fraction by rules and holds
     hi: Array  # (n,) most, by rules, holds and quantity on hand
@@ -49,6 +81,16 @@ class Model:
     to_be_tested: tuple[str, ...] = ()
     left_out: tuple[LeftOut, ...] = ()
     short: tuple[str, ...] = field(default=())  # bounds that contradict each other, in words
+
+    @property
+    def gauges(self) -> dict[str, Gauge]:
+        """The gauges of the target's own law, as far as they have rows."""
+        return self.views[0].gauges
+
+    @property
+    def bent(self) -> bool:
+        """Does an excess that the laboratory has taught bend any row?"""
+        return any(view.bent for view in self.exact)
 
     @property
     def whole(self) -> Whole | None:
@@ -76,18 +118,12 @@ class Model:
     def missed(self, x: Array) -> list[Requirement]:
         """The property requirements, VI included, that a blend does not meet on exact recomputation."""
         return [need for need in self.requirements
-                if (value := self.read(need.code, x)) is not None
-                and need.miss(value) > need.tolerance()]
+                if any((value := view.read(need.code, x)) is not None and need.miss(value) > need.tolerance()
+                       for view in self.exact)]
 
     def read(self, code: str, x: Array) -> float | None:
-        """Exact value of a required property of a blend; None where it cannot be known."""
-        if code == "vi":
-            from .viscosity_index import indices
-
-            value = float(indices(self.gauges["kv40"].read(x), self.gauges["kv100"].read(x)))
-        else:
-            value = self.gauges[code].read(x)
-        return value if np.isfinite(value) else None
+        """Exact value, under the target's own law, of a required property; None where it cannot be known."""
+        return self.exact[0].read(code, x)
 
 
 def as_table(stocks: StockTable | Iterable[Stock]) -> StockTable:
@@ -101,22 +137,48 @@ def build(stocks: StockTable | Iterable[Stock], target: Target) -> Model:
     Raises TargetError for a target that contradicts itself or names what is not there, or where a rule
     demands a stock of which something needed is unknown; StockError for a held stock that is not there.
     """
+    model = unfollowed(stocks, target)
+    if not model.bent or len(model.table) == 0:
+        return model
+    from .tangent import settled
+
+    return settled(model)
+
+
+def laws_of(target: Target) -> tuple[str, ...]:
+    """Every law under which a target's limits hold, its own first. TargetError for an unknown one."""
+    return tuple(dict.fromkeys(check_law(law) for law in (target.law, *target.also_laws)))
+
+
+def unfollowed(stocks: StockTable | Iterable[Stock], target: Target) -> Model:
+    """The model as `build` gives it, with rows along the tangent at an even mixture where they bend."""
     table = as_table(stocks)
-    check_law(target.law)
+    laws = laws_of(target)
     check_rules(target, table)
     permitted = candidates(table, target)
     needs, tests = required(target, table.where(permitted))
     keep, left_out = serving(table, permitted, target, needs)
     kept = table.where(keep)
     lo, hi, short = _bounds(kept, target, table)
-    gauges = _gauges(kept, target, needs)
-    rows = [*_property_rows(needs, gauges), *_share_rows(kept, target, table)]
-    if target.max_cost_per_t is not None:
-        rows.append(_row(COST, "high", kept.price - target.max_cost_per_t, HOLD))
-    vi = next((need for need in needs if need.code == "vi"), None)
-    if vi is not None:
-        rows.append(_row("vi", "low", gauges["kv100"].row(LOWEST_KV100, "low"), HOLD))
-    return Model(target, kept, needs, gauges, tuple(rows), lo, hi, vi, tests, left_out, short)
+    views = tuple(View(law, _gauges(kept, law, target, needs)) for law in laws)
+    model = Model(target, kept, needs, views, (), (), lo, hi, next((x for x in needs if x.code == "vi"), None),
+                  tests, left_out, short)
+    return with_rows(replace(model, rows=tuple(_share_rows(kept, target, table))),
+                     np.full(len(kept), 1.0 / max(1, len(kept))))
+
+
+def with_rows(model: Model, x: Array) -> Model:
+    """The model with the rows of its limits; those that bend follow their tangents at the blend x, shape (n,)."""
+    views = tuple(view.tangent(x) if view.bent else view for view in model.exact)
+    rows = [row for row in model.rows if row.of_shares]
+    for number, view in enumerate(views):
+        rows += _property_rows(model.requirements, view.gauges, viscosities_only=number > 0)
+    most = ceiling(model.target)
+    if most is not None:
+        rows.append(_row(COST, "high", model.table.price - most, HOLD))
+    if model.vi is not None:
+        rows += [_row("vi", "low", view.gauges["kv100"].row(LOWEST_KV100, "low"), HOLD) for view in views]
+    return replace(model, views=views, rows=tuple(rows))
 
 
 def without_guards(target: Target) -> Target:
@@ -126,12 +188,12 @@ def without_guards(target: Target) -> Target:
         if x.low is not None or x.high is not None))
 
 
-def _gauges(table: StockTable, target: Target, needs: Iterable[Requirement]) -> dict[str, Gauge]:
-    gauges = {code: viscosity_gauge(target.law, table, t) for code, t in (("kv40", 40.0), ("kv100", 100.0))}
+def _gauges(table: StockTable, law: str, target: Target, needs: Iterable[Requirement]) -> dict[str, Gauge]:
+    gauges = {code: viscosity_gauge(law, table, t, target.excess) for code, t in (("kv40", 40.0), ("kv100", 100.0))}
     for need in needs:
         entry = need.entry
         if entry.basis == "law" and entry.temperature is not None:
-            gauges[need.code] = viscosity_gauge(target.law, table, entry.temperature)
+            gauges[need.code] = viscosity_gauge(law, table, entry.temperature, target.excess)
         elif entry.basis in ("mass", "volume"):
             gauges[need.code] = property_gauge(table, entry)
     return gauges
@@ -141,10 +203,10 @@ def _row(name: str, side: str, coef: Array, hold: float) -> Row:
     return Row(name, side, scale(coef), hold)
 
 
-def _property_rows(needs: Iterable[Requirement], gauges: dict[str, Gauge]) -> list[Row]:
+def _property_rows(needs: Iterable[Requirement], gauges: dict[str, Gauge], viscosities_only: bool) -> list[Row]:
     rows = []
     for need in needs:
-        if need.code == "vi":
+        if need.code == "vi" or (viscosities_only and need.entry.basis != "law"):
             continue
         gauge = gauges[need.code]
         rows += [_row(need.code, side, gauge.row(value, side), HOLD) for side, value in need.row_sides]

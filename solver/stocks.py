@@ -35,6 +35,10 @@ class Stock:
     blend_kv40: float | None = None  # mm²/s, used in place of the neat KV in a blend
     blend_kv100: float | None = None
     values: Mapping[str, float] = field(default_factory=dict)  # property code → value in the registry's unit
+    division_kg: float | None = None  # step of the scale or meter it is charged by; None: any mass
+    package_kg: float | None = None  # net mass of one drum or IBC, charged whole; None: bulk
+    least_charge_kg: float | None = None  # least mass that can be charged at all
+    sigmas: Mapping[str, float] = field(default_factory=dict)  # property code → standard deviation of its value
     tested_on: str = ""  # ISO date
     source: str = ""  # one of SOURCES or empty
 

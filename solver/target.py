@@ -22,6 +22,21 @@ class Limit:
 
 
 @dataclass(frozen=True)
+class Excess:
+    """What measured blends of a pair taught: Redlich–Kister terms that a law's index is out by, per temperature.
+
+        E = f g (A + B (f − g)),   f, g: the pair's parts of the blend by the law's own basis
+    """
+
+    first: str  # a stock, or an oil where several tanks hold the same
+    second: str
+    law: str
+    terms: Mapping[float, tuple[float, ...]]  # °C → (A,) or (A, B), in the law's index
+    version: str = ""
+    provisional: bool = False  # from fewer than four blends
+
+
+@dataclass(frozen=True)
 class ShareRule:
     """Least and most mass fraction of a stock, an oil, a kind or a group ("group II")."""
 
@@ -47,3 +62,8 @@ class Target:
     only_listed: bool = False
     held: Mapping[str, float] = field(default_factory=dict)  # stock → mass fraction, by the operator
     left_out: frozenset[str] = frozenset()  # stocks the operator leaves out
+    also_laws: tuple[str, ...] = ()  # laws under which every limit must hold besides `law`
+    excess: tuple[Excess, ...] = ()  # lessons of the laboratory that are in use
+    # (property or "cost_per_t", "low" or "high") → the limit that is held there instead of what all lines ask:
+    # a what-if, a sweep, the price of a limit. NaN opens the side.
+    moved: Mapping[tuple[str, str], float] = field(default_factory=dict)

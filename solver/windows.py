@@ -11,14 +11,16 @@ outer optimum that meets the exact VI is the optimum of its piece; otherwise it 
 touches the curve there, or, where the curve bends the other way, the piece is split, first at the best
 blend known. A best blend is found beside an outer optimum by one more linear programme with lines on the
 inner side, and always checked on the exact VI. A VI at most v is the mirror image.
+
+Under several laws at once a piece is a box, one side a law, and each law has its own curve and lines; the law
+under which an outer optimum misses the VI most is the one that is cut or split.
 """
 
 from __future__ import annotations
 
 import heapq
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
-from functools import lru_cache
 from itertools import count
 from typing import Any
 
@@ -28,110 +30,12 @@ from .gauge import Gauge
 from .laws import index_of_law
 from .linear import Polytope, Solved, Status, Stopwatch, scale, solve
 from .properties import Array
-from .rows import Model
-from .viscosity_index import LOWEST_KV100, indices, kv40_at
-from .viscosity_index_table import KV100 as TABLE_KV100
+from .rows import Model, View
+from .vi_curve import Curve, curve
+from .viscosity_index import LOWEST_KV100, indices
 
 PIECE = 1e-4  # half the length of a short piece, as a part of the index
 VI_TOLERANCE = 1e-5  # VI points that an answer may fall short of its limit on exact recomputation
-# KV100 where the curve is sampled: the table's lines, where it kinks, and four points between two lines.
-_NODES = np.concatenate([np.array(TABLE_KV100), np.geomspace(70.0, 1e5, 400)[1:]])
-Line = tuple[float, float]  # I40 = a·I100 + b
-_SAMPLES = np.unique(np.concatenate([_NODES[:-1] + f * np.diff(_NODES) for f in (0, 0.2, 0.4, 0.6, 0.8)]))
-
-
-class Curve:
-    """I40 = g(I100) on the curve of one VI in one law's index, with samples of it."""
-
-    def __init__(self, vi: float, law: str) -> None:
-        self.index, self.value = index_of_law(law)
-        self.vi = vi
-        self.at = self.index(_SAMPLES)
-        self.nodes = self.index(_NODES)
-        self.g = self.index(kv40_at(vi, _SAMPLES))
-        self.middle = 0.5 * (self.at[:-1] + self.at[1:])
-        chord = 0.5 * (self.g[:-1] + self.g[1:])
-        self.above, self.below = _controls(chord, self(self.middle))
-
-    def __call__(self, i100: Any) -> Any:
-        """Exact I40 at I100, any shape."""
-        kv100 = np.maximum(self.value(i100), LOWEST_KV100)
-        return self.index(kv40_at(self.vi, kv100))
-
-    def inverse(self, i40: float) -> float:
-        """I100 at which the curve reaches I40 (rounded outwards to a sample below)."""
-        k = int(np.searchsorted(self.g, i40)) - 1
-        return float(self.at[max(0, k)])
-
-    def _points(self, lo: float, hi: float, above: bool) -> tuple[Array, Array]:
-        """Points (I100, I40) whose hull holds the curve over [lo, hi] from above (or from below).
-
-        The ends, the curve's samples between them, and a control point in each gap; the ends come first.
-        """
-        first, last = np.searchsorted(self.at, lo, "right"), np.searchsorted(self.at, hi, "left")
-        ends = np.concatenate([[lo], self.at[first:last], [hi]])
-        outside = [0.5 * (ends[0] + ends[1]), 0.5 * (ends[-2] + ends[-1])]
-        g_lo, g_hi, *g_outside = (float(v) for v in self(np.array([lo, hi, *outside])))
-        g_ends = np.concatenate([[g_lo], self.g[first:last], [g_hi]])
-        chords = [0.5 * (g_ends[0] + g_ends[1]), 0.5 * (g_ends[-2] + g_ends[-1])]
-        edge = _controls(np.array(chords), np.array(g_outside))[0 if above else 1]
-        inner = slice(first, max(first, last - 1))
-        at = np.concatenate([ends[[0, -1]], ends[1:-1], outside, self.middle[inner]])
-        g = np.concatenate([g_ends[[0, -1]], g_ends[1:-1], edge,
-                            (self.above if above else self.below)[inner]])
-        return at, g
-
-    def lines(self, lo: float, hi: float, above: bool) -> list[Line]:
-        """Lines on or above (or: on or below) the curve over [lo, hi]: through each of its ends."""
-        at, g = self._points(lo, hi, above)
-        best, worst = (np.max, np.min) if above else (np.min, np.max)
-        from_lo = float(best((g[1:] - g[0]) / (at[1:] - lo)))
-        others = np.arange(len(at)) != 1
-        from_hi = float(worst((g[1] - g[others]) / (hi - at[others])))
-        return [(from_lo, float(g[0]) - from_lo * lo), (from_hi, float(g[1]) - from_hi * hi)]
-
-    def touching(self, at: float, lo: float, hi: float, above: bool) -> list[Line]:
-        """Lines through the curve's point at `at` that lie on or above (below) it over [lo, hi].
-
-        None where the curve bends the other way there; two at a kink, one elsewhere.
-        """
-        points, g = self._points(lo, hi, above)
-        here = float(self(at))
-        sign = 1.0 if above else -1.0
-        right, left = points > at + 1e-9, points < at - 1e-9
-        if not (right.any() and left.any()):
-            return []
-        most_right = float(np.max(sign * (g[right] - here) / (points[right] - at)))
-        least_left = float(np.min(sign * (here - g[left]) / (at - points[left])))
-        if most_right > least_left:
-            return []
-        slopes = {sign * most_right, sign * least_left}
-        if least_left - most_right < 1e-6:
-            slopes = {0.5 * sign * (most_right + least_left)}
-        return [(s, here - s * at) for s in slopes]
-
-    def snap(self, at: float) -> float:
-        """The kink (a line of the published table) next to a point, if it is very near, else the point."""
-        k = int(np.clip(np.searchsorted(self.nodes, at), 1, len(self.nodes) - 1))
-        left, right = float(self.nodes[k - 1]), float(self.nodes[k])
-        near = left if at - left < right - at else right
-        return near if abs(at - near) < 0.02 * (right - left) else at
-
-
-def _controls(chord: Array, g: Array) -> tuple[Array, Array]:
-    """Points, above and below, whose hull with an arc's ends holds the arc; g is the curve at its middle.
-
-    A short smooth arc is a parabola to within its third order: it lies between its ends and a control
-    point twice its rise from the chord. A tenth is added for that third order.
-    """
-    rise = g - chord
-    return chord + 2.2 * np.maximum(rise, 0.0), chord + 2.2 * np.minimum(rise, 0.0)
-
-
-@lru_cache(maxsize=64)
-def curve(vi: float, law: str) -> Curve:
-    """The curve of one VI under one law; Walther and Wright share an index."""
-    return Curve(vi, law)
 
 
 @dataclass(frozen=True)
@@ -152,62 +56,100 @@ class Outcome:
         return max(0.0, self.value - self.bound) / max(abs(self.value), 1e-12)
 
 
+Span = tuple[float, float]  # least and most I100 of a piece, under one law
+
+
 @dataclass(order=True)
 class _Piece:
-    """One piece of the KV100 window, its outer optimum, and the cuts found on it."""
+    """One piece of the KV100 window (a span a law), its outer optimum, and the cuts found on it."""
 
     bound: float
     order: int
-    left: float = field(compare=False)
-    right: float = field(compare=False)
+    spans: tuple[Span, ...] = field(compare=False)
     x: Array = field(compare=False)
     rows: list[Array] = field(compare=False)
 
-    @property
-    def tiny(self) -> bool:
-        """Too short to split: its outer lines are the curve."""
-        return self.right - self.left < 1e-9 * max(1.0, abs(self.right))
+    def tiny(self, k: int) -> bool:
+        """Is its span under law k too short to split, so that its outer lines are the curve?"""
+        left, right = self.spans[k]
+        return right - left < 1e-9 * max(1.0, abs(right))
+
+    def parted(self, k: int, at: float) -> tuple[tuple[Span, ...], tuple[Span, ...]]:
+        """The spans of its two parts when law k's is split."""
+        left, right = self.spans[k]
+        before, after = self.spans[:k], self.spans[k + 1:]
+        return (*before, (left, at), *after), (*before, (at, right), *after)
 
 
-@dataclass
-class _Search:
-    """State of one search over pieces of the KV100 window."""
+@dataclass(frozen=True)
+class _Law:
+    """The VI limits under one law: its gauges with rows, and a curve for each side."""
 
-    model: Model
-    problem: Polytope
-    c: Array
-    watch: Stopwatch
-    tolerance: Callable[[float], float]
-    curves: list[tuple[Curve, bool]] = field(default_factory=list)  # (curve, is it a VI minimum)
-    best_x: Array | None = None
-    best: float = np.inf
-    solves: int = 0
-    cut_short: bool = False
-
-    @property
-    def g40(self) -> Gauge:
-        return self.model.gauges["kv40"]
-
-    @property
-    def g100(self) -> Gauge:
-        return self.model.gauges["kv100"]
+    g40: Gauge
+    g100: Gauge
+    curves: tuple[tuple[Curve, bool], ...]  # (curve, is it a VI minimum)
 
     def at(self, x: Array) -> float:
+        """I100 of a blend."""
         return float(self.g100.index_of(x))
 
-    def meets_vi(self, x: Array) -> bool:
+    def short(self, x: Array) -> float:
+        """VI points by which a blend misses its limits at worst; below 0 inside."""
         vi = float(indices(self.g40.read(x), self.g100.read(x)))
-        return all(vi >= curve.vi - VI_TOLERANCE if least else vi <= curve.vi + VI_TOLERANCE
-                   for curve, least in self.curves)
+        return max(curve.vi - vi if least else vi - curve.vi for curve, least in self.curves)
 
     def line_row(self, a: float, b: float, least: bool) -> Array:
         """I40 ≤ a I100 + b (least) or ≥ as a row."""
         g40, g100 = self.g40, self.g100
         return g40.sign * (1.0 if least else -1.0) * (g40.num - a * g100.num - b * g40.den)
 
-    def window_rows(self, lo: float, hi: float) -> list[Array]:
+    def span_rows(self, lo: float, hi: float) -> list[Array]:
+        """I100 within a span, as two rows."""
         g = self.g100
         return [g.sign * (g.num - hi * g.den), -g.sign * (g.num - lo * g.den)]
+
+    def lines(self, lo: float, hi: float, outer: bool) -> list[Array]:
+        """Rows of lines on the outer (or inner) side of the curves over a span."""
+        return [self.line_row(a, b, least) for curve, least in self.curves
+                for a, b in curve.lines(lo, hi, least if outer else not least)]
+
+    def cuts(self, at: float, lo: float, hi: float, x: Array) -> list[Array]:
+        """Rows that cut off an outer optimum at I100 = at and no blend of the span that meets the VI."""
+        rows = [self.line_row(a, b, least) for curve, least in self.curves
+                for a, b in curve.touching(at, lo, hi, least)]
+        return [row for row in rows if float(scale(row) @ x) > 1e-9]
+
+    def snap(self, x: Array) -> float:
+        """I100 of a blend, or the kink of the table very near to it."""
+        return self.curves[0][0].snap(self.at(x))
+
+    def beside(self, x: Array, lo: float, hi: float) -> Span | None:
+        """A short span at a blend, on one side of a kink that is met exactly; None: no room for one."""
+        at = self.snap(x)
+        width = PIECE * abs(at)
+        left, right = max(lo, at - width), min(hi, at + width)
+        if at != self.at(x):
+            left, right = (left, at) if self.at(x) < at else (at, right)
+        return (left, right) if left < right else None
+
+
+@dataclass
+class _Search:
+    """State of one search over pieces of the KV100 window."""
+
+    problem: Polytope
+    c: Array
+    watch: Stopwatch
+    tolerance: Callable[[float], float]
+    laws: tuple[_Law, ...] = ()
+    best_x: Array | None = None
+    best: float = np.inf
+    solves: int = 0
+    cut_short: bool = False
+
+    def short(self, x: Array) -> list[float]:
+        """VI points missed under each law."""
+        return [law.short(x) for law in self.laws]
 
     def solve(self, problem: Polytope) -> Solved:
         self.solves += 1
@@ -215,43 +157,38 @@ class _Search:
         self.cut_short |= solved.status == "stopped"
         return solved
 
-    def outer(self, lo: float, hi: float, more: list[Array]) -> Solved:
+    def outer(self, spans: Sequence[Span], more: list[Array]) -> Solved:
         """The relaxed problem on one piece: every blend that meets the VI lies inside it."""
-        rows = self.window_rows(lo, hi) + more
-        for curve, least in self.curves:
-            rows += [self.line_row(a, b, least) for a, b in curve.lines(lo, hi, least)]
+        rows: list[Array] = []
+        for law, (lo, hi) in zip(self.laws, spans, strict=True):
+            rows += law.span_rows(lo, hi)
+        rows += more
+        for law, (lo, hi) in zip(self.laws, spans, strict=True):
+            rows += law.lines(lo, hi, True)
         return self.solve(self.problem.with_rows(rows, hold=0.0))
-
-    def cuts(self, at: float, lo: float, hi: float, x: Array) -> list[Array]:
-        """Rows that cut off an outer optimum at I100 = at and no blend of the piece that meets the VI."""
-        rows = []
-        for curve, least in self.curves:
-            rows += [self.line_row(a, b, least) for a, b in curve.touching(at, lo, hi, least)]
-        return [row for row in rows if float(scale(row) @ x) > 1e-9]
 
     def offer(self, x: Array | None, value: float) -> bool:
         """Take a blend as the best known if it is cheaper and meets the exact VI."""
-        if x is None or value >= self.best or not self.meets_vi(x):
+        if x is None or value >= self.best or max(self.short(x)) > VI_TOLERANCE:
             return False
         self.best_x, self.best = x, value
         return True
 
-    def polish(self, x: Array, lo: float, hi: float) -> None:
+    def polish(self, x: Array, spans: Sequence[Span]) -> None:
         """The best blend beside an outer optimum that meets the exact VI: one linear programme.
 
         On a short piece the curve is replaced by lines on its inner side, so what is found is sure to
         meet it. A piece ends at a kink, where the curve is met exactly.
         """
-        at = self.curves[0][0].snap(self.at(x))
-        width = PIECE * abs(at)
-        left, right = max(lo, at - width), min(hi, at + width)
-        if at != self.at(x):
-            left, right = (left, at) if self.at(x) < at else (at, right)
-        if not left < right:
-            return
-        rows = self.window_rows(left, right)
-        for curve, least in self.curves:
-            rows += [self.line_row(a, b, least) for a, b in curve.lines(left, right, not least)]
+        near = [law.beside(x, lo, hi) for law, (lo, hi) in zip(self.laws, spans, strict=True)]
+        rows: list[Array] = []
+        for law, span in zip(self.laws, near, strict=True):
+            if span is None:
+                return
+            rows += law.span_rows(*span)
+        for law, span in zip(self.laws, near, strict=True):
+            assert span is not None
+            rows += law.lines(*span, False)
         solved = self.solve(self.problem.on_support(x).with_rows(rows))
         self.offer(solved.x, solved.value)
 
@@ -263,32 +200,36 @@ def search(model: Model, problem: Polytope, c: Array, watch: Stopwatch, *, gap: 
     status "optimal": within the gap; "infeasible": nothing meets it; "stopped": time or nodes ran out
     (x None when nothing was found by then).
     """
-    run = _Search(model, problem, c, watch, lambda best: max(gap_absolute, gap * abs(best)))
+    run = _Search(problem, c, watch, lambda best: max(gap_absolute, gap * abs(best)))
     need = model.vi
     if need is None or len(model.table) == 0:
         solved = run.solve(problem)
         return Outcome(solved.status, solved.x, solved.value, solved.bound, 1)
-    if need.held_low is not None:
-        run.curves.append((curve(need.held_low, model.target.law), True))
-    if need.held_high is not None:
-        run.curves.append((curve(need.held_high, model.target.law), False))
-    lo, hi = _window(run)
-    if lo > hi:
-        return Outcome("infeasible", None, np.inf, np.inf)
-    hair = 1e-9 * max(1.0, abs(hi))
-    return _branch(run, lo - hair, hi + hair, node_limit)
+    spans = []
+    for view in model.views:
+        sides = [(value, least) for value, least in ((need.held_low, True), (need.held_high, False))
+                 if value is not None]
+        law = _Law(view.gauges["kv40"], view.gauges["kv100"],
+                   tuple((curve(value, view.law), least) for value, least in sides))
+        lo, hi = _window(model, view, law, problem)
+        if lo > hi:
+            return Outcome("infeasible", None, np.inf, np.inf)
+        hair = 1e-9 * max(1.0, abs(hi))
+        run.laws += (law,)
+        spans.append((lo - hair, hi + hair))
+    return _branch(run, tuple(spans), node_limit)
 
 
-def _branch(run: _Search, lo: float, hi: float, node_limit: int) -> Outcome:
+def _branch(run: _Search, spans: tuple[Span, ...], node_limit: int) -> Outcome:
     order = count()
     heap: list[_Piece] = []
 
-    def push(left: float, right: float, parent: float, rows: list[Array]) -> None:
-        solved = run.outer(left, right, rows)
+    def push(spans: tuple[Span, ...], parent: float, rows: list[Array]) -> None:
+        solved = run.outer(spans, rows)
         if solved.x is not None:
-            heapq.heappush(heap, _Piece(max(parent, solved.bound), next(order), left, right, solved.x, rows))
+            heapq.heappush(heap, _Piece(max(parent, solved.bound), next(order), spans, solved.x, rows))
 
-    push(lo, hi, -np.inf, [])
+    push(spans, -np.inf, [])
     closed = np.inf  # least bound among pieces that are done
     nodes = 0
     while heap:
@@ -301,21 +242,17 @@ def _branch(run: _Search, lo: float, hi: float, node_limit: int) -> Outcome:
             break
         nodes += 1
         x = piece.x
-        if run.offer(x, float(run.c @ x)) or run.meets_vi(x) or piece.tiny:
+        short = run.short(x)
+        open_laws = [k for k in range(len(short)) if short[k] > VI_TOLERANCE and not piece.tiny(k)]
+        if run.offer(x, float(run.c @ x)) or not open_laws:
             closed = min(closed, piece.bound)
             continue
-        run.polish(x, piece.left, piece.right)
+        run.polish(x, piece.spans)
         if piece.bound >= run.best - run.tolerance(run.best):
             closed = min(closed, piece.bound)
             continue
-        points = _points_inside(run, piece)
-        cuts = next((rows for at in points if (rows := run.cuts(at, piece.left, piece.right, x))), [])
-        if cuts:
-            push(piece.left, piece.right, piece.bound, piece.rows + cuts)
-        else:
-            split = points[0] if points else 0.5 * (piece.left + piece.right)
-            push(piece.left, split, piece.bound, piece.rows)
-            push(split, piece.right, piece.bound, piece.rows)
+        k = max(open_laws, key=lambda k: short[k])
+        _narrow(run, piece, k, push)
     bound = min([run.best, closed, *(piece.bound for piece in heap)])
     if run.best_x is None:
         return Outcome("stopped" if run.cut_short else "infeasible", None, np.inf, bound, run.solves)
@@ -323,25 +260,38 @@ def _branch(run: _Search, lo: float, hi: float, node_limit: int) -> Outcome:
     return Outcome("optimal" if done else "stopped", run.best_x, run.best, bound, run.solves)
 
 
-def _points_inside(run: _Search, piece: _Piece) -> list[float]:
+def _narrow(run: _Search, piece: _Piece, k: int, push: Callable[[tuple[Span, ...], float, list[Array]], None]) -> None:
+    """Cut a piece's outer optimum off under law k, or split the piece there."""
+    law, (left, right) = run.laws[k], piece.spans[k]
+    points = _points_inside(run, piece, k)
+    cuts = next((rows for at in points if (rows := law.cuts(at, left, right, piece.x))), [])
+    if cuts:
+        push(piece.spans, piece.bound, piece.rows + cuts)
+        return
+    for part in piece.parted(k, points[0] if points else 0.5 * (left + right)):
+        push(part, piece.bound, piece.rows)
+
+
+def _points_inside(run: _Search, piece: _Piece, k: int) -> list[float]:
     """Where to cut or split a piece: at the best blend, then at the outer optimum, if inside it."""
-    edge = 1e-6 * (piece.right - piece.left)
+    left, right = piece.spans[k]
+    edge = 1e-6 * (right - left)
     blends = ([run.best_x] if run.best_x is not None else []) + [piece.x]
-    points = [run.curves[0][0].snap(run.at(x)) for x in blends]
-    return [at for at in points if piece.left + edge < at < piece.right - edge]
+    points = [run.laws[k].snap(x) for x in blends]
+    return [at for at in points if left + edge < at < right - edge]
 
 
-def _window(run: _Search) -> tuple[float, float]:
-    """The I100 that any feasible blend can have: between the stocks' own, inside the KV limits.
+def _window(model: Model, view: View, law: _Law, problem: Polytope) -> Span:
+    """The I100 that any feasible blend can have under a law: between the stocks' own, inside the KV limits.
 
     Low above high: no blend is left.
     """
-    model, g40, g100 = run.model, run.g40, run.g100
-    usable = (g100.den != 0.0) & (run.problem.hi > 0.0)
+    g40, g100 = law.g40, law.g100
+    usable = (g100.den != 0.0) & (problem.hi > 0.0)
     if not usable.any():
         return 1.0, 0.0
     own = g100.num[usable] / g100.den[usable]
-    index = index_of_law(model.target.law)[0]
+    index = index_of_law(view.law)[0]
     lo, hi = max(float(own.min()), float(index(LOWEST_KV100))), float(own.max())
     needs = {need.code: need for need in model.requirements}
     at100, at40 = needs.get("kv100"), needs.get("kv40")
@@ -350,7 +300,7 @@ def _window(run: _Search) -> tuple[float, float]:
         hi = min(hi, float(index(at100.held_high))) if at100.held_high is not None else hi
     if at40 is not None and at40.held_low is not None:
         # KV40 ≤ U_v(KV100) and KV40 ≥ low: the curve must have reached low.
-        lo = max([lo, *(curve.inverse(float(index(at40.held_low))) for curve, least in run.curves if least)])
+        lo = max([lo, *(curve.inverse(float(index(at40.held_low))) for curve, least in law.curves if least)])
     if at40 is not None and at40.held_high is not None:
         hi = min(hi, _most_i100(g40, g100, usable, float(index(at40.held_high))))
     return lo, hi
