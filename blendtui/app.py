@@ -248,6 +248,12 @@ class Console(App[int]):
         if self.session.fail(message.request, message.error):
             self.shows_changed()
 
+    def on_reported(self, message: messages.Reported) -> None:
+        """A report of one screen came: it is that screen's, whether it is in sight or not."""
+        for page in self._screen_stacks.get(message.screen, []):
+            if hasattr(page, "take_report"):
+                page.take_report(message)
+
     # Commands of every screen
 
     def do_undo(self) -> None:
@@ -311,7 +317,7 @@ class Console(App[int]):
 
     def do_back(self) -> None:
         """Esc where there is nothing to drop."""
-        self.say("Esc leaves nothing here; 1 to 4 open the screens")
+        self.say("Esc leaves nothing here; 1 to 8 open the screens")
 
     def do_help(self) -> None:
         """Show every command."""

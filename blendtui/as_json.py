@@ -7,6 +7,7 @@ from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
 from blendtui.desk.stocks import derived
+from blendtui.store.reads import joined
 from blendtui.store.records import Product
 from solver.stocks import Stock
 
@@ -43,7 +44,9 @@ def design(recipe: Recipe) -> Answer:
             "charges_kg": None if recipe.charges_kg is None else dict(recipe.charges_kg),
             "limits": [limit(x) for x in recipe.limits], "batch_kg": recipe.batch_kg,
             "bound_per_t": recipe.bound_per_t, "to_be_tested": list(recipe.to_be_tested),
-            "left_out": {x.stock: x.reason for x in recipe.left_out}, "reasons": list(recipe.reasons)}
+            "left_out": {x.stock: x.reason for x in recipe.left_out}, "reasons": list(recipe.reasons),
+            "also_laws": list(recipe.also_laws), "lessons": list(recipe.lessons),
+            "provisional": list(recipe.provisional)}
 
 
 def limit(result: LimitResult) -> Answer:
@@ -51,22 +54,20 @@ def limit(result: LimitResult) -> Answer:
     return {"property": result.property, "low": result.low, "high": result.high, "guard": result.guard,
             "value": result.value, "met": result.met, "held_low": result.held_low,
             "held_high": result.held_high, "margin": result.margin, "binding": result.binding or None,
-            "sources": list(result.sources)}
+            "sources": list(result.sources), **({"by_law": dict(result.by_law)} if result.by_law else {})}
 
 
 def other_blend(recipe: Recipe) -> Answer:
     """One entry of `blends`."""
     return {"shares_pct": percent(recipe.shares), "cost_per_t": recipe.cost_per_t,
-            "predicted": dict(recipe.predicted)}
+            "predicted": dict(recipe.predicted), "spread_pct": dict(recipe.spread_pct)}
 
 
 def stock(each: Stock) -> Answer:
     """One entry of `stocks`: the catalogue's columns, then what follows from them."""
-    row = asdict(each)
-    values = row.pop("values")
-    row["stock"] = row.pop("code")
+    row = {cell: value for cell, value in asdict(each).items() if cell not in ("code", "values", "sigmas")}
     vi, slope = derived(each)
-    return {"stock": row.pop("stock"), **row, **values, "vi": vi, "slope": slope}
+    return {"stock": each.code, **row, **joined(each), "vi": vi, "slope": slope}
 
 
 def product(each: Product) -> Answer:

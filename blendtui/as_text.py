@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
 from blendtui.desk import numbers
-from blendtui.desk.blends import spread_words
+from blendtui.desk.blends import marked_spread, spread_words
 from blendtui.desk.sheet import NOT_A_CERTIFICATE
 from blendtui.desk.stocks import derived
 from blendtui.store.harmless import harmless
@@ -63,14 +63,17 @@ def prediction(recipe: Recipe) -> str:
 
 
 def design(product: str, recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None,
-           others: Sequence[Recipe]) -> str:
-    """Text of `design`."""
+           others: Sequence[Recipe], more: Sequence[str] = ()) -> str:
+    """Text of `design`; `more`: what else there is to say of it, a sentence each."""
     parts = [wrap(_headline(product, recipe), "  ")]
+    parts += ["\n".join(wrap(f"  {harmless(said, 400)}", "    ") for said in more)] if more else []
     parts += [wrap(f"! {harmless(reason)}", "  ") for reason in recipe.reasons]
     if recipe.shares is not None:
         parts.append(_shares(recipe, stocks, ranges))
     if recipe.limits:
         parts.append(_limits(recipe.limits))
+    if recipe.also_laws:
+        parts.append(_under(recipe))
     if recipe.to_be_tested:
         parts.append("to be tested:\n" + "\n".join(wrap(f"  {x}", "    ") for x in recipe.to_be_tested))
     if recipe.left_out:
@@ -137,6 +140,14 @@ def _limits(limits: Sequence[LimitResult]) -> str:
     return table(["limit", "value", "low", "high", "guard", "margin", "verdict"], rows)
 
 
+def _under(recipe: Recipe) -> str:
+    """The limits under every law that was asked for: the margin above is that of the worst."""
+    limits = [x for x in recipe.limits if x.by_law]
+    laws = list(dict.fromkeys(law for x in limits for law in x.by_law))
+    rows = [[law, *(numbers.value(x.property, x.by_law.get(law)) for x in limits)] for law in laws]
+    return table(["held under", *(lookup(x.property).label.removeprefix("KV at ") for x in limits)], rows)
+
+
 def _margin(limit: LimitResult) -> str:
     """The margin with as many decimals as its value has: what is below them is rounding."""
     shown = numbers.value(limit.property, limit.value)
@@ -145,7 +156,9 @@ def _margin(limit: LimitResult) -> str:
 
 def _law(recipe: Recipe) -> str:
     spread = recipe.spread_pct
-    text = (f"law {recipe.law}; spread of the laws: KV40 {numbers.fixed(spread.get('kv40'), 1)} %, "
+    taught = f" with the laboratory's {', '.join(recipe.lessons)}" if recipe.lessons else ""
+    unsure = f" (provisional: {', '.join(recipe.provisional)})" if recipe.provisional else ""
+    text = (f"law {recipe.law}{taught}{unsure}; spread of the laws: KV40 {numbers.fixed(spread.get('kv40'), 1)} %, "
             f"KV100 {numbers.fixed(spread.get('kv100'), 1)} %")
     widest = max((v for v in spread.values() if v is not None), default=None)
     words = spread_words(widest)
@@ -154,9 +167,10 @@ def _law(recipe: Recipe) -> str:
 
 def _blends(blends: Sequence[Recipe]) -> str:
     rows = [[str(i), numbers.cost(b.cost_per_t), numbers.kv(b.predicted.get("kv40")),
-             numbers.kv(b.predicted.get("kv100")), numbers.vi(b.predicted.get("vi"))]
+             numbers.kv(b.predicted.get("kv100")), numbers.vi(b.predicted.get("vi")), marked_spread(b.spread_pct)]
             for i, b in enumerate(blends, 1)]
-    lines = table(["blend", "cost per t", "KV40, mm²/s", "KV100, mm²/s", "VI"], rows, left=0).split("\n")
+    lines = table(["blend", "cost per t", "KV40, mm²/s", "KV100, mm²/s", "VI", "laws differ, %"], rows,
+                  left=0).split("\n")
     for line, blend in zip(lines[2:], blends, strict=True):
         shares = ", ".join(f"{code} {numbers.pct(share)}" for code, share in (blend.shares or {}).items())
         lines[lines.index(line)] = line + "\n" + wrap(f"       mass %: {shares}", "               ")

@@ -63,6 +63,8 @@ def blends(stocks: StockTable | Iterable[Stock], target: Target, count: int = MO
     problem = model.polytope(whole=False)
     for hold in (HOLD, FIRM_HOLD, SLACK):
         found = _Sets(model, problem.held(hold), watch).collect(min(count, MOST_BLENDS))
+        if model.bent:  # along the tangents at the least cost: what is far from there may miss a limit
+            return [recipe for recipe in found if recipe.meets_all]
         if found and all(recipe.meets_all for recipe in found):
             return found
     return []

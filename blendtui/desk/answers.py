@@ -29,6 +29,10 @@ class Wishes:
     held: Mapping[str, float] = field(default_factory=dict)  # stock → mass fraction
     left_out: frozenset[str] = frozenset()
     typed: Mapping[str, float] | None = None  # shares by hand, stock → mass fraction; None: the best is wanted
+    also_laws: tuple[str, ...] = ()  # laws under which it must hold besides
+    moved: Mapping[tuple[str, str], float] = field(default_factory=dict)  # limits moved as a what-if
+    confidence: float | None = None  # chance at which every limit is to be met on the first batch, 0–1
+    whole: bool = False  # charges in whole scale divisions, drums and IBCs
 
 
 @dataclass(frozen=True)
@@ -41,6 +45,8 @@ class Answer:
     allowed: tuple[str, ...]  # stocks that may serve, those used first, then in the plant's order
     best: Recipe
     by_hand: Recipe | None = None
+    plain: Recipe | None = None  # the least cost without the chance or the whole steps that are wished
+    more: tuple[str, ...] = ()  # what else there is to say of the best, a sentence each
     ranges: Mapping[str, tuple[float, float]] | None = None
     guard_cost_per_t: float | None = None
     largest_batch_kg: float | None = None
@@ -52,7 +58,8 @@ def target(plant: Plant, wishes: Wishes) -> Target:
     """The target of a product under these wishes."""
     from . import targets
 
-    return targets.target_of(plant, wishes.product, wishes.law, wishes.batch_kg, wishes.held, wishes.left_out)
+    goal = targets.target_of(plant, wishes.product, wishes.law, wishes.batch_kg, wishes.held, wishes.left_out)
+    return replace(goal, also_laws=wishes.also_laws, moved=dict(wishes.moved))
 
 
 def answer(plant: Plant, stocks: tuple[Stock, ...], wishes: Wishes, before: Answer | None = None) -> Answer:
@@ -64,13 +71,34 @@ def answer(plant: Plant, stocks: tuple[Stock, ...], wishes: Wishes, before: Answ
     from . import blends
 
     goal = target(plant, wishes)
-    if before is not None and before.stocks == stocks and before.target == goal:
+    if before is not None and before.stocks == stocks and before.target == goal and _as_sure(before.wishes, wishes):
         found = replace(before, wishes=wishes)
     else:
         best = blends.best(stocks, goal, TIME_LIMIT)
-        found = Answer(wishes, goal, stocks, _allowed(stocks, goal, best), best)
+        found = _wished(plant, Answer(wishes, goal, stocks, _allowed(stocks, goal, best), best))
     made = None if wishes.typed is None else blends.by_hand(stocks, goal, wishes.typed)
     return replace(found, by_hand=made)
+
+
+def _as_sure(one: Wishes, other: Wishes) -> bool:
+    return (one.confidence, one.whole) == (other.confidence, other.whole)
+
+
+def _wished(plant: Plant, found: Answer) -> Answer:
+    """The answer with its best at the chance that is wished, or in whole steps; both where both are."""
+    from . import blends, chance, lab
+
+    wishes, goal, best = found.wishes, found.target, found.best
+    more: tuple[str, ...] = ()
+    if wishes.confidence is not None and best.status != "infeasible":
+        sure = chance.certain(found.stocks, goal, wishes.confidence, lab.law_sigma(plant, goal.law, goal.product),
+                              time_limit=TIME_LIMIT)
+        best, more = sure.recipe, chance.certain_words(sure)
+    elif wishes.whole and best.status != "infeasible":
+        best = blends.whole(found.stocks, goal, TIME_LIMIT).recipe
+    if best is found.best:
+        return found
+    return replace(found, best=best, plain=found.best, more=more)
 
 
 def _allowed(stocks: tuple[Stock, ...], goal: Target, best: Recipe) -> tuple[str, ...]:
@@ -118,7 +146,8 @@ def _ranges(found: Answer) -> Answer:
 def _guard(found: Answer) -> Answer:
     from . import blends
 
-    return replace(found, guard_cost_per_t=blends.guard_cost(StockTable(found.stocks), found.target, found.best))
+    cost = blends.guard_cost(StockTable(found.stocks), found.target, found.plain or found.best)
+    return replace(found, guard_cost_per_t=cost)
 
 
 def _largest(found: Answer) -> Answer:

@@ -4,18 +4,20 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
+from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.store.records import Trial
 from solver.stocks import Stock, StockTable
-from solver.target import Target
+from solver.target import LAWS, Target
 
-from . import trials
+from . import numbers, trials
 from .errors import DeskError
 
 if TYPE_CHECKING:
     from solver.recipe import Recipe
+    from solver.whole import WholeRecipe
 
 SPREAD_MARKED = 3.0  # % between the laws from which a prediction is marked
 SPREAD_DOUBTED = 10.0  # % from which a laboratory blend is needed before the number can be trusted
@@ -26,6 +28,24 @@ def best(stocks: Sequence[Stock], target: Target, time_limit: float = 5.0) -> Re
     from solver.recipe import design
 
     return design(StockTable(stocks), target, time_limit=time_limit)
+
+
+def whole(stocks: Sequence[Stock], target: Target, time_limit: float = 5.0) -> WholeRecipe:
+    """The least-cost recipe in whole scale divisions, drums and IBCs. TargetError without a batch."""
+    from solver.whole import whole as solve
+
+    return solve(StockTable(stocks), target, time_limit=time_limit)
+
+
+def whole_json(made: WholeRecipe) -> dict[str, Any]:
+    """What whole charges add to a recipe, JSON-ready."""
+    return {"total_kg": made.total_kg, "tolerance_kg": made.tolerance_kg, "packages": dict(made.packages),
+            "steps_kg": dict(made.steps_kg), "least_cost_per_t": made.least_cost_per_t,
+            "extra_per_t": made.extra_per_t, "proven": made.proven,
+            "rounded": [{"of": r.of, "low_pct": 100.0 * r.low, "high_pct": 100.0 * r.high,
+                         "share_pct": 100.0 * r.share, "off_kg": r.off_kg, "step_kg": r.step_kg} for r in made.rounded],
+            "missed": [{"property": m.property, "side": m.side, "limit": m.limit, "value": m.value, "miss": m.miss}
+                       for m in made.missed], "notes": list(made.notes)}
 
 
 def by_hand(stocks: Sequence[Stock], target: Target, shares: Mapping[str, float]) -> Recipe:
@@ -90,7 +110,26 @@ def spread_words(spread_pct: float | None) -> str:
         return ""
     if spread_pct <= SPREAD_DOUBTED:
         return "the laws differ: confirm in the laboratory"
-    return "the laws differ widely: a laboratory blend is needed before this number can be trusted"
+    return ("the laws differ widely: a laboratory blend is needed before this number can be trusted "
+            "(blendtui lab plan, or p on the screen Lab, plans one)")
+
+
+def laws_named(typed: str) -> tuple[str, ...]:
+    """The laws that a typed text names: all, or names or their beginnings; empty: none. DeskError for another."""
+    found: dict[str, None] = {}
+    for word in typed.lower().replace(",", " ").split():
+        named = LAWS if word == "all" else tuple(law for law in LAWS if law.startswith(word))
+        if not named:
+            raise DeskError(f"{harmless(word, 40)!r} is no law; known are {', '.join(LAWS)}, or all")
+        found.update(dict.fromkeys(named))
+    return tuple(law for law in LAWS if law in found)
+
+
+def marked_spread(spread_pct: Mapping[str, float | None]) -> str:
+    """The wider spread of KV40 and KV100, %, as it stands beside a prediction: marked ! over 3 %, !! over 10 %."""
+    widest = max((v for v in spread_pct.values() if v is not None), default=None)
+    sign = "" if widest is None or widest <= SPREAD_MARKED else "! " if widest <= SPREAD_DOUBTED else "!! "
+    return sign + numbers.fixed(widest, 1)
 
 
 # Trials

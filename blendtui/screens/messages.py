@@ -30,6 +30,17 @@ class Answered(Message):
 
 
 @dataclass
+class Reported(Message):
+    """A report of one screen, or a further part of it, is there; or in one line why there is none."""
+
+    screen: str
+    request: int
+    report: Any = None
+    refusal: str = ""
+    last: bool = False
+
+
+@dataclass
 class Unanswered(Message):
     """There is no recipe, and why."""
 

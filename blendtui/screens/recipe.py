@@ -257,11 +257,43 @@ class RecipeScreen(Page):
 
     def do_free(self) -> None:
         """No holds, nothing left out."""
-        if self.wishes.held or self.wishes.left_out:
-            self._wish(replace(self.wishes, held={}, left_out=frozenset(), typed=None),
-                       "holds cleared, nothing left out")
+        wishes = self.wishes
+        if wishes.held or wishes.left_out or wishes.moved:
+            self._wish(replace(wishes, held={}, left_out=frozenset(), moved={}, typed=None),
+                       "holds and what-ifs cleared, nothing left out")
         else:
-            self.say("nothing is held or left out")
+            self.say("nothing is held, left out or moved as a what-if")
+
+    def do_all_laws(self) -> None:
+        """Type the laws under which every limit must hold at once."""
+        def make(typed: str) -> tuple[Wishes, str]:
+            under = blends.laws_named(typed)
+            told = "all five laws" if under == LAWS else ", ".join(under)
+            return replace(self.wishes, also_laws=under), f"held under {told}" if under else "held under one law"
+
+        now = self.wishes.also_laws
+        self._type_wish("hold under these laws too (all, or names such as wright; empty: one law)",
+                        "all" if not now or now == LAWS else " ".join(now), make)
+
+    def do_whole(self) -> None:
+        """Charges in whole steps, or in any mass."""
+        whole = not self.wishes.whole
+        self._wish(replace(self.wishes, whole=whole, confidence=None, typed=None),
+                   "charges in whole steps" if whole else "charges of any mass")
+
+    def do_sure(self) -> None:
+        """Type the chance at which each limit is to be met."""
+        def make(typed: str) -> tuple[Wishes, str]:
+            from blendtui.desk import chance
+
+            if not typed:
+                return replace(self.wishes, confidence=None, typed=None), "no chance asked"
+            asked = chance.confidence(typed)
+            return (replace(self.wishes, confidence=asked, whole=False, typed=None),
+                    f"each limit met with a chance of {100.0 * asked:.4g} %")
+
+        now = self.wishes.confidence
+        self._type_wish("chance of each limit, % (empty: none)", "" if now is None else f"{100.0 * now:.4g}", make)
 
     def do_batch(self) -> None:
         """Type the size of the batch."""

@@ -197,7 +197,11 @@ def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
 
 
 def _dearer(answer: Answer, recipe: Recipe) -> list[str]:
-    best = answer.best
+    best, plain = answer.best, answer.plain
+    if recipe is best and plain is not None and plain.cost_per_t is not None and recipe.cost_per_t is not None:
+        chance = f"a chance of {100.0 * (answer.wishes.confidence or 0.0):.4g} %"
+        asked = "whole steps" if answer.wishes.whole else chance
+        return [f"{asked}: {numbers.cost(recipe.cost_per_t - plain.cost_per_t)} /t over the least cost"]
     if recipe is best or recipe.cost_per_t is None or best.cost_per_t is None or best.status == "infeasible":
         return []
     more = recipe.cost_per_t - best.cost_per_t
@@ -274,10 +278,12 @@ def _figure(code: str, value: float | None, decimals: int | None) -> str:
 def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
     """Everything else there is to say of a recipe, a sentence each; what must not be missed begins with !."""
     said = [f"! {reason}" for reason in recipe.reasons]
+    said += list(answer.more) if recipe is answer.best else []
     if recipe.status == "infeasible" and recipe.shares:
         said.append("! this is the nearest blend, not a recipe: it misses " + "; ".join(words.misses(recipe)))
     binding = [f"{words.heading(x.property)} ({x.binding})" for x in recipe.limits if x.binding]
     said.append("binds: " + (", ".join(binding) or "no limit; only shares or quantities"))
+    said += _under(recipe) + _taught(recipe)
     said += _others(recipe)
     said += _spread(recipe)
     said += _wished(answer)
@@ -296,6 +302,21 @@ def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
         said.append("1 feasible blend" if count == 1 else
                     f"{count} feasible blends with different stocks: n and p step through them")
     return said
+
+
+def _under(recipe: Recipe) -> list[str]:
+    """The viscosities under every law that was asked for."""
+    limits = [x for x in recipe.limits if x.by_law]
+    return [f"{words.heading(x.property)} under " + ", ".join(
+        f"{law} {numbers.value(x.property, value)}" for law, value in x.by_law.items()) for x in limits]
+
+
+def _taught(recipe: Recipe) -> list[str]:
+    """Which of the laboratory's lessons are in these figures."""
+    told = [f"with the laboratory's lessons {', '.join(recipe.lessons)}"] if recipe.lessons else []
+    if recipe.provisional:
+        told.append(f"! provisional, from fewer than four blends: {', '.join(recipe.provisional)}")
+    return told
 
 
 def _others(recipe: Recipe) -> list[str]:
@@ -321,6 +342,10 @@ def _spread(recipe: Recipe) -> list[str]:
 def _wished(answer: Answer) -> list[str]:
     wishes: list[str] = [f"{harmless(c)} {numbers.pct(x)} %" for c, x in answer.wishes.held.items()]
     said = ["held by you: " + ", ".join(wishes)] if wishes else []
+    if answer.wishes.moved:
+        moved = [f"{words.heading(code)} {side} {'open' if at != at else words.amount(code, at)}"
+                 for (code, side), at in answer.wishes.moved.items()]
+        said.append(f"! what-if, not what the product asks: {', '.join(moved)}; c on this screen clears it")
     if answer.wishes.left_out:
         said.append("left out by you: " + ", ".join(harmless(c) for c in sorted(answer.wishes.left_out)))
     return said

@@ -207,6 +207,7 @@ def comparison(trials: list[Trial], read: dict[Key, Recipe | str]) -> list[tuple
              for b in r.breaches]
     rows += [("product", *(harmless(t.product) for t in trials)), ("law", *(t.law for t in trials)),
             row("cost, /t", lambda r: numbers.cost(r.cost_per_t)),
+            row("laws differ, %", lambda r: blends.marked_spread(r.spread_pct)),
             row("limits", lambda r: f"! {len(words.misses(r))} missed" if words.misses(r) else "all met"),
             row("rules", lambda r: f"! {len(r.breaches)} broken" if r.breaches else "kept"),
             ("SHARES, mass %", *("" for _ in trials))]

@@ -140,6 +140,10 @@ def forgotten(wishes: Wishes, kept: bool) -> list[str]:
     told += [f"{harmless(c)} left out" for c in sorted(wishes.left_out)]
     if wishes.batch_kg is not None:
         told.append(f"batch {numbers.kg(wishes.batch_kg)} kg")
+    told += [f"what-if on {heading(code)} {side}" for code, side in wishes.moved]
+    told += ["every law at once"] if wishes.also_laws else []
+    told += ["whole steps"] if wishes.whole else []
+    told += [f"chance {100.0 * wishes.confidence:.4g} %"] if wishes.confidence is not None else []
     if wishes.law and not (wishes.typed and kept):
         told.append(f"law {wishes.law}")
     return told

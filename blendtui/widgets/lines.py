@@ -32,7 +32,10 @@ class TitleLine(Canvas):
         line: Line = []
         for key, name in self.names:
             # Brackets as well as reverse video: some terminals have only one of them.
-            line += [(f"[{key} {name}]", CURSOR) if name == self.current else (f" {key} {name} ", PLAIN)]
+            open_here = name == self.current
+            after = line and line[-1][1] is CURSOR
+            gap = "" if after else " "
+            line += [(f"[{key} {name}]", CURSOR) if open_here else (f"{gap}{key} {name}", PLAIN)]
         used = sum(len(text) for text, _ in line)
         return [[*line, (" " + fit(self.remark, max(0, width - used - 1), "right"), PLAIN)]]
 

@@ -1,0 +1,76 @@
+"""What every headless command shares: how it is added, read and printed, and how it refuses."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import math
+import sys
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any
+
+from solver.errors import SolverError
+
+if TYPE_CHECKING:
+    from blendtui.desk.plant import Plant
+
+DONE, BAD_INPUT, NO_BLEND = 0, 2, 3
+Run = Callable[[argparse.Namespace], int]
+Add = Callable[[str, Run, str], argparse.ArgumentParser]  # (name, run, one sentence) → the command's parser
+
+
+class BadInput(Exception):
+    """What was typed on the command line cannot be used; one line."""
+
+
+def number(text: str, what: str, quantity: Any = "number") -> float:
+    """An amount as typed (see solver.scales); BadInput names the option."""
+    from solver.scales import parse
+
+    try:
+        value = parse(text, quantity)
+    except SolverError as error:
+        raise BadInput(f"{what}: {error}") from None
+    if not math.isfinite(value):
+        raise BadInput(f"{what}: {text} is not a finite number")
+    return value
+
+
+def show(options: argparse.Namespace, answer: Any, text: str) -> None:
+    """Print the JSON or the text."""
+    if options.json:
+        # Unknown is null; a NaN would be no JSON at all, so it is refused rather than printed.
+        print(json.dumps(answer, ensure_ascii=False, allow_nan=False, indent=1))
+    else:
+        print(text)
+
+
+def say(text: str) -> None:
+    """Progress: to stderr, and only when a person is looking."""
+    if sys.stderr.isatty():
+        print(text, file=sys.stderr)
+
+
+def opened(options: argparse.Namespace) -> Plant:
+    """The plant of --plant; columns of a folder that nothing uses are told on stderr, never passed over."""
+    from blendtui.desk.plant import open_plant
+    from blendtui.store.harmless import harmless
+
+    plant = open_plant(options.plant)
+    for note in plant.notes:
+        if "column" in note:
+            print(f"note: {harmless(note)}", file=sys.stderr)
+    return plant
+
+
+def shares_of(typed: list[str]) -> dict[str, float]:
+    """STOCK=PCT arguments as mass fractions; BadInput names the argument."""
+    shares: dict[str, float] = {}
+    for each in typed:
+        code, equals, amount = each.rpartition("=")
+        if not equals or not code:
+            raise BadInput(f"{each!r} is not STOCK=PCT; write for example {each.strip('=') or 'S1'}=25")
+        if code in shares:
+            raise BadInput(f"{code} is given twice; give each stock one share")
+        shares[code] = number(amount, each, "share")
+    return shares

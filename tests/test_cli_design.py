@@ -1,0 +1,64 @@
+"""`blendtui design` under several laws, at a chance, and in whole steps."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import pytest
+
+from blendtui.cli import main
+from solver.target import LAWS
+
+EXAMPLE = str(Path(__file__).parent.parent / "stock_catalog_example")
+
+
+def answer(capsys: pytest.CaptureFixture[str], *words: str, code: int = 0) -> dict:
+    """The JSON of a command."""
+    assert main(["design", *words, "--plant", EXAMPLE, "--json"]) == code
+    return json.loads(capsys.readouterr().out)
+
+
+def test_under_every_law_costs_more_and_holds_under_each(capsys: pytest.CaptureFixture[str]) -> None:
+    one, every = answer(capsys, "HYD-46"), answer(capsys, "HYD-46", "--under", "all")
+    assert one["also_laws"] == [] and "by_law" not in one["limits"][0]
+    assert every["cost_per_t"] > one["cost_per_t"]
+    kv40 = next(x for x in every["limits"] if x["property"] == "kv40")
+    assert set(kv40["by_law"]) == set(LAWS)
+    assert all(kv40["held_low"] - 1e-5 <= v <= kv40["held_high"] + 1e-5 for v in kv40["by_law"].values())
+    assert "by_law" not in next(x for x in every["limits"] if x["property"] == "flash")
+
+
+def test_the_text_shows_each_law_within_80_columns(capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["design", "HYD-46", "--under", "wright", "--plant", EXAMPLE]) == 0
+    lines = capsys.readouterr().out.splitlines()
+    assert max(map(len, lines)) <= 80
+    assert any(line.startswith("wright-volume") for line in lines)
+
+
+def test_whole_steps(capsys: pytest.CaptureFixture[str]) -> None:
+    made = answer(capsys, "HYD-46", "--whole")
+    assert made["status"] == "optimal"
+    assert all(x["met"] for x in made["limits"])
+    assert made["whole"]["total_kg"] == pytest.approx(sum(made["charges_kg"].values()))
+    for code, mass in made["charges_kg"].items():
+        step = made["whole"]["steps_kg"][code]
+        assert step is None or mass / step == pytest.approx(round(mass / step), abs=1e-9)
+    assert made["whole"]["extra_per_t"] >= -1e-6
+
+
+@pytest.mark.parametrize("pct", ["95", "95%", "0.95"])
+def test_a_chance_costs_and_is_reached(capsys: pytest.CaptureFixture[str], pct: str) -> None:
+    plain, sure = answer(capsys, "HYD-46"), answer(capsys, "HYD-46", "--confidence", pct)
+    assert sure["confidence"]["asked_pct"] == pytest.approx(95.0)
+    assert all(chance >= 94.999 for chance in sure["confidence"]["chance_pct"].values())
+    assert set(sure["confidence"]["chance_pct"]) <= {x["property"] for x in plain["limits"]}
+
+
+@pytest.mark.parametrize(("words", "said"), [
+    (["--under", "arrhenius"], "is no law"), (["--whole", "--confidence", "95"], "one at a time"),
+    (["--confidence", "abc"], "abc"), (["--confidence", "100"], "100"), (["--confidence", "10"], "10")])
+def test_bad_words_are_refused_in_a_line(capsys: pytest.CaptureFixture[str], words: list[str], said: str) -> None:
+    assert main(["design", "HYD-46", *words, "--plant", EXAMPLE]) == 2
+    out = capsys.readouterr()
+    assert out.out == "" and said in out.err and out.err.count("\n") == 1
