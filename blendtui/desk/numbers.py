@@ -70,6 +70,15 @@ def kg(value: float | None) -> str:
     return _finer(value)
 
 
+def batch(value: float | None) -> str:
+    """A batch as it was asked for or charged [kg]: whole, or with the tenths that its charges sum to.
+
+    >>> batch(15000.0), batch(14997.5)
+    ('15000', '14997.5')
+    """
+    return kg(value) if value is None or abs(value - round(value)) < 5e-4 else fixed(value, 3).rstrip("0")
+
+
 def charges(masses: Mapping[str, float] | None) -> dict[str, str]:
     """Masses [kg] as shown, adding up as shown: the largest takes what rounding leaves over.
 

@@ -94,7 +94,7 @@ def _status(recipe: Recipe) -> str:
 def _charges(recipe: Recipe, used: Sequence[Stock]) -> list[str]:
     head = f"{'':5}{'stock':<14}{'name':<26}{'mass %':>8}{'kg':>12}{'L at 15 C':>13}"
     lines = [head, "-" * WIDTH]
-    shares, masses = recipe.shares or {}, numbers.charges(recipe.charges_kg)
+    shares, masses = recipe.shares or {}, masses_shown(recipe, used)
     for stock in used:
         mass = (recipe.charges_kg or {}).get(stock.code)
         volume = None if mass is None or stock.density15 is None else 1000.0 * mass / stock.density15
@@ -105,9 +105,74 @@ def _charges(recipe: Recipe, used: Sequence[Stock]) -> list[str]:
                      f"{_ascii(masses.get(stock.code, numbers.UNKNOWN)):>12}{_ascii(numbers.litres(volume)):>13}")
         for n in range(1, max(len(code), len(name))):
             lines.append(f"{'':5}{code[n] if n < len(code) else '':<14}{name[n] if n < len(name) else ''}")
+        lines += _packages(stock, mass)
     total = recipe.batch_kg if recipe.charges_kg is None else sum(recipe.charges_kg.values())
-    lines += ["-" * WIDTH, f"{'':5}{'total':<40}{numbers.pct(sum(shares.values())):>8}{numbers.kg(total):>12}"]
-    return lines
+    shown = _exact(total) if total is not None and _in_whole_steps(recipe, used) else numbers.kg(total)
+    lines += ["-" * WIDTH, f"{'':5}{'total':<40}{numbers.pct(sum(shares.values())):>8}{_ascii(shown):>12}"]
+    return lines + _steps(recipe, used)
+
+
+def _step(stock: Stock) -> float | None:
+    return stock.package_kg or stock.division_kg
+
+
+def _count(stock: Stock, mass: float) -> float | None:
+    """How many of its steps a charge is; None where it takes any mass."""
+    step = _step(stock)
+    return None if not step else mass / step
+
+
+def _is_whole(count: float | None) -> bool:
+    return count is None or abs(count - round(count)) < 1e-6
+
+
+def _in_whole_steps(recipe: Recipe, used: Sequence[Stock]) -> bool:
+    """Are there steps, and is every charge a whole number of its own?"""
+    counts = [_count(s, (recipe.charges_kg or {}).get(s.code, 0.0)) for s in used]
+    return recipe.charges_kg is not None and any(c is not None for c in counts) and all(map(_is_whole, counts))
+
+
+def _exact(mass: float) -> str:
+    """A mass [kg] to the gram, for a whole number of steps is weighed as it stands."""
+    return f"{round(mass, 3):.10g}"
+
+
+def mass_shown(stock: Stock, mass: float) -> str:
+    """One mass [kg]: as it is weighed where it is whole steps of its stock, else rounded."""
+    return _exact(mass) if _step(stock) and _is_whole(_count(stock, mass)) else numbers.kg(mass)
+
+
+def masses_shown(recipe: Recipe, used: Sequence[Stock]) -> dict[str, str]:
+    """Masses as shown: whole steps as they are, others rounded so that they add up."""
+    if not _in_whole_steps(recipe, used):
+        return numbers.charges(recipe.charges_kg)
+    return {s.code: _exact(mass) if _step(s) else numbers.kg(mass)
+            for s in used if (mass := (recipe.charges_kg or {}).get(s.code)) is not None}
+
+
+def _packages(stock: Stock, mass: float | None) -> list[str]:
+    """The number of drums or IBCs of a packaged stock, on a line of its own."""
+    if stock.package_kg is None or mass is None:
+        return []
+    count = mass / stock.package_kg
+    size = f"{_exact(stock.package_kg)} kg"
+    words = f"= {round(count)} x {size}" if _is_whole(count) else f"= {count:.2f} x {size}: NOT WHOLE"
+    return [f"{'':19}{words}"]
+
+
+def _steps(recipe: Recipe, used: Sequence[Stock]) -> list[str]:
+    """By which steps the stocks are charged, or that the charges are none."""
+    if recipe.charges_kg is None or not any(map(_step, used)):
+        return []
+    off = [s for s in used if not _is_whole(_count(s, recipe.charges_kg.get(s.code, 0.0)))]
+    by_step: dict[float, list[str]] = {}
+    for stock in off or used:
+        if (step := _step(stock)) is not None:
+            by_step.setdefault(step, []).append(stock.code)
+    each = "; ".join(f"{_exact(step)} kg {', '.join(codes)}" for step, codes in sorted(by_step.items()))
+    words = (f"not in whole steps: {each}; whole quantities can be asked for" if off
+             else f"in whole steps: {each}")
+    return textwrap.wrap(_ascii(words), WIDTH, subsequent_indent="  ")
 
 
 def _properties(recipe: Recipe) -> list[str]:

@@ -50,6 +50,44 @@ def test_the_kilograms_add_up_as_printed(plant: Plant) -> None:
     assert sum(float(t) for t in numbers.charges(recipe.charges_kg).values()) == pytest.approx(12000.0, abs=0.06)
 
 
+def test_whole_steps_stand_on_the_sheet_as_they_are_weighed(plant: Plant) -> None:
+    stocks, target = plant.stocks(), target_of(plant, "GEAR-220")
+    recipe = blends.whole(stocks, target).recipe
+    text = sheet.floor_sheet("north works", plant.product("GEAR-220"), recipe, stocks, NOON, "anna")
+    lines = text.split("\n")
+    printed = {line.split()[2]: float(line.split()[-2]) for line in lines if line.startswith("[ ]")}
+    assert printed == recipe.charges_kg
+    drums = next(i for i, line in enumerate(lines) if line.startswith("[ ]  GP18"))
+    assert lines[drums + 1].strip() == "= 1 x 180 kg"
+    assert f"{'total':<40}" in text
+    assert "in whole steps: 0.1 kg PD20; 10 kg MN50, BR32; 180 kg GP18" in lines
+    assert "DO NOT BLEND" not in text
+    assert text.isascii()
+    assert max(map(len, lines)) <= 80
+
+
+def test_the_total_of_whole_steps_is_not_rounded(plant: Plant) -> None:
+    stocks, target = plant.stocks(), target_of(plant, "HYD-46")
+    recipe = blends.whole(stocks, target).recipe
+    text = sheet.floor_sheet("north works", plant.product("HYD-46"), recipe, stocks, NOON, "anna")
+    lines = text.split("\n")
+    total = next(line for line in lines if line.strip().startswith("total"))
+    printed = sum(float(line.split()[-2]) for line in lines if line.startswith("[ ]"))
+    assert float(total.split()[-1]) == printed == pytest.approx(recipe.batch_kg, abs=1e-9)
+    assert float(total.split()[-1]) % 1.0 == 0.5  # 127.5 kg of the package and tens of the oils
+
+
+def test_what_is_not_in_whole_steps_is_said_to_be(plant: Plant) -> None:
+    text, _ = made(plant, "GEAR-220", MN50=0.48, BR32=0.501, GP18=0.018, PD20=0.001)
+    assert "= 1 x 180 kg" in text
+    assert "not in whole steps" not in text  # 4800, 5010, 180 and 10 kg
+    text, _ = made(plant, "GEAR-220", MN50=0.48035, BR32=0.49965, GP18=0.019, PD20=0.001)
+    assert "= 1.06 x 180 kg: NOT WHOLE" in text
+    words = "not in whole steps: 10 kg MN50, BR32; 180 kg GP18; whole quantities can be asked for"
+    assert words in " ".join(text.split())
+    assert max(map(len, text.split("\n"))) <= 80
+
+
 def test_shares_off_a_hundred_are_refused(plant: Plant) -> None:
     with pytest.raises(DeskError, match=r"the shares sum to 90\.00 %, not to 100 %; mend them before writing"):
         made(plant, "HYD-32", LN15A=0.9)
