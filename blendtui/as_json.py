@@ -46,7 +46,7 @@ def design(recipe: Recipe) -> Answer:
             "bound_per_t": recipe.bound_per_t, "to_be_tested": list(recipe.to_be_tested),
             "left_out": {x.stock: x.reason for x in recipe.left_out}, "reasons": list(recipe.reasons),
             "also_laws": list(recipe.also_laws), "lessons": list(recipe.lessons),
-            "provisional": list(recipe.provisional)}
+            "provisional": list(recipe.provisional), "warnings": list(recipe.warnings)}
 
 
 def limit(result: LimitResult) -> Answer:

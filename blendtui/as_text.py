@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from blendtui.desk import numbers
 from blendtui.desk.blends import marked_spread, spread_words
-from blendtui.desk.sheet import NOT_A_CERTIFICATE
+from blendtui.desk.sheet import NOT_A_CERTIFICATE, masses_shown
 from blendtui.desk.stocks import derived
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Product
@@ -67,7 +67,7 @@ def design(product: str, recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges
     """Text of `design`; `more`: what else there is to say of it, a sentence each."""
     parts = [wrap(_headline(product, recipe), "  ")]
     parts += ["\n".join(wrap(f"  {harmless(said, 400)}", "    ") for said in more)] if more else []
-    parts += [wrap(f"! {harmless(reason)}", "  ") for reason in recipe.reasons]
+    parts += [wrap(f"! {harmless(said)}", "  ") for said in (*recipe.reasons, *recipe.warnings)]
     if recipe.shares is not None:
         parts.append(_shares(recipe, stocks, ranges))
     if recipe.limits:
@@ -88,20 +88,22 @@ def design(product: str, recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges
 def _headline(product: str, recipe: Recipe) -> str:
     if recipe.shares is None:
         return f"{harmless(product)}: NO BLEND"
-    text = f"{harmless(product)}: {STATUS[recipe.status]}"
+    unsure = recipe.status == "infeasible" and recipe.meets_all  # it meets all, and not with the chance asked
+    kind = "NO BLEND IS SO SURE; this is the surest found" if unsure else STATUS[recipe.status]
+    text = f"{harmless(product)}: {kind}"
     if recipe.gap is not None and recipe.status == "optimal":
         text += f", proven to {max(1e-4, 100.0 * recipe.gap):.1g} %"
     if recipe.cost_per_t is not None:
         text += f"; {numbers.cost(recipe.cost_per_t)} per t"
         if recipe.batch_kg is not None:
             text += (f", {numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)} for "
-                     f"{numbers.kg(recipe.batch_kg)} kg")
+                     f"{numbers.batch(recipe.batch_kg)} kg")
     return text
 
 
 def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = None) -> str:
     density = {s.code: s.density15 for s in stocks}
-    charges, shown = recipe.charges_kg, numbers.charges(recipe.charges_kg)
+    charges, shown = recipe.charges_kg, masses_shown(recipe, [s for s in stocks if s.code in (recipe.shares or {})])
     heads = ["stock", "mass %", *(["kg", "L at 15 °C"] if charges is not None else [])]
     codes = list(recipe.shares or {})
     if ranges is not None:

@@ -7,8 +7,10 @@ from dataclasses import dataclass
 
 ALL = "everywhere"
 STOCKS, TARGETS, RECIPE, TRIALS = "stocks", "targets", "recipe", "trials"
+WHY, CHOICES, CHANCE, LAB = "why", "choices", "chance", "lab"
 SCREENS: tuple[tuple[str, str], ...] = ((STOCKS, "Stocks"), (TARGETS, "Targets"), (RECIPE, "Recipe"),
-                                        (TRIALS, "Trials"))
+                                        (TRIALS, "Trials"), (WHY, "Why"), (CHOICES, "Else"), (CHANCE, "Sure"),
+                                        (LAB, "Lab"))
 MOVES = ("up", "down", "left", "right", "pageup", "pagedown", "home", "end", "ctrl+home", "ctrl+end")
 
 
@@ -78,6 +80,12 @@ COMMANDS: tuple[Command, ...] = (
     _on(RECIPE, "k", "keep", "keep", "Keep the blend that is shown as a trial, under a name."),
     _on(RECIPE, "m", "batch", "batch", "Type the size of the batch for this recipe."),
     _on(RECIPE, "L", "law", "law", "Go to the next blending law for this recipe."),
+    _on(RECIPE, "a", "all_laws", "more laws", "Type the laws under which every limit must hold at once, or all.",
+        listed=False),
+    _on(RECIPE, "i", "whole", "whole steps", "Charge in whole scale divisions, drums and IBCs, or in any mass again.",
+        listed=False),
+    _on(RECIPE, "s", "sure", "how sure", "Type the chance, in %, at which each limit is to be met on the first batch; "
+        "empty: none.", listed=False),
     _on(RECIPE, "w", "write", "write", "Write the recipe as a text sheet for the floor, and say where."),
     _on(RECIPE, "tab", "pane", "limits", "Go from the shares to the limits and remarks and back.",
         shown="Tab", changes=False),
@@ -88,6 +96,48 @@ COMMANDS: tuple[Command, ...] = (
     _on(TRIALS, "tab", "pane", "list/comparison", "Go from the list to the comparison and back.", shown="Tab",
         changes=False),
     _on(TRIALS, "d", "drop", "drop", "Drop the trial under the cursor; u brings it back."),
+
+    # why
+    _on(WHY, "t", "take_changes", "take", "Take the changes of the nearest blend as a what-if, and go to its recipe; "
+        "u takes them back, and the product itself stays as it is."),
+    _on(WHY, "o", "order", "order", "Type which properties may give, the first one first and most (vi,kv40); what is "
+        "not named stays firm."),
+
+    # choices
+    _on(CHOICES, "n", "next_aim", "aims", "Mark the next aim.", shown="n p", changes=False),
+    _on(CHOICES, "p", "previous_aim", "aim before", "Mark the aim before.", changes=False, listed=False),
+    _on(CHOICES, "t enter", "take_aim", "take", "Take the blend of the marked aim: its shares become yours on the "
+        "screen Recipe, and u takes them back."),
+    _on(CHOICES, "c", "within", "cost cap", "Let the aims cost at most 1, 2 or 5 % more than the least cost, or "
+        "whatever the product allows.", changes=False),
+    _on(CHOICES, "o", "other_stock", "stock", "Let most-of and least-of speak of the next stock.", changes=False),
+    _on(CHOICES, "k", "other_trial", "trial", "Let closest keep to the next trial of this product.", changes=False),
+    _on(CHOICES, "s", "sweep", "sweep", "Draw the least cost against a limit or a price that is asked for (vi low, "
+        "price N150); while it draws, stop it.", changes=False),
+
+    # chance
+    _on(CHANCE, "c", "next_chance", "90/95/99 %", "Ask for the recipe whose every limit is met with a chance of 90, "
+        "then 95, then 99 %, then for the least-cost one again."),
+    _on(CHANCE, "s", "sure", "how sure", "Type the chance, in %, at which each limit is to be met on the first batch; "
+        "empty: none."),
+    _on(CHANCE, "t", "take", "take", "Take the blend that is shown: its shares become yours on the screen Recipe, and "
+        "u takes them back."),
+
+    # lab
+    _on(LAB, "enter", "tell", "in full", "Say in full what is known of the row under the cursor: what is doubtful of a "
+        "blend and how its product drifts, or the figures of a lesson.", shown="Enter", changes=False),
+    _on(LAB, "a", "add", "add", "Put a measured blend on record: name, shares, results and date are asked for in turn; "
+        "the stocks' values of today are kept with it."),
+    _on(LAB, "y", "confirm", "it is so", "Say that what is doubtful of the blend under the cursor is so: it may teach "
+        "from then on."),
+    _on(LAB, "d", "drop", "drop", "Take the blend under the cursor off the record; u brings it back."),
+    _on(LAB, "o", "offer", "offers", "Show what the measured blends could teach, or hide it again."),
+    _on(LAB, "t", "take", "take", "Take the offer under the cursor into use: recipes follow it and name its version."),
+    _on(LAB, "w", "withdraw", "withdraw", "Take the lesson under the cursor out of use; the reason is asked for."),
+    _on(LAB, "p", "plan", "bench", "Show what to weigh on the bench for the recipe shown, and which pair would teach "
+        "the law most; w there writes it to a file.", changes=False),
+    _on(LAB, "tab", "pane", "blends/lessons", "Go from the blends to the lessons and back.", shown="Tab",
+        changes=False),
 
     _on(ALL, "u", "undo", "undo", "Take back your last change, on this screen or another, and say what it was."),
     _on(ALL, "r", "redo", "redo", "Do again what was undone last."),

@@ -111,7 +111,7 @@ class RecipeScreen(Page):
         product, state = self.snapshot.product(self.session.product), self.session.state
         grade = f" · {product.grade}" if product and product.grade else ""
         batch = f" · {numbers.kg(state.answer.target.batch_kg)} kg" if state.answer else ""
-        self.title_line.show(f"{harmless(self.session.product)}{grade}{batch}")
+        self.title_line.show(f"{harmless(self.session.product)}{batch}{grade}")
         row = self.row
         if row is None:
             self.edit.show("", "")

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 
 from rich.cells import cell_len
 
-from blendtui.desk import blends, numbers
+from blendtui.desk import blends, numbers, sheet
 from blendtui.desk.answers import Answer
 from blendtui.store.harmless import harmless
 from blendtui.widgets.grid import Cell, Column
@@ -104,8 +104,10 @@ def share_cell(row: ShareRow, code: str, recipe: Recipe, scale: float, today: da
         return numbers.pct(row.share) if row.share else "–"
     if code in ("kg", "litres"):
         mass = (recipe.charges_kg or {}).get(row.stock.code)
-        if code == "kg" or mass is None or row.stock.density15 is None:
-            return numbers.kg(mass if code == "kg" else None)
+        if code == "kg":
+            return numbers.UNKNOWN if mass is None else sheet.mass_shown(row.stock, mass)
+        if mass is None or row.stock.density15 is None:
+            return numbers.UNKNOWN
         return numbers.litres(litres_at_15(mass, row.stock.density15))
     if code == "bar":
         return bar(row, scale, bar_width)
@@ -126,7 +128,7 @@ def total_cell(recipe: Recipe, stocks: tuple[Stock, ...], code: str) -> str:
     if charges is None or code not in ("kg", "litres"):
         return ""
     if code == "kg":
-        return numbers.kg(sum(charges.values()))
+        return numbers.batch(sum(charges.values()))
     dense = {s.code: s.density15 for s in stocks}
     volumes = [litres_at_15(mass, d) for c, mass in charges.items() if (d := dense.get(c)) is not None]
     return numbers.litres(sum(volumes)) if len(volumes) == len(charges) else ""
@@ -281,6 +283,8 @@ def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
     said += list(answer.more) if recipe is answer.best else []
     if recipe.status == "infeasible" and recipe.shares:
         said.append("! this is the nearest blend, not a recipe: it misses " + "; ".join(words.misses(recipe)))
+    if recipe.status == "infeasible":
+        said.append("5 tells why nothing fits, and what it would take")
     binding = [f"{words.heading(x.property)} ({x.binding})" for x in recipe.limits if x.binding]
     said.append("binds: " + (", ".join(binding) or "no limit; only shares or quantities"))
     said += _under(recipe) + _taught(recipe)
@@ -314,6 +318,7 @@ def _under(recipe: Recipe) -> list[str]:
 def _taught(recipe: Recipe) -> list[str]:
     """Which of the laboratory's lessons are in these figures."""
     told = [f"with the laboratory's lessons {', '.join(recipe.lessons)}"] if recipe.lessons else []
+    told += [f"! {harmless(said, 200)}" for said in recipe.warnings]
     if recipe.provisional:
         told.append(f"! provisional, from fewer than four blends: {', '.join(recipe.provisional)}")
     return told

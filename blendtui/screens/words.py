@@ -91,6 +91,8 @@ def verdict(recipe: Recipe) -> Run:
     """What kind of answer this is, in words and with a sign."""
     if recipe.status == "optimal":
         return "least cost, proven", BOLD
+    if recipe.status == "infeasible" and recipe.meets_all:
+        return "! no blend is so sure; the surest found", BAD
     if recipe.status == "infeasible":
         return "! no blend meets it", BAD
     if recipe.status == "stopped":

@@ -120,7 +120,7 @@ async def test_escape_never_leaves_a_screen(path: Path) -> None:
         for key, screen in (("2", "targets"), ("4", "trials"), ("3", "recipe"), ("1", "stocks")):
             await driver.press(key, "escape")
             assert driver.app.current_mode == screen
-            assert driver.page.status.message == "Esc leaves nothing here; 1 to 4 open the screens"
+            assert driver.page.status.message == "Esc leaves nothing here; 1 to 8 open the screens"
 
 
 async def test_quit_leaves_at_once_when_all_is_saved(path: Path) -> None:

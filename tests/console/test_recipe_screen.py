@@ -66,7 +66,7 @@ async def test_hold_leave_out_and_clear(path: Path, size: Size) -> None:
         await driver.press("c")
         assert driver.app.session.shown.cost_per_t == pytest.approx(best)
         await driver.press("u")
-        assert driver.status.startswith("undone: holds cleared")
+        assert driver.status.startswith("undone: holds and what-ifs cleared")
         assert driver.app.session.shown.shares["HEAVY"] == pytest.approx(0.10)
         await driver.press("r", "u", "u", "u")
         assert driver.app.session.state.wishes.held == {}

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from itertools import combinations
+from itertools import combinations, pairwise
 
 import numpy as np
 import pytest
 
-from solver.choices import largest_batch, ranges
+from solver.choices import EXTRAS, largest_batch, marked_ranges, ranges, ranges_within, within
 from solver.recipe import design, evaluate
 from solver.sets import blends
 from solver.target import Limit, ShareRule, Target
@@ -121,3 +121,62 @@ def test_largest_batch() -> None:
     assert evaluate(plant, shares, target).meets_all
     assert largest_batch(only("N150"), target) is None
     assert largest_batch(PLANT, WIDE) > 1e6
+
+
+@pytest.mark.parametrize("k", range(10))
+def test_ranges_within_an_extra_cost_hold_every_blend_as_cheap(k: int) -> None:
+    table, target = case(33, k, 12, 20, hardest=115.0)
+    best = design(table, target)
+    found = dict(ranges_within(table, target))
+    assert list(found) == list(EXTRAS)
+    for small, large in pairwise(EXTRAS):
+        for code, each in found[small].items():
+            assert found[large][code].low - 2e-5 <= each.low <= each.high <= found[large][code].high + 2e-5
+            assert each.narrowed
+    for code, each in found[0.0].items():
+        assert each.low - 2e-4 <= best.shares.get(code, 0.0) <= each.high + 2e-4
+    # An end is reached at that cost, and a little further out it is not.
+    code = max(found[2.0], key=lambda c: found[2.0][c].high - found[2.0][c].low)
+    capped = replace(target, max_cost_per_t=1.02 * best.cost_per_t)
+    low, high = found[2.0][code].low, found[2.0][code].high
+    assert design(table, replace(capped, held={code: high - 2e-4})).status == "optimal"
+    assert high > 0.999 or design(table, replace(capped, held={code: high + 2e-4})).status == "infeasible"
+    assert low < 1e-3 or design(table, replace(capped, held={code: low - 2e-4})).status == "infeasible"
+
+
+@pytest.mark.parametrize("target", [
+    Target("window on the VI", (Limit("kv40", 41.4, 50.6), Limit("vi", 98.0, 104.0))),
+    Target("three laws", (Limit("kv40", 41.4, 50.6), Limit("vi", 100.0)), also_laws=("wright-mass", "walther-volume")),
+    Target("no window", (Limit("vi", 100.0),)),
+    Target("by volume", (Limit("kv40", 41.4, 50.6), Limit("vi", 100.0)), law="wright-volume"),
+])
+def test_ranges_against_the_search_alone(target: Target) -> None:
+    # The enclosure only shortens the way: holding each stock just inside and just outside says the same.
+    plant = only("N150", "N500", "BS", "P4", "P40")
+    for code, each in marked_ranges(plant, target).items():
+        for end, sign in ((each.low, -1.0), (each.high, 1.0)):
+            assert design(plant, replace(target, held={code: end - sign * 2e-4})).status == "optimal"
+            outside = end + sign * 2e-4
+            if 0.0 < outside < 1.0:
+                assert design(plant, replace(target, held={code: outside})).status == "infeasible"
+
+
+def test_a_range_that_was_not_narrowed_says_so() -> None:
+    table, target = case(33, 1, 18, 20, hardest=115.0)
+    hurried, known = marked_ranges(table, target, time_limit=-1.0), marked_ranges(table, target)
+    assert all(each.narrowed for each in known.values())
+    assert any(not each.narrowed for each in hurried.values())
+    for code, each in hurried.items():
+        assert each.low <= known[code].low + 2e-5
+        assert each.high >= known[code].high - 2e-5
+
+
+def test_within_keeps_the_lower_ceiling_and_nothing_comes_of_nothing() -> None:
+    ceiling = ("cost_per_t", "high")
+    assert within(WIDE, 900.0, 2.0).moved[ceiling] == pytest.approx(918.0)
+    assert within(replace(WIDE, max_cost_per_t=910.0), 900.0, 2.0).moved[ceiling] == 910.0
+    assert within(WIDE, 900.0, 0.0).moved[ceiling] == pytest.approx(900.0009)
+    never = Target("t", (Limit("kv40", 46.0, 46.5), Limit("vi", 200.0)))
+    assert list(ranges_within(PLANT[:4], never)) == []
+    one = dict(ranges_within([N150], Target("t", (Limit("kv40", 28.0, 34.0),)), (0.0, 5.0)))
+    assert all((r["N150"].low, r["N150"].high) == (1.0, 1.0) for r in one.values())
