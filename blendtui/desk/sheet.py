@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Product
 from solver.properties import lookup
+from solver.requirements import MOVED
 from solver.stocks import Stock
 
 from . import numbers
@@ -65,7 +66,10 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
     lines = ["BLEND SHEET  " + title, "=" * WIDTH,
              f"Plant {_cut(plant, 70)}",
              f"Made {when:%Y-%m-%d %H:%M} by {_cut(who, 40)}",
-             f"Batch {numbers.kg(recipe.batch_kg)} kg   law {recipe.law}   {_status(recipe)}", ""]
+             f"Batch {numbers.batch(recipe.batch_kg)} kg   law {_laws(recipe)}   {_status(recipe)}", ""]
+    moved = [lookup(x.property).name for x in recipe.limits if MOVED in x.sources]
+    if moved:
+        lines += textwrap.wrap(f"*** WHAT-IF, DO NOT BLEND: not the product's own limit on {', '.join(moved)} ***", WIDTH)
     if not recipe.meets_all:
         lines += ["*** DO NOT BLEND: this does not meet the product as it stands ***"]
         lines += [line for words in recipe.breaches
@@ -73,7 +77,7 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
     lines += [*_charges(recipe, used), "", *_properties(recipe), ""]
     spread = max((v for v in recipe.spread_pct.values() if v is not None), default=None)
     warning = spread_words(spread)
-    lines += [line for words in (*recipe.reasons, *([f"! {warning}"] if warning else []),
+    lines += [line for words in (*recipe.reasons, *recipe.warnings, *_taught(recipe), *([f"! {warning}"] if warning else []),
                                  *(f"To be tested: {t}" for t in recipe.to_be_tested))
               for line in textwrap.wrap(_ascii(words), WIDTH)]
     lines += ["", *(line for c in (*CAUTIONS, NOT_A_CERTIFICATE)
@@ -84,6 +88,18 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
 
 def _ascii_lines(lines: Sequence[str]) -> str:
     return "\n".join(_ascii(line).rstrip() for line in lines)
+
+
+def _laws(recipe: Recipe) -> str:
+    return recipe.law + (f" (and {len(set(recipe.also_laws) - {recipe.law})} more)" if recipe.also_laws else "")
+
+
+def _taught(recipe: Recipe) -> list[str]:
+    """Which of the laboratory's lessons are in the figures."""
+    if not recipe.lessons:
+        return []
+    unsure = f"; provisional: {', '.join(recipe.provisional)}" if recipe.provisional else ""
+    return [f"With the laboratory's lessons {', '.join(recipe.lessons)}{unsure}."]
 
 
 def _status(recipe: Recipe) -> str:

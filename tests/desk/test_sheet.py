@@ -13,6 +13,10 @@ from blendtui.desk import blends, numbers, sheet
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import Plant, open_plant
 from blendtui.desk.targets import target_of
+from blendtui.store.records import Product
+from solver.recipe import design
+from solver.stocks import Stock
+from solver.target import Excess, Limit, Target
 
 EXAMPLE = Path(__file__).parent.parent.parent / "stock_catalog_example"
 NOON = datetime(2026, 6, 1, 12, 0)
@@ -112,3 +116,14 @@ def test_a_sheet_is_never_written_over(tmp_path: Path) -> None:
     assert where.read_text() == "one"
     with pytest.raises(DeskError, match=r"cannot write .*; choose another place"):
         sheet.write_sheet(tmp_path / "no" / "b.txt", "x")
+
+
+def test_a_what_if_is_headed_do_not_blend_and_lessons_are_named() -> None:
+    stocks = [Stock("A", kv40=30.0, kv100=5.2, price_per_t=800.0, on_hand_kg=1e5),
+              Stock("B", kv40=400.0, kv100=30.0, price_per_t=1000.0, on_hand_kg=1e5)]
+    lesson = Excess("A", "B", "refutas", {40.0: (1.0,)}, version="L7", provisional=True)
+    target = Target("P", (Limit("kv40", 95.0, 105.0),), lessons=(lesson,), batch_kg=1000.0)
+    own, moved = (design(stocks, t) for t in (target, replace(target, moved={("kv40", "high"): 120.0})))
+    sheets = [sheet.floor_sheet("plant", Product("P"), each, stocks, NOON, "anna") for each in (own, moved)]
+    assert "WHAT-IF" not in sheets[0] and "WHAT-IF, DO NOT BLEND" in sheets[1]
+    assert "lessons L7; provisional: L7" in sheets[0]

@@ -19,7 +19,8 @@ SIZE = (100, 30)
 TODAY = date(2026, 6, 1)
 # Name of the picture → keys that lead there from the start.
 SHOTS = {"stocks": [], "targets": ["2", "down"], "recipe": ["3", "right_square_bracket"],
-         "no-blend": ["3", *["right_square_bracket"] * 3], "help": ["question_mark"]}
+         "why": ["5", *["right_square_bracket"] * 3], "choices": ["6", "right_square_bracket"],
+         "chance": ["7", "right_square_bracket"], "lab": ["8"], "help": ["question_mark"]}
 
 
 async def draw(name: str, keys: list[str], plant_file: Path) -> None:
