@@ -69,7 +69,8 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
              f"Batch {numbers.batch(recipe.batch_kg)} kg   law {_laws(recipe)}   {_status(recipe)}", ""]
     moved = [lookup(x.property).name for x in recipe.limits if MOVED in x.sources]
     if moved:
-        lines += textwrap.wrap(f"*** WHAT-IF, DO NOT BLEND: not the product's own limit on {', '.join(moved)} ***", WIDTH)
+        words = f"*** WHAT-IF, DO NOT BLEND: not the product's own limit on {', '.join(moved)} ***"
+        lines += textwrap.wrap(words, WIDTH)
     if not recipe.meets_all:
         lines += ["*** DO NOT BLEND: this does not meet the product as it stands ***"]
         lines += [line for words in recipe.breaches
@@ -77,8 +78,8 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
     lines += [*_charges(recipe, used), "", *_properties(recipe), ""]
     spread = max((v for v in recipe.spread_pct.values() if v is not None), default=None)
     warning = spread_words(spread)
-    lines += [line for words in (*recipe.reasons, *recipe.warnings, *_taught(recipe), *([f"! {warning}"] if warning else []),
-                                 *(f"To be tested: {t}" for t in recipe.to_be_tested))
+    said = [*recipe.reasons, *recipe.warnings, *_taught(recipe), *([f"! {warning}"] if warning else [])]
+    lines += [line for words in (*said, *(f"To be tested: {t}" for t in recipe.to_be_tested))
               for line in textwrap.wrap(_ascii(words), WIDTH)]
     lines += ["", *(line for c in (*CAUTIONS, NOT_A_CERTIFICATE)
                     for line in textwrap.wrap("* " + c, WIDTH, subsequent_indent="  ")), "",

@@ -125,5 +125,6 @@ def test_a_what_if_is_headed_do_not_blend_and_lessons_are_named() -> None:
     target = Target("P", (Limit("kv40", 95.0, 105.0),), lessons=(lesson,), batch_kg=1000.0)
     own, moved = (design(stocks, t) for t in (target, replace(target, moved={("kv40", "high"): 120.0})))
     sheets = [sheet.floor_sheet("plant", Product("P"), each, stocks, NOON, "anna") for each in (own, moved)]
-    assert "WHAT-IF" not in sheets[0] and "WHAT-IF, DO NOT BLEND" in sheets[1]
+    assert "WHAT-IF" not in sheets[0]
+    assert "WHAT-IF, DO NOT BLEND" in sheets[1]
     assert "lessons L7; provisional: L7" in sheets[0]
