@@ -10,11 +10,10 @@ import os
 import sys
 from collections.abc import Callable, Sequence
 from importlib import import_module
-from pathlib import Path
-from typing import Any, NoReturn
+from typing import NoReturn
 
 from blendtui.desk.errors import DeskError
-from blendtui.headless.common import BAD_INPUT, DONE, BadInput, number, opened, say, shares_of, show
+from blendtui.headless.common import BAD_INPUT, DONE, BadInput, number, opened, path, say, shared, shares_of, show
 from blendtui.store.errors import CatalogueError, PlantError
 from solver.errors import SolverError
 from solver.target import LAWS
@@ -80,31 +79,15 @@ def _refuse(text: str) -> int:
     return BAD_INPUT
 
 
-def _shared(**default: Any) -> argparse.ArgumentParser:
-    """The options that every command takes, before its name or after it."""
-    shared = argparse.ArgumentParser(add_help=False)
-    shared.add_argument("--plant", type=_path, metavar="PATH", default=default.get("plant", argparse.SUPPRESS),
-                        help="a plant file, or a catalogue folder (opened without changing it)")
-    shared.add_argument("--json", action="store_true", default=default.get("json", argparse.SUPPRESS),
-                        help="the answer as JSON, numbers unrounded")
-    return shared
-
-
-def _path(text: str) -> Path:
-    if not text.strip():
-        raise argparse.ArgumentTypeError("a path cannot be empty")
-    return Path(text)
-
-
 def _parser() -> argparse.ArgumentParser:
-    parser = _Parser(prog="blendtui", parents=[_shared(plant=None, json=False)],
+    parser = _Parser(prog="blendtui", parents=[shared(plant=None, json=False)],
                      description="Least-cost lubricant blends from the stocks in the tanks. "
                                  "Without a command: the console.")
     parser.set_defaults(run=_console)
     commands = parser.add_subparsers(title="commands", metavar="COMMAND", parser_class=_Parser)
 
     def add(name: str, run: Callable[[argparse.Namespace], int], words: str) -> argparse.ArgumentParser:
-        command = commands.add_parser(name, parents=[_shared()], help=words, description=words)
+        command = commands.add_parser(name, parents=[shared()], help=words, description=words)
         command.set_defaults(run=run)
         return command
 
@@ -116,10 +99,10 @@ def _parser() -> argparse.ArgumentParser:
     command.add_argument("shares", nargs="+", metavar="STOCK=PCT")
     command.add_argument("--law", help=", ".join(LAWS))
     command = add("import", _import, "make a plant file equal to a catalogue folder, all or nothing")
-    command.add_argument("folder", type=_path, metavar="FOLDER")
+    command.add_argument("folder", type=path, metavar="FOLDER")
     command.set_defaults(every_fault=True)
     command = add("export", _export, "write the plant as a catalogue folder")
-    command.add_argument("folder", type=_path, metavar="FOLDER")
+    command.add_argument("folder", type=path, metavar="FOLDER")
     for name in ("design", "why", "choices", "chance", "lab"):
         import_module(f"blendtui.headless.{name}").register(add)
     add("stocks", _stocks, "list the stocks")

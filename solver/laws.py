@@ -20,10 +20,10 @@ import numpy as np
 
 from .errors import RangeError, StockError, TargetError
 from .gauge import Gauge, weights
-from .pairs import excesses
+from .pairs import effective, excesses
 from .properties import Array
 from .stocks import StockTable
-from .target import LAWS, Excess
+from .target import LAWS, Lesson
 from .walther import kv_of, log_t, w_of
 
 
@@ -59,17 +59,17 @@ def index_of_law(law: str) -> tuple[Any, Any]:
     return (vbn, kv_of_vbn) if check_law(law) == "refutas" else (w_of, kv_of)
 
 
-def viscosity_gauge(law: str, table: StockTable, celsius: float, pairs: Iterable[Excess] = ()) -> Gauge:
+def viscosity_gauge(law: str, table: StockTable, celsius: float, lessons: Iterable[Lesson] = ()) -> Gauge:
     """The gauge of KV [mm²/s] at a temperature [°C] under a law, read off each stock's own D341 line.
 
     A stock without both KVs (or, under a volume law, without a density) takes no part: callers leave
-    such stocks out first. `pairs`: what the laboratory has taught about pairs of them under this law.
+    such stocks out first. `lessons`: what the laboratory has taught about them under this law: pair excess, and
+    the index with which a stock blends in place of that of its own viscosity.
     """
     index, value = index_of_law(law)
     known = knows_viscosity(law, table)
     a, b = table.lines
     omega = np.where(known, np.where(known, weights(table, basis_of(law)), 1.0), 0.0)
-    excess = excesses(table, pairs, law, celsius, omega) if pairs else None
     if law == "refutas":
         given = {40.0: table.kv[:, 0], 100.0: table.kv[:, 1]}.get(celsius)
         at = np.where(known, kv_of(a - b * log_t(celsius)) if given is None else given, 1.0)
@@ -77,11 +77,16 @@ def viscosity_gauge(law: str, table: StockTable, celsius: float, pairs: Iterable
             thin = table.codes[int(np.flatnonzero(known & (at < 0.21))[0])]
             raise RangeError(f"{thin} is thinner than 0.21 mm²/s at {celsius:g} °C, "
                              "where the D341 line ends; choose a lower temperature")
-        return Gauge(np.where(known, vbn(at), 0.0), omega, index, value, excess=excess)
-    if law.startswith("walther"):
-        return Gauge(omega * (a - b * log_t(celsius)), omega, index, value, excess=excess)
-    # Wright: each line as log T = p + q W with p = a/b, q = −1/b; then W_B = Σ ω(log T − p) / Σ ω q.
-    return Gauge(omega * (log_t(celsius) - a / b), omega * (-1.0 / b), index, value, excess=excess)
+        num, den = np.where(known, vbn(at), 0.0), omega
+    elif law.startswith("walther"):
+        num, den = omega * (a - b * log_t(celsius)), omega
+    else:
+        # Wright: each line as log T = p + q W with p = a/b, q = −1/b; then W_B = Σ ω(log T − p) / Σ ω q.
+        num, den = omega * (log_t(celsius) - a / b), omega * (-1.0 / b)
+    lessons = tuple(lessons)
+    for i, j in effective(table, lessons, law, celsius).items():
+        num[i] = j * den[i]
+    return Gauge(num, den, index, value, excess=excesses(table, lessons, law, celsius, omega) if lessons else None)
 
 
 def knows_viscosity(law: str, table: StockTable) -> np.ndarray[Any, np.dtype[np.bool_]]:

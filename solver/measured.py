@@ -19,6 +19,7 @@ class Part:
     density15: float | None = None  # kg/m³
     lot: str = ""
     oil: str = ""  # what the tank held; empty: its own
+    values: Mapping[str, float] = field(default_factory=dict)  # its other properties: code → registry's unit
 
 
 @dataclass(frozen=True)
@@ -36,5 +37,5 @@ class Measured:
 
     def table(self) -> StockTable:
         """The parts as stocks with the values they had."""
-        return StockTable(Stock(p.stock, oil=p.oil, kv40=p.kv40, kv100=p.kv100, density15=p.density15)
-                          for p in self.parts)
+        return StockTable(Stock(p.stock, oil=p.oil, kv40=p.kv40, kv100=p.kv100, density15=p.density15,
+                                values=p.values) for p in self.parts)

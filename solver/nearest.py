@@ -11,8 +11,9 @@ is not called proven.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import replace
-from itertools import combinations
+from typing import Any
 
 import numpy as np
 
@@ -23,10 +24,13 @@ from .recipe import GAP, Recipe, empty, least_cost, recipe_of
 from .requirements import ceiling
 from .rows import Model
 
-MIXTURES = np.linspace(0.0, 1.0, 21)[:, None]
-CORNERS = 60  # at most so many stocks have their corner tried
-STARTS = 6
+MIXTURES = np.linspace(0.0, 1.0, 11)
+CORNERS = 60  # at most so many stocks have their corner tried …
+RULED_CORNERS = 16  # … and so many where each takes a linear programme
+STARTS = 4
+TRIED, FINISHED = 3, 2  # steps from every start, and how many of them are then followed to their end
 STEPS = 60
+APART = 0.02  # mass fraction by which starts differ
 
 
 def nearest(model: Model, watch: Stopwatch) -> Recipe:
@@ -38,14 +42,25 @@ def nearest(model: Model, watch: Stopwatch) -> Recipe:
     if solve(shares_only, model.table.price, watch).x is None:
         return empty(model, "infeasible", (*_shortage(model, shares_only, watch), *reasons))
     limits = elastics(model)
-    ends = [descend(shares_only, limits, start, watch) for start in _starts(model, shares_only, limits, watch)]
-    best = min(ends, key=lambda x: float(total(limits, x[None, :])[0]))
+    best = _least_missed(shares_only, limits, _starts(model, shares_only, limits, watch), watch)
     if not model.missed(best) and not reasons and _within_ceiling(model, best):
         # Limits so narrow that the search for a proof found no room, and yet this blend meets them.
         words = "a blend was found where the proof found no room: the limits leave hardly any"
         return recipe_of(model, best, "stopped", reasons=(words,))
     reasons += _words(model, limits, best, watch)
     return recipe_of(model, best, "infeasible", reasons=tuple(reasons))
+
+
+def _least_missed(shares: Polytope, limits: list[Elastic], starts: list[Array], watch: Stopwatch) -> Array:
+    """The best end of a descent: a few steps from every start, and the most promising followed to their end."""
+    begun: list[tuple[float, Array]] = []
+    for start in starts:
+        x = descend(shares, limits, start, watch, TRIED)
+        if all(float(np.abs(x - other).max()) > 1e-4 for _, other in begun):
+            begun.append((float(total(limits, x[None, :])[0]), x))
+    begun.sort(key=lambda pair: pair[0])
+    ends = [descend(shares, limits, x, watch) for _, x in begun[:FINISHED]]
+    return min(ends, key=lambda x: float(total(limits, x[None, :])[0]))
 
 
 def _within_ceiling(model: Model, x: Array) -> bool:
@@ -107,22 +122,16 @@ def _reach(model: Model, sign: float, watch: Stopwatch) -> float | None:
 
 def _starts(model: Model, shares: Polytope, limits: list[Elastic], watch: Stopwatch) -> list[Array]:
     """The best few of the corners of the allowed shares and of the mixtures of every two of them."""
-    corners = _corners(model, shares, watch)
-    tried = np.array(corners)
-    scores = [(float(v), i, i, 0.0) for i, v in enumerate(total(limits, tried))]
-    whole = shares.whole
-    for i, j in combinations(range(len(corners)), 2):
-        mixed = MIXTURES * corners[i] + (1.0 - MIXTURES) * corners[j]
-        values = total(limits, mixed)
-        order = np.argsort(values)
-        k = next((int(k) for k in order if whole is None or whole.kept_by(mixed[k])), None)
-        if k is not None:
-            scores.append((float(values[k]), i, j, float(MIXTURES[k, 0])))
-    scores.sort()
+    corners = np.array(_corners(model, shares, watch))
+    first, second = (np.append(v, np.arange(len(corners))) for v in np.triu_indices(len(corners), 1))
+    parts = np.tile(MIXTURES, len(first))[:, None]
+    tried = parts * corners[np.repeat(first, len(MIXTURES))] + (1.0 - parts) * corners[
+        np.repeat(second, len(MIXTURES))]
+    values, whole = total(limits, tried), shares.whole
     chosen: list[Array] = []
-    for _, i, j, t in scores:
-        x = t * corners[i] + (1.0 - t) * corners[j] if i != j else corners[i]
-        if all(float(np.abs(x - other).max()) > 0.02 for other in chosen):
+    for x in tried[np.argsort(values, kind="stable")]:
+        kept = whole is None or whole.kept_by(x)
+        if kept and all(float(np.abs(x - other).max()) > APART for other in chosen):
             chosen.append(x)
         if len(chosen) == STARTS:
             break
@@ -130,44 +139,63 @@ def _starts(model: Model, shares: Polytope, limits: list[Elastic], watch: Stopwa
         # What would be nearest without the whole-number rules, brought back to them.
         free = descend(replace(shares, whole=None), limits, chosen[0], watch)
         step = _step(shares, limits, free, 1.0, watch)
-        chosen += [step] if step is not None else []
+        chosen += [step[0]] if step is not None else []
     return chosen
 
 
 def _corners(model: Model, shares: Polytope, watch: Stopwatch) -> list[Array]:
     """For each stock (of many, an even choice) the shares with the most of it; and the cheapest."""
-    n = len(model.table)
-    which = np.unique(np.linspace(0, n - 1, min(n, CORNERS)).astype(int))
+    n, price = len(model.table), model.table.price
+    ruled = len(shares.rows) > 0 or shares.whole is not None
+    most = RULED_CORNERS if ruled else CORNERS
+    which = np.unique(np.linspace(0, n - 1, min(n, most)).astype(int))
     extremes = [int(f(g.num / np.where(g.den == 0.0, 1.0, g.den))) for g in model.gauges.values()
                 for f in (np.argmin, np.argmax)]
     found: list[Array] = []
     for i in [None, *dict.fromkeys([*extremes, *(int(k) for k in which)])]:
-        c = model.table.price if i is None else -np.eye(n)[i]
-        solved = solve(shares, scale(c), watch)
-        if solved.x is not None and not any(np.allclose(solved.x, x, atol=1e-6) for x in found):
-            found.append(solved.x)
+        if ruled:
+            x = solve(shares, scale(price if i is None else 1e-3 * price / price.max() - np.eye(n)[i]), watch).x
+        else:
+            x = _filled(shares, np.argsort(price if i is None else np.where(np.arange(n) == i, -np.inf, price)))
+        if x is not None and not any(np.allclose(x, other, atol=1e-6) for other in found):
+            found.append(x)
     return found
 
 
-def descend(shares: Polytope, limits: list[Elastic], x: Array, watch: Stopwatch) -> Array:
+def _filled(shares: Polytope, order: Iterable[Any]) -> Array:
+    """Shares that only bounds limit, filled up to 1 in an order of stocks."""
+    x = shares.lo.copy()
+    rest = 1.0 - float(x.sum())
+    for i in order:
+        more = min(rest, float(shares.hi[i] - shares.lo[i]))
+        x[i] += more
+        rest -= more
+        if rest <= 0.0:
+            break
+    return x
+
+
+def descend(shares: Polytope, limits: list[Elastic], x: Array, watch: Stopwatch, steps: int = STEPS) -> Array:
     """The blend of least summed misses that shrinking steps from x lead to, share rules kept."""
     best, least, reach = x, float(total(limits, x[None, :])[0]), 1.0
-    for _ in range(STEPS):
+    for _ in range(steps):
         if least <= 1e-9 or reach < 1e-7 or watch.over:
             break
         step = _step(shares, limits, best, reach, watch)
-        if step is None:
+        # Where not even the straight lines promise anything, no smaller step can do better.
+        if step is None or step[1] >= least - 1e-9 * max(1.0, least):
             break
-        new = float(total(limits, step[None, :])[0])
+        new = float(total(limits, step[0][None, :])[0])
         if new < least - 1e-10 * max(1.0, least):
-            best, least, reach = step, new, min(1.0, 2.0 * reach)
+            best, least, reach = step[0], new, min(1.0, 2.0 * reach)
         else:
             reach *= 0.25
     return best
 
 
-def _step(shares: Polytope, limits: list[Elastic], x: Array, reach: float, watch: Stopwatch) -> Array | None:
-    """Minimise the linearised sum of misses within `reach` of x; None when the programme has no answer.
+def _step(shares: Polytope, limits: list[Elastic], x: Array, reach: float,
+          watch: Stopwatch) -> tuple[Array, float] | None:
+    """Minimise the linearised sum of misses within `reach` of x: shares and that sum; None: no answer.
 
     The variables are the shares, then one miss a limit; the misses, bounded by 0 and by their value at x,
     join the shares' problem as further columns that no sum and no whole-number rule counts.
@@ -197,7 +225,7 @@ def _step(shares: Polytope, limits: list[Elastic], x: Array, reach: float, watch
         return None
     y = np.clip(solved.x[:n], 0.0, 1.0)
     y[y < 1e-10] = 0.0
-    return y / float(y.sum())
+    return y / float(y.sum()), solved.value
 
 
 def _words(model: Model, limits: list[Elastic], x: Array, watch: Stopwatch) -> list[str]:

@@ -19,7 +19,7 @@ import numpy as np
 
 from .properties import Array
 from .stocks import StockTable
-from .target import Excess
+from .target import Effective, Excess, Lesson
 from .walther import log_t
 
 SAME = 0.5  # °C: a temperature this near to a measured one is that one
@@ -103,10 +103,29 @@ class Excesses:
         return low, high
 
 
-def excesses(table: StockTable, pairs: Iterable[Excess], law: str, celsius: float, omega: Array) -> Excesses | None:
-    """What of `pairs` speaks of these stocks under this law at this temperature [°C]; None: nothing."""
+def index_at(taught: Effective, celsius: float) -> float | None:
+    """The effective index at a temperature [°C], found as the terms of a pair are; None where it is not known."""
+    found = terms_at(Excess("", "", taught.law, {t: (j,) for t, j in taught.index.items()}), celsius)
+    return None if found is None else found[0]
+
+
+def effective(table: StockTable, lessons: Iterable[Lesson], law: str, celsius: float) -> dict[int, float]:
+    """Position of a stock → the index with which it blends under this law at this temperature [°C]."""
+    found = {}
+    for taught in lessons:
+        if isinstance(taught, Effective) and taught.law == law and taught.stock in table.codes:
+            at = index_at(taught, celsius)
+            if at is not None:
+                found[table.codes.index(taught.stock)] = at
+    return found
+
+
+def excesses(table: StockTable, lessons: Iterable[Lesson], law: str, celsius: float, omega: Array) -> Excesses | None:
+    """What of the lessons on pairs speaks of these stocks under this law at this temperature [°C]; None: nothing."""
     first, second, terms = [], [], []
-    for pair in pairs:
+    for pair in lessons:
+        if not isinstance(pair, Excess):
+            continue
         at = terms_at(pair, celsius) if pair.law == law else None
         members = [np.array([1.0 if name in (s.code, s.oil) else 0.0 for s in table.stocks])
                    for name in (pair.first, pair.second)]

@@ -22,7 +22,7 @@ from .properties import Array, lookup, stock_codes
 from .requirements import COST, Requirement, ceiling, required
 from .rows import Model, as_table, build
 from .stocks import Stock, StockTable
-from .target import LAWS, Excess, Target
+from .target import LAWS, Effective, Lesson, Target
 from .viscosity_index import indices
 from .windows import Outcome, search
 
@@ -69,6 +69,7 @@ class Recipe:
     lessons: tuple[str, ...] = ()  # versions of the laboratory's lessons that were used
     provisional: tuple[str, ...] = ()  # those of them that rest on fewer than four blends
     also_laws: tuple[str, ...] = ()  # laws under which the limits were held besides `law`
+    warnings: tuple[str, ...] = ()  # what its figures should not be trusted for, in words
     breaches: tuple[str, ...] = ()  # rules on shares, list, tanks and numbers that given shares break, in words
 
     @property
@@ -213,7 +214,7 @@ def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement,
         raise StockError(f"{stock.code}: the law {target.law} needs its {cell}, which is unknown; enter it "
                          "or leave the stock out", stock=stock.code, cell=cell)
     codes = tuple(need.code for need in needs)
-    by_law = {law: predict_all(table, x, law, codes, target.excess)
+    by_law = {law: predict_all(table, x, law, codes, target.lessons)
               for law in dict.fromkeys((target.law, *target.also_laws))}
     predicted = by_law[target.law]
     allowed = {need.code: _with_unknown(table, x, need) for need in needs if need.unknown_ok}
@@ -230,23 +231,36 @@ def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement,
     used = lessons_used(table, x, target)
     return Recipe("by hand", target.law, shares, predicted, tuple(limits), spread(table, x, target.law),
                   cost, charges_kg=charges, batch_kg=batch, lessons=tuple(e.version for e in used),
-                  provisional=tuple(e.version for e in used if e.provisional), also_laws=target.also_laws)
+                  provisional=tuple(e.version for e in used if e.provisional), also_laws=target.also_laws,
+                  warnings=tuple(words for e in used for words in _beyond(e, table, x)))
 
 
-def lessons_used(table: StockTable, x: Array, target: Target) -> tuple[Excess, ...]:
-    """Which of the laboratory's lessons speak of a pair that the blend x, shape (n,), holds."""
+def lessons_used(table: StockTable, x: Array, target: Target) -> tuple[Lesson, ...]:
+    """Which of the laboratory's lessons speak of a stock or a pair that the blend x, shape (n,), holds."""
     used = {name for s, share in zip(table.stocks, x, strict=True) if share > 0.0 for name in (s.code, s.oil) if name}
-    return tuple(e for e in target.excess
-                 if e.law in (target.law, *target.also_laws) and {e.first, e.second} <= used)
+    return tuple(e for e in target.lessons if e.law in (target.law, *target.also_laws)
+                 and (e.stock in used if isinstance(e, Effective) else {e.first, e.second} <= used))
+
+
+def _beyond(lesson: Lesson, table: StockTable, x: Array) -> list[str]:
+    """In words, where a blend holds more or less of a stock than its lesson was measured at."""
+    if not isinstance(lesson, Effective):
+        return []
+    share = float(x[table.index(lesson.stock)])
+    low, high = lesson.shares
+    if low - 1e-9 <= share <= high + 1e-9:
+        return []
+    return [f"{lesson.stock} {100 * share:.2f} %: its lesson {lesson.version} holds from {100 * low:.2f} to "
+            f"{100 * high:.2f} %, measure a blend before this is trusted"]
 
 
 def predict_all(table: StockTable, x: Array, law: str, also: tuple[str, ...] = (),
-                pairs: tuple[Excess, ...] = ()) -> dict[str, float | None]:
+                lessons: tuple[Lesson, ...] = ()) -> dict[str, float | None]:
     """Every property of the registry that the blend x, shape (n,), has, by code; None where unknown."""
     used = x > 0.0
     found: dict[str, float | None] = {}
     for code, celsius in (("kv40", 40.0), ("kv100", 100.0)):
-        found[code] = viscosity_gauge(law, table, celsius, pairs).read(x)
+        found[code] = viscosity_gauge(law, table, celsius, lessons).read(x)
     found["vi"] = _finite(float(indices(found["kv40"], found["kv100"])))
     temperatures = sorted({key for s in table.stocks for key in s.values if key.startswith("ccs")})
     for code in dict.fromkeys(["density15", *stock_codes(), *temperatures, *also]):
@@ -254,7 +268,7 @@ def predict_all(table: StockTable, x: Array, law: str, also: tuple[str, ...] = (
             continue
         entry = lookup(code)
         if entry.basis == "law" and entry.temperature is not None:
-            found[code] = viscosity_gauge(law, table, entry.temperature, pairs).read(x)
+            found[code] = viscosity_gauge(law, table, entry.temperature, lessons).read(x)
             continue
         gauge = property_gauge(table, entry)
         found[code] = None if np.any(used & (gauge.den == 0.0)) else _finite(gauge.read(x))
@@ -295,9 +309,9 @@ def _limit_result(need: Requirement, by_law: Mapping[str, float | None]) -> Limi
         margin, side = min(sides)
         met = all(need.miss(value) <= need.tolerance() for value in known.values())
         binding = side if abs(margin) <= max(BINDING * need.unit_of_miss(), need.tolerance()) else ""
-    value = next(iter(by_law.values()), None)
+    value, of_law = next(iter(by_law.values()), None), need.entry.basis in ("law", "curve")
     return LimitResult(need.code, need.low, need.high, need.guard, need.held_low, need.held_high, value,
-                       met, margin, binding, need.sources, known if len(known) > 1 else {})
+                       met, margin, binding, need.sources, known if len(known) > 1 and of_law else {})
 
 
 def _cost_result(ceiling: float, cost: float | None) -> LimitResult:

@@ -189,11 +189,11 @@ def without_guards(target: Target) -> Target:
 
 
 def _gauges(table: StockTable, law: str, target: Target, needs: Iterable[Requirement]) -> dict[str, Gauge]:
-    gauges = {code: viscosity_gauge(law, table, t, target.excess) for code, t in (("kv40", 40.0), ("kv100", 100.0))}
+    gauges = {code: viscosity_gauge(law, table, t, target.lessons) for code, t in (("kv40", 40.0), ("kv100", 100.0))}
     for need in needs:
         entry = need.entry
         if entry.basis == "law" and entry.temperature is not None:
-            gauges[need.code] = viscosity_gauge(law, table, entry.temperature, target.excess)
+            gauges[need.code] = viscosity_gauge(law, table, entry.temperature, target.lessons)
         elif entry.basis in ("mass", "volume"):
             gauges[need.code] = property_gauge(table, entry)
     return gauges

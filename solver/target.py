@@ -37,6 +37,21 @@ class Excess:
 
 
 @dataclass(frozen=True)
+class Effective:
+    """The index with which a stock blends under one law, worked back from measured blends, per temperature."""
+
+    stock: str
+    law: str
+    index: Mapping[float, float]  # °C → the law's index in place of that of its own viscosity
+    shares: tuple[float, float] = (0.0, 1.0)  # mass fractions of the blend between which it was seen to hold
+    version: str = ""
+    provisional: bool = False
+
+
+Lesson = Excess | Effective  # what measured blends have taught, in the form the solver uses
+
+
+@dataclass(frozen=True)
 class ShareRule:
     """Least and most mass fraction of a stock, an oil, a kind or a group ("group II")."""
 
@@ -63,7 +78,7 @@ class Target:
     held: Mapping[str, float] = field(default_factory=dict)  # stock → mass fraction, by the operator
     left_out: frozenset[str] = frozenset()  # stocks the operator leaves out
     also_laws: tuple[str, ...] = ()  # laws under which every limit must hold besides `law`
-    excess: tuple[Excess, ...] = ()  # lessons of the laboratory that are in use
+    lessons: tuple[Lesson, ...] = ()  # of the laboratory, in use
     # (property or "cost_per_t", "low" or "high") → the limit that is held there instead of what all lines ask:
     # a what-if, a sweep, the price of a limit. NaN opens the side.
     moved: Mapping[tuple[str, str], float] = field(default_factory=dict)

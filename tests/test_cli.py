@@ -109,7 +109,7 @@ def test_design(capsys: pytest.CaptureFixture[str], folder: Path) -> None:
     assert kv40["guard"] == pytest.approx(0.828)
     assert kv40["value"] >= 41.4 * 1.02 * (1 - 1e-6)
     assert set(found["ranges_pct"]) == {"N150", "N500", "BS"}
-    assert all(set(b) == {"shares_pct", "cost_per_t", "predicted"} for b in found["blends"])
+    assert all(set(b) == {"shares_pct", "cost_per_t", "predicted", "spread_pct"} for b in found["blends"])
     assert found["blends"][0]["cost_per_t"] == pytest.approx(found["cost_per_t"], rel=1e-5)
 
 

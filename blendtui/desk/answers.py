@@ -86,12 +86,12 @@ def _as_sure(one: Wishes, other: Wishes) -> bool:
 
 def _wished(plant: Plant, found: Answer) -> Answer:
     """The answer with its best at the chance that is wished, or in whole steps; both where both are."""
-    from . import blends, chance, lab
+    from . import blends, chance, law_error
 
     wishes, goal, best = found.wishes, found.target, found.best
     more: tuple[str, ...] = ()
     if wishes.confidence is not None and best.status != "infeasible":
-        sure = chance.certain(found.stocks, goal, wishes.confidence, lab.law_sigma(plant, goal.law, goal.product),
+        sure = chance.certain(found.stocks, goal, wishes.confidence, law_error.law_sigma(plant, goal.law, goal.product),
                               time_limit=TIME_LIMIT)
         best, more = sure.recipe, chance.certain_words(sure)
     elif wishes.whole and best.status != "infeasible":

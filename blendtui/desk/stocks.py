@@ -8,21 +8,23 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from blendtui.store import cells as check
-from blendtui.store import edits
+from blendtui.store import charging, edits
+from blendtui.store.charging import is_value_code, sigma_of, value_order
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
+from blendtui.store.reads import joined
 from blendtui.store.records import Change, Value
-from solver.properties import is_stock_code, lookup, stock_codes
+from solver.properties import lookup, stock_codes
 from solver.stocks import GROUPS, KINDS, SOURCES, Stock
 from solver.target import ShareRule
 
+from .amounts import CHARGES, MASS, amount, deviation
 from .errors import DeskError
 
 if TYPE_CHECKING:
     from solver.doubts import Doubt
 
 KV = ("kv40", "kv100", "blend_kv40", "blend_kv100")
-MASS = ("on_hand_kg", "unpumpable_kg")
 WORDS: dict[str, tuple[str, ...]] = {"kind": KINDS, "api_group": GROUPS, "source": SOURCES}
 TEXT = ("name", "oil", "kind", "api_group", "tested_on", "source")
 _UNSEEN = object()
@@ -49,7 +51,9 @@ class Edit:
 
 
 def _property_cell(code: str) -> Cell:
-    entry = lookup(code)
+    entry = lookup(sigma_of(code) or code)
+    if sigma_of(code):
+        return Cell(code, f"σ {entry.name}", entry.unit, 3)
     return Cell(code, entry.name, entry.unit, entry.digits)
 
 
@@ -58,24 +62,27 @@ _BEFORE = (
     Cell("on_hand_kg", "on hand", "kg", 0), Cell("unpumpable_kg", "bottoms", "kg", 0),
     Cell("price_per_t", "price", "/t", 2), Cell("density15", "density", "kg/m³", 1),
     Cell("kv40", "KV40", "mm²/s", 4), Cell("kv100", "KV100", "mm²/s", 4),
-    Cell("blend_kv40", "blending KV40", "mm²/s", 4), Cell("blend_kv100", "blending KV100", "mm²/s", 4))
+    Cell("blend_kv40", "blending KV40", "mm²/s", 4), Cell("blend_kv100", "blending KV100", "mm²/s", 4),
+    Cell("division_kg", "scale step", "kg", 3), Cell("package_kg", "package", "kg", 3),
+    Cell("least_charge_kg", "least charge", "kg", 3))
 _AFTER = (Cell("tested_on", "tested on"), Cell("source", "source"))
 CELLS: tuple[Cell, ...] = (*_BEFORE, *(_property_cell(p) for p in stock_codes()), *_AFTER)
 _BY_CODE = {c.code: c for c in CELLS}
 
 
 def cell(code: str) -> Cell:
-    """The column of that code, any `ccs<°C>` among them; DeskError for one that a stock has not."""
+    """The column of that code, any `ccs<°C>` and `sigma_<property>` too; DeskError for one that a stock has not."""
     if code in _BY_CODE:
         return _BY_CODE[code]
-    if is_stock_code(code):
+    if is_value_code(code):
         return _property_cell(code)
-    raise DeskError(f"a stock has no {harmless(code, 40)!r}; it has {', '.join(_BY_CODE)} and ccs<°C>")
+    raise DeskError(f"a stock has no {harmless(code, 40)!r}; it has {', '.join(_BY_CODE)}, ccs<°C> and "
+                    "sigma_<property>")
 
 
 def cells_for(stocks: Iterable[Stock]) -> tuple[Cell, ...]:
     """CELLS, and the further properties that these stocks have values of."""
-    more = sorted({p for s in stocks for p in s.values if p not in _BY_CODE})
+    more = sorted({p for s in stocks for p in joined(s) if p not in _BY_CODE}, key=value_order)
     return (*CELLS[:-len(_AFTER)], *(_property_cell(p) for p in more), *_AFTER)
 
 
@@ -83,7 +90,7 @@ def value_of(stock: Stock, code: str) -> Value:
     """Value of a cell in the solver's unit, None where unknown."""
     if code in edits.STOCK_CELLS or code == "on_hand_kg":
         return getattr(stock, code)
-    return stock.values.get(code)
+    return joined(stock).get(code)
 
 
 def text_of(stock: Stock, cell: Cell | str) -> str:
@@ -92,7 +99,10 @@ def text_of(stock: Stock, cell: Cell | str) -> str:
     value = value_of(stock, column.code)
     if value is None or isinstance(value, str):
         return harmless(value or "")
-    return figures(value, column.digits) if column.code in KV else f"{value:.{column.digits}f}"
+    if column.code in CHARGES:
+        return f"{value:.12g}"
+    return figures(value, column.digits) if column.code in KV or sigma_of(column.code) else (
+        f"{value:.{column.digits}f}")
 
 
 def edit_text(stock: Stock, code: str) -> str:
@@ -198,6 +208,8 @@ def _typed(stock: Stock, column: Cell, typed: str) -> tuple[dict[str, Value], st
         if typed.count("/") == 1 and not typed.endswith("mm²/s") and not typed.endswith("mm2/s"):
             cold, hot = (amount(part, code) for part in typed.split("/"))
             return {f"{prefix}kv40": cold, f"{prefix}kv100": hot}, "read as KV40/KV100"
+    if sigma_of(code):
+        return {code: deviation(stock.code, sigma_of(code), value_of(stock, sigma_of(code)), typed)}, ""
     value = amount(typed, code, stock.density15)
     if code in MASS and value > check.LARGEST_KG:
         raise DeskError(f"{harmless(typed, 40)} is more than {check.LARGEST_KG:g} kg; check the unit")
@@ -226,43 +238,6 @@ def _text(code: str, typed: str) -> str:
         raise DeskError(str(error)) from None
 
 
-def amount(typed: str, code: str, density15: float | None = None) -> float:
-    """What was typed for a cell or a property, in its own unit; ScaleError when it cannot be placed."""
-    from solver.scales import parse
-
-    if code.endswith("kv40") or code.endswith("kv100"):
-        return parse(typed, "kv")
-    if code in MASS or code == "batch_kg":
-        return parse(typed, "mass", density15)
-    if code == "density15":
-        return parse(typed, "density")
-    if code in ("price_per_t", "max_cost_per_t"):
-        return parse(typed, "price")
-    entry = lookup(code)
-    if entry.basis == "law":
-        return parse(typed, "kv")
-    if entry.unit == "°C":
-        return round(parse(typed, "temperature"), 2)
-    if entry.unit == "mPa·s":
-        return parse(typed, "dynamic")
-    return _by_mass(typed, entry.unit)
-
-
-def _by_mass(typed: str, unit: str) -> float:
-    """Mass %, mg/kg or mgKOH/g: each may be typed with its unit, and the first two for one another."""
-    from solver.scales import parse, split
-
-    number, told = split(typed)
-    told = {"%": "mass %", "ppm": "mg/kg"}.get(told, told)
-    if told in ("", unit.lower()):
-        return number
-    if (unit, told) == ("mass %", "mg/kg"):
-        return number / 1e4
-    if (unit, told) == ("mg/kg", "mass %"):
-        return number * 1e4
-    return parse(typed, "number")
-
-
 def _refuse_faults(old: Stock, new: Stock, edited: set[str], confirmed: bool) -> tuple[str, Edit | None]:
     """A remark on what is still missing, or a refusal that names the value that would do.
 
@@ -271,9 +246,9 @@ def _refuse_faults(old: Stock, new: Stock, edited: set[str], confirmed: bool) ->
     """
     from solver.doubts import faults
 
-    before = {(d.cell, d.says) for d in faults(old)}
+    before = {(d.cell, d.says) for d in (*faults(old), *charging.faults(old))}
     missing = ""
-    for doubt in faults(new):
+    for doubt in (*faults(new), *charging.faults(new)):
         if value_of(new, doubt.cell) is None:
             missing = missing or doubt.says
         elif doubt.cell in edited or (doubt.cell, doubt.says) not in before:
@@ -301,8 +276,8 @@ def _question(old: Stock, new: Stock) -> Edit | None:
     """The doubts that this edit raises, as a question."""
     from solver.doubts import doubts
 
-    before = {d.cell for d in doubts(old)}
-    raised = [d for d in doubts(new) if d.cell not in before or d not in doubts(old)]
+    before = (*doubts(old), *charging.doubts(old))
+    raised = [d for d in (*doubts(new), *charging.doubts(new)) if d not in before]
     if not raised:
         return None
     likely = next((d.suggestion for d in raised if d.suggestion is not None), None)

@@ -60,7 +60,8 @@ def target_of(plant: Plant, product: str, law: str | None = None, batch_kg: floa
                   batch_kg=asked.batch_kg if batch_kg is None else batch_kg,
                   max_cost_per_t=asked.max_cost_per_t, max_stocks=asked.max_stocks,
                   min_share=None if share is None else share / 100.0, only_listed=asked.only_listed,
-                  held=dict(held or {}), left_out=frozenset(left_out))
+                  held=dict(held or {}), left_out=frozenset(left_out),
+                  lessons=tuple(x.taught for x in plant.lessons()))
 
 
 # Cells

@@ -7,6 +7,7 @@ import json
 import math
 import sys
 from collections.abc import Callable
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from solver.errors import SolverError
@@ -21,6 +22,23 @@ Add = Callable[[str, Run, str], argparse.ArgumentParser]  # (name, run, one sent
 
 class BadInput(Exception):
     """What was typed on the command line cannot be used; one line."""
+
+
+def shared(**default: Any) -> argparse.ArgumentParser:
+    """The options that every command takes, before its name or after it."""
+    made = argparse.ArgumentParser(add_help=False)
+    made.add_argument("--plant", type=path, metavar="PATH", default=default.get("plant", argparse.SUPPRESS),
+                      help="a plant file, or a catalogue folder (opened without changing it)")
+    made.add_argument("--json", action="store_true", default=default.get("json", argparse.SUPPRESS),
+                      help="the answer as JSON, numbers unrounded")
+    return made
+
+
+def path(text: str) -> Path:
+    """A path as typed on the command line."""
+    if not text.strip():
+        raise argparse.ArgumentTypeError("a path cannot be empty")
+    return Path(text)
 
 
 def number(text: str, what: str, quantity: Any = "number") -> float:

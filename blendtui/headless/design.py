@@ -38,6 +38,7 @@ def _design(options: argparse.Namespace) -> int:
 
     from blendtui import as_json, as_text
     from blendtui.desk import blends
+    from blendtui.desk.law_error import law_sigma
     from blendtui.desk.targets import target_of
     from blendtui.quiet import quiet
 
@@ -52,10 +53,10 @@ def _design(options: argparse.Namespace) -> int:
     with opened(options) as plant:
         stocks = plant.stocks()
         target = replace(target_of(plant, options.product, options.law, batch), also_laws=under)
-        law_sigma = _law_sigma(plant, target) if options.confidence is not None else None
+        sigma = law_sigma(plant, target.law, target.product) if options.confidence is not None else None
     say(f"designing {options.product} …")
     with quiet():
-        recipe, more, words = _recipe(stocks, target, options, law_sigma)
+        recipe, more, words = _recipe(stocks, target, options, sigma)
         feasible = recipe.status != "infeasible"
         ranges = blends.all_ranges(stocks, target) if options.ranges and feasible else None
         others = blends.other_sets(stocks, target, wanted) if wanted and feasible else []
@@ -70,21 +71,15 @@ def _design(options: argparse.Namespace) -> int:
     return DONE if feasible and recipe.shares is not None else NO_BLEND
 
 
-def _law_sigma(plant: Any, target: Target) -> dict[str, float] | None:
-    from blendtui.desk.lab import law_sigma
-
-    return law_sigma(plant, target.law, target.product)
-
-
 def _recipe(stocks: Sequence[Stock], target: Target, options: argparse.Namespace,
-            law_sigma: dict[str, float] | None) -> tuple[Recipe, dict[str, Any], tuple[str, ...]]:
+            sigma: dict[str, float] | None) -> tuple[Recipe, dict[str, Any], tuple[str, ...]]:
     """The recipe as asked for, what its JSON has besides, and what its text says besides."""
     from blendtui.desk import blends
 
     if options.confidence is not None:
         from blendtui.desk import chance
 
-        sure = chance.certain(stocks, target, chance.confidence(options.confidence), law_sigma, time_limit=SECONDS)
+        sure = chance.certain(stocks, target, chance.confidence(options.confidence), sigma, time_limit=SECONDS)
         return sure.recipe, {"confidence": chance.certain_json(sure)}, chance.certain_words(sure)
     if options.whole:
         made = blends.whole(stocks, target, SECONDS)

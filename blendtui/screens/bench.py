@@ -29,8 +29,9 @@ class BenchScreen(TextScreen):
         super().__init__()
         self.plan, self.write = text, write
 
-    def on_mount(self) -> None:
+    def on_mount(self, event: events.Mount) -> None:  # type: ignore[override]
         """Show the keys."""
+        event.prevent_default()  # the text's own would come after this one and show its keys again
         super().on_mount()
         self.keys.show([("↑ ↓ PgUp PgDn", "move"), (WRITE, "write to a file"), ("Esc", "back")])
 

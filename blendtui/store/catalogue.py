@@ -10,27 +10,32 @@ from solver.properties import is_stock_code, lookup, stock_codes
 from solver.stocks import GROUPS, KINDS, SOURCES, Stock
 from solver.target import LAWS
 
+from . import catalogue_lab, charging, state
 from . import cells as c
-from . import state
 from .cells import Cells
+from .charging import SIGMA, is_value_code, sigma_of
 from .csv_read import Sheet, read_sheet
 from .edits import row_key
 from .errors import CatalogueError, Fault, NoPlant
 from .harmless import harmless
-from .reads import milligrams
+from .reads import joined, milligrams, parted
 from .records import Row
 from .rules import Rule, contradictions
-from .schema import PRODUCT_CELLS, STOCK_CELLS, STOCK_NUMBERS, STOCK_TEXT
+from .schema import PRODUCT_CELLS, STOCK_CELLS, STOCK_CHARGES, STOCK_NUMBERS, STOCK_TEST, STOCK_TEXT
 from .state import Key
 
-STOCKS = ("stock", *STOCK_TEXT, "on_hand_kg", *STOCK_NUMBERS, "tested_on", "source")
+STOCKS = ("stock", *STOCK_TEXT, "on_hand_kg", *STOCK_NUMBERS, *STOCK_CHARGES, *STOCK_TEST)
 PRODUCTS = ("product", *PRODUCT_CELLS)
 LIMITS = ("product", "property", "low", "high", "guard", "unknown")
 SHARES = ("product", "of", "low_pct", "high_pct")
 TRIALS = ("product", "name", "law", "stock", "share_pct", "note", "kept_at", "kept_by")
 REQUIRED = {"stocks.csv": ("stock", "kv40", "kv100"), "products.csv": ("product",),
             "limits.csv": ("product", "property"), "shares.csv": ("product", "of"),
-            "trials.csv": ("product", "name", "stock", "share_pct")}
+            "trials.csv": ("product", "name", "stock", "share_pct"),
+            "measured.csv": ("name", "stock", "share_pct"),
+            "lessons.csv": ("version", "kind", "law", "first", "celsius", "first_term")}
+# Columns of any number besides the known ones.
+FAMILIES = {"stocks.csv": is_value_code, "measured.csv": catalogue_lab.is_value_column}
 
 
 @dataclass
@@ -40,7 +45,7 @@ class Catalogue:
     folder: Path
     state: state.State = field(default_factory=state.empty)
     notes: tuple[str, ...] = ()  # unknown columns that are kept, files that are not read
-    has_trials: bool = False
+    given: frozenset[str] = frozenset()  # files that are there; of those that are not it says nothing
 
 
 def read_catalogue(folder: Path) -> Catalogue:
@@ -55,7 +60,7 @@ def read_catalogue(folder: Path) -> Catalogue:
 
 
 class _Reading:
-    """One pass over the five files, faults gathered on the way."""
+    """One pass over the files, faults gathered on the way."""
 
     def __init__(self, folder: Path, held: list[str]) -> None:
         self.folder = folder
@@ -78,13 +83,15 @@ class _Reading:
         self._read_limits(limits)
         self._read_shares(shares, stocks)
         self._read_trials(trials)
+        measured, lessons = self._read_lab()
         self._products_ask_something(products, limits)
         self.notes += [f"{harmless(file, 60)} is not read" for file in self.held
                        if file.lower().endswith(".csv") and file not in REQUIRED]
         if self.faults:
             order = tuple(REQUIRED)
             raise CatalogueError(sorted(self.faults, key=lambda f: (order.index(f.file), f.row)))
-        return Catalogue(self.folder, self.state, tuple(self.notes), trials is not None)
+        return Catalogue(self.folder, self.state, tuple(self.notes),
+                         frozenset(x.file for x in (trials, measured, lessons) if x is not None))
 
     def _sheet(self, name: str, known: tuple[str, ...], *, needed: bool = False) -> Sheet | None:
         if name not in self.held:
@@ -96,7 +103,7 @@ class _Reading:
                            property_spelt if name == "stocks.csv" else None)
         self.faults += sheet.faults
         unknown = [x for x in sheet.columns
-                   if x not in known and not (name == "stocks.csv" and is_stock_code(x))]
+                   if x not in known and not FAMILIES.get(name, _none)(x)]
         if unknown:
             self.notes.append(f"{name}: unknown column{'s' * (len(unknown) > 1)} "
                               f"{harmless(', '.join(unknown), 200)}: kept, not used")
@@ -104,7 +111,7 @@ class _Reading:
 
     def _extras(self, sheet: Sheet, table: str, key: Key, cells: Cells, known: tuple[str, ...]) -> None:
         for column in sheet.columns:
-            if column in known or (table == "stock" and is_stock_code(column)):
+            if column in known or FAMILIES.get(sheet.file, _none)(column):
                 continue
             text = cells.get(column, c.plain, default="")
             if text:
@@ -115,7 +122,7 @@ class _Reading:
     def _read_stocks(self, sheet: Sheet | None) -> None:
         if sheet is None:
             return
-        properties = [x for x in sheet.columns if x not in STOCKS and is_stock_code(x)]
+        properties = [x for x in sheet.columns if x not in STOCKS and is_value_code(x)]
         first: dict[str, int] = {}
         for place, (row, text) in enumerate(sheet.rows, 1):
             cells = Cells(sheet.file, row, text, self.faults)
@@ -136,7 +143,7 @@ class _Reading:
     def _keep_stock(self, stock: Stock, place: int) -> None:
         self.state["stock"][stock.code,] = {**{x: getattr(stock, x) for x in STOCK_CELLS}, "position": place,
                                             "retired": 0}
-        for prop, value in stock.values.items():
+        for prop, value in joined(stock).items():
             self.state["stock_value"][stock.code, prop] = {"value": value}
         if stock.on_hand_kg is not None:
             self.state["quantity"][stock.code,] = {"mg": milligrams(stock.on_hand_kg)}
@@ -264,14 +271,43 @@ class _Reading:
             places[key] += 1
             if stock and stock not in self.stocks:
                 strangers.add(stock)
+        self._note("trials.csv", "stocks", strangers)
+
+    def _note(self, file: str, what: str, strangers: set[str]) -> None:
         if strangers:
-            self.notes.append(f"trials.csv names stocks that are not in stocks.csv: "
+            self.notes.append(f"{file} names {what} that are not in {what}.csv: "
                               f"{harmless(', '.join(sorted(strangers)), 200)}")
+
+    # The laboratory
+
+    def _read_lab(self) -> tuple[Sheet | None, Sheet | None]:
+        measured = self._sheet("measured.csv", catalogue_lab.MEASURED)
+        if measured is not None:
+            catalogue_lab.read_measured(measured, self.faults, self.state, lambda key, cells: self._extras(
+                measured, "measured_part", key, cells, catalogue_lab.MEASURED))
+            self._note("measured.csv", "stocks", {str(k[1]) for k in self.state["measured_part"]} - set(self.stocks))
+            products = {str(row["product"]) for row in self.state["measured"].values()} - {""}
+            self._note("measured.csv", "products", products - {str(k[0]) for k in self.state["product"]})
+        lessons = self._sheet("lessons.csv", catalogue_lab.LESSONS)
+        if lessons is not None:
+            catalogue_lab.read_lessons(lessons, self.faults, self.state, lambda key, cells: self._extras(
+                lessons, "lesson_term", key, cells, catalogue_lab.LESSONS))
+            named = {str(row[x]) for row in self.state["lesson"].values() for x in ("first", "second")} - {""}
+            self._note("lessons.csv", "stocks", named - set(self.stocks) - {s.oil for s in self.stocks.values()})
+        return measured, lessons
+
+
+def _none(column: str) -> bool:
+    return False
 
 
 def property_spelt(heading: str) -> str | None:
     """Code of the property that a heading means in another spelling: `CCS-25`, `Flash point`, `sulphur`."""
     plain = heading.lower().replace("−", "-")
+    for sign in ("sigma_", "sigma ", "σ_", "σ "):
+        if plain.startswith(sign):
+            of = property_spelt(plain[len(sign):]) or plain[len(sign):].replace(" ", "")
+            return SIGMA + of if sigma_of(SIGMA + of) else None
     for code in (plain.replace(" ", "_"), plain.replace(" ", ""), plain.replace(" ", "").replace("_", "")):
         if is_stock_code(code):
             return code
@@ -295,8 +331,8 @@ def _stock(cells: Cells, properties: list[str]) -> Stock:
         kind=cells.get("kind", c.word, KINDS, "kind", default="") or "base",
         api_group=cells.get("api_group", c.word, GROUPS, "group", default=""),
         on_hand_kg=cells.get("on_hand_kg", c.number, most=c.LARGEST_KG),
-        **{x: cells.get(x, c.number) for x in STOCK_NUMBERS},
-        values={p: v for p, v in values.items() if v is not None},
+        **{x: cells.get(x, c.number) for x in (*STOCK_NUMBERS, *STOCK_CHARGES)},
+        **parted({p: v for p, v in values.items() if v is not None}),
         tested_on=cells.get("tested_on", c.iso_date, default=""),
         source=cells.get("source", c.word, SOURCES, "source", default=""))
 
@@ -306,14 +342,14 @@ def _stock_faults(cells: Cells, stock: Stock) -> None:
     from solver.doubts import faults
 
     kv = {"kv40", "kv100", "blend_kv40", "blend_kv100"} & cells.bad
-    for doubt in faults(stock):
+    for doubt in (*faults(stock), *charging.faults(stock)):
         # A KV that could not be read is missing in the check too, and one fault a cell is enough.
         if doubt.cell in cells.bad or (kv and doubt.cell.endswith(("kv40", "kv100"))):
             continue
         what, _, fix = doubt.says.partition("; ")
         if doubt.cell in ("kv40", "kv100") and not cells.cells.get(doubt.cell):
             fix = "enter it"
-        if "kv" in doubt.cell:
+        if "kv" in doubt.cell and not sigma_of(doubt.cell):
             what = what.removeprefix(f"{doubt.cell} ")  # the fault names its column itself
         cells.fault(doubt.cell, what, fix or "check the figure")
 

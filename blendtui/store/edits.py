@@ -10,7 +10,7 @@ from solver.stocks import Stock
 
 from .database import now
 from .plant import Plant
-from .reads import milligrams
+from .reads import joined, milligrams, parted
 from .records import Change, Product, Row, Trial, Value
 from .schema import STOCK_CELLS
 from .state import change_of
@@ -25,7 +25,7 @@ def stock_cell(stock: Stock, cell: str, value: Value) -> Change:
         return change_of("quantity", (stock.code,), {"mg": before}, {"mg": after})
     if cell in STOCK_CELLS:
         return change_of("stock", (stock.code,), {cell: getattr(stock, cell)}, {cell: value})
-    old = stock.values.get(cell)
+    old = joined(stock).get(cell)
     return change_of("stock_value", (stock.code, cell), None if old is None else {"value": old},
                      None if value is None else {"value": value})
 
@@ -34,8 +34,8 @@ def with_cell(stock: Stock, cell: str, value: Value) -> Stock:
     """The stock as it would be with this value in this cell."""
     if cell == "on_hand_kg" or cell in STOCK_CELLS:
         return replace(stock, **{cell: value})
-    values = {**stock.values, cell: value}
-    return replace(stock, values={c: v for c, v in values.items() if v is not None})
+    values = {**joined(stock), cell: value}
+    return replace(stock, **parted({c: v for c, v in values.items() if v is not None}))
 
 
 def next_position(plant: Plant, table: str) -> int:
@@ -53,14 +53,15 @@ def new_stock(plant: Plant, stock: Stock) -> list[Change]:
     if stray.get("mg") is not None:
         changes.append(change_of("quantity", (stock.code,), stray, {"mg": None}))
     return [*changes, *(change_of("stock_value", (stock.code, p), None, {"value": v})
-                        for p, v in stock.values.items())]
+                        for p, v in joined(stock).items())]
 
 
 def revived_stock(plant: Plant, stock: Stock, old: Stock) -> list[Change]:
     """Bring a retired stock back under its code with new cells; its quantity is unknown again."""
     changes = [change_of("stock", (stock.code,), {"retired": 1}, {"retired": 0})]
     changes += [stock_cell(old, c, getattr(stock, c)) for c in (*STOCK_CELLS, "on_hand_kg")]
-    return changes + [stock_cell(old, p, stock.values.get(p)) for p in {**old.values, **stock.values}]
+    values = joined(stock)
+    return changes + [stock_cell(old, p, values.get(p)) for p in {**joined(old), **values}]
 
 
 def retired(table: str, code: str) -> Change:

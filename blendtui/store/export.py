@@ -5,19 +5,20 @@ from __future__ import annotations
 import csv
 import os
 import tempfile
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 
-from solver.properties import is_stock_code, stock_codes
-
 from . import catalogue as names
+from .catalogue_lab import LESSONS, MEASURED, RESULT
+from .charging import is_value_code, value_order
 from .edits import row_key
 from .errors import CatalogueError, PlantError
 from .harmless import harmless
 from .records import Row, Value
+from .schema import STOCK_CHARGES, STOCK_TEST
 from .state import Key, State
 
-FILES = ("stocks.csv", "products.csv", "limits.csv", "shares.csv", "trials.csv")
+FILES = tuple(names.REQUIRED)
 Table = tuple[list[str], list[list[str]]]
 
 
@@ -31,7 +32,8 @@ def write_catalogue(state: State, folder: Path) -> tuple[str, ...]:
         folder = folder.resolve()
         present = folder.exists() and _refuse_foreign(folder)
         tables = {"stocks.csv": _stocks(state), "products.csv": _products(state), "limits.csv": _limits(state),
-                  "shares.csv": _shares(state), "trials.csv": _trials(state)}
+                  "shares.csv": _shares(state), "trials.csv": _trials(state), "measured.csv": _measured(state),
+                  "lessons.csv": _lessons(state)}
         tables = {file: table for file, table in tables.items() if table[1] or file in FILES[:2]}
         place = folder if present else folder.parent
         place.mkdir(parents=True, exist_ok=True)
@@ -105,8 +107,10 @@ def _read_back(folder: Path, tables: dict[str, Table]) -> None:
         of = fault.file
         if fault.row > 1:
             row = tables[fault.file][1][fault.row - 2]
-            of = f"trial {row[1]} of {row[0]}" if fault.file == "trials.csv" else row[0]
-        out = "drop that trial" if fault.file == "trials.csv" else f"retire {of}"
+            of = {"trials.csv": f"trial {row[1]} of {row[0]}", "measured.csv": f"measured blend {row[0]}",
+                  "lessons.csv": f"lesson {row[0]}"}.get(fault.file, row[0])
+        out = {"trials.csv": "drop that trial", "measured.csv": "drop that blend",
+               "lessons.csv": "import a lessons.csv without it"}.get(fault.file, f"retire {of}")
         raise PlantError(f"nothing was exported, for it would not import back: {of} {fault.column}: "
                          f"{fault.what}; {fault.fix}, or {out}"
                          f"{f' (and {more} more)' if more else ''}") from None
@@ -152,17 +156,18 @@ def _with_extras(state: State, table: str, header: list[str],
 def _stocks(state: State) -> Table:
     live = _live(state, "stock")
     codes = {code for code, _ in live}
-    used = {str(prop) for code, prop in state["stock_value"] if code in codes and is_stock_code(str(prop))}
-    order = {code: n for n, code in enumerate(stock_codes())}
-    properties = sorted(used, key=lambda p: (order.get(p, len(order)), p))
+    used = {str(prop) for code, prop in state["stock_value"] if code in codes and is_value_code(str(prop))}
+    properties = sorted(used, key=value_order)
+    # Columns that nobody uses are left out, so that a plant without drums and scales has a plain table.
+    plain = [x for x in names.STOCKS if x not in STOCK_CHARGES or any(row[x] is not None for _, row in live)]
+    header = [*plain[:-len(STOCK_TEST)], *properties, *plain[-len(STOCK_TEST):]]
     keyed = []
     for code, row in live:
         mg = state["quantity"].get((code,), {}).get("mg")
         cells = {"stock": code, **row, "on_hand_kg": None if mg is None else float(mg) / 1e6}
         cells |= {p: state["stock_value"].get((code, p), {}).get("value") for p in properties}
-        head = (*names.STOCKS[:-2], *properties, *names.STOCKS[-2:])
-        keyed.append(((code,), [text(cells[x]) for x in head]))
-    return _with_extras(state, "stock", [*names.STOCKS[:-2], *properties, *names.STOCKS[-2:]], keyed)
+        keyed.append(((code,), [text(cells[x]) for x in header]))
+    return _with_extras(state, "stock", header, keyed)
 
 
 def _products(state: State) -> Table:
@@ -207,3 +212,45 @@ def _trials(state: State) -> Table:
         rows.append((order, key, [text(cells[x]) for x in names.TRIALS]))
     rows.sort(key=lambda item: item[0])
     return _with_extras(state, "trial_share", list(names.TRIALS), [item[1:] for item in rows])
+
+
+def _measured(state: State) -> Table:
+    results = sorted({str(prop) for _, prop in state["measured_value"]}, key=_result_order)
+    known = sorted({str(key[2]) for key in state["measured_part_value"]})
+    header = [*MEASURED, *known, *(RESULT + prop for prop in results)]
+    values = {(key[0], RESULT + str(key[1])): row["value"] for key, row in state["measured_value"].items()}
+    keyed = []
+    for key, part, begins in _by_whole(state, "measured", "measured_part"):
+        blend = state["measured"][key[0],]
+        whole = {**blend, "confirmed": "yes" if blend["confirmed"] else "",
+                 **{RESULT + prop: values.get((key[0], RESULT + prop)) for prop in results}} if begins else {}
+        own = {prop: state["measured_part_value"].get((*key, prop), {}).get("value") for prop in known}
+        cells = {**whole, "name": key[0], "stock": key[1], **part, **own}
+        keyed.append((key, [text(cells.get(x)) for x in header]))
+    return _with_extras(state, "measured_part", header, keyed)
+
+
+def _result_order(prop: str) -> tuple[int, str]:
+    return {"kv40": 0, "kv100": 1, "vi": 2}.get(prop, 3), prop
+
+
+def _lessons(state: State) -> Table:
+    keyed = []
+    for key, term, begins in _by_whole(state, "lesson", "lesson_term"):
+        lesson = state["lesson"][key[0],]
+        whole = {**lesson, "provisional": "yes" if lesson["provisional"] else ""} if begins else {}
+        cells = {**whole, "version": key[0], "celsius": key[1], **term}
+        keyed.append((key, [text(cells.get(x)) for x in LESSONS]))
+    return _with_extras(state, "lesson_term", list(LESSONS), keyed)
+
+
+def _by_whole(state: State, whole: str, table: str) -> Iterator[tuple[Key, Row, bool]]:
+    """Rows of a table by what they belong to, and whether each is the first of its own."""
+    def place(item: tuple[Key, Row]) -> tuple[Value, ...]:
+        key, row = item
+        return state[whole][key[0],]["position"], key[0], row.get("position"), key[1]
+
+    before: Value = None
+    for key, row in sorted(state[table].items(), key=place):
+        yield key, row, key[0] != before
+        before = key[0]

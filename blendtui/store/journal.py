@@ -10,7 +10,8 @@ from typing import Any
 
 from .database import now
 from .harmless import harmless
-from .records import Change, Entry, Value
+from .records import Change, Entry, Row, Value
+from .schema import LATER
 
 START = "0" * 64  # what stands for the hash before the first entry
 COLUMNS = "id, at, who, what, changes, why, undoes, prev_hash, hash"
@@ -43,8 +44,18 @@ def _plain(cells: Mapping[str, Value] | None) -> dict[str, Value] | None:
 
 def entry(row: Sequence[Any]) -> Entry:
     """A journal row as an Entry."""
-    changes = tuple(Change(c["table"], c["key"], c["before"], c["after"]) for c in json.loads(row[4]))
+    changes = tuple(_change(c["table"], c["key"], c["before"], c["after"]) for c in json.loads(row[4]))
     return Entry(row[0], row[1], row[2], row[3], changes, row[5], row[6], row[8])
+
+
+def _change(table: str, key: Row, before: Row | None, after: Row | None) -> Change:
+    """A change as it was told; a row that comes or goes has the columns of today."""
+    later = LATER.get(table, {})
+    if before is None and after is not None:
+        after = {**later, **after}
+    elif after is None and before is not None:
+        before = {**later, **before}
+    return Change(table, key, before, after)
 
 
 def read(con: sqlite3.Connection, number: int) -> Entry:

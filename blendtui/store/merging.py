@@ -18,12 +18,15 @@ from .state import Key, State
 OWNED = {"stock": ("stock_value", "quantity"), "product": ("product_limit", "share_rule")}
 LINES = ("product_limit", "share_rule")
 TRIALS = ("trial", "trial_share")
+# Optional file → the tables that it holds; a folder without it says nothing of them.
+LAB = {"measured.csv": ("measured", "measured_part", "measured_part_value", "measured_value"),
+       "lessons.csv": ("lesson", "lesson_term")}
 
 
-def merged(old: State, said: State, has_trials: bool) -> tuple[State, tuple[str, ...]]:
+def merged(old: State, said: State, given: frozenset[str]) -> tuple[State, tuple[str, ...]]:
     """The state after an import, and what it retires: rows that the catalogue lacks stay, marked retired."""
     new = _with_old_lines(old, {table: dict(rows) for table, rows in said.items()})
-    for table in OWNED:
+    for table in (*OWNED, "measured", "lesson"):
         _keep_places(old[table], new[table])
     for table in LINES:
         for product in {key[0] for key in new[table]}:
@@ -39,7 +42,10 @@ def merged(old: State, said: State, has_trials: bool) -> tuple[State, tuple[str,
             new[table].update({k: row for k, row in old[table].items() if k[0] in gone})
         new["extra"].update({k: row for k, row in old["extra"].items()
                              if k[0] in (owner, *tables) and json.loads(str(k[1]))[0] in gone})
-    _keep_trials(old, new, said["product"] if has_trials else {})
+    _keep_trials(old, new, said["product"] if "trials.csv" in given else {})
+    for tables in (tables for file, tables in LAB.items() if file not in given):
+        new |= {table: dict(old[table]) for table in tables}
+        new["extra"].update({k: row for k, row in old["extra"].items() if k[0] in tables})
     return new, tuple(sorted(retired))
 
 
@@ -101,7 +107,7 @@ def _rises(rows: Mapping[Key, Row], keys: Sequence[Key]) -> bool:
     return list(keys) == _ordered({key: rows[key] for key in keys})
 
 
-def changes(old: State, said: State, has_trials: bool) -> tuple[list[state.Change], tuple[str, ...]]:
+def changes(old: State, said: State, given: frozenset[str]) -> tuple[list[state.Change], tuple[str, ...]]:
     """What an import changes, and what it retires."""
-    new, retired = merged(old, said, has_trials)
+    new, retired = merged(old, said, given)
     return state.difference(old, new), retired

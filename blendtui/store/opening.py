@@ -222,7 +222,7 @@ def _take_over(plant: Plant, catalogue: Catalogue) -> tuple[int, tuple[str, ...]
 
     def made(old: state.State) -> list[Change]:
         nonlocal retired
-        found, retired = changes(old, catalogue.state, catalogue.has_trials)
+        found, retired = changes(old, catalogue.state, catalogue.given)
         return found
 
     return plant.change_whole(made, f"imported {catalogue.folder}"), retired

@@ -9,13 +9,14 @@ from collections.abc import Callable, Sequence
 from pathlib import Path
 from types import TracebackType
 
+from solver.measured import Measured
 from solver.stocks import Stock
 
 from . import audit, journal, reads, state
 from .database import Database
 from .errors import ChangedSince, NotAPlant, NothingToUndo, ReadOnlyPlant
 from .harmless import harmless
-from .records import Change, Entry, Product, Row, Trial
+from .records import Change, Entry, Lesson, Product, Row, Trial
 from .state import Key
 
 
@@ -88,6 +89,21 @@ class Plant:
         """Trials that were kept, of one product or of all, oldest first."""
         with self._lock, self._database.reading() as con:
             return reads.trials(con, product)
+
+    def measured(self, product: str | None = None) -> list[Measured]:
+        """Measured blends, of one product or of all, in the order in which they were recorded."""
+        with self._lock, self._database.reading() as con:
+            return reads.measured(con, product)
+
+    def lessons(self, include_withdrawn: bool = False) -> list[Lesson]:
+        """Lessons of the laboratory that are in use, or all that were ever taken."""
+        with self._lock, self._database.reading() as con:
+            return reads.lessons(con, include_withdrawn)
+
+    def next_version(self) -> str:
+        """The version that the next lesson gets; none is ever used twice, not even one that was undone."""
+        with self._lock, self._database.reading() as con:
+            return reads.next_version(con)
 
     def state(self) -> state.State:
         """Everything the plant holds, as plain rows."""

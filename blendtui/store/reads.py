@@ -2,17 +2,21 @@
 
 from __future__ import annotations
 
+import json
 import sqlite3
 from collections import defaultdict
+from collections.abc import Mapping
 from typing import Any
 
+from solver.measured import Measured, Part
 from solver.stocks import Stock
 from solver.target import Limit, ShareRule
 
+from .charging import SIGMA
 from .errors import NoSuchRow
 from .harmless import harmless
-from .records import Product, Trial
-from .schema import PRODUCT_CELLS, QUANTITY, STOCK_CELLS
+from .records import SEPARATOR, Lesson, Product, Trial
+from .schema import LESSON_CELLS, PRODUCT_CELLS, QUANTITY, STOCK_CELLS
 
 
 def _one(where: str, code: str | None) -> tuple[str, tuple[str, ...]]:
@@ -29,8 +33,19 @@ def stocks(con: sqlite3.Connection, include_retired: bool = False, code: str | N
     mg = dict(con.execute(f"{QUANTITY}{only.replace('stock', 'm.stock')} GROUP BY m.stock", given))
     rows = con.execute(f"SELECT stock, {', '.join(STOCK_CELLS)} FROM stock WHERE retired <= ?{only} "
                        "ORDER BY position, stock", (int(include_retired), *given))
-    return [Stock(code=row[0], **dict(zip(STOCK_CELLS, row[1:], strict=True)), values=values.get(row[0], {}),
+    return [Stock(code=row[0], **dict(zip(STOCK_CELLS, row[1:], strict=True)), **parted(values.get(row[0], {})),
                   on_hand_kg=kilograms(mg.get(row[0]))) for row in rows]
+
+
+def parted(values: Mapping[str, float]) -> dict[str, dict[str, float]]:
+    """The values of a stock as it holds them: those of properties, and how sure values are."""
+    return {"values": {code: value for code, value in values.items() if not code.startswith(SIGMA)},
+            "sigmas": {code.removeprefix(SIGMA): value for code, value in values.items() if code.startswith(SIGMA)}}
+
+
+def joined(stock: Stock) -> dict[str, float]:
+    """The same the other way: every value of a stock by the code it is kept under."""
+    return {**stock.values, **{SIGMA + prop: sigma for prop, sigma in stock.sigmas.items()}}
 
 
 def kilograms(mg: int | None) -> float | None:
@@ -96,6 +111,55 @@ def trials(con: sqlite3.Connection, product: str | None = None) -> list[Trial]:
     rows = con.execute("SELECT trial, product, law, kept_at, kept_by, note FROM trial WHERE 1 = 1"
                        f"{only} ORDER BY kept_at, product, trial", given)
     return [Trial(row[0], row[1], shares[row[1], row[0]], *row[2:]) for row in rows]
+
+
+def measured(con: sqlite3.Connection, product: str | None = None) -> list[Measured]:
+    """Measured blends in the order in which they were recorded."""
+    known: defaultdict[tuple[str, str], dict[str, float]] = defaultdict(dict)
+    for name, stock, prop, value in con.execute("SELECT measured, stock, property, value FROM measured_part_value "
+                                                "ORDER BY property"):
+        known[name, stock][prop] = value
+    parts: defaultdict[str, list[Part]] = defaultdict(list)
+    for name, stock, pct, *values, lot, oil in con.execute(
+            "SELECT measured, stock, share_pct, kv40, kv100, density15, lot, oil FROM measured_part "
+            "ORDER BY measured, position, stock"):
+        parts[name].append(Part(stock, pct / 100.0, *values, lot=lot, oil=oil, values=known.get((name, stock), {})))
+    results: defaultdict[str, dict[str, float]] = defaultdict(dict)
+    for name, prop, value in con.execute("SELECT measured, property, value FROM measured_value "
+                                         "ORDER BY property NOT LIKE 'kv%', length(property), property"):
+        results[name][prop] = value
+    only, given = _one("product", product)
+    rows = con.execute("SELECT measured, product, measured_on, method, note, confirmed FROM measured WHERE 1 = 1"
+                       f"{only} ORDER BY position, measured", given)
+    return [Measured(row[0], row[1], tuple(parts[row[0]]), results[row[0]], *row[2:5], confirmed=bool(row[5]))
+            for row in rows]
+
+
+def lessons(con: sqlite3.Connection, include_withdrawn: bool = False) -> list[Lesson]:
+    """Lessons in the order in which they were taken."""
+    terms: defaultdict[str, dict[float, tuple[float, ...]]] = defaultdict(dict)
+    for version, celsius, first, second in con.execute(
+            "SELECT lesson, celsius, first_term, second_term FROM lesson_term ORDER BY lesson, celsius"):
+        terms[version][celsius] = (first,) if second is None else (first, second)
+    rows = con.execute(f"SELECT lesson, {', '.join(LESSON_CELLS)} FROM lesson ORDER BY position, lesson")
+    found = [_lesson(dict(zip(("version", *LESSON_CELLS), row, strict=True)), terms) for row in rows]
+    return [x for x in found if x.in_use or include_withdrawn]
+
+
+def _lesson(cells: dict[str, Any], terms: dict[str, dict[float, tuple[float, ...]]]) -> Lesson:
+    low, high = (None if cells[x] is None else cells[x] / 100.0 for x in ("low_pct", "high_pct"))
+    evidence = tuple(x for x in cells["evidence"].split(SEPARATOR) if x)
+    rest = {x: cells[x] for x in cells if x not in ("low_pct", "high_pct", "evidence", "provisional")}
+    return Lesson(**rest, terms=terms.get(cells["version"], {}), low=low, high=high, evidence=evidence,
+                  provisional=bool(cells["provisional"]))
+
+
+def next_version(con: sqlite3.Connection) -> str:
+    """The version of the next lesson: one after the highest that any journal entry ever spoke of."""
+    told = con.execute("SELECT changes FROM journal WHERE instr(changes, '\"table\":\"lesson\"') > 0")
+    used = [int(change["key"]["lesson"][1:]) for (changes,) in told for change in json.loads(changes)
+            if change["table"] == "lesson"]
+    return f"L{1 + max(used, default=0)}"
 
 
 def _shown(code: str) -> str:

@@ -5,10 +5,13 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
-from solver.target import Limit, ShareRule
+from solver.target import Effective, Excess, Limit, ShareRule
+from solver.target import Lesson as Taught
 
-Value = str | int | float | None
-Row = dict[str, Value]
+from .schema import Row, Value
+
+SEPARATOR = "; "  # between the names of the blends that stand behind a lesson
+__all__ = ["SEPARATOR", "Change", "Entry", "Lesson", "Product", "Row", "Trial", "Value"]
 
 
 @dataclass(frozen=True)
@@ -95,3 +98,40 @@ class Trial:
     kept_at: str = ""  # UTC, ISO 8601; filled in by the plant when empty
     kept_by: str = ""
     note: str = ""
+
+
+@dataclass(frozen=True)
+class Lesson:
+    """What measured blends taught and somebody took into use: an excess of a pair, or a blending value of a stock."""
+
+    version: str  # L1, L2 …: never used twice in a plant
+    kind: str  # "excess" or "value"
+    law: str
+    first: str  # a stock or an oil; of a blending value the stock
+    second: str = ""  # of a pair
+    terms: Mapping[float, tuple[float, ...]] = field(default_factory=dict)  # °C → (A,), (A, B), or (index,)
+    # Mass fraction, the range for which it holds: of a pair the first's part of the two, else the stock's of the blend.
+    low: float | None = None
+    high: float | None = None
+    evidence: tuple[str, ...] = ()  # names of measured blends
+    leave_one_out: str = ""  # figures of the fit, in words
+    provisional: bool = False  # from fewer than four blends
+    taken_at: str = ""  # UTC, ISO 8601
+    taken_by: str = ""
+    withdrawn_at: str = ""  # empty: in use
+    withdrawn_by: str = ""
+    reason: str = ""  # why it was withdrawn
+
+    @property
+    def in_use(self) -> bool:
+        """Has nobody withdrawn it?"""
+        return not self.withdrawn_at
+
+    @property
+    def taught(self) -> Taught:
+        """As the solver takes it."""
+        if self.kind == "value":
+            shares = 0.0 if self.low is None else self.low, 1.0 if self.high is None else self.high
+            index = {celsius: terms[0] for celsius, terms in self.terms.items()}
+            return Effective(self.first, self.law, index, shares, self.version, self.provisional)
+        return Excess(self.first, self.second, self.law, dict(self.terms), self.version, self.provisional)

@@ -8,6 +8,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+Value = str | int | float | None
+Row = dict[str, Value]
 APPLICATION_ID = 0x424C4E44  # "BLND"
 
 
@@ -21,10 +23,14 @@ class Table:
 
 STOCK_TEXT = ("name", "oil", "kind", "api_group")
 STOCK_NUMBERS = ("unpumpable_kg", "price_per_t", "density15", "kv40", "kv100", "blend_kv40", "blend_kv100")
+STOCK_CHARGES = ("division_kg", "package_kg", "least_charge_kg")
 STOCK_TEST = ("tested_on", "source")
 PRODUCT_CELLS = ("name", "grade", "batch_kg", "law", "max_cost_per_t", "max_stocks", "min_share_pct",
                  "only_listed", "note")
-STOCK_CELLS = (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_TEST)
+STOCK_CELLS = (*STOCK_TEXT, *STOCK_NUMBERS, *STOCK_CHARGES, *STOCK_TEST)
+MEASURED_CELLS = ("product", "measured_on", "method", "note")
+LESSON_CELLS = ("kind", "law", "first", "second", "low_pct", "high_pct", "evidence", "leave_one_out", "provisional",
+                "taken_at", "taken_by", "withdrawn_at", "withdrawn_by", "reason")
 
 TABLES: dict[str, Table] = {
     "stock": Table(("stock",), (*STOCK_CELLS, "position", "retired")),
@@ -37,9 +43,19 @@ TABLES: dict[str, Table] = {
     "share_rule": Table(("product", "of_name", "line"), ("low_pct", "high_pct", "position")),
     "trial": Table(("product", "trial"), ("law", "note", "kept_at", "kept_by")),
     "trial_share": Table(("product", "trial", "stock"), ("share_pct", "position")),
+    "measured": Table(("measured",), (*MEASURED_CELLS, "confirmed", "position")),
+    "measured_part": Table(("measured", "stock"),
+                           ("share_pct", "kv40", "kv100", "density15", "lot", "oil", "position")),
+    "measured_part_value": Table(("measured", "stock", "property"), ("value",)),
+    "measured_value": Table(("measured", "property"), ("value",)),
+    "lesson": Table(("lesson",), (*LESSON_CELLS, "position")),
+    "lesson_term": Table(("lesson", "celsius"), ("first_term", "second_term")),
     # Cells of catalogue columns that mean nothing to this program: kept, so that an export has them again.
     "extra": Table(("table_name", "row_key", "column_name"), ("text",)),
 }
+
+# Columns that came with a later step: an entry written before it does not speak of them, and they were empty then.
+LATER: dict[str, Row] = {"stock": dict.fromkeys(STOCK_CHARGES)}
 
 # Sum of movements since the last marker "quantity unknown" (mg null), in whole milligrams: it is exact.
 QUANTITY = """
@@ -100,4 +116,34 @@ MIGRATIONS: tuple[tuple[str, ...], ...] = ((
     "CREATE INDEX movement_stock ON movement (stock, id)",
     *_append_only("journal"),
     *_append_only("movement"),
-),)
+), (
+    "ALTER TABLE stock ADD COLUMN division_kg REAL",
+    "ALTER TABLE stock ADD COLUMN package_kg REAL",
+    "ALTER TABLE stock ADD COLUMN least_charge_kg REAL",
+    # A measured blend is a record of the laboratory: its product and stocks need not be in the plant any more.
+    """CREATE TABLE measured (
+        measured TEXT NOT NULL PRIMARY KEY, product TEXT NOT NULL, measured_on TEXT NOT NULL, method TEXT NOT NULL,
+        note TEXT NOT NULL, confirmed INTEGER NOT NULL, position INTEGER NOT NULL)""",
+    """CREATE TABLE measured_part (
+        measured TEXT NOT NULL REFERENCES measured (measured), stock TEXT NOT NULL, share_pct REAL NOT NULL,
+        kv40 REAL, kv100 REAL, density15 REAL, lot TEXT NOT NULL, oil TEXT NOT NULL, position INTEGER NOT NULL,
+        PRIMARY KEY (measured, stock))""",
+    # What else was known of the stock at the time: flash, sulphur and the like.
+    """CREATE TABLE measured_part_value (
+        measured TEXT NOT NULL, stock TEXT NOT NULL, property TEXT NOT NULL, value REAL NOT NULL,
+        PRIMARY KEY (measured, stock, property),
+        FOREIGN KEY (measured, stock) REFERENCES measured_part (measured, stock))""",
+    """CREATE TABLE measured_value (
+        measured TEXT NOT NULL REFERENCES measured (measured), property TEXT NOT NULL, value REAL NOT NULL,
+        PRIMARY KEY (measured, property))""",
+    # The excess of a pair, or the blending value of one stock (then `second` is empty). Withdrawn ones stay.
+    """CREATE TABLE lesson (
+        lesson TEXT NOT NULL PRIMARY KEY, kind TEXT NOT NULL, law TEXT NOT NULL, first TEXT NOT NULL,
+        second TEXT NOT NULL, low_pct REAL, high_pct REAL, evidence TEXT NOT NULL, leave_one_out TEXT NOT NULL,
+        provisional INTEGER NOT NULL, taken_at TEXT NOT NULL, taken_by TEXT NOT NULL, withdrawn_at TEXT NOT NULL,
+        withdrawn_by TEXT NOT NULL, reason TEXT NOT NULL, position INTEGER NOT NULL)""",
+    # All in the law's index: of an excess its terms, of a blending value the index of the stock.
+    """CREATE TABLE lesson_term (
+        lesson TEXT NOT NULL REFERENCES lesson (lesson), celsius REAL NOT NULL, first_term REAL NOT NULL,
+        second_term REAL, PRIMARY KEY (lesson, celsius))""",
+))

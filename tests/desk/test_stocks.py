@@ -53,6 +53,13 @@ def plant(tmp_path: Path) -> Iterator[Plant]:
     ("on_hand_kg", "3500 L", 3045.0, "A on hand 40000 → 3045"),
     ("on_hand_kg", "", None, "A on hand 40000 → unknown"),
     ("unpumpable_kg", "1000 lb", 453.59237, "A bottoms unknown → 453.59237"),
+    ("division_kg", "10 kg", 10.0, "A scale step unknown → 10"),
+    ("package_kg", "0.18 t", 180.0, "A package unknown → 180"),
+    ("least_charge_kg", "0", 0.0, "A least charge unknown → 0"),
+    ("sigma_kv40", "1 %", 0.302, "A σ KV at 40 °C unknown → 0.302"),
+    ("sigma_kv100", "0.05 cSt", 0.05, "A σ KV at 100 °C unknown → 0.05"),
+    ("sigma_flash", "9 F", 5.0, "A σ flash point unknown → 5"),
+    ("sigma_sulfur", "0.02 %", 0.02, "A σ sulphur unknown → 0.02"),
     ("name", " tank 3 ", "tank 3", "A name north → tank 3"),
     ("name", "", "", "A name north → empty"),
     ("tested_on", "2026-04-05", "2026-04-05", "A tested on 2026-03-01 → 2026-04-05"),
@@ -89,9 +96,14 @@ def test_what_is_there_already_is_no_change(plant, cell, typed):
     ("tested_on", "1/4/2026", "'1/4/2026' is not a date; write year-month-day, such as 2026-03-01"),
     ("name", "x\x1b[2J", "'x␛[2J' holds a control character: escape (U+001B); type the text again"),
     ("colour", "1", "a stock has no 'colour'; it has name, oil, kind, api_group, on_hand_kg, unpumpable_kg, "
-                    "price_per_t, density15, kv40, kv100, blend_kv40, blend_kv100, flash, pour, noack, sulfur, "
-                    "base_number, acid_number, ash, water, calcium, magnesium, zinc, phosphorus, boron, saturates, "
-                    "tested_on, source and ccs<°C>"),
+                    "price_per_t, density15, kv40, kv100, blend_kv40, blend_kv100, division_kg, package_kg, "
+                    "least_charge_kg, flash, pour, noack, sulfur, base_number, acid_number, ash, water, calcium, "
+                    "magnesium, zinc, phosphorus, boron, saturates, tested_on, source, ccs<°C> and sigma_<property>"),
+    ("division_kg", "-1", "A: scale division -1 kg is not above 0; leave it empty where there is none"),
+    ("package_kg", "0", "A: package 0 kg is not above 0; leave it empty where there is none"),
+    ("least_charge_kg", "-5", "A: least charge -5 kg is below 0"),
+    ("sigma_kv40", "-0.1", "A: standard deviation -0.1 of kv40 is below 0"),
+    ("sigma_pour", "5 %", "A: pour is unknown, so 5 % of it is too; type it in °C"),
 ])
 def test_what_cannot_be_true_is_refused(plant, cell, typed, message):
     with pytest.raises(DeskError) as caught:
@@ -121,6 +133,32 @@ def test_what_is_unlikely_is_a_question(plant, cell, typed, message, suggestion)
     assert plant.revision() == 1
     assert edit_cell(plant, "A", cell, typed, confirmed=True).status == "saved"
     assert stocks.value_of(plant.stock("A"), cell) == float(typed)
+
+
+def test_a_deviation_as_large_as_a_part_of_its_value_is_a_question(plant):
+    assert edit_cell(plant, "A", "sigma_kv40", "20") == Edit(
+        "question", "A: standard deviation 20 of kv40 30.2 is more than 25 % of it; was it meant in %?", "6.04")
+    assert edit_cell(plant, "A", "sigma_kv40", "20", confirmed=True).status == "saved"
+    assert plant.stock("A").sigmas == {"kv40": 20.0}
+
+
+def test_a_scale_step_larger_than_the_package_is_refused(plant):
+    edit_cell(plant, "P", "package_kg", "180")
+    with pytest.raises(DeskError) as caught:
+        edit_cell(plant, "P", "division_kg", "200")
+    assert str(caught.value) == ("P: scale division 200 kg is larger than the package of 180 kg; are the two "
+                                 "swapped?")
+    assert edit_cell(plant, "P", "division_kg", "0.5").status == "saved"
+    assert stocks.text_of(plant.stock("P"), "division_kg") == "0.5"
+
+
+def test_how_sure_a_value_is_has_a_column_where_some_stock_says_it(plant):
+    assert "sigma_flash" not in [c.code for c in stocks.cells_for(plant.stocks())]
+    edit_cell(plant, "A", "sigma_flash", "4.5")
+    (column,) = [c for c in stocks.cells_for(plant.stocks()) if c.code == "sigma_flash"]
+    assert (column.heading, column.unit) == ("σ flash point", "°C")
+    assert stocks.text_of(plant.stock("A"), column) == "4.50"
+    assert edit_cell(plant, "A", "sigma_flash", "").message == "A σ flash point 4.5 → unknown"
 
 
 def test_an_old_doubt_is_not_asked_again(plant):
@@ -251,6 +289,7 @@ def test_a_copy_has_every_cell_but_the_quantity(plant):
     copy = stocks.copy_stock(plant, "A", "A2")
     original = plant.stock("A")
     assert (copy.code, copy.on_hand_kg) == ("A2", None)
+    assert (copy.division_kg, dict(copy.sigmas)) == (original.division_kg, dict(original.sigmas))
     assert (copy.name, copy.oil, copy.kv40, dict(copy.values)) == ("north", "LN", 30.2, dict(original.values))
     assert ("stock", '["A2"]', "shelf") in plant.state()["extra"]
     plant.undo()

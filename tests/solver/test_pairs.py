@@ -12,7 +12,7 @@ from solver.laws import viscosity_gauge
 from solver.pairs import excesses, pair_excess, terms_at
 from solver.recipe import design, evaluate
 from solver.stocks import Stock, StockTable
-from solver.target import LAWS, Excess, Limit, Target
+from solver.target import LAWS, Effective, Excess, Limit, ShareRule, Target
 from tests.benchmarks.plants import case, random_plant
 
 TWO = {40.0: (0.8, 0.3), 100.0: (0.5, -0.2)}
@@ -86,7 +86,7 @@ def a_bent_case(k: int) -> tuple[StockTable, Target]:
     taught = tuple(Excess(a, b, target.law, {40.0: tuple(scale * rng.uniform(-1, 1, 2)),
                                              100.0: tuple(scale * rng.uniform(-1, 1, 2))}, version=f"L{i}")
                    for i, (a, b) in enumerate(pairs))
-    return table, replace(target, excess=taught)
+    return table, replace(target, lessons=taught)
 
 
 @pytest.mark.parametrize("k", range(25))
@@ -100,7 +100,7 @@ def test_a_followed_recipe_meets_everything_and_no_blend_undercuts_its_bound(k: 
     assert again.predicted["kv40"] == pytest.approx(made.predicted["kv40"], rel=1e-9)
     rng = np.random.default_rng(k)
     x = np.array([made.shares.get(code, 0.0) for code in table.codes])
-    g40, g100 = (viscosity_gauge(target.law, table, t, target.excess) for t in (40.0, 100.0))
+    g40, g100 = (viscosity_gauge(target.law, table, t, target.lessons) for t in (40.0, 100.0))
     cheapest = np.inf
     for _ in range(2000):
         y = x + rng.choice([0.01, 0.1, 0.5]) * (rng.dirichlet(np.full(len(x), 0.3)) - x)
@@ -125,10 +125,10 @@ def test_it_is_called_proven_only_where_it_is() -> None:
     made = design(table, target)
     assert made.lessons
     assert made.status == "stopped" and "not proven" in made.reasons[0]
-    assert design(table, replace(target, excess=())).status == "optimal"
+    assert design(table, replace(target, lessons=())).status == "optimal"
     # A lesson of a law that is not in use, or of stocks that are not there, changes nothing.
-    other = tuple(replace(e, law="refutas" if target.law != "refutas" else "wright-mass") for e in target.excess)
-    assert design(table, replace(target, excess=other)).status == "optimal"
+    other = tuple(replace(e, law="refutas" if target.law != "refutas" else "wright-mass") for e in target.lessons)
+    assert design(table, replace(target, lessons=other)).status == "optimal"
 
 
 def test_a_recipe_names_its_lessons_and_the_provisional_ones() -> None:
@@ -136,7 +136,7 @@ def test_a_recipe_names_its_lessons_and_the_provisional_ones() -> None:
               Stock("B", kv40=400.0, kv100=30.0, price_per_t=1000.0, on_hand_kg=1e5)]
     lesson = Excess("A", "B", "refutas", {40.0: (1.0,)}, version="L7", provisional=True)
     plain = Target("t", (Limit("kv40", 95.0, 105.0),))
-    made = design(stocks, replace(plain, excess=(lesson,)))
+    made = design(stocks, replace(plain, lessons=(lesson,)))
     assert made.lessons == ("L7",) and made.provisional == ("L7",)
     assert made.predicted["kv40"] == pytest.approx(95.0, rel=1e-6)
     # The excess thickens the blend, so that less of the dear bright stock is needed.
@@ -147,10 +147,34 @@ def test_ranges_follow_the_tangents_too() -> None:
     stocks = [Stock("A", kv40=30.0, kv100=5.2, price_per_t=800.0, on_hand_kg=1e5),
               Stock("B", kv40=400.0, kv100=30.0, price_per_t=1000.0, on_hand_kg=1e5)]
     lesson = Excess("A", "B", "refutas", {40.0: (1.0,)}, version="L1")
-    target = Target("t", (Limit("kv40", 95.0, 105.0),), excess=(lesson,))
+    target = Target("t", (Limit("kv40", 95.0, 105.0),), lessons=(lesson,))
     low, high = ranges(stocks, target)["B"]
     gauge = viscosity_gauge("refutas", StockTable(stocks), 40.0, (lesson,))
     grid = np.linspace(0.0, 1.0, 20001)
     kv = np.array([gauge.read(np.array([1.0 - b, b])) for b in grid])
     true = grid[(kv >= 95.0) & (kv <= 105.0)]
     assert (low, high) == pytest.approx((true.min(), true.max()), abs=1e-3)
+
+
+@pytest.mark.parametrize("law", LAWS)
+def test_a_stock_blends_with_the_index_that_was_worked_back_for_it(law: str) -> None:
+    stocks = [Stock("A", kv40=30.0, kv100=5.2, density15=870.0, price_per_t=800.0, on_hand_kg=1e5),
+              Stock("V", kv40=900.0, kv100=90.0, density15=880.0, price_per_t=3000.0, on_hand_kg=1e5, kind="vi_improver")]
+    table = StockTable(stocks)
+    plain = viscosity_gauge(law, table, 100.0)
+    own = float(plain.num[1] / plain.den[1])
+    more = 0.5 if law == "refutas" else 0.02
+    taught = Effective("V", law, {40.0: own + 2.0 * more, 100.0: own + more}, (0.02, 0.10), "L3")
+    gauge = viscosity_gauge(law, table, 100.0, (taught,))
+    x = np.array([0.95, 0.05])
+    assert gauge.index_of(np.array([0.0, 1.0])) == pytest.approx(own + more)
+    # Its own part of the blend moves the index by as much as its weight is.
+    weight = float(plain.den[1] * x[1] / (plain.den @ x))
+    assert gauge.index_of(x) - plain.index_of(x) == pytest.approx(more * weight)
+    assert gauge.excess is None  # a straight row still: the recipe stays proven
+    target = Target("t", (Limit("kv100", plain.read(x)),), rules=(ShareRule("V", 0.0, 0.2),), law=law, lessons=(taught,))
+    made = design(stocks, target)
+    assert made.status == "optimal" and made.lessons == ("L3",) and not made.warnings
+    assert made.cost_per_t < design(stocks, replace(target, lessons=())).cost_per_t
+    outside = evaluate(stocks, {"A": 0.85, "V": 0.15}, target)
+    assert "holds from 2.00 to 10.00 %" in outside.warnings[0]

@@ -109,7 +109,7 @@ def test_a_row_that_the_journal_leaves_open(tampered):
                     "UPDATE journal SET hash = fit(id, at, who, what, changes, why, undoes, prev_hash) WHERE id = 3",
                     "DELETE FROM movement WHERE journal = 3",
                     "INSERT INTO stock SELECT 'N', name, oil, kind, api_group, 1, 1, 1, 1, 1, 1, 1, tested_on, source,"
-                    " 9, 0 FROM stock WHERE stock = 'A'")
+                    " 9, 0, 1, 1, 1 FROM stock WHERE stock = 'A'")
     assert said == f"the journal leaves cells of a row open: {PAST}"
 
 

@@ -8,7 +8,8 @@ from blendtui.store.errors import CatalogueError, NoPlant
 from blendtui.store.opening import import_folder, open_plant
 
 COLUMNS = ("stock", "name", "kind", "api_group", "on_hand_kg", "unpumpable_kg", "price_per_t", "density15", "kv40",
-           "kv100", "blend_kv40", "blend_kv100", "flash", "tested_on", "source")
+           "kv100", "blend_kv40", "blend_kv100", "division_kg", "package_kg", "least_charge_kg", "flash", "sigma_kv40",
+           "sigma_flash", "tested_on", "source")
 
 
 def stock(**cells: str) -> str:
@@ -48,6 +49,16 @@ def product(**cells: str) -> str:
     ({"price_per_t": "-1"}, "price_per_t: price -1 is below 0; check the figure"),
     ({"on_hand_kg": "-5"}, "on_hand_kg: quantity on hand -5 is below 0; check the figure"),
     ({"on_hand_kg": "1e12"}, "on_hand_kg: 1e12 is above 1e+09; check the figure, or leave the cell empty"),
+    ({"division_kg": "-10"}, "division_kg: scale division -10 kg is not above 0; leave it empty where there is none"),
+    ({"package_kg": "0"}, "package_kg: package 0 kg is not above 0; leave it empty where there is none"),
+    ({"least_charge_kg": "-1"}, "least_charge_kg: least charge -1 kg is below 0; check the figure"),
+    ({"division_kg": "200", "package_kg": "180"},
+     "division_kg: scale division 200 kg is larger than the package of 180 kg; are the two swapped?"),
+    ({"division_kg": "ten"}, "division_kg: 'ten' is not a number; write a number such as 31.5, or leave the cell "
+                             "empty"),
+    ({"sigma_kv40": "-0.1"}, "sigma_kv40: standard deviation -0.1 of kv40 is below 0; check the figure"),
+    ({"sigma_flash": "high"}, "sigma_flash: 'high' is not a number; write a number such as 31.5, or leave the cell "
+                              "empty"),
     ({"kind": "oil"}, "kind: kind 'oil' is not known; usable are base, vi_improver, additive, "
                       "pour_depressant, rework"),
     ({"api_group": "VI"}, "api_group: group 'VI' is not known; usable are I, II, III, IV, V"),
@@ -262,4 +273,11 @@ def test_lines_are_read_in_their_order_with_guards(folder):
     ("Sulphur", "sulfur"), ("Flash point", "flash"), ("Density15", "density15")])
 def test_a_property_in_another_spelling(faults, heading, right):
     assert faults(stocks=f"stock,kv40,kv100,{heading}\nA,30,5,1\n") == [
+        f"stocks.csv row 1, {heading}: the heading is not spelt as it must be; write {right}"]
+
+
+@pytest.mark.parametrize(("heading", "right"), [("Sigma KV40", "sigma_kv40"), ("σ flash", "sigma_flash"),
+                                                ("Division kg", "division_kg")])
+def test_a_heading_that_is_spelt_otherwise_is_not_passed_over(faults, heading, right):
+    assert faults(stocks=f"stock,kv40,kv100,{heading}\nA,30.2,5.23,1\n") == [
         f"stocks.csv row 1, {heading}: the heading is not spelt as it must be; write {right}"]

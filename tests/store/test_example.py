@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import pytest
 
+from blendtui.desk import lab
 from blendtui.desk.targets import target_of
 from blendtui.store.opening import open_plant
 from solver.doubts import doubts
@@ -51,6 +52,27 @@ def test_products_list_what_they_may_use_and_guard_their_windows(plant):
     assert len(products) >= 8
     assert all(p.only_listed and p.batch_kg for p in products)
     assert all(any(x.guard or x.guard_pct for x in p.limits) for p in products)
+
+
+def test_packaged_stocks_have_whole_drums_and_bulk_ones_a_step(plant):
+    stocks = {s.code: s for s in plant.stocks()}
+    assert all(s.division_kg or s.package_kg for s in stocks.values())
+    assert {s.division_kg for s in stocks.values() if s.kind in ("base", "rework")} == {10.0}
+    assert {s.code for s in stocks.values() if s.package_kg == 180.0} == {"GP18", "VM70"}
+    assert {s.code for s in stocks.values() if s.least_charge_kg} == {"BR32", "RW01"}
+    assert stocks["RW01"].sigmas == {"kv40": 0.88, "kv100": 0.13}
+
+
+def test_measured_blends_show_a_bias_a_sound_product_and_a_question(plant):
+    record = lab.read(plant)
+    checked = lab.checked(record)
+    assert len(record.blends) >= 12
+    assert [b.name for b in record.blends if checked.state(b)] == ["CIRC-100 2602"]
+    assert all(b.measured_on for b in record.blends)
+    report = lab.report(record)
+    assert {product for (product, _), _ in report.alarms} == {"GEAR-220"}
+    assert abs(report.by_product["HYD-46", "kv40"].mean) < 0.3
+    assert plant.lessons() == []
 
 
 def test_each_product_can_be_made_but_for_the_one_that_says_so(plant):

@@ -40,6 +40,7 @@ def same(one: Plant, two: Plant) -> None:
     assert one.stocks() == two.stocks()
     assert one.products() == two.products()
     assert one.trials() == two.trials()
+    assert (one.measured(), one.lessons(True)) == (two.measured(), two.lessons(True))
 
 
 def test_the_example(example):
@@ -54,6 +55,8 @@ def test_the_example_is_as_it_is_written(example, tmp_path):
     for file in ("products.csv", "limits.csv", "shares.csv"):
         assert len((tmp_path / "out" / file).read_text().splitlines()) == len(
             (example / file).read_text().splitlines())
+    for file in ("stocks.csv", "measured.csv"):
+        assert (tmp_path / "out" / file).read_text() == (example / file).read_text()
 
 
 # Plants at random
@@ -75,13 +78,18 @@ def stocks(draw, code: str) -> Stock:
     values = draw(st.dictionaries(st.sampled_from((*stock_codes(), "ccs-25",
      "ccs-30.5")), st.floats(0.0, 1.0),
                                   max_size=4))
+    package = draw(st.none() | number(1.0, 1000.0))
+    sure = draw(st.dictionaries(st.sampled_from(("kv40", "kv100", "density15", "flash", "ccs-30.5")), number(0.0, 9.0),
+                                max_size=3))
     return Stock(
         code, name=draw(WORDS), oil=draw(WORDS), kind=draw(st.sampled_from(KINDS)),
         api_group=draw(st.sampled_from(("", *GROUPS))), unpumpable_kg=draw(st.none() | number(0.0, 1e6)),
         price_per_t=draw(st.none() | number(0.0, 1e6)), density15=draw(st.none() | number(600.0, 1600.0)),
         kv40=kv100 * draw(number(1.5, 30.0)), kv100=kv100, blend_kv40=pair and pair[0], blend_kv100=pair and pair[1],
         values={p: lookup(p).lowest + f * (lookup(p).highest - lookup(p).lowest) for p, f in values.items()},
-        on_hand_kg=draw(st.none() | number(0.0, 1e9)),
+        on_hand_kg=draw(st.none() | number(0.0, 1e9)), package_kg=package, sigmas=sure,
+        division_kg=draw(st.none() | number(0.001, package or 100.0)),
+        least_charge_kg=draw(st.none() | number(0.0, 9.0)),
         tested_on=draw(st.just("") | st.dates().map(lambda d: d.isoformat())),
         source=draw(st.sampled_from(("", *SOURCES))))
 
@@ -211,6 +219,21 @@ def test_an_export_replaces_an_older_export(plant, tmp_path):
     plant.change(edits.drop_lines(plant, "share_rule", edits.lines(plant, "share_rule", "P46")), "rules")
     export_plant(plant, tmp_path / "out")
     assert not (tmp_path / "out" / "shares.csv").exists()
+    same(plant, open_plant(tmp_path / "out"))
+
+
+def test_columns_that_nobody_uses_are_not_written(plant, tmp_path):
+    used = {"division_kg", "package_kg", "sigma_kv40"}
+
+    def columns() -> set[str]:
+        export_plant(plant, tmp_path / "out")
+        return set((tmp_path / "out" / "stocks.csv").read_text().splitlines()[0].split(","))
+
+    assert not columns() & used
+    plant.change([edits.stock_cell(plant.stock("A"), "sigma_kv40", 0.3),
+                  edits.stock_cell(plant.stock("B"), "package_kg", 180.0)], "drums")
+    assert columns() & used == {"package_kg", "sigma_kv40"}
+    assert plant.stock("A").sigmas == {"kv40": 0.3}
     same(plant, open_plant(tmp_path / "out"))
 
 
