@@ -162,8 +162,7 @@ def _law(recipe: Recipe) -> str:
     unsure = f" (provisional: {', '.join(recipe.provisional)})" if recipe.provisional else ""
     text = (f"law {recipe.law}{taught}{unsure}; spread of the laws: KV40 {numbers.fixed(spread.get('kv40'), 1)} %, "
             f"KV100 {numbers.fixed(spread.get('kv100'), 1)} %")
-    widest = max((v for v in spread.values() if v is not None), default=None)
-    words = spread_words(widest)
+    words = spread_words(recipe)
     return wrap(text, "  ") + ("\n" + wrap(f"! {words}", "  ") if words else "")
 
 

@@ -179,7 +179,7 @@ def solve(problem: Polytope, c: Array, watch: Stopwatch, known: float = np.inf) 
 
     `known`: only answers cheaper than this are wanted, so what cannot be part of one may be passed over.
     """
-    if len(c) == 0 or np.any(problem.lo > problem.hi + 1e-12):
+    if len(c) == 0:
         return Solved("infeasible", None, np.inf, np.inf)
     if problem.whole is not None or problem.steps is not None:
         return _solve_whole(problem, c, watch, known)
@@ -198,6 +198,8 @@ def _sum(problem: Polytope) -> tuple[Array | None, Array | None, Array | None, A
 
 
 def _solve_plain(problem: Polytope, c: Array, watch: Stopwatch) -> Solved:
+    if np.any(problem.lo > problem.hi + 1e-12):  # a least share raised above what the tank holds
+        return Solved("infeasible", None, np.inf, np.inf)
     a_eq, b_eq, more, upper = _sum(problem)
     rows, limits = problem.rows, problem.limits
     if more is not None and upper is not None:

@@ -104,11 +104,15 @@ def guard_cost(table: StockTable, target: Target, recipe: Recipe) -> float | Non
     return max(0.0, recipe.cost_per_t - free.cost_per_t)
 
 
-def spread_words(spread_pct: float | None) -> str:
-    """What a spread between the laws means for the reader; empty below 3 %."""
-    if spread_pct is None or spread_pct <= SPREAD_MARKED:
+def spread_words(recipe: Recipe) -> str:
+    """What the spread between the laws means for the reader of a recipe; empty up to 3 %."""
+    widest = max((v for v in recipe.spread_pct.values() if v is not None), default=0.0)
+    fitted = [version for version in recipe.lessons if version not in recipe.provisional]
+    if widest <= SPREAD_MARKED:
         return ""
-    if spread_pct <= SPREAD_DOUBTED:
+    if fitted:
+        return f"the laws differ; this one was fitted to the laboratory's own blends ({', '.join(fitted)})"
+    if widest <= SPREAD_DOUBTED:
         return "the laws differ: confirm in the laboratory"
     return ("the laws differ widely: a laboratory blend is needed before this number can be trusted "
             "(blendtui lab plan, or p on the screen Lab, plans one)")

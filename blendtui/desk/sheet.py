@@ -76,8 +76,7 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
         lines += [line for words in recipe.breaches
                   for line in textwrap.wrap(_ascii(f"! {words}"), WIDTH, subsequent_indent="  ")] + [""]
     lines += [*_charges(recipe, used), "", *_properties(recipe), ""]
-    spread = max((v for v in recipe.spread_pct.values() if v is not None), default=None)
-    warning = spread_words(spread)
+    warning = spread_words(recipe)
     said = [*recipe.reasons, *recipe.warnings, *_taught(recipe), *([f"! {warning}"] if warning else [])]
     lines += [line for words in (*said, *(f"To be tested: {t}" for t in recipe.to_be_tested))
               for line in textwrap.wrap(_ascii(words), WIDTH)]

@@ -174,7 +174,7 @@ def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
     """Cost, misses, law and the slower figures, the most wanted first."""
     told = ["working out the new recipe …"] if state.waiting else []
     widest = max((x for x in recipe.spread_pct.values() if x is not None), default=0.0)
-    if widest > blends.SPREAD_DOUBTED:
+    if widest > blends.SPREAD_DOUBTED and not set(recipe.lessons) - set(recipe.provisional):
         told.append(f"! laws differ {numbers.fixed(widest, 0)} %: laboratory blend needed")
     if recipe.status == "infeasible":
         told.append("the nearest blend misses " + "; ".join(words.misses(recipe)) if recipe.shares
@@ -332,14 +332,11 @@ def _others(recipe: Recipe) -> list[str]:
 
 
 def _spread(recipe: Recipe) -> list[str]:
-    told, worst = [], 0.0
-    for code, value in recipe.spread_pct.items():
-        if value is not None:
-            told.append(f"{words.heading(code)} {numbers.fixed(value, 1)} %")
-            worst = max(worst, value)
+    told = [f"{words.heading(code)} {numbers.fixed(value, 1)} %" for code, value in recipe.spread_pct.items()
+            if value is not None]
     if not told:
         return []
-    warning = blends.spread_words(worst)
+    warning = blends.spread_words(recipe)
     return [f"{'! ' if warning else ''}spread of the laws on these shares: {', '.join(told)}"
             + (f": {warning}" if warning else "")]
 

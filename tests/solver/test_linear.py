@@ -106,3 +106,12 @@ def test_a_trial_answers_and_never_claims_that_time_ran_out() -> None:
         assert trial.status in ("optimal", "infeasible")
         if trial.x is not None:
             assert trial.value >= full.value - 2e-6
+
+
+def test_a_stock_whose_tank_holds_less_than_the_least_share_does_not_pass_for_a_known_answer() -> None:
+    # Of the cheapest there is 20 % and 30 % is the least: raised to that it would cost 0.7 and shut out the third.
+    shares = Polytope(np.zeros((0, 3)), np.zeros(0), np.zeros(3), np.array([0.2, 0.8, 1.0]),
+                      whole=Whole(np.ones(3, dtype=np.bool_), None, np.full(3, 0.3)))
+    solved = solve(shares, np.array([0.0, 1.0, 1.05]), Stopwatch(5.0))
+    assert solved.status == "optimal"
+    assert solved.x == pytest.approx([0.0, 0.7, 0.3])
