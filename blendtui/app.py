@@ -299,6 +299,8 @@ class Console(App[int]):
     def go(self, screen: str, then: Callable[[Any], None] | None = None) -> None:
         """Open a screen, and do `then` with it once it is there."""
         if screen != self.current_mode:
+            if self.said[-1][0] in ("refused", "question"):
+                self.said.append(("note", ""))  # what was refused there is no word on the screen that comes
             self.going, self._then = screen, then
             self.switch_mode(screen)
         elif then:
@@ -317,7 +319,7 @@ class Console(App[int]):
 
     def do_back(self) -> None:
         """Esc where there is nothing to drop."""
-        self.say("Esc leaves nothing here; 1 to 8 open the screens")
+        self.say("nothing to drop here; 1 to 8 open the screens, q leaves")
 
     def do_help(self) -> None:
         """Show every command."""
@@ -329,7 +331,7 @@ class Console(App[int]):
         """Show what was said, in full."""
         from blendtui.screens import overlays
 
-        self.push_screen(overlays.MessagesScreen(list(self.said)))
+        self.push_screen(overlays.MessagesScreen([each for each in self.said if each[1]]))
 
     def do_palette(self) -> None:
         """List the commands, and carry out the chosen one."""

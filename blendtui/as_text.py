@@ -16,15 +16,15 @@ from solver.properties import lookup
 from solver.stocks import Stock
 
 if TYPE_CHECKING:
+    from solver.choices import Range
     from solver.recipe import LimitResult, Recipe
     from solver.walther import Line
 
 STATUS = {"optimal": "least cost", "stopped": "stopped before the proof: best blend known",
           "infeasible": "NO BLEND meets every limit; this is the nearest", "by hand": "as given"}
 
-
-Ranges = Mapping[str, tuple[float, float]]
 WIDTH = 80  # columns of a printer
+CODE = 34  # columns of a stock's code beside its amounts; a longer one has a line of its own
 KINDS = {"vi_improver": "VI impr.", "pour_depressant": "pour dep."}
 
 
@@ -62,7 +62,7 @@ def prediction(recipe: Recipe) -> str:
     return "\n\n".join([_shares(recipe, ()), _predicted(recipe), _law(recipe), NOT_A_CERTIFICATE])
 
 
-def design(product: str, recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None,
+def design(product: str, recipe: Recipe, stocks: Sequence[Stock], ranges: Mapping[str, Range] | None,
            others: Sequence[Recipe], more: Sequence[str] = ()) -> str:
     """Text of `design`; `more`: what else there is to say of it, a sentence each."""
     parts = [wrap(_headline(product, recipe), "  ")]
@@ -101,7 +101,7 @@ def _headline(product: str, recipe: Recipe) -> str:
     return text
 
 
-def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = None) -> str:
+def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Mapping[str, Range] | None = None) -> str:
     density = {s.code: s.density15 for s in stocks}
     charges, shown = recipe.charges_kg, masses_shown(recipe, [s for s in stocks if s.code in (recipe.shares or {})])
     heads = ["stock", "mass %", *(["kg", "L at 15 °C"] if charges is not None else [])]
@@ -111,18 +111,30 @@ def _shares(recipe: Recipe, stocks: Sequence[Stock], ranges: Ranges | None = Non
         codes += [code for code in ranges if code not in codes]
     rows = []
     for code in codes:
-        row = [code, numbers.pct((recipe.shares or {}).get(code, 0.0))]
+        row = [code if len(code) <= CODE else "", numbers.pct((recipe.shares or {}).get(code, 0.0))]
         if charges is not None:
             mass, rho = charges.get(code), density.get(code)
             volume = None if mass is None or rho is None else 1000.0 * mass / rho
             row += [shown.get(code, numbers.UNKNOWN), numbers.litres(volume)]
         if ranges is not None:
-            row += [numbers.pct(v) for v in ranges.get(code, (None, None))]
+            row += _range(ranges.get(code))
         rows.append(row)
-    text = table(heads, rows)
+    head, rule, *lines = table(heads, rows).split("\n")
+    text = "\n".join([head, rule, *(line if len(code) <= CODE else f"{code}\n{line}"
+                                   for code, line in zip(codes, lines, strict=True))])
     if ranges is not None:
         text += "\nleast, most: over all blends that meet the target; whole-number rules left out"
+        if not all(each.narrowed for each in ranges.values()):
+            text += "\n? time ran out: the true range may be smaller"
     return text
+
+
+def _range(found: Range | None) -> list[str]:
+    """Least and most, marked where time ran out before the range was narrowed."""
+    if found is None:
+        return [numbers.pct(None), numbers.pct(None)]
+    mark = "" if found.narrowed else "?"
+    return [numbers.pct(found.low) + mark, numbers.pct(found.high) + mark]
 
 
 def _predicted(recipe: Recipe) -> str:

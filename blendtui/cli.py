@@ -24,6 +24,7 @@ HEADLESS = """blendtui opens its console on a terminal, and there is none here. 
   blendtui design HYD-46 --json --ranges --blends 4
   blendtui viscosity --kv40 46 --kv100 6.8 --at 0 --at 60
 Without --plant PATH these use the example plant. blendtui --help lists every command."""
+LONGEST = 1000  # characters of one message: what was typed may be a file
 
 
 class _Parser(argparse.ArgumentParser):
@@ -43,7 +44,7 @@ def main(argv: Sequence[str] | None = None) -> int:
         return code
     except CatalogueError as error:
         every = getattr(options, "every_fault", False)
-        return _refuse("\n".join(map(str, error.faults)) if every else str(error))
+        return _refuse(*(map(str, error.faults) if every else [str(error)]))
     except (BadInput, SolverError, PlantError, DeskError) as error:
         return _refuse(str(error))
     except KeyboardInterrupt:
@@ -71,11 +72,11 @@ def _steady_streams() -> None:
             stream.reconfigure(errors="replace")
 
 
-def _refuse(text: str) -> int:
-    # A name in a catalogue may hold anything; a message is one line whatever it holds.
+def _refuse(*messages: str) -> int:
+    # A name in a catalogue or a typed text may hold anything; a message is one line whatever it holds.
     from blendtui.store.harmless import harmless
 
-    print("\n".join(harmless(line) for line in text.split("\n")), file=sys.stderr)
+    print("\n".join(harmless(message, LONGEST) for message in messages), file=sys.stderr)
     return BAD_INPUT
 
 

@@ -26,6 +26,7 @@ class Command:
     shown: str = ""  # the key as a person reads it, where it is not the first of `keys`
     changes: bool = False  # waits until an edit that is under way has been saved
     listed: bool = True  # has a place in the key line
+    late: bool = False  # only where the others have left room there
 
     @property
     def key(self) -> str:
@@ -34,8 +35,8 @@ class Command:
 
 
 def _on(screen: str, keys: str, action: str, label: str, help: str, *, shown: str = "", changes: bool = True,
-        listed: bool = True) -> Command:
-    return Command(tuple(keys.split()), action, label, screen, help, shown, changes, listed)
+        listed: bool = True, late: bool = False) -> Command:
+    return Command(tuple(keys.split()), action, label, screen, help, shown, changes, listed, late)
 
 
 COMMANDS: tuple[Command, ...] = (
@@ -81,11 +82,11 @@ COMMANDS: tuple[Command, ...] = (
     _on(RECIPE, "m", "batch", "batch", "Type the size of the batch for this recipe."),
     _on(RECIPE, "L", "law", "law", "Go to the next blending law for this recipe."),
     _on(RECIPE, "a", "all_laws", "more laws", "Type the laws under which every limit must hold at once, or all.",
-        listed=False),
+        late=True),
     _on(RECIPE, "i", "whole", "whole steps", "Charge in whole scale divisions, drums and IBCs, or in any mass again.",
-        listed=False),
+        late=True),
     _on(RECIPE, "s", "sure", "how sure", "Type the chance, in %, at which each limit is to be met on the first batch; "
-        "empty: none.", listed=False),
+        "empty: none.", late=True),
     _on(RECIPE, "w", "write", "write", "Write the recipe as a text sheet for the floor, and say where."),
     _on(RECIPE, "tab", "pane", "limits", "Go from the shares to the limits and remarks and back.",
         shown="Tab", changes=False),
@@ -98,10 +99,10 @@ COMMANDS: tuple[Command, ...] = (
     _on(TRIALS, "d", "drop", "drop", "Drop the trial under the cursor; u brings it back."),
 
     # why
-    _on(WHY, "t", "take_changes", "take", "Take the changes of the nearest blend as a what-if, and go to its recipe; "
-        "u takes them back, and the product itself stays as it is."),
-    _on(WHY, "o", "order", "order", "Type which properties may give, the first one first and most (vi,kv40); what is "
-        "not named stays firm."),
+    _on(WHY, "t", "take_changes", "as what-if", "Take the changes of the nearest blend as a what-if, and go to its "
+        "recipe; u takes them back, and the product itself stays as it is."),
+    _on(WHY, "o", "order", "may give", "Type which properties may give, the first one first and most (VI, KV40); what "
+        "is not named stays firm."),
 
     # choices
     _on(CHOICES, "n", "next_aim", "aims", "Mark the next aim.", shown="n p", changes=False),
@@ -110,16 +111,18 @@ COMMANDS: tuple[Command, ...] = (
         "screen Recipe, and u takes them back."),
     _on(CHOICES, "c", "within", "cost cap", "Let the aims cost at most 1, 2 or 5 % more than the least cost, or "
         "whatever the product allows.", changes=False),
-    _on(CHOICES, "o", "other_stock", "stock", "Let most-of and least-of speak of the next stock.", changes=False),
-    _on(CHOICES, "k", "other_trial", "trial", "Let closest keep to the next trial of this product.", changes=False),
+    _on(CHOICES, "o", "other_stock", "other stock", "Let most-of and least-of speak of the next stock.",
+        changes=False),
+    _on(CHOICES, "k", "other_trial", "other trial", "Let closest-to be of the next trial of this product.",
+        changes=False),
     _on(CHOICES, "s", "sweep", "sweep", "Draw the least cost against a limit or a price that is asked for (vi low, "
         "price N150); while it draws, stop it.", changes=False),
 
     # chance
     _on(CHANCE, "c", "next_chance", "90/95/99 %", "Ask for the recipe whose every limit is met with a chance of 90, "
         "then 95, then 99 %, then for the least-cost one again."),
-    _on(CHANCE, "s", "sure", "how sure", "Type the chance, in %, at which each limit is to be met on the first batch; "
-        "empty: none."),
+    _on(CHANCE, "s", "sure", "any chance", "Type the chance, in %, at which each limit is to be met on the first "
+        "batch; empty: none."),
     _on(CHANCE, "t", "take", "take", "Take the blend that is shown: its shares become yours on the screen Recipe, and "
         "u takes them back."),
 
@@ -178,8 +181,9 @@ def find(screen: str, key: str, character: str | None) -> Command | None:
 
 
 def key_line(screen: str) -> list[tuple[str, str]]:
-    """Keys and labels for the key line, the help key last."""
-    return [(c.key, c.label) for c in of(screen) if c.listed]
+    """Keys and labels for the key line, those that may be left out late, the help key last."""
+    *listed, helping = sorted((c for c in of(screen) if c.listed), key=lambda c: (c.action == "help", c.late))
+    return [(c.key, c.label) for c in (*listed, helping)]
 
 
 def matching(typed: str, screen: str) -> list[Command]:

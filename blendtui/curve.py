@@ -32,14 +32,23 @@ def axis(sweep: Sweep) -> str:
         return f"the price of {harmless(sweep.which, 20)}, per t"
     from solver.properties import lookup
 
-    return f"{lookup(sweep.of).label}, at {'least' if sweep.which == 'low' else 'most'}"
+    return f"{lookup(sweep.of).label}, at {'least' if sweep.which == 'low' else 'most'}, its guard in it"
 
 
 def shown(sweep: Sweep, value: float) -> str:
     """A value of what is swept, as a number."""
     if sweep.of == "price":
         return numbers.cost(value)
-    return f"{value:.1f}" if sweep.of == "vi" else numbers.value(sweep.of, value)
+    from solver.properties import lookup
+    from solver.sweeps import POINTS
+
+    if numbers.is_kv(sweep.of) or sweep.of == "cost_per_t":
+        return numbers.value(sweep.of, value)
+    # A VI or a flash point is whole; but points of a narrow span would look alike without their tenths.
+    digits = lookup(sweep.of).digits
+    close = (sweep.high - sweep.low) / POINTS < 10.0 ** -digits
+    text = numbers.fixed(value, digits + close)
+    return text.removesuffix(".0") if not digits else text
 
 
 def draw(swept: Swept, width: int, height: int) -> list[str]:
@@ -103,7 +112,7 @@ def _under(swept: Swept, columns: int) -> str:
 
 def table(swept: Swept) -> list[str]:
     """The numbers: value, least cost, and the shares where the stocks change."""
-    made = [f"{'at':>10} {'cost, /t':>10}  mass %, where the stocks change"]
+    made = [f"{_at(swept.sweep):>10} {'cost, /t':>10}  mass %, where the stocks change"]
     before: frozenset[str] | None = None
     for point in swept.points:
         text = f"{shown(swept.sweep, point.at):>10} "
@@ -117,6 +126,14 @@ def table(swept: Swept) -> list[str]:
         made.append(f"{text}{numbers.cost(point.cost_per_t):>10}{shares}")
         before = used
     return made
+
+
+def _at(sweep: Sweep) -> str:
+    if sweep.of in ("price", "vi"):
+        return "price, /t" if sweep.of == "price" else "VI"
+    from solver.properties import lookup
+
+    return f"at, {lookup(sweep.of).unit}".removesuffix(", ")
 
 
 def _shares(shares: Mapping[str, float]) -> str:

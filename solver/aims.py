@@ -147,26 +147,25 @@ class _Aims:
 
     def _cheapest_inside(self, x: Array, width: float) -> Array:
         """The cheapest blend that is as far inside, but for a hair."""
-        moved = moved_in(sides(self.model)[0], width - 0.5 * CLOSE)
+        moved = moved_in(sides(self.model)[0], max(0.0, width - 0.5 * CLOSE))  # but never outside a limit
         inner = build(self.table, replace(self.target, moved={**self.target.moved, **moved}))
         found = least_cost(inner, self.watch)
-        return x if found.x is None or margin(self.model, found.x) < width - CLOSE else found.x
+        worse = found.x is None or margin(self.model, found.x) < width - CLOSE or bool(self.model.missed(found.x))
+        return x if worse or found.x is None else found.x
 
     def _fewest(self) -> _Found:
         counted = self.model.table.counted
         assert self.best.x is not None
-        best = self.best if self.model is self.asked else least_cost(self.model, self.watch)
-        if best.x is None:
-            best = self.best
-        proven = False
-        while best.x is not None:
-            count = int(np.sum(counted & (best.x > USED)))
+        capped = self.best if self.model is self.asked else least_cost(self.model, self.watch)
+        best = self.best if capped.x is None else capped
+        assert best.x is not None
+        x, count = best.x, int(np.sum(counted & (best.x > USED)))
+        while True:
             found = self._of_fewer(count)
-            if found.x is None:
-                proven = count == 0 or found.status == "infeasible"
-                return _Found(best.x, float(count), proven)
-            best = found
-        raise AssertionError
+            fewer = count if found.x is None else int(np.sum(counted & (found.x > USED)))
+            if found.x is None or fewer >= count:
+                return _Found(x, float(count), count == 0 or found.status == "infeasible")
+            x, count = found.x, fewer
 
     def _of_fewer(self, count: int) -> Outcome:
         """The cheapest blend of fewer base stocks and rework than `count`; of pairs and single ones all are judged."""
@@ -235,7 +234,7 @@ class _Aims:
         return float(1.0 / np.max(x / self.model.table.available))
 
     def _closest(self) -> _Found:
-        if not self.trial:
+        if not self.trial or sum(self.trial.values()) <= 0.0:
             raise _NoAim("there is no trial to keep to")
         table, n = self.model.table, len(self.model.table)
         total = sum(self.trial.values())

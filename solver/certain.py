@@ -34,7 +34,7 @@ from .rows import Model, View, build, without_guards
 from .stocks import Stock, StockTable
 from .tails import margin
 from .target import Target
-from .uncertainty import Carried, Errors, errors_of
+from .uncertainty import Carried, Errors, errors_of, unweighable
 from .viscosity_index import LOWEST_KV100, kv40_at
 
 LOWEST, HIGHEST = 0.5, 0.999  # chances that can be asked
@@ -101,6 +101,8 @@ def _made(climb: _Climb, x: Array, chance: float, plain: float, recipe: Recipe,
           highest: float | None = None) -> Certain:
     carried = climb.errors.at(x)
     needs = climb.model.requirements
+    words = unweighable(climb.model.table, climb.model.target, x)
+    recipe = replace(recipe, reasons=(*recipe.reasons, words)) if words else recipe
     return Certain(recipe, chance, highest is None, closed_chances(carried, needs), together(carried, needs), highest,
                    plain)
 

@@ -25,7 +25,7 @@ from .rows import as_table
 from .sigmas import sigma_of, source_of
 from .stocks import Stock, StockTable
 from .target import Target
-from .uncertainty import Carried, base_values, errors_of
+from .uncertainty import Carried, base_values, errors_of, unweighable
 
 BLENDS = 100_000
 SEED = 1
@@ -238,6 +238,7 @@ def _notes(of: Subject) -> tuple[str, ...]:
     if partly:
         notes.append(f"{', '.join(partly)}: speaks of the stocks whose value is known")
     divided = [s.code for s in of.table.stocks if s.division_kg]
+    notes += filter(None, [unweighable(of.table, of.target, of.x)])
     if divided and of.target.batch_kg is None:
         notes.append("no batch size: weighing is taken as 0.5 % of each charge")
     return tuple(notes)

@@ -15,10 +15,10 @@ from .errors import TargetError
 from .properties import Array
 from .requirements import Requirement
 from .sigmas import WEIGHING
-from .uncertainty import Carried, Values, base_values, divisions, read_gauge
+from .uncertainty import KVS, Carried, Errors, Values, base_values, divisions, read_gauge
 from .viscosity_index import indices
 
-CHUNK = 10_000  # blends at a time: what they need stays in the processor's cache
+CHUNK, VALUES = 10_000, 20_000  # blends at a time, and values of stocks: what they need stays in the processor's cache
 MOST = 5_000_000
 
 
@@ -32,8 +32,9 @@ def results(carried: Carried, blends: int, seed: int) -> Iterable[dict[str, Arra
         raise TargetError(f"{blends} blends cannot be drawn; give 1 to {MOST}", where="blends")
     rng = np.random.default_rng(seed)
     taught = _taught(carried)
-    for start in range(0, blends, CHUNK):
-        yield _chunk(carried, min(CHUNK, blends - start), rng, taught)
+    chunk = min(CHUNK, max(1, VALUES // len(carried.errors.table)))
+    for start in range(0, blends, chunk):
+        yield _chunk(carried, min(chunk, blends - start), rng, taught)
 
 
 def _taught(carried: Carried) -> dict[str, tuple[Array, float]]:
@@ -75,13 +76,32 @@ def _stocks(carried: Carried, k: int, rng: np.random.Generator) -> Values:
     """k drawings of every stock's values, one after another, as one long table of k·n stocks."""
     errors = carried.errors
     n = len(errors.table)
-    drawn = {code: np.tile(values, (k, 1)) for code, values in base_values(errors.table, errors.codes).items()}
-    for source in errors.sources:
-        shift = rng.standard_normal((k, n))
-        for code, sigma in source.shifts.items():
-            drawn[code] += shift * sigma
-    flat = {code: values.ravel() for code, values in drawn.items()}
+    drawn = base_values(errors.table, errors.codes)
+    for shifts in _shifts(errors):
+        by = rng.standard_normal((k, n))
+        for code, sigma in shifts.items():
+            drawn[code] = drawn[code] + by * sigma
+    flat = {code: np.broadcast_to(values, (k, n)).ravel() for code, values in drawn.items()}
     return Values(np.column_stack([flat["kv40"], flat["kv100"]]), flat["density15"], flat)
+
+
+def _shifts(errors: Errors) -> list[Mapping[str, Array]]:
+    """What one standard normal number a stock does to its values, one entry a number, of the sources that matter.
+
+    Both viscosities are shifted by two tests and the lot, all normal: two numbers of the same covariance do.
+    """
+    used = {effect.source for effects in errors.effects.values() for effect in effects}
+    told = [errors.sources[k].shifts for k in sorted(used)]
+    viscous = [shifts for shifts in told if set(shifts) <= set(KVS)]
+    others = [shifts for shifts in told if not set(shifts) <= set(KVS)]
+    if not viscous:
+        return others
+    none = np.zeros(len(errors.table))
+    at40, at100 = (np.array([shifts.get(code, none) for shifts in viscous]) for code in KVS)
+    sigma = np.sqrt((at40 ** 2).sum(axis=0))
+    along = np.divide((at40 * at100).sum(axis=0), sigma, out=np.zeros(len(sigma)), where=sigma > 0.0)
+    rest = np.sqrt(np.maximum(0.0, (at100 ** 2).sum(axis=0) - along ** 2))
+    return [{"kv40": sigma, "kv100": along}, {"kv100": rest}, *others]
 
 
 def _charges(carried: Carried, k: int, rng: np.random.Generator) -> Array:

@@ -98,6 +98,7 @@ def _least_costs(model: Model, fixed: Array, rest: float, first: Which, second: 
 def _parts(rows: Array, fixed: Array, rest: float, first: Which, second: Which, low: Array,
            high: Array) -> tuple[Array, Array]:
     """The least and most λ of each pair for which every row is met: λ p + (1 − λ) q ≤ 0."""
+    rows = rows[np.any(rows != 0.0, axis=1)] if len(rows) else rows  # a ceiling on equal prices binds nothing
     if not len(rows):
         return low, high
     scaled = rows / np.abs(rows).max(axis=1, keepdims=True)

@@ -150,7 +150,9 @@ def _by_order(table: StockTable, model: Model, order: tuple[str, ...], watch: St
     enough = next((k for k in range(1, len(order) + 1) if _possible(table, target, _opened(model, order[:k]), watch)),
                   None)
     if enough is None:
-        words = (f"even with no limit on {_and(order)} there is no blend: what stays firm cannot hold together")
+        words = (f"time ran out before it was known whether a blend exists with no limit on {_and(order)}"
+                 if watch.over else
+                 f"even with no limit on {_and(order)} there is no blend: what stays firm cannot hold together")
         return Giving(empty(model, "infeasible", (words,)), reasons=(words,), order=order)
     changes: list[Change] = []
     for k in range(enough - 1, -1, -1):

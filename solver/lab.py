@@ -20,6 +20,8 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
+from itertools import accumulate
+from typing import Any
 
 import numpy as np
 
@@ -49,7 +51,7 @@ class Blends:
     middle_kv: float  # KV [mm²/s] of half and half by the law: where sizes of an excess are stated
     names: tuple[str, ...] = ()  # of the blends, in the same order; empty: without names
 
-    def where(self, keep: Array) -> Blends:
+    def where(self, keep: np.ndarray[Any, np.dtype[Any]]) -> Blends:
         """The blends at these positions."""
         return Blends(self.law, self.f[keep], self.g[keep], self.kv[keep], self.ideal[keep], self.middle_kv)
 
@@ -64,12 +66,16 @@ class Blends:
     def compositions(self) -> list[int]:
         """A number for each blend, the same for blends of one composition."""
         seen: list[tuple[float, float]] = []
+        cells: dict[tuple[int, int], list[int]] = {}  # a square of SAME by SAME → the compositions first seen in it
         numbers = []
-        for f, g in zip(self.f, self.g, strict=True):
-            near = (i for i, (a, b) in enumerate(seen) if abs(a - f) <= SAME and abs(b - g) <= SAME)
-            number = next(near, len(seen))
+        for f, g in zip(self.f.tolist(), self.g.tolist(), strict=True):
+            at = int(f // SAME), int(g // SAME)
+            around = (i for a in (-1, 0, 1) for b in (-1, 0, 1) for i in cells.get((at[0] + a, at[1] + b), ()))
+            number = min((i for i in around if abs(seen[i][0] - f) <= SAME and abs(seen[i][1] - g) <= SAME),
+                         default=len(seen))
             if number == len(seen):
-                seen.append((float(f), float(g)))
+                seen.append((f, g))
+                cells.setdefault(at, []).append(number)
             numbers.append(number)
         return numbers
 
@@ -153,38 +159,67 @@ def _leave_one_out(blends: Blends, groups: list[int]) -> dict[str, float]:
     number = np.array(groups)
     errors = {}
     for count, name in enumerate(FORMS[:len(set(groups))]):
-        left_out = [blends.where(number == one).error_pct(shrunk(blends.where(number != one), count)[0])
-                    for one in sorted(set(groups))]
-        errors[name] = float(np.concatenate(left_out).mean())
+        # Sums over every composition but one, from those before it and those behind it: nothing is subtracted.
+        each = [_zero_sums(count)] * (number.max() + 1)
+        order = np.argsort(number, kind="stable")
+        for one, rows in enumerate(np.split(order, np.flatnonzero(np.diff(number[order])) + 1)):
+            each[one] = _sums(blends.where(rows), count)
+        before = list(accumulate(each, _added, initial=_zero_sums(count)))
+        behind = list(accumulate(each[::-1], _added, initial=_zero_sums(count)))[::-1]
+        terms = np.array([_from_sums(_added(before[one], behind[one + 1]), _unit(blends, count))[0]
+                          for one in range(len(each))]).reshape(len(each), count)
+        excess = pair_excess(blends.f, blends.g, tuple(terms[number].T)) if count else 0.0
+        errors[name] = float(np.mean(100.0 * np.abs(_kv(blends.law, blends.ideal + excess) / blends.kv - 1.0)))
     return errors
 
 
 def shrunk(blends: Blends, count: int) -> tuple[tuple[float, ...], float]:
     """The first `count` terms, shrunk, and how far the data decide them (see the module's docstring)."""
-    if count == 0:
-        return (), 0.0
+    return _from_sums(_sums(blends, count), _unit(blends, count))
+
+
+Sums = tuple[Array, Array, float]  # X'X, X'y and y'y of the linear model in relative viscosity
+
+
+def _zero_sums(count: int) -> Sums:
+    return np.zeros((count, count)), np.zeros(count), 0.0
+
+
+def _added(a: Sums, b: Sums) -> Sums:
+    return a[0] + b[0], a[1] + b[1], a[2] + b[2]
+
+
+def _sums(blends: Blends, count: int) -> Sums:
     index, _ = index_of_law(blends.law)
     slopes = slope(blends.law, blends.kv)
     y = (np.asarray(index(blends.kv)) - blends.ideal) / slopes
+    if not count:
+        return np.zeros((0, 0)), np.zeros(0), float(y @ y)
     basis = np.column_stack([pair_excess(blends.f, blends.g, term) for term in ((1.0,), (0.0, 1.0))[:count]])
     x = basis / slopes[:, None]
+    return x.T @ x, x.T @ y, float(y @ y)
+
+
+def _unit(blends: Blends, count: int) -> Array:
+    """The size of each term for an excess of the whole viscosity at half and half."""
     # E of (A,) at half and half is A/4, so a relative size τ there is A = 4 τ d.
-    unit = 4.0 * float(slope(blends.law, np.array([blends.middle_kv]))[0]) * np.array([1.0, SECOND])[:count]
-    squares, cross = x.T @ x, x.T @ y
-    estimates, evidence, carried = [], [], []
-    for tau in TAUS:
-        # y ~ N(0, NOISE²·I + X P X'), worked in the few terms and not in the many blends.
-        prior = (tau * unit) ** 2
-        precision = squares + NOISE**2 * np.diag(1.0 / prior)
-        estimate = np.linalg.solve(precision, cross)
-        spread = float(np.linalg.slogdet(np.eye(count) + prior[:, None] * squares / NOISE**2)[1])
-        evidence.append(-0.5 * (float(y @ y) - float(cross @ estimate)) / NOISE**2 - 0.5 * spread - np.log(tau))
-        estimates.append(estimate)
-        carried.append(float(np.trace(np.linalg.solve(precision, squares))) / count)
-    weight = np.exp(np.array(evidence) - max(evidence))
+    return 4.0 * float(slope(blends.law, np.array([blends.middle_kv]))[0]) * np.array([1.0, SECOND])[:count]
+
+
+def _from_sums(sums: Sums, unit: Array) -> tuple[tuple[float, ...], float]:
+    (squares, cross, own), count = sums, len(unit)
+    if count == 0:
+        return (), 0.0
+    # y ~ N(0, NOISE²·I + X P X'), worked in the few terms and not in the many blends; one row a τ.
+    prior = (TAUS[:, None] * unit) ** 2
+    precision = squares + NOISE**2 * np.eye(count) / prior[:, None, :]
+    estimates = np.linalg.solve(precision, np.broadcast_to(cross[:, None], (len(TAUS), count, 1)))[..., 0]
+    spread = np.linalg.slogdet(np.eye(count) + prior[:, :, None] * squares / NOISE**2)[1]
+    evidence = -0.5 * (own - estimates @ cross) / NOISE**2 - 0.5 * spread - np.log(TAUS)
+    carried = np.trace(np.linalg.solve(precision, np.broadcast_to(squares, precision.shape)), axis1=1, axis2=2) / count
+    weight = np.exp(evidence - evidence.max())
     weight /= weight.sum()
-    terms = weight @ np.array(estimates)
-    return tuple(float(t) for t in terms), float(weight @ np.array(carried))
+    return tuple(float(t) for t in weight @ estimates), float(weight @ carried)
 
 
 def slope(law: str, kv: Array) -> Array:

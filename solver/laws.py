@@ -68,20 +68,20 @@ def viscosity_gauge(law: str, table: StockTable, celsius: float, lessons: Iterab
     """
     index, value = index_of_law(law)
     known = knows_viscosity(law, table)
-    a, b = table.lines
     omega = np.where(known, np.where(known, weights(table, basis_of(law)), 1.0), 0.0)
     if law == "refutas":
-        given = {40.0: table.kv[:, 0], 100.0: table.kv[:, 1]}.get(celsius)
-        at = np.where(known, kv_of(a - b * log_t(celsius)) if given is None else given, 1.0)
+        at = np.where(known, _kv_at(table, celsius), 1.0)
         if np.any(at[known] < 0.21):
             thin = table.codes[int(np.flatnonzero(known & (at < 0.21))[0])]
             raise RangeError(f"{thin} is thinner than 0.21 mm²/s at {celsius:g} °C, "
                              "where the D341 line ends; choose a lower temperature")
         num, den = np.where(known, vbn(at), 0.0), omega
     elif law.startswith("walther"):
+        a, b = table.lines
         num, den = omega * (a - b * log_t(celsius)), omega
     else:
         # Wright: each line as log T = p + q W with p = a/b, q = −1/b; then W_B = Σ ω(log T − p) / Σ ω q.
+        a, b = table.lines
         num, den = omega * (log_t(celsius) - a / b), omega * (-1.0 / b)
     lessons = tuple(lessons)
     for i, j in effective(table, lessons, law, celsius).items():
@@ -89,10 +89,18 @@ def viscosity_gauge(law: str, table: StockTable, celsius: float, lessons: Iterab
     return Gauge(num, den, index, value, excess=excesses(table, lessons, law, celsius, omega) if lessons else None)
 
 
+def _kv_at(table: StockTable, celsius: float) -> Array:
+    """KV [mm²/s] of each stock at a temperature [°C], shape (n,): as given, else by its D341 line."""
+    if celsius in (40.0, 100.0):
+        return table.kv[:, 0 if celsius == 40.0 else 1]
+    a, b = table.lines
+    return np.asarray(kv_of(a - b * log_t(celsius)))
+
+
 def knows_viscosity(law: str, table: StockTable) -> np.ndarray[Any, np.dtype[np.bool_]]:
     """Which stocks, shape (n,), have what the law needs: both KVs, and a density under a volume law."""
-    needed = np.column_stack([table.kv, table.density]) if basis_of(law) == "volume" else table.kv
-    return np.asarray(np.isfinite(needed).all(axis=1), dtype=np.bool_)
+    known = np.isfinite(table.kv[:, 0]) & np.isfinite(table.kv[:, 1])
+    return known & np.isfinite(table.density) if basis_of(law) == "volume" else known
 
 
 def predict(law: str, table: StockTable, shares: Array, celsius: Sequence[float] = (40.0, 100.0)) -> Array:

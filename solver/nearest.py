@@ -235,12 +235,12 @@ def _words(model: Model, limits: list[Elastic], x: Array, watch: Stopwatch) -> l
         if least_cost(relaxed, watch).x is not None:
             return ["only the whole-number rules (most stocks, least share) stand in the way: "
                     "without them a blend exists"]
-    found = []
+    found: dict[tuple[str, float], tuple[float, str]] = {}  # of several laws the worst
     for each in limits:
         value = each.value(x)
         for sign, limit, _ in each.sides:
             miss = sign * (value - limit)
-            if miss > 1e-6 * max(1.0, abs(value)):
-                found.append(f"{each.name} {value:.4g} is {miss:.3g} {'above' if sign > 0.0 else 'below'} the "
-                             f"{limit:.4g} that is held")
-    return [f"no blend meets every limit; the nearest misses: {'; '.join(found)}"]
+            if miss > max(1e-6 * max(1.0, abs(value)), found.get((each.code, sign), (0.0, ""))[0]):
+                found[each.code, sign] = (miss, f"{each.name} {value:.4g} is {miss:.3g} "
+                                          f"{'above' if sign > 0.0 else 'below'} the {limit:.4g} that is held")
+    return [f"no blend meets every limit; the nearest misses: {'; '.join(words for _, words in found.values())}"]

@@ -142,21 +142,32 @@ def extreme(model: Model, code: str, sign: float, watch: Stopwatch) -> tuple[flo
     """The highest (sign 1) or lowest (sign −1) value of a property over a model's blends, and such a blend.
 
     The model's own rows, whole-number rules and VI limits hold; None where no blend meets them, or where time ran out
-    before one was found. Under several laws a blend has the value of that law which is worst for it; the best blend
-    of each law is looked at.
+    before one was found. Under several laws a blend has the value of that law which is worst for it: of a VI the best
+    there is, of a KV that of the best blends of each law, which others may pass by a little.
     """
     if model.short or len(model.table) == 0 or any(need.empty for need in model.requirements):
         return None
     if code == COST:
         return _linear(model, -sign * model.table.price, watch, model.table.price)
     best: tuple[float, Array] | None = None
+    far = np.inf  # no blend is beyond what it can have under any one law
     for number in range(len(model.exact) if code == "vi" or lookup(code).basis == "law" else 1):
         found = (_vi if code == "vi" else _ratio)(_seen_by(model, number), code, sign, watch)
-        values = [] if found is None else [view.read(code, found[1]) for view in model.exact]
-        worst = min((sign * value for value in values if value is not None), default=None)
-        if found is not None and worst is not None and (best is None or worst > sign * best[0]):
-            best = (sign * worst, found[1])
-    return best
+        worst = None if found is None else _worst(model, code, found[1], sign)
+        if found is None or worst is None:
+            continue
+        far = min(far, sign * found[0])
+        if best is None or sign * (worst - best[0]) > 0.0:
+            best = (worst, found[1])
+    if best is None or code != "vi" or len(model.exact) == 1:
+        return best
+    return _halved(_without_vi(model), best, sign * far, sign, watch)
+
+
+def _worst(model: Model, code: str, x: Array, sign: float) -> float | None:
+    """The value of a property of a blend under the law that is worst for it; None where it cannot be known."""
+    values = [sign * value for view in model.exact if (value := view.read(code, x)) is not None]
+    return sign * min(values) if values else None
 
 
 def _seen_by(model: Model, number: int) -> Model:
@@ -198,11 +209,15 @@ def _ratio_on(model: Model, problem: Polytope, gauge: Gauge, sign: float, watch:
 
 def _vi(model: Model, code: str, sign: float, watch: Stopwatch) -> tuple[float, Array] | None:
     """The extreme VI: along the hull of what can be reached in the plane of the two indices, where that is convex."""
-    free = replace(model, vi=None, requirements=tuple(n for n in model.requirements if n.code != "vi"))
+    free = _without_vi(model)
     thick = free.polytope().with_rows([view.gauges["kv100"].row(LOWEST_KV100, "low") for view in free.views])
     if thick.whole is not None or model.bent:
         return _by_halves(free, thick, sign, watch)
     return _Hull(free, thick, sign, watch).best()
+
+
+def _without_vi(model: Model) -> Model:
+    return replace(model, vi=None, requirements=tuple(n for n in model.requirements if n.code != "vi"))
 
 
 class _Hull:
@@ -284,18 +299,25 @@ class _Hull:
 def _by_halves(free: Model, problem: Polytope, sign: float, watch: Stopwatch) -> tuple[float, Array] | None:
     """The extreme VI under whole-number rules or bent limits: the level beyond which no blend is found, halved in."""
     x = exact_search(free, problem, np.zeros(len(free.table)), watch, gap_absolute=1e12)[0].x
-    value = None if x is None else free.exact[0].read("vi", x)
+    value = None if x is None else _worst(free, "vi", x, sign)
     if x is None or value is None:
         return None
     loosest = _Hull(free, replace(problem, whole=None), sign, watch).best()
     far = loosest[0] + sign * (BENT_BY if free.bent else VI_STEP) if loosest is not None else value
+    return _halved(free, (value, x), far, sign, watch)
+
+
+def _halved(free: Model, found: tuple[float, Array], far: float, sign: float,
+            watch: Stopwatch) -> tuple[float, Array]:
+    """The extreme VI between what a blend has and what none is beyond, under the law that is worst for a blend."""
+    value, x = found
     while sign * (far - value) > (BENT_STEP if free.bent else 2.0 * VI_STEP) and not watch.over:
         level = 0.5 * (far + value)
         better = _beyond(free, level, sign, 8.0, watch)
         if better is None:
             far = level
         else:
-            x, value = better, free.exact[0].read("vi", better) or level
+            x, value = better, _worst(free, "vi", better, sign) or level
     return value, x
 
 

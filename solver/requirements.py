@@ -193,6 +193,8 @@ def _moved(needs: tuple[Requirement, ...], target: Target) -> tuple[Requirement,
     """The requirements with those sides moved that the target moves; a limit that was not there is added."""
     by_code = {need.code: need for need in needs}
     for (code, side), value in target.moved.items():
+        if np.isinf(value):
+            raise TargetError(f"{code}: a limit cannot be moved to {value:g}; to open its side give NaN", where=code)
         if code == COST:
             continue
         if side not in ("low", "high"):

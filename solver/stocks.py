@@ -126,7 +126,8 @@ class StockTable:
     @cached_property
     def lines(self) -> tuple[Array, Array]:
         """a and b, each of shape (n,), of each stock's D341 line; of a stand-in where a KV is unknown."""
-        known = np.isfinite(self.kv).all(axis=1, keepdims=True)
+        finite = np.isfinite(self.kv)
+        known = finite[:, :1] & finite[:, 1:]
         return lines(np.where(known, self.kv, [2.0, 1.0]))
 
     @cached_property

@@ -18,6 +18,7 @@ import numpy as np
 from .gauge import Gauge
 from .linear import Polytope, Stopwatch
 from .properties import Array
+from .requirements import COST
 from .rows import Model, View, with_rows
 from .windows import Outcome, search
 
@@ -25,6 +26,7 @@ STEPS = 40
 CORRECTIONS = 4  # tangents taken anew within one step, to come back to a limit that bends
 SHORTEST = 1e-7  # mass fraction: a step shorter than this changes nothing
 SECONDS = 5.0
+KEPT = 1e-8  # mass fraction: a bound or a rule is kept within it
 Along = Callable[[Model, Polytope], Outcome]  # solves a model's polytope along the model's tangents
 NOTHING = Outcome("infeasible", None, np.inf, np.inf)
 
@@ -120,7 +122,7 @@ class _Following:
         return None
 
     def _restored(self, x: Array) -> Array | None:
-        """The nearest blend on the exact gradients, if it misses nothing; share rules and own rows are kept."""
+        """The nearest blend on the exact gradients, if it misses nothing and keeps the ceiling and every rule."""
         from .elastic import elastics
         from .nearest import descend
 
@@ -129,7 +131,11 @@ class _Following:
         kept += range(own, len(self.problem.rows))
         shares = replace(self.problem, rows=self.problem.rows[kept], hold=self.problem.hold[kept])
         found = descend(shares, elastics(self.model), x, self.watch)
-        return None if self.model.missed(found) else found
+        kept += [i for i, row in enumerate(self.model.rows) if row.name == COST]
+        inside = np.all((self.problem.lo - KEPT <= found) & (found <= self.problem.hi + KEPT))
+        inside = inside and np.all(self.problem.rows[kept] @ found <= KEPT)
+        whole = self.problem.whole is None or self.problem.whole.kept_by(found)
+        return found if inside and whole and not self.model.missed(found) else None
 
     def _step(self, centre: Array, reach: float) -> Outcome | None:
         """The best blend within `reach` of a centre that meets every limit, by a few tangents; None: none did."""

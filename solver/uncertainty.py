@@ -257,9 +257,21 @@ def _rivals(table: StockTable, codes: Sequence[str]) -> dict[str, dict[str, Gaug
 
 
 def divisions(table: StockTable, target: Target) -> Array:
-    """Scale divisions as parts of the batch, shape (n,); 0 where there is none or no batch."""
+    """Scale divisions as parts of the batch, at most all of it, shape (n,); 0 where there is none or no batch."""
     batch = target.batch_kg
-    return np.array([0.0 if batch is None or not s.division_kg else s.division_kg / batch for s in table.stocks])
+    return np.array([0.0 if batch is None or not s.division_kg else min(1.0, s.division_kg / batch)
+                     for s in table.stocks])
+
+
+def unweighable(table: StockTable, target: Target, x: Array) -> str:
+    """In words, which charges of a blend x, shape (n,), are less than one scale division; empty: none.
+
+    Such an error is no small one, and told of by its σ alone.
+    """
+    coarse = divisions(table, target) > x
+    codes = [code for code, share, less in zip(table.codes, x, coarse, strict=True) if share > 0.0 and less]
+    return (f"{', '.join(codes)}: less than one scale division is charged, no scale of the plant weighs that, and "
+            "chances in closed form can be some points off" if codes else "")
 
 
 def weighing(table: StockTable, target: Target, x: Array) -> Array:

@@ -116,7 +116,7 @@ def whole(stocks: StockTable | Iterable[Stock], target: Target, *, time_limit: f
         if found.x is not None:
             return _told(found, least, time_limit)
         unsettled |= found.stopped
-    return _nearest(charges, free.x, least, unsettled, Stopwatch(max(1.0, watch.left)))
+    return _nearest(charges, free, unsettled, Stopwatch(max(1.0, watch.left)))
 
 
 @dataclass(frozen=True)
@@ -251,13 +251,17 @@ def _rounded(found: _Found) -> tuple[Rounded, ...]:
     return tuple(made)
 
 
-def _nearest(charges: Charges, free: Array | None, least: float | None, unsettled: bool,
-             watch: Stopwatch) -> WholeRecipe:
-    """The whole charges nearest to the limits, and what they miss; share rules, tanks and steps are not given up."""
-    model, reasons = charges.model, []
+def _nearest(charges: Charges, found_free: Outcome, unsettled: bool, watch: Stopwatch) -> WholeRecipe:
+    """The whole charges nearest to the limits, and what they miss; share rules, tanks and steps are not given up.
+
+    `found_free`: what was found without whole quantities.
+    """
+    model, reasons, free = charges.model, [], found_free.x
+    least = None if free is None else found_free.value
     if free is None:
         away = nearest(model, watch)
-        reasons = list(away.reasons)
+        # Where time ran out nothing is known yet of what no blend can meet.
+        reasons = list(away.reasons) if away.shares is None or found_free.status == "infeasible" else []
         free = None if away.shares is None else np.array([away.shares.get(c, 0.0) for c in model.table.codes])
     tolerance, x = charges.tolerances()[-1], None
     if free is not None:

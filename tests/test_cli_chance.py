@@ -124,6 +124,9 @@ def test_without_a_blend_the_nearest_is_spoken_of(folder: str, capsys: pytest.Ca
     (("chance", "P46", "--blends", "0"), "--blends 0: give a whole number from 1 to 5000000"),
     (("chance", "P46", "--batch", "0"), "--batch 0: a batch is more than 0 kg"),
     (("chance", "P46", "--law", "foo"), "unknown law 'foo'"),
+    (("chance", "P46", "N150=1e308", "N500=1e308"), "N150=1e308: a share lies within 0 to 100 %"),
+    (("chance", "P46", "--seed", "1\n2"), "--seed 1␊2: give a whole number from 0 to"),
+    (("design", "P46", "--confidence", "9\n5"), "9␊5 is no chance"),
     (("design", "P46", "--confidence", "40"), "a chance of 40 % cannot be asked; choose 50 to 99.9 %"),
     (("design", "P46", "--confidence", "sure"), "sure is no chance; type for example 95 or 0.95")])
 def test_bad_input_is_one_line(folder: str, capsys: pytest.CaptureFixture[str], argv: tuple[str, ...],

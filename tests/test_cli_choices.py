@@ -156,3 +156,12 @@ def test_bad_input_is_one_line_and_exit_2(plant: Path, capsys: pytest.CaptureFix
     assert (code, out) == (2, "")
     assert told in err
     assert err.count("\n") == 1
+
+
+def test_an_empty_sweep_is_refused_and_an_extra_cost_counts_once(plant: Path,
+                                                                 capsys: pytest.CaptureFixture[str]) -> None:
+    code, out, err = run(plant, capsys, "H46", "--sweep", "")
+    assert (code, out) == (2, "")
+    assert "is no sweep" in err
+    assert err.count("\n") == 1
+    assert [r["extra_pct"] for r in asked(plant, capsys, "H46", "--extra", "5", "1", "5")["ranges"]] == [1.0, 5.0]

@@ -197,6 +197,9 @@ def test_plan(lab):
     assert sum(found["blend_g"].values()) == pytest.approx(400.0)
     assert lab("plan", "GEAR-220")[1].startswith("BENCH BLEND, 500 g: ")
     assert lab("plan", "GEAR-220", "--grams", "5")[2] == "5 g: a bench blend lies between 20 and 20000 g\n"
+    code, out, _ = lab("plan", "HYD-46X")
+    assert code == 3
+    assert out.startswith("NO BLEND meets every limit; this is the nearest\nBENCH BLEND, 500 g: ")
 
 
 def _run(plant: Path, *words: str) -> str:

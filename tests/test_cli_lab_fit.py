@@ -102,8 +102,10 @@ FAULTS = [
      "f.csv row 3, use: 'train' is not known; write fit or test"),
     (lambda t: t.replace("pair,0.5,", "pair,0.5,", 1).replace(",test", ","),
      "f.csv row 5, use: the use is empty; write fit or test"),
-    (lambda t: t + t.splitlines()[3] + "\n",
-     "f.csv row 9: the same fraction and viscosity of 'pair' as in row 4; take one of the two out"),
+    (lambda t: HEADER + "pair,0,10,\npair,0.5,31,fit\npair,0.5,31,fit\npair,1,100,\n",
+     "f.csv row 3, use: 'pair': the 2 blends are one composition repeated, which cannot tell an excess from an error "
+     "of that blend; measure another composition, or keep one blend with their mean; f.csv row 4: the same fraction "
+     "and viscosity as in row 3; kept out of the fit: take it out, or write yes under confirmed"),
     (lambda t: t + "pair,1,100,test\n",
      "f.csv row 9, frac_mass: a second row at 1 of 'pair'; the first is row 8; keep one, with the mean of the results"),
     (lambda t: t.replace("pair,0.5,", "pair,50,"),
@@ -191,6 +193,51 @@ def test_a_result_in_sus_is_questioned_and_kept_out_until_confirmed(capsys: pyte
     taken = json.loads(out)["pair"]
     assert not taken["questions"]
     assert taken["terms"] != kept_out["terms"]
+
+
+def test_a_result_written_twice_is_questioned_and_counts_once(capsys: pytest.CaptureFixture[str],
+                                                              tmp_path: Path) -> None:
+    path = tmp_path / "f.csv"
+    path.write_text(HEADER + table(), encoding="utf-8")
+    once = json.loads(run(capsys, "lab", "fit", str(path), "--json")[1])["pair"]
+    path.write_text(HEADER + table() + table().splitlines()[2] + "\n", encoding="utf-8")
+    code, out, err = run(capsys, "lab", "fit", str(path), "--json")
+    twice = json.loads(out)["pair"]
+    assert (code, err) == (0, "note: f.csv row 9: the same fraction and viscosity as in row 4; kept out of the fit: "
+                              "take it out, or write yes under confirmed\n")
+    assert twice["terms"] == once["terms"]
+    assert len(twice["predicted"]) == len(once["predicted"]) + 1
+
+
+def test_where_every_result_is_doubtful_the_law_alone_answers_and_says_so(capsys: pytest.CaptureFixture[str],
+                                                                         tmp_path: Path) -> None:
+    path = tmp_path / "f.csv"
+    path.write_text(HEADER + "pair,0,10,\npair,1,100,\npair,0.5,310,fit\npair,0.25,18,test\n", encoding="utf-8")
+    code, out, err = run(capsys, "lab", "fit", str(path), "--json")
+    found = json.loads(out)["pair"]
+    assert code == 0
+    assert (found["terms"], found["form"], found["predicted"]) == ([], "none", found["unfitted"])
+    assert "note: " + found["questions"][0] + "\n" == err
+    code, out, _ = run(capsys, "lab", "fit", str(path))
+    assert "pair, refutas: no term from no blends, provisional\n" in out
+    assert [line.split()[-2:] for line in out.splitlines() if line.startswith("  0.5")] == [["kept", "out"]]
+
+
+def test_a_long_name_stays_within_80_columns(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
+    path = tmp_path / "f.csv"
+    path.write_text(HEADER + table("ö" * 60, test=FRACTIONS[1:3]), encoding="utf-8")
+    code, out, _ = run(capsys, "lab", "fit", str(path))
+    assert code == 0
+    assert max(map(len, out.splitlines())) == 80  # cut to fit
+
+
+def test_ends_worked_out_of_moles_are_the_stocks(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
+    path = tmp_path / "f.csv"
+    path.write_text(HEADER + "pair,1e-17,10,fit\npair,1.0000000000000002,100,test\npair,0.5,31,fit\n",
+                    encoding="utf-8")
+    code, out, _ = run(capsys, "lab", "fit", str(path), "--json")
+    assert code == 0
+    assert json.loads(out)["pair"]["predicted"][:2] == [10.0, 100.0]
 
 
 def test_a_column_that_nothing_uses_is_told(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:

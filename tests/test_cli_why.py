@@ -163,6 +163,7 @@ def test_the_example_that_cannot_be_made(capsys: pytest.CaptureFixture[str]) -> 
 @pytest.mark.parametrize(("argv", "said"), [
     (("THIN", "--give", "flash"), "flash cannot give: THIN sets no limit on it; it limits vi, kv100"),
     (("THIN", "--give", "colour"), "unknown property 'colour'"),
+    (("THIN", "--give", "x" * 5000), f"unknown property '{'x' * 39}…'; known are kv40"),
     (("THIN", "--batch", "0"), "--batch 0: a batch is more than 0 kg"),
     (("THIN", "--law", "mean"), "unknown law"),
     (("NONE",), "NONE"),

@@ -16,6 +16,7 @@ from . import numbers, trials
 from .errors import DeskError
 
 if TYPE_CHECKING:
+    from solver.choices import Range
     from solver.recipe import Recipe
     from solver.whole import WholeRecipe
 
@@ -81,6 +82,13 @@ def all_ranges(stocks: Sequence[Stock], target: Target,
     from solver.choices import ranges
 
     return ranges(StockTable(stocks), target, time_limit=time_limit)
+
+
+def marked_ranges(stocks: Sequence[Stock], target: Target, time_limit: float = 60.0) -> dict[str, Range] | None:
+    """As `all_ranges`, each marked where time ran out before it was narrowed."""
+    from solver.choices import marked_ranges as solve
+
+    return solve(StockTable(stocks), target, time_limit=time_limit)
 
 
 def other_sets(stocks: Sequence[Stock], target: Target, count: int = 8,

@@ -40,7 +40,7 @@ def verdict(chance: float | None) -> str:
     """A chance in a word."""
     if chance is None:
         return "unknown"
-    steps = ((0.99, "sure"), (0.95, "good"), (0.9, "fair"), (0.5, "! doubtful"))
+    steps = ((0.99, "high"), (0.95, "good"), (0.9, "fair"), (0.5, "! doubtful"))
     return next((word for least, word in steps if chance >= least), "! likely missed")
 
 
@@ -76,8 +76,8 @@ def _chances(report: Report, width: int) -> Iterator[Said]:
     together = found.chance if found.chance is not None else found.closed
     told = f"all limits together: {percent(together)} {verdict(together)}".rstrip()
     if found.chance is not None and found.error is not None:
-        told += (f" (± {100.0 * found.error:.2f} points, from {found.blends} drawn blends; {percent(found.closed)} in "
-                 "closed form)")
+        told += (f" (± {100.0 * found.error:.2f} points, from {found.blends} drawn blends; {percent(found.closed)} by "
+                 "formula)")
     yield from wrapped(MARK if "!" in told else HEAD, told, width)
     for note in found.notes:
         yield from wrapped(MARK, f"! {note}", width)
@@ -101,7 +101,7 @@ def _columns(rows: Sequence[Sequence[str]], width: int) -> Iterator[str]:
 
 
 def _budget(report: Report, width: int) -> Iterator[Said]:
-    yield HEAD, "What the doubt is made of, in % of its variance"
+    yield HEAD, "What the doubt is made of, in % of the whole (of σ²)"
     for code, parts in report.chances.budget.items():
         whole = sum(p.sigma ** 2 for p in parts) ** 0.5
         unit = lookup(code).unit
@@ -175,6 +175,7 @@ def _how(report: Report, width: int) -> Iterator[Said]:
            else "half the spread of the five laws to either side, evenly")
     for text in (
             "Chances are of the limits as asked: guards are not in them.",
+            "σ, the standard deviation: about two results in three lie within ± σ of the value.",
             "σ of a stock's value: of an own test the method's R/2.77; 3.5 times that for KV and density on a "
             "certificate, 9 times where typical or unknown (other properties 1.5 and 2.5 times): common practice. A "
             "typed σ stands before these.",

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 from blendtui.store.harmless import harmless
 
 from . import numbers
+from .blends import spread_words
 from .choices import Choices
 
 if TYPE_CHECKING:
@@ -17,7 +18,7 @@ if TYPE_CHECKING:
     from solver.prices import LimitPrice
     from solver.recipe import Recipe
 
-Line = tuple[str, str]  # (kind, text): "head", "mark", "dim" or ""
+Line = tuple[str, str]  # (kind, text): "head", "mark", "warn", "dim" or ""
 NAMES = {"least-cost": "least cost", "widest-margin": "widest margin", "fewest-stocks": "fewest stocks",
          "most-of": "most of", "least-of": "least of", "least-scarce": "tanks last longest", "closest": "closest to",
          "most-rework": "most rework"}
@@ -36,7 +37,8 @@ def figure_of(aim: Aim) -> str:
     """The aim's own figure with its unit."""
     if aim.figure is None:
         return numbers.UNKNOWN
-    return {"least-cost": lambda v: f"{numbers.cost(v)} /t", "widest-margin": lambda v: f"{v:.2f} R inside",
+    return {"least-cost": lambda v: f"{numbers.cost(v)} /t",
+            "widest-margin": lambda v: f"{numbers.fixed(v, 2)} R inside",
             "fewest-stocks": lambda v: f"{v:.0f} stock{'s' if v != 1 else ''}",
             "least-scarce": lambda v: f"for {numbers.kg(v)} kg",
             "closest": lambda v: f"{numbers.pct(0.5 * v)} % other"}.get(
@@ -98,7 +100,8 @@ def aims_lines(found: Choices, width: int, chosen: int | None = None) -> list[Li
         sign = "▸" if here else " "
         recipe = aim.recipe
         if recipe is None:
-            made += _wrapped("mark" if here else "", f"{sign} {name_of(aim)}: {aim.note}", width, "    ")
+            keep = "; on the screen Recipe, k keeps one" if aim.name == "closest" and not aim.of else ""
+            made += _wrapped("mark" if here else "", f"{sign} {name_of(aim)}: {aim.note}{keep}", width, "    ")
             continue
         dearer = "" if aim.extra_pct is None else f"{max(0.0, aim.extra_pct):.2f} %"
         doubt = "" if aim.proven else "  not proven"
@@ -106,9 +109,18 @@ def aims_lines(found: Choices, width: int, chosen: int | None = None) -> list[Li
                                              f"{numbers.cost(recipe.cost_per_t):>9} {dearer:>8}{doubt}"))
         note = f" ({aim.note})" if aim.note else ""
         made += _wrapped("", f"    {shares_of(recipe)}{note}", width, "    ")
+        told = spread_words(recipe).partition(" before ")[0]
+        made += _wrapped("warn", f"    ! {_widest(recipe)} %: {told}", width, "      ") if told else []
     words = ("R: reproducibility of a limit's method; the nearest limit is so many away; for … kg: the largest batch "
              "that the tanks carry; other: the part of the blend that is not as in the trial")
-    return made + _wrapped("dim", words, width)
+    made += _wrapped("dim", words, width)
+    doubted = any(a.recipe is not None and "needed" in spread_words(a.recipe) for a in found.aims or ())
+    return made + (_wrapped("dim", "blendtui lab plan, or p on the screen Lab, plans a laboratory blend", width)
+                   if doubted else [])
+
+
+def _widest(recipe: Recipe) -> str:
+    return numbers.fixed(max(x for x in recipe.spread_pct.values() if x is not None), 1)
 
 
 # Limits
@@ -143,9 +155,10 @@ def limits_lines(found: Choices, width: int) -> list[Line]:
     rows = [[limit_name(p), limit_value(p, p.limit), f"{p.step:.3g}", numbers.fixed(p.eased_per_t, 3),
              numbers.fixed(p.tightened_per_t, 3), _per_unit(p.saved_per_unit), _per_unit(p.added_per_unit)]
             for p in found.limits]
-    made += _table(["limit, its unit", "held at", "step", "eased", "tighter", "saves/u", "adds/u"], rows, widest=24)
+    heads = ["limit, its unit", "held at", "step", "eased", "tighter", "saves/unit", "adds/unit"]
+    made += _table(heads, rows, widest=24)
     words = ("eased, tighter: the least cost with the limit moved by the step; of a fixed share, with less and with "
-             "more of it; /u: per unit; –: no blend, or no such step")
+             "more of it; –: no blend, or no such step")
     return made + _wrapped("dim", words, width)
 
 
@@ -224,7 +237,7 @@ def ranges_lines(found: Choices, width: int) -> list[Line]:
     rows = [[harmless(c, 14), numbers.pct((found.shares or {}).get(c, 0.0)), *(
         f"{numbers.pct(r[c].low)}–{numbers.pct(r[c].high)}{'' if r[c].narrowed else '?'}" for _, r in ranges)]
         for c in shown]
-    made += _table(["stock", "least cost", *(f"{extra:g} %" for extra, _ in ranges)], rows)
+    made += _table(["stock", "recipe", *(f"{extra:g} % dearer" for extra, _ in ranges)], rows)
     rest = ", ".join(harmless(c) for c in codes if c not in shown)
     if rest:
         made += _wrapped("", f"not used within {ranges[-1][0]:g} %: {rest}", width)

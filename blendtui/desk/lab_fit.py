@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -18,6 +19,7 @@ if TYPE_CHECKING:
 
 REQUIRED = ("system", "frac_mass", "kv", "use")
 COLUMNS = (*REQUIRED, "density15", "confirmed")
+END = 1e-9  # mass fraction: nearer than this to 0 or 1 is the stock, for fractions are worked out of moles
 FAR = 3.0  # times above or below what the law says: a result that is asked about before it teaches
 SUS_PER_KV = (4.0, 12.0)  # SUS read as mm²/s is this many times too much: 4.6 for most oils, more for thin ones
 
@@ -45,6 +47,7 @@ class SystemFit:
     predicted: tuple[float, ...]  # mm²/s, in the order of the rows
     unfitted: tuple[float, ...]  # by the law alone
     questions: tuple[str, ...]  # results kept out of the fit until they are confirmed
+    kept_out: frozenset[int] = frozenset()  # the rows of these
 
     def error_pct(self, use: str, predicted: tuple[float, ...]) -> float | None:
         """Mean error of the rows of one use [%]; None where there is none."""
@@ -76,8 +79,10 @@ def fit_file(path: Path, law: str) -> FileFit:
         sheet.faults.append(Fault(sheet.file, 0, "", "there is no row below the header",
                                   "add the stocks (frac_mass 0 and 1) and the mixtures measured"))
     if not sheet.faults:
-        systems = {row.system: [r for r in rows if r is not None and r.system == row.system]
-                   for row in rows if row is not None}
+        systems: dict[str, list[Row]] = {}
+        for row in rows:
+            if row is not None:
+                systems.setdefault(row.system, []).append(row)
         fitted = [_system(sheet.file, law, own, sheet.faults) for own in systems.values()]
     if sheet.faults:
         raise CatalogueError(sheet.faults)
@@ -107,10 +112,11 @@ def _fraction(text: str) -> float:
     value = c.number(text)
     if value is None:
         raise c.CellError("the mass fraction is empty", "write the heavier stock's, from 0 to 1")
+    value = round(value) if min(abs(value), abs(value - 1.0)) <= END else value
     if not 0.0 <= value <= 1.0:
         hint = f"; if it is in %, write {value / 100.0:g}" if 1.0 < value <= 100.0 else ""
         raise c.CellError(f"{c.shown(text)} lies outside 0 to 1", f"write the heavier stock's mass fraction{hint}")
-    return value
+    return float(value)
 
 
 def _kv(text: str) -> float:
@@ -141,23 +147,33 @@ def _system(file: str, law: str, rows: list[Row], faults: list[Fault]) -> System
 
     before = len(faults)
     ends = _ends(file, rows, faults)
-    _twice(file, rows, faults)
     if len(faults) > before:
         return None
     interior = [row for row in rows if row.use == "fit" and 0.0 < row.mass < 1.0]
-    asked: list[str] = []
+    asked: dict[int, str] = {}  # row → what is asked about it
     try:
         every = _blends(law, rows, ends)
-        alone = dict(zip((row.row for row in rows), every.predicted(()), strict=True))
-        asked = [why for row in rows if (why := _question(file, row, float(alone[row.row])))]
-        found = fit(_blends(law, [row for row in interior if not _question(file, row, float(alone[row.row]))], ends))
+        asked = _questions(file, interior, dict(zip((row.row for row in rows), every.predicted(()), strict=True)))
+        # One composition again and again is refused as that, and not for the questions that it raises too.
+        repeated = len(interior) > 1 and len({row.mass for row in interior}) == 1
+        kept = interior if repeated else [row for row in interior if row.row not in asked]
+        # Where every result is doubtful the law alone still answers, and the questions say why.
+        found = _nothing_taught() if interior and not kept else fit(_blends(law, kept, ends))
     except SolverError as error:
-        faults.append(_refusal(file, law, (interior or rows)[0], str(error), asked))
+        faults.append(_refusal(file, law, (interior or rows)[0], str(error), list(asked.values())))
         return None
     # A stock is what was measured of it, and not what rounding makes of its index.
     predicted, unfitted = (tuple(row.kv if row.mass in (0.0, 1.0) else float(v) for row, v in
                                  zip(rows, every.predicted(terms), strict=True)) for terms in (found.terms, ()))
-    return SystemFit(rows[0].system, found, tuple(rows), predicted, unfitted, tuple(asked))
+    return SystemFit(rows[0].system, found, tuple(rows), predicted, unfitted, tuple(asked.values()),
+                     frozenset(asked))
+
+
+def _nothing_taught() -> Fit:
+    from solver.lab import Fit
+
+    return Fit(form="none", terms=(), provisional=True, carried=0.0, blends=0, compositions=0, part=(0.0, 1.0),
+               unfitted_pct=math.nan, fitted_pct=math.nan)
 
 
 def _refusal(file: str, law: str, row: Row, why: str, asked: list[str]) -> Fault:
@@ -185,25 +201,26 @@ def _ends(file: str, rows: list[Row], faults: list[Fault]) -> tuple[Row, Row]:
     return found[0], found[1]
 
 
-def _twice(file: str, rows: list[Row], faults: list[Fault]) -> None:
+def _questions(file: str, rows: list[Row], alone: dict[int, float]) -> dict[int, str]:
+    """What is doubtful about the results to fit, by row, of those that nobody has confirmed.
+
+    alone: what the law alone says of each row, mm²/s.
+    """
+    asked: dict[int, str] = {}
     seen: dict[tuple[float, float], int] = {}
     for row in rows:
-        if row.mass in (0.0, 1.0):
+        first = seen.setdefault((row.mass, row.kv), row.row)
+        times = row.kv / float(alone[row.row])
+        if row.confirmed:
             continue
-        if (row.mass, row.kv) in seen:
-            faults.append(Fault(file, row.row, "", f"the same fraction and viscosity of {c.shown(row.system)} as in "
-                                f"row {seen[row.mass, row.kv]}", "take one of the two out"))
-        seen.setdefault((row.mass, row.kv), row.row)
-
-
-def _question(file: str, row: Row, law_alone: float) -> str:
-    """What is doubtful about a result; empty: nothing, or somebody has confirmed it."""
-    times = row.kv / law_alone
-    if row.use != "fit" or row.confirmed or row.mass in (0.0, 1.0) or 1.0 / FAR <= times <= FAR:
-        return ""
-    like = "; it looks like SUS written as mm²/s" if SUS_PER_KV[0] <= times <= SUS_PER_KV[1] else ""
-    return (f"{file} row {row.row}, kv: {row.kv:g} is {times:.2g} times the {law_alone:.4g} of the law{like}; kept out "
-            "of the fit: mend it, or write yes under confirmed")
+        if first != row.row:
+            asked[row.row] = (f"{file} row {row.row}: the same fraction and viscosity as in row {first}; kept out of "
+                              "the fit: take it out, or write yes under confirmed")
+        elif not 1.0 / FAR <= times <= FAR:
+            like = "; it looks like SUS written as mm²/s" if SUS_PER_KV[0] <= times <= SUS_PER_KV[1] else ""
+            asked[row.row] = (f"{file} row {row.row}, kv: {row.kv:g} is {times:.2g} times the {alone[row.row]:.4g} of "
+                              f"the law{like}; kept out of the fit: mend it, or write yes under confirmed")
+    return asked
 
 
 def _blends(law: str, rows: list[Row], ends: tuple[Row, Row]) -> Blends:

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Iterable, Iterator, Sequence
+from decimal import Decimal
 from typing import TYPE_CHECKING
 
 from blendtui.store.harmless import harmless
 from solver.target import Target
 
 from . import numbers
+from .blends import spread_words
 from .reasons import Interval, Report
 
 if TYPE_CHECKING:
@@ -22,6 +24,7 @@ HEAD, TEXT, BAD = "head", "text", "bad"  # how a line is meant
 Told = tuple[str, str]  # (how it is meant, the line)
 KINDS = {"vi_improver": "VI improver", "pour_depressant": "pour depressant", "base": "base stock of unknown group"}
 BENT = "What the laboratory has taught bends the limits: all this is found step by step, and is not proven."
+SLACK, VI_SLACK = 1e-6, 0.05  # to which an extreme is found: a part of it, and of the VI in points
 LEAST_TOLD = 5e-5  # mass fraction: what is shown as 0.00 % is not told
 DECIDES = "That it would fit is no permission: the formulator decides what a product may hold."
 
@@ -37,10 +40,23 @@ def heading(code: str) -> str:
 
 
 def amount(code: str, value: float, unlike: float | None = None) -> str:
-    """A value with its unit, with as many digits as show on which side of another it lies."""
-    texts = [numbers.value(code, value), *(numbers.figures(value, count) for count in range(5, 11))]
-    told = next((t for t in texts if unlike is None or (float(t) - unlike) * (value - unlike) > 0.0), texts[-1])
+    """A value with its unit; beside a limit that it is unlike, so rounded that what is told can be had."""
+    told = numbers.value(code, value)
+    if unlike is not None:
+        texts = [told, *(numbers.figures(value, count) for count in range(5, 11))]
+        told = _reachable(texts, value, unlike, VI_SLACK if code == "vi" else SLACK * abs(value))
     return f"{told} {unit(code)}".rstrip()
+
+
+def _reachable(texts: Sequence[str], value: float, unlike: float, slack: float) -> str:
+    """The first of a value's texts that lies on its side of a limit; by one of its last place further from the limit
+    where rounding has brought it nearer than the value is, by more than a slack."""
+    away = 1.0 if value > unlike else -1.0
+    told = next((t for t in texts if away * (float(t) - unlike) > 0.0), texts[-1])
+    if away * (value - float(told)) <= slack:
+        return told
+    number = Decimal(told)
+    return str(number + Decimal(int(away)) * Decimal(1).scaleb(int(number.as_tuple().exponent)))
 
 
 def unit(code: str) -> str:
@@ -55,9 +71,10 @@ def unit(code: str) -> str:
 def limit_words(demand: Demand) -> str:
     """A limit with its number: `VI at least 163 (160 and its guard)`."""
     side = "at least" if demand.side == "low" else "at most"
-    text = f"{heading(demand.name)} {side} {f'{demand.limit:.6g} {unit(demand.name)}'.rstrip()}"
-    guarded = demand.asked is not None and abs(demand.asked - demand.limit) > 1e-9
-    return text + (f" ({demand.asked:.6g} and its guard)" if guarded else "")
+    text = f"{heading(demand.name)} {side} {demand.limit:.6g} {unit(demand.name)}".rstrip()
+    if demand.asked is None or abs(demand.asked - demand.limit) <= 1e-9:
+        return text
+    return f"{text} ({demand.asked:.6g} and its guard)"
 
 
 def demand_words(demand: Demand) -> str:
@@ -76,7 +93,7 @@ def demand_words(demand: Demand) -> str:
     if demand.kind == "list":
         return f"no {name}" if demand.whole_family else f"no {name} but what is listed"
     if demand.kind == "on hand":
-        return f"{numbers.kg(demand.limit)} kg from what the tanks hold"
+        return f"{numbers.batch(demand.limit)} kg from what the tanks hold"
     if demand.kind == "most stocks":
         return f"at most {demand.limit:g} base stock{'s' if demand.limit != 1 else ''} and rework"
     return f"at least {share} of every base stock or rework that is used"
@@ -105,13 +122,15 @@ def conflict_words(conflict: Conflict, left_out: Sequence[str] = ()) -> str:
 
 def _best_words(of: Demand, best: float) -> str:
     if of.kind == "on hand":
-        return f"the largest batch is {numbers.kg(best)} kg"
+        texts = [numbers.kg(best), *(numbers.fixed(best, places) for places in (1, 3))]
+        return f"the largest batch is {_reachable(texts, best, of.limit, SLACK * best)} kg"
     if of.kind == "cost":
         return f"the least cost reachable is {amount(of.name, best, of.limit)}"
     if of.of_property:
         most = "best" if of.name == "vi" and of.side == "low" else "highest" if of.side == "low" else "lowest"
         return f"the {most} {heading(of.name)} reachable is {amount(of.name, best, of.limit)}"
-    name, share = KINDS.get(of.name, of.name), f"{numbers.pct(best)} %"
+    texts = [numbers.pct(best), *(numbers.fixed(100.0 * best, places) for places in (4, 6))]
+    name, share = KINDS.get(of.name, of.name), f"{_reachable(texts, 100.0 * best, 100.0 * of.limit, 100.0 * SLACK)} %"
     if of.kind == "held":
         return f"the nearest share of {name} that can be had is {share}"
     return f"the {'most' if of.side == 'low' else 'least'} {name} that can be had is {share}"
@@ -199,6 +218,8 @@ def _giving(report: Report) -> Iterator[Told]:
         yield BAD, f"  ! {reason}"
     if giving.changes and giving.recipe.shares:
         yield TEXT, f"  then: {recipe_words(giving)}"
+        if doubt := spread_words(giving.recipe):
+            yield BAD, f"  ! {doubt}"
 
 
 def recipe_words(giving: Giving) -> str:
@@ -209,7 +230,9 @@ def recipe_words(giving: Giving) -> str:
     read = ", ".join(f"{heading(code)} {amount(code, value)}" for code in ("kv40", "kv100", "vi")
                      if (value := recipe.predicted.get(code)) is not None)
     cost = "" if recipe.cost_per_t is None else f"; {numbers.cost(recipe.cost_per_t)} /t"
-    return f"{told}; {read}{cost}"
+    widest = max((x for x in recipe.spread_pct.values() if x is not None), default=None)
+    apart = "" if widest is None else f"; the laws lie within {numbers.fixed(widest, 1)} %"
+    return f"{told}; {read}{apart}{cost}"
 
 
 def _reach(report: Report) -> Iterator[Told]:

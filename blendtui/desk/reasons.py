@@ -6,6 +6,7 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
+from blendtui.store.harmless import harmless
 from solver.stocks import Stock, StockTable
 from solver.target import Target
 
@@ -160,7 +161,7 @@ def order_of(typed: str, able: Sequence[str] | None = None) -> tuple[str, ...]:
             continue
         code = names.get(each.lower(), each.lower())
         try:
-            order.append(code if code == "cost_per_t" else lookup(code).code)
+            order.append(code if code == "cost_per_t" else lookup(harmless(code, 40)).code)
         except TargetError as error:
             raise DeskError(str(error)) from None
     for code in order:

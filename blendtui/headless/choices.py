@@ -64,7 +64,7 @@ def _choices(options: argparse.Namespace) -> int:
     with quiet():
         *_, found = choices(stocks, target, asked)
         drawn = None
-        if options.sweep:
+        if options.sweep is not None:
             *_, drawn = swept(stocks, target, sweep_of(stocks, target, options.sweep), points)
     words = [] if asked.parts == () and found.feasible else [line for _, line in choice_words.lines(found, WIDTH)]
     if drawn is not None:
@@ -79,7 +79,7 @@ def _asked(options: argparse.Namespace) -> Asked:
     from blendtui.desk.choices import EXTRAS, PARTS, Asked
     from solver.aims import AIMS
 
-    extras = tuple(_extra(text) for text in options.extra)
+    extras = tuple(dict.fromkeys(_extra(text) for text in options.extra))
     names = tuple(dict.fromkeys(name for each in options.aim for name in (AIMS if each == "all" else (each,))))
     for name in names:
         if name not in AIMS:
@@ -88,7 +88,7 @@ def _asked(options: argparse.Namespace) -> Asked:
         raise BadInput("--aim takes one --extra: the most that an aim may cost more")
     parts = ("aims",) if names else ("ranges",) if extras else ()
     parts += ("reaches",) if options.moves else ()
-    if not parts and not options.sweep:
+    if not parts and options.sweep is None:
         parts = tuple(part for part in PARTS if part != "reaches")
     return Asked(parts, names, extras or EXTRAS, extras[0] if names and extras else None, options.stock or "")
 

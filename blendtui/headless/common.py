@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from blendtui.desk.plant import Plant
 
 DONE, BAD_INPUT, NO_BLEND = 0, 2, 3
+MOST_SHARE = 100.0  # mass fraction: no slip of the point, and none whose sum overflows
 Run = Callable[[argparse.Namespace], int]
 Add = Callable[[str, Run, str], argparse.ArgumentParser]  # (name, run, one sentence) → the command's parser
 
@@ -91,4 +92,6 @@ def shares_of(typed: list[str]) -> dict[str, float]:
         if code in shares:
             raise BadInput(f"{code} is given twice; give each stock one share")
         shares[code] = number(amount, each, "share")
+        if abs(shares[code]) > MOST_SHARE:
+            raise BadInput(f"{each}: a share lies within 0 to 100 %")
     return shares

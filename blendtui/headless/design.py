@@ -58,12 +58,13 @@ def _design(options: argparse.Namespace) -> int:
     with quiet():
         recipe, more, words = _recipe(stocks, target, options, sigma)
         feasible = recipe.status != "infeasible"
-        ranges = blends.all_ranges(stocks, target) if options.ranges and feasible else None
+        ranges = blends.marked_ranges(stocks, target) if options.ranges and feasible else None
         others = blends.other_sets(stocks, target, wanted) if wanted and feasible else []
     answer = {**as_json.design(recipe), **more}
     if options.ranges:
         answer["ranges_pct"] = None if ranges is None else {
-            code: [100.0 * low, 100.0 * high] for code, (low, high) in ranges.items()}
+            code: [100.0 * each.low, 100.0 * each.high] for code, each in ranges.items()}
+        answer["ranges_not_narrowed"] = [code for code, each in (ranges or {}).items() if not each.narrowed]
     if wanted:
         answer["blends"] = [as_json.other_blend(b) for b in others]
     text = as_text.design(options.product, recipe, stocks, ranges, others, words)

@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from blendtui.desk.lab_fit import FileFit, SystemFit
 
 LAWS = "refutas, walther-mass, walther-volume (with a column density15)"
+WIDTH = 80  # columns of a printer
 _CONSTANTS = {"none": "no term", "one": "one term", "two": "two terms"}
 
 
@@ -66,9 +67,10 @@ def as_text(found: FileFit) -> str:
     for one in found.systems:
         fit = one.fit
         terms = ", ".join(f"{name} = {value:.5g}" for name, value in zip("AB", fit.terms, strict=False)) or "none"
-        blends = f"{fit.blends} blend{'s' * (fit.blends > 1)}"
+        blends = f"{fit.blends or 'no'} blend{'s' * (fit.blends != 1)}"
         mark = ", provisional" if fit.provisional else ""
-        lines += ["", f"{harmless(one.system, 40)}, {found.law}: {_CONSTANTS[fit.form]} from {blends}{mark}",
+        head = f", {found.law}: {_CONSTANTS[fit.form]} from {blends}{mark}"
+        lines += ["", harmless(one.system, WIDTH - len(head)) + head,
                   f"  terms of the index: {terms}; carried by the data: {100 * fit.carried:.0f} %"]
         if fit.by_form:
             each = ", ".join(f"{_CONSTANTS[form]} {_pct(error)}" for form, error in fit.by_form.items())
@@ -82,7 +84,7 @@ def as_text(found: FileFit) -> str:
         for row, value, alone_kv in zip(one.rows, one.predicted, one.unfitted, strict=True):
             off = _pct(100.0 * (value / row.kv - 1.0)).removesuffix(" %")
             lines.append(f"  {row.mass:<13.4f} {kv(row.kv):>12} {kv(value):>10} {kv(alone_kv):>10} {off:>13}  "
-                         f"{row.use if 0.0 < row.mass < 1.0 else 'stock'}")
+                         f"{'kept out' if row.row in one.kept_out else row.use if 0.0 < row.mass < 1.0 else 'stock'}")
     return "\n".join(lines[1:])
 
 

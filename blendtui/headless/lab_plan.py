@@ -28,6 +28,8 @@ def _plan(options: argparse.Namespace) -> int:
     with quiet():
         recipe = blends.best(stocks, target, time_limit=30.0)
     made = lab_plan.plan(recipe, stocks, grams)
+    nearest = recipe.status == "infeasible"
+    lines = ["NO BLEND meets every limit; this is the nearest"] if nearest else []
     show(options, {"product": options.product, "status": recipe.status, **lab_plan.as_json(made)},
-         "\n".join(lab_plan.words(made)))
-    return NO_BLEND if recipe.status == "infeasible" else DONE
+         "\n".join([*lines, *lab_plan.words(made)]))
+    return NO_BLEND if nearest else DONE

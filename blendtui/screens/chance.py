@@ -7,10 +7,11 @@ from dataclasses import replace
 from typing import Any
 
 from blendtui import commands
-from blendtui.desk import chance
+from blendtui.desk import blends, chance, numbers
 from blendtui.desk.answers import Answer
-from blendtui.widgets.paint import BOLD, DIM, PLAIN, WARN, Line
+from blendtui.widgets.paint import BOLD, DIM, PLAIN, WARN, Line, wrap
 
+from . import words
 from .report import ReportPage
 
 Key = tuple[int, str, str]  # revision of the plant, law, product
@@ -21,7 +22,6 @@ class ChanceScreen(ReportPage):
     """The chance of each limit and of all, the budget, what to test, what more certainty costs."""
 
     NAME = commands.CHANCE
-    WORKING = "working out more …"
 
     def __init__(self) -> None:
         super().__init__()
@@ -80,7 +80,20 @@ class ChanceScreen(ReportPage):
         from blendtui.desk import chance_words
 
         styles = {chance_words.HEAD: BOLD, chance_words.MARK: WARN, chance_words.DIM: DIM}
-        return [[(line, styles.get(kind, PLAIN))] for kind, line in chance_words.lines(report, width)]
+        made: list[Line] = [[(line, styles.get(kind, PLAIN))] for kind, line in chance_words.lines(report, width)]
+        after = next((n for n, line in enumerate(made) if not line[0][0]), len(made))  # the table of chances
+        return [*made[:after], *self._laws(width), *made[after:]]
+
+    def _laws(self, width: int) -> list[Line]:
+        """How far the laws are apart on the blend that is shown, for viscosities stand above."""
+        shown = self.session.shown
+        told = shown and [f"{words.heading(code)} {numbers.fixed(spread, 1)} %"
+                          for code, spread in shown.spread_pct.items() if spread is not None]
+        if not shown or not told:
+            return []
+        warning = blends.spread_words(shown)
+        line = f"{'! ' if warning else ''}spread of the laws: {', '.join(told)}" + (f": {warning}" if warning else "")
+        return [[(part, WARN if warning else PLAIN)] for part in wrap(line, width, "  ")]
 
     def show_report(self) -> None:
         """The report, or that there is nothing to report on."""
@@ -107,7 +120,7 @@ class ChanceScreen(ReportPage):
         if asked is None and self.session.state.wishes.confidence is None:
             self.say("no chance is asked: the recipe is the least-cost one")
             return
-        what = "no chance asked" if asked is None else f"each limit met with a chance of {100.0 * asked:.4g} %"
+        what = "no chance asked" if asked is None else words.chance(self.session.state.wishes, asked)
         self.session.wish(replace(self.session.state.wishes, confidence=asked, whole=False, typed=None), what)
         self.program.say(f"{what}; u takes it back")
         self.refresh_page()

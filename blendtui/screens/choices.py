@@ -14,14 +14,15 @@ from blendtui.desk.choices import Asked, Choices, Swept, choices, newest_trial, 
 from blendtui.desk.errors import DeskError
 from blendtui.store.harmless import harmless
 from blendtui.store.records import Trial
-from blendtui.widgets.paint import BOLD, CURSOR, DIM, PLAIN, Line
+from blendtui.widgets.edit_line import Ended
+from blendtui.widgets.paint import BOLD, CURSOR, DIM, PLAIN, WARN, Line
 from solver.errors import SolverError
 
 from . import messages
 from .asker import fault
 from .report import ReportPage
 
-STYLES = {"head": BOLD, "mark": BOLD, "dim": DIM, "": PLAIN}
+STYLES = {"head": BOLD, "mark": BOLD, "warn": WARN, "dim": DIM, "": PLAIN}
 CAPS: tuple[float | None, ...] = (None, 1.0, 2.0, 5.0)  # % above the least cost that an aim may cost
 ROWS = 8, 16  # of a curve: on the smallest screen, and at most
 
@@ -39,7 +40,6 @@ class ChoicesScreen(ReportPage):
     """The aims first, one of them marked; then what limits and prices are worth. A sweep stands above all."""
 
     NAME = commands.CHOICES
-    WORKING = "working out more …"
 
     def __init__(self) -> None:
         super().__init__()
@@ -99,6 +99,8 @@ class ChoicesScreen(ReportPage):
 
     def _say_end(self, drawn: Drawn) -> None:
         if drawn.refusal:
+            if self.is_current and not self.edit.active:
+                self._ask_sweep(self.typed_sweep, whole=False)  # what cannot be read comes back to the line
             self.program.say(drawn.refusal, "refused")
         elif drawn.swept is not None:
             self.say(f"sweep {'stopped' if drawn.swept.stopped else 'done'}: its numbers stand below the curve")
@@ -213,8 +215,16 @@ class ChoicesScreen(ReportPage):
         elif answer is None:
             self.say("there is no recipe to sweep from yet")
         else:
-            self.type_text("sweep (property and low or high, or price and a stock; a span may follow; empty: none)",
-                           self.typed_sweep, lambda ended: self._start_sweep(answer, ended.text.strip()))
+            self._ask_sweep(self.typed_sweep)
+
+    def _ask_sweep(self, text: str, *, whole: bool = True) -> None:
+        def then(ended: Ended) -> None:
+            answer = self.session.state.answer
+            if answer is not None:
+                self._start_sweep(answer, ended.text.strip())
+
+        self.type_text("sweep (property and low or high, or price and a stock; a span may follow: vi low 90 110; "
+                       "empty: none)", text, then, whole=whole)
 
     def do_back(self) -> None:
         """Esc stops a sweep."""

@@ -48,6 +48,8 @@ class RecipeScreen(Page):
         self.caution = OneLine(id="caution")
         self.rows: list[view.ShareRow] = []
         self.noted: tuple[object, ...] = ()  # what the remarks are of: on another they begin at the top
+        self.back = True  # come from another screen: another blend is shown from its largest share
+        self.seen: Mapping[str, float] = {}  # the shares that were shown last
 
     def body(self) -> Iterable[Widget]:
         """Head, shares, remarks, and the caution that always stands."""
@@ -82,6 +84,11 @@ class RecipeScreen(Page):
             return view.share_cell(self.rows[row], columns[column].code, recipe, scale, today, bar_width)
 
         at = next((n for n, r in enumerate(self.rows) if r.stock.code == here), None)
+        other = bool(self.noted) and self.noted[0] != self.session.product
+        if (self.back or other) and not self.session.state.waiting:
+            at = at if dict(recipe.shares or {}) == self.seen else 0
+            self.back = False
+        self.seen = dict(recipe.shares or {})
         self.shares.empty = "no stock may serve this product: its rules allow none, see Targets"
         notes = view.notes(answer, recipe, today, width, rest)
         self.shares.foot = lambda column: view.total_cell(recipe, answer.stocks, columns[column].code)
@@ -98,6 +105,10 @@ class RecipeScreen(Page):
         if self.shares.styles.height is None or self.shares.styles.height.value != height:
             self.shares.styles.height = height
 
+    def on_screen_suspend(self) -> None:
+        """Another screen is opened."""
+        self.back = True
+
     def on_resize(self) -> None:
         """Lay everything for the new size."""
         self.refresh_page()
@@ -111,7 +122,7 @@ class RecipeScreen(Page):
         product, state = self.snapshot.product(self.session.product), self.session.state
         grade = f" · {product.grade}" if product and product.grade else ""
         batch = f" · {numbers.kg(state.answer.target.batch_kg)} kg" if state.answer else ""
-        self.title_line.show(f"{harmless(self.session.product)}{batch}{grade}")
+        self.title_line.show(harmless(self.session.product), batch, grade)
         row = self.row
         if row is None:
             self.edit.show("", "")
@@ -277,9 +288,9 @@ class RecipeScreen(Page):
 
     def do_whole(self) -> None:
         """Charges in whole steps, or in any mass."""
-        whole = not self.wishes.whole
+        whole, dropped = not self.wishes.whole, "" if self.wishes.confidence is None else ", no chance asked any more"
         self._wish(replace(self.wishes, whole=whole, confidence=None, typed=None),
-                   "charges in whole steps" if whole else "charges of any mass")
+                   ("charges in whole steps" if whole else "charges of any mass") + dropped)
 
     def do_sure(self) -> None:
         """Type the chance at which each limit is to be met."""
@@ -289,8 +300,7 @@ class RecipeScreen(Page):
             if not typed:
                 return replace(self.wishes, confidence=None, typed=None), "no chance asked"
             asked = chance.confidence(typed)
-            return (replace(self.wishes, confidence=asked, whole=False, typed=None),
-                    f"each limit met with a chance of {100.0 * asked:.4g} %")
+            return replace(self.wishes, confidence=asked, whole=False, typed=None), words.chance(self.wishes, asked)
 
         now = self.wishes.confidence
         self._type_wish("chance of each limit, % (empty: none)", "" if now is None else f"{100.0 * now:.4g}", make)

@@ -14,6 +14,7 @@ from blendtui.desk.answers import Answer
 from blendtui.store.harmless import harmless
 from blendtui.widgets.grid import Cell, Column
 from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, Run, fit, wrap
+from solver.requirements import MOVED
 from solver.scales import litres_at_15
 from solver.stocks import Stock
 
@@ -145,48 +146,52 @@ def head(state: RecipeState, recipe: Recipe | None, width: int, height: int) -> 
     facts = _facts(state, state.answer, recipe)
     parts = [_kind(state, recipe), *((text, WARN if text.startswith("!") else PLAIN) for text in facts)]
     lines: list[Line] = [[]]
-    used = 0
+    used, long = 0, list[str]()  # what is cut here is told again, whole
     for n, (text, style) in enumerate(parts):
         size = cell_len(text) + (3 if used else 0)
         if used and used + size > width:
             if len(lines) == height:
-                return lines, [rest for rest, _ in parts[n:]]
+                return lines, [*long, *(rest for rest, _ in parts[n:])]
             lines.append([])
             used, size = 0, cell_len(text)
-        lines[-1] += [(" · ", PLAIN), (text, style)] if used else [(text, style)]
+        lines[-1] += [(" · ", PLAIN), (text, style)] if used else [(text if size <= width else fit(text, width), style)]
+        long += [text] if size > width else []
         used += size
-    return lines, []
+    return lines, long
 
 
 def _kind(state: RecipeState, recipe: Recipe) -> Run:
     assert state.answer is not None
     if state.blend is not None:
-        return f"feasible blend {state.blend + 1} of {len(state.answer.blends)}", BOLD
+        what_if = "! WHAT-IF: " if state.wishes.moved else ""
+        return f"{what_if}feasible blend {state.blend + 1} of {len(state.answer.blends)}", BOLD
     if recipe.status == "by hand" and recipe.shares:
         total = sum(recipe.shares.values())
         if abs(total - 1.0) > 1e-4:
             rules = ", rules broken" if recipe.breaches else ""
-            return f"! by hand, shares sum to {numbers.pct(total)} %{rules}", BAD
-    return words.verdict(recipe)
+            what_if = "WHAT-IF, " if state.wishes.moved else ""
+            return f"! {what_if}by hand, shares sum to {numbers.pct(total)} %{rules}", BAD
+    return words.verdict(recipe, bool(state.wishes.moved))
 
 
 def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
     """Cost, misses, law and the slower figures, the most wanted first."""
     told = ["working out the new recipe …"] if state.waiting else []
-    widest = max((x for x in recipe.spread_pct.values() if x is not None), default=0.0)
-    if widest > blends.SPREAD_DOUBTED and not set(recipe.lessons) - set(recipe.provisional):
-        told.append(f"! laws differ {numbers.fixed(widest, 0)} %: laboratory blend needed")
+    told += _laws_differ(recipe)
     if recipe.status == "infeasible":
-        told.append("the nearest blend misses " + "; ".join(words.misses(recipe)) if recipe.shares
-                    else "; ".join(recipe.reasons))
+        missed = words.misses(recipe) if recipe.shares else []
+        # Why it is not surer is a long sentence among the remarks; the last of it says how sure it can be.
+        told.append("the nearest blend misses " + "; ".join(missed) if missed else
+                    "; ".join(recipe.reasons).rpartition("; ")[2] if recipe.meets_all else "; ".join(recipe.reasons))
     if recipe.cost_per_t is not None:
         told += [f"cost {numbers.cost(recipe.cost_per_t)} /t", *_dearer(answer, recipe)]
         if recipe.batch_kg is not None:
             whole = numbers.cost(recipe.cost_per_t * recipe.batch_kg / 1000.0)
-            told.append(f"{whole} for {numbers.kg(recipe.batch_kg)} kg")
+            told.append(f"{whole} for {numbers.batch(recipe.batch_kg)} kg")
     elif recipe.shares:
         told.append("cost unknown: the price of a stock is missing")
-    told.append(f"law {recipe.law}")
+    under = len({recipe.law, *recipe.also_laws})
+    told.append(f"law {recipe.law}" + (f", held under {under} laws" if under > 1 else ""))
     if recipe.gap is not None and state.blend is None and recipe.status in ("optimal", "stopped"):
         told.append(f"proven to {numbers.figures(max(1e-4, 100.0 * recipe.gap), 1)} %")
     if answer.guard_cost_per_t is not None:
@@ -196,6 +201,16 @@ def _facts(state: RecipeState, answer: Answer, recipe: Recipe) -> list[str]:
     elif answer.best.shares and "largest" not in answer.done:
         told.append("ranges are being worked out …")
     return told
+
+
+def _laws_differ(recipe: Recipe) -> list[str]:
+    """That the laws differ by more than may pass without a mark; where a blend is needed, which keys plan it."""
+    widest = max((x for x in recipe.spread_pct.values() if x is not None), default=0.0)
+    if widest <= blends.SPREAD_MARKED or set(recipe.lessons) - set(recipe.provisional):
+        return []
+    if widest <= blends.SPREAD_DOUBTED:
+        return [f"! laws differ {numbers.fixed(widest, 1)} %"]
+    return [f"! laws differ {numbers.fixed(widest, 0)} %: laboratory blend needed (8, p plans)"]
 
 
 def _dearer(answer: Answer, recipe: Recipe) -> list[str]:
@@ -218,6 +233,7 @@ def notes(answer: Answer, recipe: Recipe, today: date, width: int, rest: list[st
     """The limits as a table, what the head had no room for, and every remark, laid for a width."""
     lines: list[Line] = [[(line, BAD)] for b in recipe.breaches for line in wrap(f"! {b}", width - 1, "  ")]
     lines += limit_table(recipe, answer.target, width)
+    rest = [said for said in rest if said not in recipe.reasons]  # those are remarks
     for said in [*([" · ".join(rest)] if rest else []), *remarks(answer, recipe, today)]:
         marked = said.startswith("!")
         lines += [[(line, WARN if marked else PLAIN)] for line in wrap(said, width - 1, "  ")]
@@ -232,8 +248,18 @@ def limit_table(recipe: Recipe, target: Target, width: int) -> list[Line]:
                           *((" " + fit(t, w, "right"), BOLD) for t, w in zip(titles, LIMIT_WIDTHS, strict=True))]]
     for limit in recipe.limits:
         typed = next((x.guard_pct for x in target.limits if x.property == limit.property and x.guard_pct), None)
-        lines.append(_limit_line(limit, name, guard_text(limit, typed)))
+        lines.append(_limit_line(limit, _limit_name(recipe, limit, name), guard_text(limit, typed)))
     return lines
+
+
+def _limit_name(recipe: Recipe, limit: LimitResult, width: int) -> str:
+    """What is limited, with its unit; beside a viscosity the spread of the laws, where it is a what-if that it is."""
+    code, unit = limit.property, words.unit(limit.property)
+    label = words.heading(code) + (f", {unit}" if unit else "")
+    if MOVED in limit.sources:
+        return fit(f"what-if {label}", width)
+    apart = words.laws_apart(recipe, code)
+    return fit(f"{label} {apart}" if apart and cell_len(label) + cell_len(apart) < width else label, width)
 
 
 def guard_text(limit: LimitResult, typed_pct: float | None) -> str:
@@ -251,13 +277,11 @@ def guard_text(limit: LimitResult, typed_pct: float | None) -> str:
     return text.rstrip("0").rstrip(".") if "." in text else text
 
 
-def _limit_line(limit: LimitResult, name: int, guard: str) -> Line:
+def _limit_line(limit: LimitResult, name: str, guard: str) -> Line:
     code = limit.property
-    unit = words.unit(code)
-    label = words.heading(code) + (f", {unit}" if unit else "")
     lead = next((x for x in (limit.value, limit.low, limit.high) if x is not None), None)
     decimals = len(numbers.kv(lead).partition(".")[2]) if numbers.is_kv(code) and lead is not None else None
-    line: Line = [(fit(label, name), PLAIN)]
+    line: Line = [(name, WARN if "! laws" in name or name.startswith("what-if") else PLAIN)]
     margin = _figure(code, limit.margin, decimals)
     if limit.met is False and not margin.strip("-0."):
         margin = words.fine(code, limit.margin)
@@ -279,12 +303,11 @@ def _figure(code: str, value: float | None, decimals: int | None) -> str:
 
 def remarks(answer: Answer, recipe: Recipe, today: date) -> list[str]:
     """Everything else there is to say of a recipe, a sentence each; what must not be missed begins with !."""
-    said = [f"! {reason}" for reason in recipe.reasons]
+    said = [reason if recipe.status == "optimal" else f"! {reason}" for reason in recipe.reasons]
     said += list(answer.more) if recipe is answer.best else []
-    if recipe.status == "infeasible" and recipe.shares:
-        said.append("! this is the nearest blend, not a recipe: it misses " + "; ".join(words.misses(recipe)))
-    if recipe.status == "infeasible":
-        said.append("5 tells why nothing fits, and what it would take")
+    if recipe.status == "infeasible" and not recipe.meets_all:
+        nearest = "! this is the nearest blend, not a recipe; " if recipe.shares else ""
+        said.append(nearest + "5 tells why nothing fits, and what it would take")
     binding = [f"{words.heading(x.property)} ({x.binding})" for x in recipe.limits if x.binding]
     said.append("binds: " + (", ".join(binding) or "no limit; only shares or quantities"))
     said += _under(recipe) + _taught(recipe)
@@ -326,7 +349,9 @@ def _taught(recipe: Recipe) -> list[str]:
 
 def _others(recipe: Recipe) -> list[str]:
     limited = {x.property for x in recipe.limits}
-    shown = [f"{words.heading(code)} {words.amount(code, value)}" for code, value in recipe.predicted.items()
+    apart = {code: f" ({told})" for code in recipe.predicted if (told := words.laws_apart(recipe, code))}
+    shown = [f"{words.heading(code)} {words.amount(code, value)}{apart.get(code, '')}"
+             for code, value in recipe.predicted.items()
              if value is not None and code not in limited and _figure(code, value, None).strip("0.-")]
     return ["also predicted: " + ", ".join(shown)] if shown else []
 
@@ -345,9 +370,11 @@ def _wished(answer: Answer) -> list[str]:
     wishes: list[str] = [f"{harmless(c)} {numbers.pct(x)} %" for c, x in answer.wishes.held.items()]
     said = ["held by you: " + ", ".join(wishes)] if wishes else []
     if answer.wishes.moved:
-        moved = [f"{words.heading(code)} {side} {'open' if at != at else words.amount(code, at)}"
-                 for (code, side), at in answer.wishes.moved.items()]
-        said.append(f"! what-if, not what the product asks: {', '.join(moved)}; c on this screen clears it")
+        moved = ", ".join(words.moved(code, side, at) for (code, side), at in answer.wishes.moved.items())
+        said.append(f"! what-if, not what the product asks: {moved}; c on this screen clears it")
+    if answer.wishes.confidence is not None:
+        asked = f"asked by you: each limit with a chance of {100.0 * answer.wishes.confidence:.4g} % on the first batch"
+        said.append(asked if answer.plain else f"{asked}; no blend meets the limits even without it")
     if answer.wishes.left_out:
         said.append("left out by you: " + ", ".join(harmless(c) for c in sorted(answer.wishes.left_out)))
     return said

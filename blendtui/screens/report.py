@@ -12,13 +12,13 @@ from typing import Any
 
 from textual.widget import Widget
 
-from blendtui.desk.answers import Answer
+from blendtui.desk.answers import Answer, Wishes
 from blendtui.desk.errors import DeskError
 from blendtui.store.errors import PlantError
 from blendtui.store.harmless import harmless
 from blendtui.widgets.head import Head
 from blendtui.widgets.page_text import PageText
-from blendtui.widgets.paint import BAD, PLAIN, Line, wrap
+from blendtui.widgets.paint import BAD, PLAIN, Line, cut_line, wrap
 from solver.errors import SolverError
 
 from . import messages, words
@@ -29,14 +29,13 @@ from .base import Page
 class ReportPage(Page):
     """Head, and a text that grows while its report is worked out."""
 
-    WORKING = "working it out …"
-
     def __init__(self) -> None:
         super().__init__()
         self.head = Head()
         self.text = PageText(id="text")
         self.text.active = True
         self.asked: Any = None  # what the newest report is of
+        self.wishes: Wishes | None = None  # of the newest report: with others one reads from the top
         self.request = 0
         self.report: Any = None
         self.refusal = ""
@@ -66,7 +65,6 @@ class ReportPage(Page):
     def refresh_page(self) -> None:
         """Show what is there, and ask for what is not."""
         state = self.session.state
-        self.head.show([words.summary(self.session)])
         self.title_line.show(harmless(self.session.product))
         if state.error:
             self.text.show([[(line, BAD)] for line in wrap(f"! {state.error}", self.size.width)])
@@ -75,11 +73,21 @@ class ReportPage(Page):
             if wanted != self.asked:
                 self._ask(state.answer, wanted)
             self.show_report()
+        self._show_head()
         super().refresh_page()
+
+    def _show_head(self) -> None:
+        """The recipe in a line that is seen to be cut; below it, wherever one reads, that more is to come."""
+        more = "working it out …" if self.report is None else "working out more …"
+        self.head.show([cut_line(words.summary(self.session), self.size.width),
+                        [("" if self.done or self.session.state.error else more, PLAIN)]])
 
     def _ask(self, answer: Answer, wanted: Any) -> None:
         self._newer.set()
         self._newer = newer = threading.Event()
+        if answer.wishes != self.wishes:
+            self.text.top = 0
+        self.wishes = answer.wishes
         self.asked, self.request, self.report, self.refusal, self.done = wanted, self.request + 1, None, "", False
         number = self.request
         self.program.run_worker(lambda: self._work(number, answer, newer), thread=True, group=self.NAME,
@@ -107,12 +115,8 @@ class ReportPage(Page):
             self.report = message.report if not message.refusal else self.report
             self.refusal, self.done = message.refusal, message.last
             self.show_report()
+            self._show_head()
             self.show_keys()
-
-    def stop(self) -> None:
-        """Stop the work: what is there stays."""
-        self._newer.set()
-        self.done = True
 
     def show_report(self) -> None:
         """Lay the report for this width."""
@@ -120,8 +124,6 @@ class ReportPage(Page):
         shown: list[Line] = [[(line, BAD)] for line in wrap(f"! {self.refusal}", width)] if self.refusal else []
         if self.report is not None:
             shown += self.lines(self.report, width)
-        if not self.done:
-            shown.append([(self.WORKING, PLAIN)])
         self.text.show(shown)
 
     def on_resize(self) -> None:

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import replace
 from typing import Any
 
 from blendtui import commands
 from blendtui.desk.answers import Answer
+from blendtui.desk.errors import DeskError
 from blendtui.desk.reasons import Report, limited, order_of, reasons
 from blendtui.store.harmless import harmless
 from blendtui.widgets.paint import BAD, BOLD, PLAIN, Line
 
+from . import words
 from .report import ReportPage
 
 
@@ -19,7 +21,6 @@ class WhyScreen(ReportPage):
     """Why nothing fits, and what it would take."""
 
     NAME = commands.WHY
-    WORKING = "asking the rows …"
 
     def __init__(self) -> None:
         super().__init__()
@@ -58,8 +59,8 @@ class WhyScreen(ReportPage):
             told = "; ".join(change_words(c).partition(":")[0] for c in giving.changes)
             what = f"what-if on {harmless(wishes.product)}: {told}"
             self.session.wish(replace(wishes, moved={**wishes.moved, **giving.moved}, typed=None), what)
-            self.program.say(f"{what}. u takes it back; the product itself is as it was")
             self.program.go(commands.RECIPE)
+            self.program.say(f"{what}. u takes it back; the product itself is as it was")
 
     def do_order(self) -> None:
         """Type what may give, the first one first and most."""
@@ -71,9 +72,26 @@ class WhyScreen(ReportPage):
 
         def then(order: tuple[str, ...]) -> None:
             self.orders[product] = order
-            self.program.say(f"may give, in this order: {', '.join(order)}; all else stays firm" if order else
+            self.program.say(f"may give, in this order: {_names(order)}; all else stays firm" if order else
                              "every limit may give again, by the least sum of misses")
             self.refresh_page()
 
-        self.type_checked("what may give, first one first (of " + ", ".join(codes) + "; empty: all)",
-                          ",".join(self.orders.get(product, ())), lambda text: order_of(text, codes), then)
+        self.type_checked(f"what may give, first one first (of {_names(codes)}; empty: all)",
+                          _names(self.orders.get(product, ())), lambda text: order_of(_coded(text, codes), codes), then)
+
+
+def _names(codes: Sequence[str]) -> str:
+    return ", ".join(words.heading(code) for code in codes)
+
+
+def _coded(typed: str, codes: Sequence[str]) -> str:
+    """The order with what is typed as a name, or the beginning of one, as its code; DeskError names those there are."""
+    found = []
+    for part in (" ".join(each.split()) for each in typed.split(",")):
+        able = [c for c in codes if part and part.lower() in (c, words.heading(c).lower())] or [
+            c for c in codes if part and words.heading(c).lower().startswith(part.lower())]
+        if part and len(able) != 1:
+            raise DeskError(f"{harmless(part, 40)!r} is not limited here; what may give is {_names(codes)}, "
+                            "parted by commas")
+        found += able
+    return ",".join(found)

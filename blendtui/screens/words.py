@@ -81,14 +81,41 @@ def misses(recipe: Recipe) -> list[str]:
     return [missed(x) for x in recipe.limits if x.met is False]
 
 
+def laws_apart(recipe: Recipe, code: str) -> str:
+    """How far the laws are apart on a viscosity, to stand beside it: `laws 1.5 %`, `! laws 4.3 %`; else nothing."""
+    spread = recipe.spread_pct.get(code)
+    if spread is None:
+        return ""
+    from blendtui.desk.blends import SPREAD_MARKED
+
+    sign = "! " if spread > SPREAD_MARKED else ""
+    return f"{sign}laws {numbers.fixed(spread, 0 if spread >= 99.95 else 1)} %"
+
+
+def moved(code: str, side: str, at: float) -> str:
+    """A limit as it is moved by a what-if: `VI at least 109`, `KV40 at most open`."""
+    return f"{heading(code)} {'at least' if side == 'low' else 'at most'} {'open' if at != at else amount(code, at)}"
+
+
+def chance(before: Wishes, asked: float) -> str:
+    """What is asked of the recipe from now on, and which of the wishes before it that takes the place of."""
+    dropped = ", charges of any mass again" if before.whole else ""
+    return f"asked: each limit with a chance of {100.0 * asked:.4g} %{dropped}"
+
+
 def shares(recipe: Recipe) -> str:
     """The shares in a line, largest first."""
     ordered = sorted((recipe.shares or {}).items(), key=lambda item: -item[1])
     return ", ".join(f"{code} {numbers.pct(share)} %" for code, share in ordered)
 
 
-def verdict(recipe: Recipe) -> Run:
-    """What kind of answer this is, in words and with a sign."""
+def verdict(recipe: Recipe, what_if: bool = False) -> Run:
+    """What kind of answer this is, in words and with a sign. `what_if`: limits are not those of the product."""
+    text, style = _verdict(recipe)
+    return (f"! WHAT-IF: {text.removeprefix('! ')}", BAD if style is BAD else WARN) if what_if else (text, style)
+
+
+def _verdict(recipe: Recipe) -> Run:
     if recipe.status == "optimal":
         return "least cost, proven", BOLD
     if recipe.status == "infeasible" and recipe.meets_all:
@@ -96,12 +123,13 @@ def verdict(recipe: Recipe) -> Run:
     if recipe.status == "infeasible":
         return "! no blend meets it", BAD
     if recipe.status == "stopped":
-        return "! stopped before the proof" if recipe.shares else "! stopped: no blend found yet", WARN
+        return "! best found, not proven the cheapest" if recipe.shares else "! stopped: no blend found yet", WARN
     outside = bool(misses(recipe))
     if recipe.breaches:
         return "! by hand, breaks the product's rules" + (" and misses limits" if outside else ""), BAD
     if outside or not recipe.meets_all:
-        return "! by hand, limits missed", BAD
+        guards = all(in_guard(x) for x in recipe.limits if x.met is False)
+        return "! by hand, inside the limits but not their guards" if guards else "! by hand, limits missed", BAD
     unknown = any(x.met is None for x in recipe.limits)
     return f"by hand, inside all {'known ' if unknown else ''}limits", BOLD
 
@@ -116,9 +144,10 @@ def summary(session: Session) -> Line:
         return [*start, (f"! {state.error}", BAD)]
     if recipe is None:
         return [*start, ("working out the recipe …", PLAIN)]
-    cost = f" {numbers.cost(recipe.cost_per_t)} /t" if recipe.cost_per_t is not None else ""
+    nearest = "; the nearest" if recipe.status == "infeasible" and not recipe.meets_all and recipe.shares else ""
+    cost = f"{nearest} {numbers.cost(recipe.cost_per_t)} /t" if recipe.cost_per_t is not None else nearest
     told = "; ".join([*recipe.breaches, *misses(recipe)]) or shares(recipe) or "; ".join(recipe.reasons)
-    return [*start, verdict(recipe), (f"{cost} │ {told}", PLAIN)]
+    return [*start, verdict(recipe, bool(state.wishes.moved)), (f"{cost} │ {told}", PLAIN)]
 
 
 def changed_cell(before: Snapshot, after: Snapshot) -> str:
@@ -142,8 +171,8 @@ def forgotten(wishes: Wishes, kept: bool) -> list[str]:
     told += [f"{harmless(c)} left out" for c in sorted(wishes.left_out)]
     if wishes.batch_kg is not None:
         told.append(f"batch {numbers.kg(wishes.batch_kg)} kg")
-    told += [f"what-if on {heading(code)} {side}" for code, side in wishes.moved]
-    told += ["every law at once"] if wishes.also_laws else []
+    told += [f"what-if {moved(code, side, at)}" for (code, side), at in wishes.moved.items()]
+    told += [f"held under {', '.join(wishes.also_laws)}"] if wishes.also_laws else []
     told += ["whole steps"] if wishes.whole else []
     told += [f"chance {100.0 * wishes.confidence:.4g} %"] if wishes.confidence is not None else []
     if wishes.law and not (wishes.typed and kept):

@@ -21,10 +21,11 @@ class TitleLine(Canvas):
         self.names = tuple(names)
         self.current = current
         self.remark = ""
+        self.more: tuple[str, ...] = ()
 
-    def show(self, remark: str) -> None:
-        """Show a remark."""
-        self.remark = remark
+    def show(self, remark: str, *more: str) -> None:
+        """Show a remark, and of what more there is to say as much as finds room whole."""
+        self.remark, self.more = remark, more
         self.paint()
 
     def draw(self, width: int, height: int) -> list[Line]:
@@ -37,7 +38,13 @@ class TitleLine(Canvas):
             gap = "" if after else " "
             line += [(f"[{key} {name}]", CURSOR) if open_here else (f"{gap}{key} {name}", PLAIN)]
         used = sum(len(text) for text, _ in line)
-        return [[*line, (" " + fit(self.remark, max(0, width - used - 1), "right"), PLAIN)]]
+        room, remark = max(0, width - used - 1), self.remark
+        for part in self.more:
+            # Half a number reads as another one, so a part that is cut is left out.
+            if cell_len(remark + part) > room:
+                break
+            remark += part
+        return [[*line, (" " + fit(remark, room, "right"), PLAIN)]]
 
 
 class StatusLine(Canvas):

@@ -48,7 +48,7 @@ class PageText(Canvas):
         seen = self.lines[self.top:self.top + height]
         below = len(self.lines) - self.top - height
         if below > 0 and seen:
-            said = f"↓ {below + 1} more lines: Tab, then the arrows" if not self.active else f"↓ {below + 1} more lines"
+            said = f"↓ {below + 1} more lines: {'PgDn' if self.active else 'Tab, then the arrows'}"
             seen[-1] = [(fit(said, width), DIM)]
         if self.top > 0 and len(seen) > 2:
             seen[0] = [(fit(f"↑ {self.top + 1} more lines", width), DIM)]

@@ -30,7 +30,7 @@ _COLOURLESS = {BAD: BOLD, WARN: BOLD}
 _ASCII = str.maketrans({
     "–": "-", "—": "-", "−": "-", "·": ".", "•": "*", "…": "~", "²": "2", "³": "3", "°": " ", "│": "|",
     "─": "-", "█": "#", "░": ".", "▌": "#", "◆": "O", "→": ">", "←": "<", "▸": ">", "◂": "<", "↑": "^", "↓": "v",
-    "≤": "<", "≥": ">", "×": "x", "±": "~", "ρ": "r", "’": "'", "Σ": "S", "ω": "w",
+    "≤": "<", "≥": ">", "×": "x", "±": "~", "ρ": "r", "’": "'", "Σ": "S", "ω": "w", "σ": "s",
 })
 
 
@@ -94,6 +94,22 @@ def _fit_wide(text: str, width: int, align: str) -> str:
         text += "…"
     blank = " " * (width - cell_len(text))
     return blank + text if align == "right" else text + blank
+
+
+def cut_line(line: Line, width: int) -> Line:
+    """A line of at most so many columns; where it is cut it ends in an ellipsis.
+
+    >>> cut_line([("least cost, ", None), ("926.77 /t", None)], 16)
+    [('least cost, ', None), ('926…', None)]
+    """
+    kept: Line = []
+    room = width
+    for text, style in line:
+        if cell_len(text) > room:
+            return [*kept, (fit(text, room), style)]
+        kept.append((text, style))
+        room -= cell_len(text)
+    return kept
 
 
 def cells(line: Iterable[Run], width: int) -> list[Cell]:

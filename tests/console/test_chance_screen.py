@@ -69,7 +69,7 @@ async def test_c_steps_through_the_chances_and_back(path: Path, size: Size) -> N
         for asked in (0.9, 0.95, 0.99):
             await driver.press("c")
             assert driver.app.session.state.wishes.confidence == asked
-            assert f"each limit met with a chance of {100 * asked:g} %" in driver.status
+            assert f"asked: each limit with a chance of {100 * asked:g} %" in driver.status
             if driver.app.session.shown.status != "infeasible":
                 assert min(chances(driver).values()) >= asked - 0.005
         await driver.press("c")

@@ -43,6 +43,9 @@ async def test_everything_is_worked_out_and_fits_the_width(path: Path, size: Siz
         assert max(map(len, lines_of(driver))) < size[0]
         assert driver.text().splitlines()[0].startswith(" 1 Stocks")
         assert "widest margin" in driver.text()
+        differ = [a for a in driver.page.report.aims if a.recipe and max(a.recipe.spread_pct.values()) > 10.0]
+        assert len(differ) == text.count("the laws differ widely: a laboratory blend is needed")
+        assert bool(differ) == ("p on the screen Lab, plans a laboratory blend" in text)
 
 
 async def test_an_aim_is_marked_taken_and_taken_back(path: Path, size: Size) -> None:
@@ -128,13 +131,13 @@ async def test_a_sweep_stands_above_with_its_numbers(path: Path, size: Size) -> 
     async with started(path, size, screen="6") as driver:
         await driver.press("s")
         await driver.type("vi low 85 125")
-        assert lines_of(driver)[0] == "least cost, per t, against viscosity index, at least"
+        assert lines_of(driver)[0] == "least cost, per t, against viscosity index, at least, its guard in it"
         seen = driver.text()
         assert "•" in seen
-        assert "now 93.0" in seen
-        assert "85.0" in seen
-        assert "125.0" in seen
-        numbers = [line for line in lines_of(driver) if re.match(r" +\d+\.\d +(\d+\.\d\d|–)", line)]
+        assert "↑ now 93 " in seen
+        (ends,) = [line.split() for line in seen.splitlines() if "↑ now" in line]
+        assert (ends[0], ends[-1]) == ("85", "125")
+        numbers = [line for line in lines_of(driver) if re.match(r" +\d+(\.\d)? +(\d+\.\d\d|–)", line)]
         assert len(numbers) == 60
         assert "no blend" in report_of(driver)
         assert "OTHER AIMS" in report_of(driver)
@@ -188,10 +191,15 @@ async def test_what_cannot_be_swept_is_said_in_a_line(path: Path, size: Size) ->
     async with started(path, size, screen="6") as driver:
         for typed, told in (("vj low", "unknown property 'vj'"), ("price", "is no sweep"),
                             ("price GONE", "no stock 'GONE'"), ("vi low a b", "a")):
-            await driver.press("s")
+            if not driver.page.edit.active:
+                await driver.press("s")
+            await driver.press("ctrl+u")
             await driver.type(typed)
             assert told in driver.status
             assert not driver.page.sweeping
+            assert driver.page.edit.typing.text == typed  # it comes back to the line
+        await driver.press("escape")
+        assert not driver.page.edit.active
 
 
 async def test_a_sweep_goes_with_its_target(path: Path) -> None:

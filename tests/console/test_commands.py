@@ -43,7 +43,7 @@ async def test_the_key_line_shows_the_screens_own_keys_and_help(path: Path, size
         assert "? help" in line
         assert "u undo" in line
         for command in commands.of(screen):
-            if command.screen == screen and command.listed:
+            if command.screen == screen and command.listed and (not command.late or size[0] >= 110):
                 assert f"{command.key} {command.label}" in line, command
 
 
@@ -120,7 +120,7 @@ async def test_escape_never_leaves_a_screen(path: Path) -> None:
         for key, screen in (("2", "targets"), ("4", "trials"), ("3", "recipe"), ("1", "stocks")):
             await driver.press(key, "escape")
             assert driver.app.current_mode == screen
-            assert driver.page.status.message == "Esc leaves nothing here; 1 to 8 open the screens"
+            assert driver.page.status.message == "nothing to drop here; 1 to 8 open the screens, q leaves"
 
 
 async def test_quit_leaves_at_once_when_all_is_saved(path: Path) -> None:

@@ -246,7 +246,7 @@ async def test_a_wide_spread_of_the_laws_stands_in_the_head(path: Path) -> None:
     async with started(path, screen="3") as driver:
         wide = dataclasses.replace(driver.app.session.shown, spread_pct={"kv40": 12.4, "kv100": None})
         lines, _ = view.head(driver.app.session.state, wide, 80, 2)
-        assert ("! laws differ 12 %: laboratory blend needed", words.WARN) in lines[0]
+        assert ("! laws differ 12 %: laboratory blend needed (8, p plans)", words.WARN) in lines[0]
 
 
 async def test_quit_says_once_what_is_forgotten(path: Path) -> None:

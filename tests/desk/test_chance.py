@@ -97,7 +97,7 @@ def test_every_line_fits_and_says_what_it_must() -> None:
                  "guards are not in them", "scatter of your measured blends", "What more certainty costs"):
         assert word in " ".join(text.split()), word
     # A state is told by a word, and what is doubtful by a sign.
-    assert chance_words.verdict(0.995) == "sure"
+    assert chance_words.verdict(0.995) == "high"
     assert chance_words.verdict(0.3).startswith("!")
 
 

@@ -39,4 +39,5 @@ def test_a_mass_no_bench_can_weigh_is_refused(grams: float) -> None:
 
 def test_one_stock_alone_has_no_pair() -> None:
     made = lab_plan.plan(evaluate(STOCKS, {"THIN": 1.0}), STOCKS)
-    assert made.pairs == () and made.series == ()
+    assert made.pairs == ()
+    assert made.series == ()

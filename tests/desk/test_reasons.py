@@ -64,7 +64,7 @@ def test_every_demand_in_words(demand: Demand, told: str) -> None:
 
 
 @pytest.mark.parametrize(("of", "best", "told"), [
-    (Demand("limit", "kv40", "high", 50.6), 52.073, "the lowest KV40 reachable is 52.07 mm²/s"),
+    (Demand("limit", "kv40", "high", 50.6), 52.073, "the lowest KV40 reachable is 52.08 mm²/s"),
     (Demand("limit", "flash", "low", 240.0), 231.4, "the highest flash point reachable is 231 °C"),
     (Demand("cost", "cost_per_t", "high", 780.0), 800.0, "the least cost reachable is 800.00 /t"),
     (Demand("share", "LIGHT", "low", 0.3), 0.21, "the most LIGHT that can be had is 21.00 %"),
@@ -81,6 +81,21 @@ def test_a_best_never_looks_as_if_it_met_its_limit() -> None:
     assert words.conflict_words(Conflict((of,), of, 162.97)).endswith("is 162.97")
     of = Demand("limit", "kv40", "high", 50.6)
     assert words.conflict_words(Conflict((of,), of, 50.6003)).endswith("is 50.6003 mm²/s")
+
+
+@pytest.mark.parametrize(("of", "best", "told"), [
+    (Demand("limit", "vi", "low", 130.0), 117.6, "is 117"),
+    (Demand("limit", "vi", "low", 130.0), 117.98, "is 118"),  # an extreme is found to 0.05 VI
+    (Demand("limit", "vi", "high", 90.0), 95.4, "is 96"),
+    (Demand("limit", "kv100", "high", 13.0), 13.8643, "is 13.87 mm²/s"),
+    (Demand("limit", "pour", "high", -30.0), -20.8, "is -20 °C"),
+    (Demand("cost", "cost_per_t", "high", 780.0), 800.004, "is 800.01 /t"),
+    (Demand("share", "LIGHT", "low", 0.12349), 0.12347, "is 12.3470 %"),
+    (Demand("share", "LIGHT", "low", 0.3), 0.12347, "is 12.34 %"),
+    (Demand("on hand", "batch", "high", 5000.0), 4999.7, "is 4999.7 kg"),
+])
+def test_what_is_told_to_be_reachable_can_be_asked(of: Demand, best: float, told: str) -> None:
+    assert words.conflict_words(Conflict((of,), of, best)).endswith(told)
 
 
 def test_a_best_with_treat_rates_says_so() -> None:
@@ -101,6 +116,7 @@ def test_changes_in_words() -> None:
     assert words.change_words(Change("vi", "low", 163.0, 109.0, 27.0)) == "VI at least 163 → 109: 27.0 R"
     assert words.change_words(Change("kv40", "high", 50.6, 51.7, 1.78)) == (
         "KV40 at most 50.6 mm²/s → 51.70 mm²/s: 1.78 R")
+    assert words.change_words(Change("vi", "low", 152.0, 150.6, 1.2)) == "VI at least 152 → 150: 1.20 R"
     assert words.change_words(Change("cost_per_t", "high", 700.0, 735.0, 5.0)) == (
         "cost at most 700 /t → 735.00 /t: 5.00 % of itself")
     assert words.change_words(Change("vi", "low", 50.0, None, None)) == (

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from dataclasses import replace
 from itertools import combinations
 
@@ -335,3 +336,58 @@ def test_with_lessons_in_use_every_blend_meets_the_bent_limits_and_none_is_calle
         assert not found.proven
         assert len(found.recipe.shares) <= 3
         assert not evaluate(SMALL, found.recipe.shares, target).breaches
+
+
+@pytest.mark.parametrize("extra", [0.0, 2.0])
+def test_within_an_extra_cost_no_aim_leaves_a_limit_a_rule_or_the_cost(extra: float) -> None:
+    for k in (5, 8, 14, 17):
+        table, target = case(99, k, 4, 6)
+        target = replace(target, max_stocks=3) if k % 2 else target
+        best = design(table, target)
+        assert best.cost_per_t is not None
+        for aim in aims(table, target, extra=extra, trial={table.codes[0]: 0.5, table.codes[1]: 0.5}):
+            if aim.recipe is not None:
+                made = evaluate(table, aim.recipe.shares or {}, target)
+                assert made.meets_all, (k, aim.name)
+                assert made.cost_per_t is not None
+                assert made.cost_per_t <= best.cost_per_t * (1.0 + extra / 100.0 + 3e-6)
+
+
+@pytest.mark.parametrize("k", [1, 2])
+def test_with_lessons_in_use_the_extra_cost_and_the_most_stocks_still_hold(k: int) -> None:
+    """Where following the tangents leads nowhere, the way back to a blend keeps the ceiling and the rules."""
+    table, target = case(31, k, 5, 9)
+    first, second = list(design(table, target).shares or {})[:2]
+    term = {1: 0.00094573, 2: -0.01907103}[k]
+    target = replace(target, max_stocks=3 if k == 1 else None,
+                     lessons=(Excess(first, second, target.law, {40.0: (term,), 100.0: (0.9 * term,)}, "E1"),))
+    best = design(table, target)
+    assert best.cost_per_t is not None
+    extra = {1: 2.0, 2: 0.0}[k]
+    for name in ("fewest-stocks", "least-of", "most-of"):
+        aim = the(name, table, target, extra=extra)  # type: ignore[arg-type]
+        assert aim.recipe is not None
+        assert aim.recipe.cost_per_t is not None
+        assert aim.recipe.meets_all
+        assert aim.recipe.cost_per_t <= best.cost_per_t * (1.0 + extra / 100.0 + 3e-6)
+
+
+def test_fewest_stocks_ends_where_lessons_bend_the_limits() -> None:
+    table, target = case(31, 3, 5, 9)
+    first, second = list(design(table, target).shares or {})[:2]
+    target = replace(target, lessons=(Excess(first, second, target.law, {40.0: (-0.03,), 100.0: (-0.027,)}, "E1"),))
+    aim = the("fewest-stocks", table, target)  # type: ignore[arg-type]
+    assert aim.recipe is not None
+    assert aim.recipe.meets_all
+
+
+def test_equal_prices_and_a_trial_of_nothing() -> None:
+    table, target = case(99, 0, 6, 8)
+    free = [replace(s, price_per_t=0.0) for s in table.stocks]
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        found = the("fewest-stocks", free, target, extra=1.0)
+    assert found.recipe is not None
+    assert found.recipe.meets_all
+    none = the("closest", free, target, trial={s.code: 0.0 for s in free})
+    assert (none.recipe, none.note) == (None, "there is no trial to keep to")

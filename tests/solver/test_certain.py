@@ -201,3 +201,12 @@ def test_what_the_laboratory_taught_is_followed(law: str) -> None:
         assert limit.value == pytest.approx(found.recipe.predicted[limit.property])
         assert limit.chance == pytest.approx(limit.closed, abs=0.005)
         assert limit.chance >= 0.945
+
+
+def test_a_charge_that_no_scale_weighs_is_told_of() -> None:
+    divided = [replace(s, division_kg=500.0) for s in THREE]
+    batch = replace(P46, batch_kg=20_000.0, rules=(ShareRule("BS", 0.01, 0.01),))
+    words = "BS: less than one scale division is charged"
+    assert any(reason.startswith(words) for reason in certain(divided, batch, 0.5).recipe.reasons)
+    fine = certain([replace(s, division_kg=1.0) for s in THREE], batch, 0.5)
+    assert not any("scale division" in reason for reason in fine.recipe.reasons)

@@ -10,7 +10,7 @@ from scipy.stats import multivariate_normal
 
 from solver.closed import POINTS, closed_chances, together
 from solver.confidence import Chances, Subject, chances, draw, first, subject, what_to_test
-from solver.drawn import results
+from solver.drawn import _shifts, results
 from solver.errors import StockError, TargetError
 from solver.recipe import design
 from solver.sigmas import sigma_of, sigma_of_test
@@ -42,7 +42,7 @@ def some_subject(k: int) -> Subject | None:
 
 # From the outside
 
-# practice.md (common practice): ISO VG is ±10 % on KV40; (σ in % of the middle, aim off it in %) → % that miss.
+# Common practice: ISO VG is ±10 % on KV40; (σ in % of the middle, aim off it in %) → % that miss.
 @pytest.mark.parametrize(("sigma", "aim", "misses"), [(2, 0, 0.0), (4, 0, 1.2), (2, 6, 2.3), (3, 6, 9), (4, 6, 16)])
 def test_what_decides_whether_the_first_batch_is_right(sigma: float, aim: float, misses: float) -> None:
     value = 46.0 * (1.0 + aim / 100.0)
@@ -113,7 +113,7 @@ def test_drawn_results_scatter_as_the_budget_says() -> None:
 def test_a_value_scatters_by_its_source() -> None:
     r = sigma_of_test("kv40", 100.0)
     assert r == pytest.approx(100.0 * 0.0122 / 2.77)  # R 1.22 %: ASTM D445, formulated oils at 40 °C (M)
-    # practice.md (common practice): own test 0.25 to 0.44 %, certificate 1.5 %, typical values 5 to 10 % at the most.
+    # Common practice: own test 0.25 to 0.44 %, certificate 1.5 %, typical values 5 to 10 % at the most.
     totals = {source: np.hypot(*sigma_of(replace(N150, source=source), "kv40", 100.0)) for source in SOURCES}
     assert totals["own"] == pytest.approx(r)
     assert totals["certificate"] == pytest.approx(1.5, abs=0.1)
@@ -193,6 +193,28 @@ def test_weighing_follows_the_scale_division_where_there_is_a_batch() -> None:
     assert any("no batch size" in note for note in first(without).notes)
     drawn = np.concatenate([r["kv40"] for r in results(by_scale.carried, 100_000, 1)])
     assert drawn.std() == pytest.approx(first(by_scale).limits[0].sigma, rel=0.02)
+
+
+def test_a_charge_below_one_scale_division_is_told_of_and_counts_for_the_batch_at_most() -> None:
+    divided = [replace(s, division_kg=100.0) for s in (N150, N500)]
+    assert not any("scale division" in note for note in first(half_and_half(*divided, batch_kg=5000.0)).notes)
+    small = half_and_half(*divided, batch_kg=150.0)
+    assert any(note.startswith("N150, N500: less than one scale division is charged") for note in first(small).notes)
+    tiny = draw(half_and_half(*divided, batch_kg=1e-300), first(small), 2000)
+    assert all(x.sigma is not None and np.isfinite(x.sigma) for x in tiny.limits)
+
+
+def test_drawn_stock_values_have_the_covariance_of_their_sources() -> None:
+    stocks = [replace(N150, source="typical"), replace(N500, source="certificate", sigmas={"kv40": 0.0}), BS]
+    errors = subject(stocks, dict.fromkeys(("N150", "N500", "BS"), 1.0 / 3.0), P46).carried.errors
+    plain = {name: np.zeros((3, 2, 2)) for name in ("sources", "drawn")}
+    for name, several in (("sources", [source.shifts for source in errors.sources]), ("drawn", _shifts(errors))):
+        for shifts in several:
+            pair = np.array([shifts.get(code, np.zeros(3)) for code in ("kv40", "kv100")])
+            plain[name] += np.einsum("ai,bi->iab", pair, pair)
+    assert plain["drawn"] == pytest.approx(plain["sources"], rel=1e-12, abs=1e-18)
+    assert plain["drawn"][1, 0] == pytest.approx([0.0, 0.0])
+    assert len(_shifts(errors)) == 2  # the density does not matter where shares mix by mass
 
 
 # What to test

@@ -315,3 +315,26 @@ def test_what_a_stock_was_worked_back_to_is_not_learnt_as_a_pairs_excess() -> No
 
 def test_the_excess_fitted_is_the_excess_applied() -> None:
     assert float(pair_excess(0.3, 0.7, (2.0, 1.0))) == pytest.approx(0.21 * (2.0 + 1.0 * -0.4))
+
+
+@pytest.mark.parametrize("name", MIXTURES)
+def test_leaving_out_is_fitting_to_all_the_others(name: str) -> None:
+    blends = mixture(name).where(np.array([1, 2, 4, 4, 7, 9]))
+    found = fit(blends).by_form
+    for count, form in enumerate(("none", "one", "two")):
+        left_out = []
+        for out in ([0], [1], [2, 3], [4], [5]):
+            rest = [i for i in range(6) if i not in out]
+            left_out += list(blends.where(np.array(out)).error_pct(lab.shrunk(blends.where(np.array(rest)), count)[0]))
+        assert found[form] == pytest.approx(np.mean(left_out), rel=1e-9)
+
+
+def test_compositions_are_told_apart_across_the_grid_that_finds_them() -> None:
+    rng = np.random.default_rng(11)
+    f = rng.uniform(0.3, 0.32, 200)
+    numbers = replace(mixture("ethyl oleate + n-hexadecane, 40 °C"), f=f, g=1.0 - f).compositions()
+    firsts: list[float] = []
+    for value, number in zip(f, numbers, strict=True):
+        near = [i for i, first in enumerate(firsts) if abs(first - value) <= lab.SAME]
+        assert number == (near[0] if near else len(firsts))
+        firsts += [] if near else [float(value)]

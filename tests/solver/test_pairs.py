@@ -72,7 +72,8 @@ def test_the_span_holds_every_blend() -> None:
             low, high = found.span(hi)
             x = rng.dirichlet(np.full(5, 0.4), 4000)
             values = found.value(x[(x <= hi).all(axis=1)])
-            assert low <= values.min() and values.max() <= high
+            assert low <= values.min()
+            assert values.max() <= high
 
 
 def a_bent_case(k: int) -> tuple[StockTable, Target]:
@@ -124,7 +125,8 @@ def test_it_is_called_proven_only_where_it_is() -> None:
     table, target = a_bent_case(1)
     made = design(table, target)
     assert made.lessons
-    assert made.status == "stopped" and "not proven" in made.reasons[0]
+    assert made.status == "stopped"
+    assert "not proven" in made.reasons[0]
     assert design(table, replace(target, lessons=())).status == "optimal"
     # A lesson of a law that is not in use, or of stocks that are not there, changes nothing.
     other = tuple(replace(e, law="refutas" if target.law != "refutas" else "wright-mass") for e in target.lessons)
@@ -137,7 +139,8 @@ def test_a_recipe_names_its_lessons_and_the_provisional_ones() -> None:
     lesson = Excess("A", "B", "refutas", {40.0: (1.0,)}, version="L7", provisional=True)
     plain = Target("t", (Limit("kv40", 95.0, 105.0),))
     made = design(stocks, replace(plain, lessons=(lesson,)))
-    assert made.lessons == ("L7",) and made.provisional == ("L7",)
+    assert made.lessons == ("L7",)
+    assert made.provisional == ("L7",)
     assert made.predicted["kv40"] == pytest.approx(95.0, rel=1e-6)
     # The excess thickens the blend, so that less of the dear bright stock is needed.
     assert made.cost_per_t < design(stocks, plain).cost_per_t
@@ -159,7 +162,8 @@ def test_ranges_follow_the_tangents_too() -> None:
 @pytest.mark.parametrize("law", LAWS)
 def test_a_stock_blends_with_the_index_that_was_worked_back_for_it(law: str) -> None:
     stocks = [Stock("A", kv40=30.0, kv100=5.2, density15=870.0, price_per_t=800.0, on_hand_kg=1e5),
-              Stock("V", kv40=900.0, kv100=90.0, density15=880.0, price_per_t=3000.0, on_hand_kg=1e5, kind="vi_improver")]
+              Stock("V", kv40=900.0, kv100=90.0, density15=880.0, price_per_t=3000.0, on_hand_kg=1e5,
+                    kind="vi_improver")]
     table = StockTable(stocks)
     plain = viscosity_gauge(law, table, 100.0)
     own = float(plain.num[1] / plain.den[1])
@@ -172,9 +176,12 @@ def test_a_stock_blends_with_the_index_that_was_worked_back_for_it(law: str) -> 
     weight = float(plain.den[1] * x[1] / (plain.den @ x))
     assert gauge.index_of(x) - plain.index_of(x) == pytest.approx(more * weight)
     assert gauge.excess is None  # a straight row still: the recipe stays proven
-    target = Target("t", (Limit("kv100", plain.read(x)),), rules=(ShareRule("V", 0.0, 0.2),), law=law, lessons=(taught,))
+    target = Target("t", (Limit("kv100", plain.read(x)),), rules=(ShareRule("V", 0.0, 0.2),), law=law,
+                    lessons=(taught,))
     made = design(stocks, target)
-    assert made.status == "optimal" and made.lessons == ("L3",) and not made.warnings
+    assert made.status == "optimal"
+    assert made.lessons == ("L3",)
+    assert not made.warnings
     assert made.cost_per_t < design(stocks, replace(target, lessons=())).cost_per_t
     outside = evaluate(stocks, {"A": 0.85, "V": 0.15}, target)
     assert "holds from 2.00 to 10.00 %" in outside.warnings[0]

@@ -105,3 +105,16 @@ def test_a_stock_without_a_density_is_left_out_when_a_volume_law_must_hold_too()
     out = design(bare, replace(target, also_laws=("walther-volume",))).left_out
     assert [x.stock for x in out] == [table.codes[0]]
     assert "walther-volume" in out[0].reason
+
+
+def test_the_nearest_blend_names_a_limit_once_that_is_missed_under_several_laws() -> None:
+    table, target = case(31, 3, 8, 16)
+    high = replace(target, limits=(*target.limits[:2], Limit("vi", 190.0)), also_laws=ALL, batch_kg=None)
+    found = design(table, high)
+    assert found.status == "infeasible"
+    (words,) = found.reasons
+    assert words.count("viscosity index") == 1
+    # The miss that is told is that of the law under which it is widest.
+    x = np.array([found.shares.get(code, 0.0) for code in table.codes])
+    least = min(values(table, x, law)[2] for law in ALL)
+    assert f"{190.0 - least:.3g} below the 190" in words

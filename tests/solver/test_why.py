@@ -16,18 +16,19 @@ import pytest
 from solver.demands import Demand, Demands
 from solver.errors import TargetError
 from solver.giving import Giving, giving
+from solver.laws import viscosity_gauge
 from solver.linear import Stopwatch
 from solver.properties import lookup
 from solver.purchase import catalogue, least_share, neutral, pairs, region
-from solver.reach import reach
+from solver.reach import extreme, reach
 from solver.recipe import design, evaluate, least_cost
 from solver.requirements import COST
 from solver.rows import build
 from solver.stocks import Stock, StockTable
 from solver.target import LAWS, Limit, ShareRule, Target
-from solver.viscosity_index import indices
+from solver.viscosity_index import indices, kv40_at
 from solver.why import Conflict, Reasons, conflicts, only_whole_numbers, whole_numbers
-from tests.benchmarks.plants import random_plant
+from tests.benchmarks.plants import case, random_plant
 
 
 def stock(code: str, kv40: float, kv100: float, price: float = 800.0, on_hand: float | None = 1e6, **more) -> Stock:  # type: ignore[no-untyped-def]
@@ -566,3 +567,70 @@ def test_two_that_do_together_what_neither_does_alone() -> None:
     assert set(pair.stocks) == {"CLEAN", "MODIFIER"}
     allowed = replace(target, rules=(ShareRule("MODIFIER"),))
     assert pair.cost_per_t == pytest.approx(design(PLANT, allowed).cost_per_t, rel=1e-5)
+
+
+@pytest.mark.parametrize("k", range(8))
+def test_the_best_vi_under_several_laws_is_that_of_a_dense_grid(k: int) -> None:
+    table = random_plant(np.random.default_rng([8, k]), 3)
+    laws = ("wright-volume", "walther-volume", "refutas")
+    parts = [(i, j, 200 - i - j) for i in range(201) for j in range(201 - i)]
+    grid = np.array(parts) / 200.0
+    read = {law: [(g := viscosity_gauge(law, table, t)).value(g.index_of(grid)) for t in (40.0, 100.0)] for law in laws}
+    middle = float(np.median(read["refutas"][0]))
+    inside = np.all([(kv40 >= 0.93 * middle) & (kv40 <= 1.07 * middle) for kv40, _ in read.values()], axis=0)
+    worst = np.min([indices(*pair) for pair in read.values()], axis=0)[inside]
+    asked = Target("P", (Limit("kv40", 0.93 * middle, 1.07 * middle),), law=laws[0], also_laws=laws[1:])
+    found = extreme(build(table, asked), "vi", 1.0, Stopwatch(10.0))
+    assert found is not None
+    assert float(worst.max()) - 0.1 <= found[0] <= float(worst.max()) + 0.5  # the grid's step is coarse near a corner
+    own = [indices(*(viscosity_gauge(law, table, t).read(found[1]) for t in (40.0, 100.0))) for law in laws]
+    assert found[0] == pytest.approx(min(own), abs=1e-6)
+
+
+@pytest.mark.parametrize("k", [43, 114, 139])
+def test_the_best_vi_under_two_laws_may_be_the_best_of_neither(k: int) -> None:
+    rng = np.random.default_rng([8, k])
+    stocks = []
+    for name in ("A", "B", "C"):
+        kv100, vi = float(np.exp(rng.uniform(1.0, 3.5))), float(rng.uniform(75.0, 150.0))
+        density = float(rng.uniform(780.0, 1000.0))
+        stocks.append(replace(stock(name, float(kv40_at(vi, kv100)), kv100), density15=density))
+    table, laws = StockTable(stocks), ("wright-volume", "walther-volume")
+    grid = np.array([(i, j, 300 - i - j) for i in range(301) for j in range(301 - i)]) / 300.0
+    read = [[(g := viscosity_gauge(law, table, t)).value(g.index_of(grid)) for t in (40.0, 100.0)] for law in laws]
+    best = float(np.min([indices(*pair) for pair in read], axis=0).max())
+    asked = Target("P", (Limit("kv40", 1.0, 1e6),), law=laws[0], also_laws=laws[1:])
+    found = extreme(build(table, asked), "vi", 1.0, Stopwatch(10.0))
+    assert found is not None
+    assert found[0] == pytest.approx(best, abs=0.11)
+
+
+# A limit moved as a what-if
+
+@pytest.mark.parametrize("k", range(6))
+def test_a_moved_limit_is_the_limit(k: int) -> None:
+    table, asked = case(15, k, 8, 20, hardest=115.0)
+    lines = {x.property: x for x in asked.limits}
+    least = lines["vi"].low
+    assert least is not None
+
+    def instead(code: str, low: float | None, high: float | None) -> Target:
+        return replace(asked, limits=(*(x for c, x in lines.items() if c != code), Limit(code, low, high)))
+
+    for moved, same in (
+            ({("vi", "low"): least + 3.0}, instead("vi", least + 3.0, None)),
+            ({("vi", "low"): least - 6.0}, instead("vi", least - 6.0, None)),
+            ({("vi", "high"): least + 1.0}, instead("vi", least, least + 1.0)),
+            ({("vi", "low"): np.nan}, replace(asked, limits=(lines["kv40"], lines["kv100"]))),
+            ({("kv40", "high"): np.nan}, instead("kv40", lines["kv40"].low, None)),
+            ({("flash", "low"): 220.0}, instead("flash", 220.0, None)),
+            ({("kv0", "high"): 3000.0}, instead("kv0", None, 3000.0))):
+        made, other = design(table, replace(asked, moved=moved)), design(table, same)
+        assert made.status == other.status
+        assert made.cost_per_t == pytest.approx(other.cost_per_t, rel=2e-6)
+
+
+def test_a_limit_cannot_be_moved_to_infinity() -> None:
+    for code in ("vi", "cost_per_t"):
+        with pytest.raises(TargetError, match=f"{code}: a limit cannot be moved to inf"):
+            design(THREE, replace(ORDERED, moved={(code, "high"): np.inf}))
