@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import Any, ClassVar
 
 from textual.app import App
+from textual.await_complete import AwaitComplete
 from textual.binding import Binding, BindingType
 
 from blendtui import commands
@@ -148,8 +149,7 @@ class Console(App[int]):
         self._pending_changes += 1
         with self._gate:
             self._tasks.append((work, done, failed))
-            start = not self._draining
-            self._draining = True
+            start, self._draining = not self._draining, True
         if start:
             self.run_worker(self._drain, thread=True, group="plant", exit_on_error=False)
         self.set_timer(asker.PATIENCE, self._say_waiting)
@@ -224,8 +224,7 @@ class Console(App[int]):
         def look() -> tuple[Snapshot, str, str] | None:
             if plant.revision() == known:
                 return None
-            last = plant.journal(1)[0]
-            return read(plant), last.who, last.what
+            return read(plant), (last := plant.journal(1)[0]).who, last.what
 
         def done(found: tuple[Snapshot, str, str] | None) -> None:
             if found is not None and found[0].revision != self.session.snapshot.revision:
@@ -317,6 +316,10 @@ class Console(App[int]):
         for event in ahead:
             page.take_event(event)
 
+    def pop_screen(self) -> AwaitComplete:
+        """Leave an overlay; a second key that came before it was gone finds nothing to leave."""
+        return super().pop_screen() if len(self.screen_stack) > 1 else AwaitComplete.nothing()
+
     def do_back(self) -> None:
         """Esc where there is nothing to drop."""
         self.say("nothing to drop here; 1 to 8 open the screens, q leaves")
@@ -394,6 +397,3 @@ def run(path: Path | None) -> int:
         os._exit(code)
     loop.close()
     return code
-
-
-__all__ = ["Console", "run"]

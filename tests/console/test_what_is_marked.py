@@ -194,3 +194,13 @@ async def test_a_wish_that_takes_the_place_of_another_says_so(path: Path) -> Non
         assert driver.status == "charges in whole steps, no chance asked any more; u takes it back"
         await driver.press("7", "c")
         assert driver.status == "asked: each limit with a chance of 90 %, charges of any mass again; u takes it back"
+
+
+@pytest.mark.parametrize("overlay", ["?", "!", ":"])
+async def test_two_keys_at_once_leave_an_overlay_and_nothing_else(path: Path, overlay: str) -> None:
+    async with started(path, screen="3") as driver:
+        await driver.press(overlay)
+        driver.send("escape", "escape", "escape")
+        await driver.settle()
+        assert driver.app.is_running
+        assert driver.app.screen is driver.page
