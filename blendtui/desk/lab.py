@@ -261,12 +261,12 @@ def confirm(plant: Plant, name: str) -> str:
     """Say that what is doubtful of a blend is so: it may teach from now on."""
     found = blend(plant, name)
     if found.confirmed:
-        return f"{harmless(name)} is confirmed already"
+        raise DeskError(f"{harmless(name)} is confirmed already; nothing was changed")
     record = read(plant)
     # Under one law it may be doubtful and under another not: what any of them asks may be settled.
     asked = [question for law in LAWS for question in checked(record, law).questions.get(name, ())]
     if not asked:
-        return f"nothing about {harmless(name)} is doubtful; there is nothing to confirm"
+        raise DeskError(f"nothing about {harmless(name)} is doubtful: there is nothing to confirm")
     fault = next((q for q in asked if q.fault), None)
     if fault is not None:
         raise DeskError(f"{fault}; that cannot be confirmed: drop the blend and record it anew")

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from solver.recipe import LimitResult, Recipe
 
 WIDTH = 80
+TRACE = 1e-6  # mass fraction: what a search leaves of a stock that nobody could weigh
 NOT_A_CERTIFICATE = "A calculated blend is not a certificate: the laboratory releases."
 # Common practice on the floor; each a reminder with its reason, never a permission.
 CAUTIONS = (
@@ -61,7 +62,7 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
     total = sum(recipe.shares.values())
     if abs(total - 1.0) > 1e-4:
         raise DeskError(f"the shares sum to {100 * total:.2f} %, not to 100 %; mend them before writing a sheet")
-    used = charge_order([s for s in stocks if recipe.shares.get(s.code, 0.0) > 0.0])
+    used = charge_order([s for s in stocks if recipe.shares.get(s.code, 0.0) > TRACE])
     title = _cut(f"{product.product}  {product.name}".strip(), 60)
     lines = ["BLEND SHEET  " + title, "=" * WIDTH,
              f"Plant {_cut(plant, 70)}",
@@ -70,7 +71,7 @@ def floor_sheet(plant: str, product: Product, recipe: Recipe, stocks: Sequence[S
     moved = [lookup(x.property).name for x in recipe.limits if MOVED in x.sources]
     if moved:
         words = f"*** WHAT-IF, DO NOT BLEND: not the product's own limit on {', '.join(moved)} ***"
-        lines += textwrap.wrap(words, WIDTH)
+        lines += [*textwrap.wrap(_ascii(words), WIDTH), ""]
     if not recipe.meets_all:
         lines += ["*** DO NOT BLEND: this does not meet the product as it stands ***"]
         lines += [line for words in recipe.breaches
@@ -91,15 +92,18 @@ def _ascii_lines(lines: Sequence[str]) -> str:
 
 
 def _laws(recipe: Recipe) -> str:
-    return recipe.law + (f" (and {len(set(recipe.also_laws) - {recipe.law})} more)" if recipe.also_laws else "")
+    more = len(set(recipe.also_laws) - {recipe.law})
+    return recipe.law + (f" (and {more} more, see below)" if more else "")
 
 
 def _taught(recipe: Recipe) -> list[str]:
-    """Which of the laboratory's lessons are in the figures."""
+    """Which further laws the limits were held under, and which of the laboratory's lessons are in the figures."""
+    under = [law for law in recipe.also_laws if law != recipe.law]
     if not recipe.lessons:
-        return []
+        return [f"Held under {', '.join(under)} too."] if under else []
     unsure = f"; provisional: {', '.join(recipe.provisional)}" if recipe.provisional else ""
-    return [f"With the laboratory's lessons {', '.join(recipe.lessons)}{unsure}."]
+    return [*([f"Held under {', '.join(under)} too."] if under else []),
+            f"With the laboratory's lessons {', '.join(recipe.lessons)}{unsure}."]
 
 
 def _status(recipe: Recipe) -> str:

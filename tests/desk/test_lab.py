@@ -145,7 +145,8 @@ def test_a_doubtful_blend_teaches_nothing_until_it_is_confirmed(plant):
     assert lab.confirm(plant, "sus") == "measured blend sus confirmed"
     found = lab.checked(lab.read(plant))
     assert ([b.name for b in found.usable], found.state(found.usable[0])) == (["sus"], "confirmed")
-    assert lab.confirm(plant, "sus") == "sus is confirmed already"
+    with pytest.raises(DeskError, match="sus is confirmed already"):
+        lab.confirm(plant, "sus")
     assert plant.undo() == "undone: measured blend sus confirmed"
     assert lab.checked(lab.read(plant)).usable == ()
 
@@ -155,7 +156,8 @@ def test_it_may_be_confirmed_as_it_is_recorded(plant):
     assert (made.message, made.blend.confirmed, len(made.questions)) == ("high recorded, confirmed", True, 2)
     plain = put(plant, "plain", {"A": 0.5, "B": 0.5}, confirmed=True)
     assert (plain.message, plain.blend.confirmed) == ("plain recorded", False)
-    assert lab.confirm(plant, "plain") == "nothing about plain is doubtful; there is nothing to confirm"
+    with pytest.raises(DeskError, match="nothing about plain is doubtful"):
+        lab.confirm(plant, "plain")
 
 
 def test_what_is_wrong_cannot_be_confirmed(plant):
