@@ -73,6 +73,11 @@ class Requirement:
         under = self.held_low - value if self.held_low is not None else 0.0
         return max(0.0, over, under)
 
+    def units_missed(self, value: float) -> float:
+        """The miss in units of the method's reproducibility at the limit that is missed."""
+        low = self.held_low is not None and value < self.held_low
+        return self.miss(value) / self.unit_of_miss("low" if low else "high")
+
     def tolerance(self) -> float:
         """Rounding allowed when a value is checked against the held limits: 1e-6 of it, VI 1e-4."""
         if self.code == "vi":
