@@ -17,9 +17,9 @@ import numpy as np
 from .allowed import candidates
 from .closed import along_of, closed_chances, known, together, value_of
 from .drawn import met, results
-from .errors import TargetError
 from .laws import check_law, predict
 from .properties import Array
+from .recipe import given
 from .requirements import Requirement, required
 from .rows import as_table
 from .sigmas import sigma_of, source_of
@@ -107,14 +107,7 @@ def subject(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float], t
     """
     table = as_table(stocks)
     check_law(target.law)
-    x = np.zeros(len(table))
-    for code, share in shares.items():
-        if not (np.isfinite(share) and share >= 0.0):
-            raise TargetError(f"{code}: a share of {100 * share:g} % cannot be; shares lie within 0 to 100 %",
-                              where=code)
-        x[table.index(code)] += share
-    if abs(x.sum() - 1.0) > 1.0001e-4:
-        raise TargetError(f"the shares sum to {100 * x.sum():.7g} %, not to 100 %; mend them", where="shares")
+    x = given(table, shares)
     needs, _ = required(target, table.where(candidates(table, target)))
     used = np.flatnonzero(x > USED)
     kept, y = table.where(used), x[used] / x[used].sum()

@@ -191,6 +191,19 @@ def evaluate(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float],
     table = as_table(stocks)
     goal = target or Target("")
     goal = replace(goal, law=check_law(law or goal.law))
+    x = given(table, shares)
+    x /= x.sum()
+    used = np.flatnonzero(x > 0.0)
+    needs, tests = required(goal, table.where(candidates(table, goal))) if target is not None else ((), ())
+    made = _read(table.where(used), x[used], goal, needs)
+    return replace(made, to_be_tested=tests, breaches=breaches(table, x, goal) if target is not None else ())
+
+
+def given(table: StockTable, shares: Mapping[str, float]) -> Array:
+    """Given mass fractions as a blend x, shape (n,), as they sum.
+
+    Raises StockError for an unknown stock, TargetError for a share that cannot be or a sum off 1 by over 1e-4.
+    """
     x = np.zeros(len(table))
     for code, share in shares.items():
         if not (np.isfinite(share) and share >= 0.0):
@@ -199,11 +212,7 @@ def evaluate(stocks: StockTable | Iterable[Stock], shares: Mapping[str, float],
         x[table.index(code)] += share
     if abs(x.sum() - 1.0) > 1.0001e-4:
         raise TargetError(f"the shares sum to {100 * x.sum():.7g} %, not to 100 %; mend them", where="shares")
-    x /= x.sum()
-    used = np.flatnonzero(x > 0.0)
-    needs, tests = required(goal, table.where(candidates(table, goal))) if target is not None else ((), ())
-    made = _read(table.where(used), x[used], goal, needs)
-    return replace(made, to_be_tested=tests, breaches=breaches(table, x, goal) if target is not None else ())
+    return x
 
 
 def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement, ...]) -> Recipe:

@@ -40,11 +40,6 @@ SHORT,BS,,20
 """
 
 
-@pytest.fixture(autouse=True)
-def _own_data_folder(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setenv("XDG_DATA_HOME", str(tmp_path / "data"))
-
-
 @pytest.fixture
 def folder(tmp_path: Path) -> Path:
     """A small catalogue folder."""

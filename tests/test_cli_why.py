@@ -36,11 +36,6 @@ THIN,group III,,0
 }
 
 
-@pytest.fixture(autouse=True)
-def _own_data_folder(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setenv("XDG_DATA_HOME", str(tmp_path / "data"))
-
-
 @pytest.fixture
 def folder(tmp_path: Path) -> str:
     """A small catalogue folder."""
