@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from .errors import TargetError
+from .errors import StockError, TargetError
 from .laws import basis_of, knows_viscosity
 from .properties import Array
 from .requirements import Requirement
@@ -79,7 +79,7 @@ def breaches(table: StockTable, x: Array, target: Target) -> tuple[str, ...]:
     found = []
     listed = set(candidates(table, replace(target, held={}, left_out=frozenset())))
     for rule in target.rules:
-        share = float(sum(x[i] for i, s in enumerate(table.stocks) if s.code == rule.of or s.matches(rule.of)))
+        share = float(sum(x[i] * s.part_of(rule.of) for i, s in enumerate(table.stocks)))
         if not rule.low - CLOSE <= share <= rule.high + CLOSE:
             found.append(f"{rule.of} {100 * share:.2f} %, the product asks {_span(rule)}")
     capped = {rule.of for rule in target.rules if rule.high <= 0.0}
@@ -113,8 +113,8 @@ def candidates(table: StockTable, target: Target) -> list[int]:
     With only_listed nothing unnamed; otherwise base stocks unless capped at 0, and every other kind only
     where a line names it (by stock, oil or kind). What the operator leaves out stays out.
     """
-    return [i for i, stock in enumerate(table.stocks)
-            if stock.code not in target.left_out and (stock.code in target.held or _permitted(stock, target))]
+    return [i for i, stock in enumerate(table.stocks) if stock.in_vessel_kg is not None or (
+        stock.code not in target.left_out and (stock.code in target.held or _permitted(stock, target)))]
 
 
 def _permitted(stock: Stock, target: Target) -> bool:
@@ -136,6 +136,9 @@ def serving(table: StockTable, permitted: Sequence[int], target: Target,
     keep, out = [], []
     for i in permitted:
         reason = _reason(table.stocks[i], bool(viscous[i]), target, requirements)
+        if reason is not None and table.stocks[i].in_vessel_kg is not None:
+            raise StockError(f"{reason.stock} is in the vessel, and {reason.reason}; type it or measure it",
+                             stock=reason.stock, cell=reason.cell)
         if reason is None:
             keep.append(i)
         else:
@@ -146,7 +149,7 @@ def serving(table: StockTable, permitted: Sequence[int], target: Target,
 
 def _reason(stock: Stock, viscous: bool, target: Target,
             requirements: Sequence[Requirement]) -> LeftOut | None:
-    if stock.price_per_t is None:
+    if stock.price_per_t is None and stock.in_vessel_kg is None:
         return LeftOut(stock.code, "its price is unknown", "price_per_t")
     if stock.available_kg is None:
         return LeftOut(stock.code, "its quantity is unknown", "on_hand_kg")
@@ -158,14 +161,13 @@ def _reason(stock: Stock, viscous: bool, target: Target,
     for need in requirements:
         if need.entry.basis not in ("mass", "volume") or need.unknown_ok:
             continue
-        value = stock.density15 if need.code == "density15" else stock.values.get(need.code)
-        if value is None:
+        if stock.value_of(need.code) is None:
             return LeftOut(stock.code, f"its {need.entry.name} is unknown and the product limits it",
                            need.code)
         if need.entry.basis == "volume" and stock.density15 is None:
             return LeftOut(stock.code, f"its density is unknown and {need.entry.name} mixes by volume",
                            "density15")
-    if stock.available_kg <= 0.0:
+    if stock.available_kg <= 0.0 and stock.in_vessel_kg is None:
         return LeftOut(stock.code, "nothing pumpable is left in the tank")
     return None
 
@@ -174,7 +176,7 @@ def _check_demands(table: StockTable, keep: Sequence[int], out: Sequence[LeftOut
     unknown = {x.stock: x for x in out if x.cell}
     demands = [ShareRule(code, share) for code, share in target.held.items()]
     for rule in [r for r in target.rules if r.low > 0.0] + [d for d in demands if d.low > 0.0]:
-        if any(table.stocks[i].matches(rule.of) for i in keep):
+        if any(table.stocks[i].part_of(rule.of) > 0.0 for i in keep):
             continue
         missing = next((unknown[s.code] for s in table.stocks
                         if s.matches(rule.of) and s.code in unknown), None)

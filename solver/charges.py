@@ -28,7 +28,13 @@ class Demand:
     of: str
     low: float  # mass fraction
     high: float
-    members: tuple[int, ...]  # positions of the stocks it speaks of
+    members: tuple[int, ...]  # positions of the stocks it speaks of that can be charged
+    parts: Array  # (n,) how much of each stock it counts: what is in the vessel by what that was made of
+
+    @property
+    def of_one(self) -> bool:
+        """Does it bound the charge of a single stock, and nothing else?"""
+        return len(self.members) == 1 and float(self.parts.sum()) == 1.0
 
 
 @dataclass(frozen=True)
@@ -102,25 +108,27 @@ class Charges:
         under, over = 1.0 - tolerance / self.batch, 1.0 + tolerance / self.batch
         lo, hi = np.zeros(len(self.step)), np.minimum(self.most / self.batch, over)
         for demand in self.demands:
-            if len(demand.members) == 1:
+            if demand.of_one:
                 (i,), give = demand.members, self.rounding(demand, tolerance) / self.batch
                 # Rounded a demand may be, left out never.
                 least = self.least[i] / self.batch if demand.low > 0.0 else 0.0
                 lo[i] = max(lo[i], demand.low * under - give, least)
                 hi[i] = min(hi[i], demand.high * over + give)
+        for i, stock in enumerate(self.model.table.stocks):
+            if stock.in_vessel_kg is not None:
+                lo[i] = hi[i] = stock.in_vessel_kg / self.batch
         return lo, hi
 
     def _share_rows(self, tolerance: float) -> Iterator[tuple[Array, float]]:
         """A row for each side of each rule, and the room that rounding to a step needs, in batches."""
         for demand in self.demands:
             give = self.rounding(demand, tolerance) / self.batch
-            inside = np.zeros(len(self.step))
-            inside[list(demand.members)] = 1.0
+            inside = demand.parts
             if demand.high < 1.0:
                 yield inside - demand.high, give
             if demand.low > 0.0:
                 yield demand.low - inside, give
-                if give > 0.0:
+                if give > 0.0 and demand.members:
                     yield -inside, -min(self.least[i] for i in demand.members) / self.batch
 
     def rounding(self, demand: Demand, tolerance: float) -> float:
@@ -140,7 +148,7 @@ class Charges:
         """Rules on one stock that no whole step comes within half a step of, in words."""
         found = []
         for demand in self.demands:
-            if len(demand.members) != 1 or demand.low <= 0.0:
+            if not demand.of_one or demand.low <= 0.0:
                 continue
             i = demand.members[0]
             high, least = demand.high * self.batch, float(self.least[i])
@@ -178,14 +186,16 @@ def _check(stock: Stock) -> None:
 def _demands(model: Model) -> Iterator[Demand]:
     stocks, target = model.table.stocks, model.target
     for rule in target.rules:
-        members = tuple(i for i, s in enumerate(stocks) if s.code == rule.of or s.matches(rule.of))
+        members = tuple(i for i, s in enumerate(stocks) if s.matches(rule.of) and s.in_vessel_kg is None)
+        parts = np.array([s.part_of(rule.of) for s in stocks])
         # One that nothing serves and that demands something stays: no charges keep it.
-        if rule.low > 0.0 or (members and rule.high < 1.0):
-            yield Demand(rule.of, rule.low, rule.high, members)
+        if rule.low > 0.0 or (parts.any() and rule.high < 1.0):
+            yield Demand(rule.of, rule.low, rule.high, members, parts)
     for code, share in target.held.items():
         here = code in model.table.codes
         if here or share > 0.0:
-            yield Demand(code, share, share, (model.table.codes.index(code),) if here else ())
+            place = (model.table.codes.index(code),) if here else ()
+            yield Demand(code, share, share, place, np.array([float(i in place) for i in range(len(stocks))]))
 
 
 def kg(mass: float) -> str:

@@ -128,7 +128,7 @@ class Demands:
         if demand.kind == "cost":
             return max(0.0, float(table.price @ x) / limit - 1.0 - 1e-6) / COST_UNIT
         if demand.kind == "share":
-            share = float(x @ [s.code == demand.name or s.matches(demand.name) for s in table.stocks])
+            share = float(x @ [s.part_of(demand.name) for s in table.stocks])
             return _over(share - limit if demand.side == "high" else limit - share)
         if demand.kind == "held":
             share = float(x[table.index(demand.name)]) if demand.name in table.codes else 0.0

@@ -109,7 +109,7 @@ def _reach(model: Model, sign: float, watch: Stopwatch) -> float | None:
     """The largest (sign −1) or least (sign 1) sum of shares that bounds and rules allow; None: none at all."""
     n = len(model.table)
     of_one = {row.name for row in model.rows if row.of_shares}
-    rules = [(np.array([1.0 if s.matches(r.of) else 0.0 for s in model.table.stocks]), r)
+    rules = [(np.array([s.part_of(r.of) for s in model.table.stocks]), r)
              for r in model.target.rules if r.of in of_one]
     rows = [np.append(inside, -rule.high) for inside, rule in rules if rule.high < 1.0]
     rows += [np.append(-inside, rule.low) for inside, rule in rules if rule.low > 0.0]

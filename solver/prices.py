@@ -117,7 +117,7 @@ class LimitPrices(Priced):
 
     def _shares(self, x: Array) -> Iterator[LimitPrice]:
         for k, rule in enumerate(self.target.rules):
-            share = float(sum(v for v, s in zip(x, self.model.table.stocks, strict=True) if s.matches(rule.of)))
+            share = float(sum(v * s.part_of(rule.of) for v, s in zip(x, self.model.table.stocks, strict=True)))
             fixed = rule.high - rule.low <= AT
             sides = [("low", rule.low, rule.low > 0.0), ("high", rule.high, rule.high < 1.0)]
             for side, at, asked in [("both", rule.low, rule.high > 0.0)] if fixed else sides:

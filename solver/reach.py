@@ -79,7 +79,7 @@ def _best_of(demands: Demands, of: Demand, others: Held, watch: Stopwatch) -> fl
 def _share(demands: Demands, of: Demand, others: Held, watch: Stopwatch) -> float | None:
     """The share nearest to what a rule or a hold asks that the other demands allow."""
     model = demands.only(others)
-    inside = np.array([1.0 if s.code == of.name or s.matches(of.name) else 0.0 for s in model.table.stocks])
+    inside = np.array([s.part_of(of.name) for s in model.table.stocks])
     if model.short or not inside.any():
         return 0.0 if of.side == "low" else None
     signs = {"low": (-1.0,), "high": (1.0,)}.get(of.side, (-1.0, 1.0))

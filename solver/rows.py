@@ -219,7 +219,7 @@ def _share_rows(kept: StockTable, target: Target, table: StockTable) -> list[Row
     for rule in target.rules:
         if _of_one_stock(rule, table):
             continue
-        inside = np.array([1.0 if s.matches(rule.of) else 0.0 for s in kept.stocks])
+        inside = np.array([s.part_of(rule.of) for s in kept.stocks])
         if rule.high < 1.0:
             rows.append(Row(rule.of, "high", scale(inside - rule.high), of_shares=True))
         if rule.low > 0.0:
@@ -228,18 +228,21 @@ def _share_rows(kept: StockTable, target: Target, table: StockTable) -> list[Row
 
 
 def _of_one_stock(rule: ShareRule, table: StockTable) -> bool:
-    """Does the rule speak of one stock only, and of no oil that bears its code?"""
-    return rule.of in table.codes and not any(s.oil == rule.of and s.code != rule.of for s in table.stocks)
+    """Does the rule speak of one stock only, of no oil that bears its code and of nothing made of it?"""
+    return rule.of in table.codes and not any(s.part_of(rule.of) > 0.0 for s in table.stocks if s.code != rule.of)
 
 
 def _bounds(kept: StockTable, target: Target, table: StockTable) -> tuple[Array, Array, tuple[str, ...]]:
     n = len(kept)
     lo, hi = np.zeros(n), np.ones(n)
     short = [f"{rule.of}: at least {100 * rule.low:g} % is asked, and none of it can serve"
-             for rule in target.rules if rule.low > 0.0 and not any(s.matches(rule.of) for s in kept.stocks)]
+             for rule in target.rules if rule.low > 0.0 and not any(s.part_of(rule.of) > 0.0 for s in kept.stocks)]
     short += [f"{code}: held at {100 * share:g} %, and it cannot serve"
               for code, share in target.held.items() if share > 0.0 and code not in kept.codes]
     for i, stock in enumerate(kept.stocks):
+        if stock.in_vessel_kg is not None:
+            lo[i] = hi[i] = _part_in_vessel(stock, stock.in_vessel_kg, target)
+            continue
         for rule in target.rules:
             if rule.of == stock.code and _of_one_stock(rule, table):
                 lo[i], hi[i] = max(lo[i], rule.low), min(hi[i], rule.high)
@@ -261,3 +264,12 @@ def _bounds(kept: StockTable, target: Target, table: StockTable) -> tuple[Array,
             short.append(f"{stock.code}: the rules ask at least {100 * lo[i]:g} % and at most "
                          f"{100 * hi[i]:g} %")
     return lo, hi, tuple(short)
+
+
+def _part_in_vessel(stock: Stock, kg: float, target: Target) -> float:
+    if target.batch_kg is None:
+        raise TargetError(f"{stock.code} is in the vessel: it takes part in one batch; give its kg", where=stock.code)
+    if not 0.0 <= kg <= target.batch_kg:
+        raise TargetError(f"{stock.code}: {kg:,.0f} kg in the vessel are more than the batch of "
+                          f"{target.batch_kg:,.0f} kg; make more, or draw some off first", where=stock.code)
+    return kg / target.batch_kg

@@ -28,6 +28,7 @@ TO_SIGMA = 1.0 / 2.77  # R is the 95 % limit between two results: 1.96·√2·σ
 FACTORS = {  # source of the value → (σ/σ_test of KV and density, σ/σ_test of every other property)
     "own": (1.0, 1.0),
     "certificate": (3.5, 1.5),
+    "computed": (3.5, 1.5),  # a tank topped up: by the laws from values of different days
     "typical": (9.0, 2.5),
     "": (9.0, 2.5)}  # unknown: no better than typical
 WEIGHING = 0.005  # σ of a charge as a part of it, where no scale division is known (common practice)

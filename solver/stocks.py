@@ -9,12 +9,13 @@ from functools import cached_property
 import numpy as np
 
 from .errors import StockError
-from .properties import Array
+from .properties import Array, volume_at
+from .volume import litres
 from .walther import lines
 
 KINDS = ("base", "vi_improver", "additive", "pour_depressant", "rework")
 GROUPS = ("I", "II", "III", "IV", "V")
-SOURCES = ("own", "certificate", "typical")
+SOURCES = ("own", "certificate", "typical", "computed")  # computed: mixed by the laws, until tested
 
 
 @dataclass(frozen=True)
@@ -28,6 +29,7 @@ class Stock:
     api_group: str = ""  # one of GROUPS or empty
     on_hand_kg: float | None = None
     unpumpable_kg: float | None = None  # bottoms that no pump reaches; None counts as 0
+    reserved_kg: float = 0.0  # promised to open batches
     price_per_t: float | None = None
     density15: float | None = None  # kg/m³ at 15 °C
     kv40: float | None = None  # mm²/s, neat
@@ -41,13 +43,19 @@ class Stock:
     sigmas: Mapping[str, float] = field(default_factory=dict)  # property code → standard deviation of its value
     tested_on: str = ""  # ISO date
     source: str = ""  # one of SOURCES or empty
+    # What is in the vessel already (a heel, flush oil, a charge, a measured batch): exactly this mass takes part in
+    # the batch, whatever the product's list says, and no whole-number rule counts it.
+    in_vessel_kg: float | None = None
+    contents: tuple[tuple[Stock, float], ...] = ()  # what it was made of, mass fractions: share rules count these
 
     @property
     def available_kg(self) -> float | None:
-        """On hand less unpumpable bottoms, never below 0 [kg]; None while the quantity is unknown."""
+        """On hand less unpumpable bottoms and what is promised, never below 0 [kg]; None: the quantity is unknown."""
+        if self.in_vessel_kg is not None:
+            return self.in_vessel_kg
         if self.on_hand_kg is None:
             return None
-        return max(0.0, self.on_hand_kg - (self.unpumpable_kg or 0.0))
+        return max(0.0, self.on_hand_kg - (self.unpumpable_kg or 0.0) - self.reserved_kg)
 
     @property
     def blending_kv(self) -> tuple[float, float] | None:
@@ -61,13 +69,28 @@ class Stock:
     @property
     def counted(self) -> bool:
         """Is it one of the stocks that most-stocks and least-share rules speak of (base and rework)?"""
-        return self.kind in ("base", "rework")
+        return self.kind in ("base", "rework") and self.in_vessel_kg is None
 
     def matches(self, of: str) -> bool:
         """Does a share rule on `of` (a stock code, an oil, a kind, or "group II") speak of this stock?"""
         if of.lower().startswith("group "):
             return self.api_group != "" and self.api_group == of[6:].strip().upper()
         return of in (self.code, self.kind) or (self.oil != "" and of == self.oil)
+
+    def part_of(self, of: str) -> float:
+        """How much of this stock a share rule on `of` counts, 0–1: all of it, or what it is made of."""
+        if self.matches(of):
+            return 1.0
+        return sum(part * stock.part_of(of) for stock, part in self.contents)
+
+    def value_of(self, code: str) -> float | None:
+        """Value of a property that a stock carries or that follows from its density, in the registry's unit."""
+        if code == "density15":
+            return self.density15
+        at = volume_at(code)
+        if at is None:
+            return self.values.get(code)
+        return None if self.density15 is None else litres(1000.0, self.density15, at)
 
 
 class StockTable:
@@ -98,9 +121,7 @@ class StockTable:
 
     def column(self, code: str) -> Array:
         """Values of one registry property [its unit], shape (n,), NaN where unknown."""
-        if code == "density15":
-            return self.density
-        return _array(s.values.get(code) for s in self.stocks)
+        return _array(s.value_of(code) for s in self.stocks)
 
     @cached_property
     def density(self) -> Array:
@@ -109,8 +130,9 @@ class StockTable:
 
     @cached_property
     def price(self) -> Array:
-        """Price [currency/t]."""
-        return _array(s.price_per_t for s in self.stocks)
+        """Price [currency/t]; 0 for what is in the vessel already and has none."""
+        return _array(0.0 if s.price_per_t is None and s.in_vessel_kg is not None else s.price_per_t
+                      for s in self.stocks)
 
     @cached_property
     def available(self) -> Array:

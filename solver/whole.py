@@ -243,11 +243,11 @@ def _rounded(found: _Found) -> tuple[Rounded, ...]:
     charges, made = found.charges, []
     total_kg = float(found.masses.sum())
     for demand in charges.demands:
-        share = float(found.shares[list(demand.members)].sum())
+        share = float(found.shares @ demand.parts)
         if not demand.low - CLOSE <= share <= demand.high + CLOSE:
             off = share - (demand.low if share < demand.low else demand.high)
             made.append(Rounded(demand.of, demand.low, demand.high, share, off * total_kg,
-                                float(min(charges.step[i] for i in demand.members))))
+                                float(min((charges.step[i] for i in demand.members), default=0.0))))
     return tuple(made)
 
 
@@ -295,7 +295,7 @@ def _about(found: _Found, nearest_only: bool = False) -> list[str]:
     charges, masses = found.charges, found.masses
     notes = [_total_words(found, nearest_only), *(_rounded_words(each, charges) for each in _rounded(found))]
     free = [stock.code for stock, mass, step in zip(charges.model.table.stocks, masses, charges.step, strict=True)
-            if mass > 0.0 and step <= 0.0]
+            if mass > 0.0 and step <= 0.0 and stock.in_vessel_kg is None]
     if free:
         notes.append(f"{', '.join(free)}: no division or package is given, any mass is taken for weighable")
     return notes
