@@ -106,7 +106,10 @@ class Database:
 
     @contextmanager
     def reading(self) -> Iterator[sqlite3.Connection]:
-        """A consistent view: every query inside sees the same moment."""
+        """A consistent view: every query inside sees the same moment, that of the transaction under way if there is."""
+        if self.con.in_transaction:
+            yield self.con
+            return
         self._renew()
         with self.words():
             self.con.execute("BEGIN")

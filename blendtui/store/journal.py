@@ -80,6 +80,12 @@ def revision(con: sqlite3.Connection) -> int:
     return int(con.execute("SELECT COALESCE(MAX(id), 0) FROM journal").fetchone()[0])
 
 
+def last_hash(con: sqlite3.Connection) -> str:
+    """Hash of the last entry; of a journal without entries, what stands before the first."""
+    found = con.execute("SELECT hash FROM journal ORDER BY id DESC LIMIT 1").fetchone()
+    return str(found[0]) if found else START
+
+
 def undoable(con: sqlite3.Connection, who: str) -> tuple[int | None, int | None]:
     """The entry that `who` would undo next, and the one that a redo would bring back.
 

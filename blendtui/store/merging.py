@@ -20,13 +20,17 @@ LINES = ("product_limit", "share_rule")
 TRIALS = ("trial", "trial_share")
 # Optional file → the tables that it holds; a folder without it says nothing of them.
 LAB = {"measured.csv": ("measured", "measured_part", "measured_part_value", "measured_value"),
-       "lessons.csv": ("lesson", "lesson_term")}
+       "lessons.csv": ("lesson", "lesson_term"), "vessels.csv": ("vessel",)}
+# What happened: no folder speaks of it, and no import changes it.
+RECORD = ("lot", "tank_lot", "dip", "batch", "content", "charge", "charge_lot", "sample", "result", "decision",
+          "outcome")
 
 
 def merged(old: State, said: State, given: frozenset[str]) -> tuple[State, tuple[str, ...]]:
     """The state after an import, and what it retires: rows that the catalogue lacks stay, marked retired."""
     new = _with_old_lines(old, {table: dict(rows) for table, rows in said.items()})
-    for table in (*OWNED, "measured", "lesson"):
+    new |= {table: dict(old[table]) for table in RECORD}
+    for table in (*OWNED, "measured", "lesson", "vessel"):
         _keep_places(old[table], new[table])
     for table in LINES:
         for product in {key[0] for key in new[table]}:

@@ -12,11 +12,12 @@ from types import TracebackType
 from solver.measured import Measured
 from solver.stocks import Stock
 
-from . import audit, journal, reads, state
+from . import audit, batch_reads, journal, promises, reads, state
+from .batch_records import Batch, Charge, Dip, Lot, Made, Movement, Vessel
 from .database import Database
 from .errors import ChangedSince, NotAPlant, NothingToUndo, ReadOnlyPlant
 from .harmless import harmless
-from .records import Change, Entry, Lesson, Product, Row, Trial
+from .records import Change, Entry, Lesson, Product, Row, Step, Trial
 from .state import Key
 
 
@@ -100,6 +101,51 @@ class Plant:
         with self._lock, self._database.reading() as con:
             return reads.lessons(con, include_withdrawn)
 
+    def vessels(self) -> list[Vessel]:
+        """The vessels in use, in the plant's order."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.vessels(con)
+
+    def batches(self, state: str | None = None) -> list[Batch]:
+        """The headings of batches, newest first; only those in one state if given."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.batches(con, state)
+
+    def batch(self, name: str) -> Made:
+        """One batch with everything that was recorded of it; NoSuchRow when there is none of that name."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.batch(con, name)
+
+    def lots(self, stock: str | None = None) -> list[Lot]:
+        """Receipts of one stock, or of all, oldest first."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.lots(con, stock)
+
+    def tank_lots(self, stock: str) -> dict[str, float]:
+        """Lot → its part of what is in the tank now, largest first; empty: no receipt was ever recorded."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.tank_lots(con, stock)
+
+    def dips(self, stock: str) -> list[Dip]:
+        """Dips of one tank, oldest first."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.dips(con, stock)
+
+    def movements(self, stock: str) -> list[Movement]:
+        """Every movement of one stock, oldest first, with its journal entry."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.movements(con, stock)
+
+    def charges_of(self, *, stock: str | None = None, lot: str | None = None) -> list[Charge]:
+        """Charges of a stock, or that hold a lot (charged as such or mixed in the tank), of all batches."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.charges_of(con, stock, lot)
+
+    def last_hash(self) -> str:
+        """Hash of the last journal entry: on a card or a certificate it pins everything before it."""
+        with self._lock, self._database.reading() as con:
+            return journal.last_hash(con)
+
     def next_version(self) -> str:
         """The version that the next lesson gets; none is ever used twice, not even one that was undone."""
         with self._lock, self._database.reading() as con:
@@ -143,6 +189,18 @@ class Plant:
             self._record(con, changes, what, "")
             return len(changes)
 
+    def step(self, make: Callable[[], Step]) -> Step:
+        """Do what `make` says, which reads the plant while nobody else can change it.
+
+        So a change that rests on what it read (a quantity, an open charge, a promise) never meets another's. An
+        error that `make` raises leaves everything as it was.
+        """
+        self._refuse_folder()
+        with self._lock, self._database.writing(self.who) as con:
+            made = make()
+            self._record(con, [c for c in made.changes if not c.empty], made.what, made.why)
+            return made
+
     def _write(self, changes: Sequence[Change], what: str, why: str) -> int:
         with self._lock, self._database.writing(self.who) as con:
             return self._record(con, changes, what, why)
@@ -153,6 +211,7 @@ class Plant:
             return last
         number = journal.append(con, self.who, what, changes, harmless(why))
         state.apply(con, changes, number, what)
+        promises.refuse_double(con, changes)
         return number
 
     def changed_since(self, change: Change, said: str) -> ChangedSince:

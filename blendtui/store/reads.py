@@ -12,6 +12,7 @@ from solver.measured import Measured, Part
 from solver.stocks import Stock
 from solver.target import Limit, ShareRule
 
+from . import promises
 from .charging import SIGMA
 from .errors import NoSuchRow
 from .harmless import harmless
@@ -30,11 +31,12 @@ def stocks(con: sqlite3.Connection, include_retired: bool = False, code: str | N
     for name, prop, value in con.execute("SELECT stock, property, value FROM stock_value WHERE 1 = 1"
                                          f"{only} ORDER BY property", given):
         values[name][prop] = value
+    promised = promises.reserved(con, code)
     mg = dict(con.execute(f"{QUANTITY}{only.replace('stock', 'm.stock')} GROUP BY m.stock", given))
     rows = con.execute(f"SELECT stock, {', '.join(STOCK_CELLS)} FROM stock WHERE retired <= ?{only} "
                        "ORDER BY position, stock", (int(include_retired), *given))
     return [Stock(code=row[0], **dict(zip(STOCK_CELLS, row[1:], strict=True)), **parted(values.get(row[0], {})),
-                  on_hand_kg=kilograms(mg.get(row[0]))) for row in rows]
+                  on_hand_kg=kilograms(mg.get(row[0])), reserved_kg=promised.get(row[0], 0.0)) for row in rows]
 
 
 def parted(values: Mapping[str, float]) -> dict[str, dict[str, float]]:

@@ -11,7 +11,7 @@ from solver.target import Lesson as Taught
 from .schema import Row, Value
 
 SEPARATOR = "; "  # between the names of the blends that stand behind a lesson
-__all__ = ["SEPARATOR", "Change", "Entry", "Lesson", "Product", "Row", "Trial", "Value"]
+__all__ = ["SEPARATOR", "Change", "Entry", "Lesson", "Product", "Row", "Step", "Trial", "Value"]
 
 
 @dataclass(frozen=True)
@@ -53,6 +53,16 @@ def _shown(column: str, value: Value) -> str:
     if column == "mg" and isinstance(value, int):
         return f"{value / 1e6:g} kg"
     return f"{value:.12g}" if isinstance(value, float) else str(value)
+
+
+@dataclass(frozen=True)
+class Step:
+    """A change that is worked out inside its own transaction, with the plant standing still (Plant.step)."""
+
+    changes: tuple[Change, ...]
+    what: str
+    why: str = ""
+    result: object = None  # for whoever asked
 
 
 @dataclass(frozen=True)

@@ -32,6 +32,21 @@ MEASURED_CELLS = ("product", "measured_on", "method", "note")
 LESSON_CELLS = ("kind", "law", "first", "second", "low_pct", "high_pct", "evidence", "leave_one_out", "provisional",
                 "taken_at", "taken_by", "withdrawn_at", "withdrawn_by", "reason")
 
+VESSEL_CELLS = ("capacity_l", "least_fill_l", "division_kg", "heel_kg", "heel_stock", "flash_margin_c",
+                "flash_margin_on")
+BATCH_CELLS = ("product", "order_no", "customer", "asked", "unit", "batch_kg", "vessel", "mix_c", "formula",
+               "formula_entry", "heel_ignored", "state", "ordered_at", "ordered_by", "note", "closed_at", "closed_by",
+               "why")
+CONTENT_CELLS = ("what", "stock", "kg", "counts", "cells", "parts", "source")
+CHARGE_CELLS = ("round", "stock", "lot", "plan_kg", "tolerance_kg", "celsius", "state", "actual_kg", "actual_lot", "at",
+                "by", "checked_at", "checked_by", "why", "cells", "position")
+SAMPLE_CELLS = ("round", "taken_at", "taken_by", "place", "celsius", "note")
+RESULT_CELLS = ("property", "value", "method", "at", "by", "withdrawn")
+DECISION_CELLS = ("sample", "decision", "words", "at", "by", "why")
+OUTCOME_CELLS = ("what", "kg", "stock", "lot", "at", "by", "why")
+LOT_CELLS = ("received_at", "kg", "certificate", "source", "cells", "from_batch", "by", "note")
+DIP_CELLS = ("dip_kg", "book_kg", "corrected", "at", "by", "why")
+
 TABLES: dict[str, Table] = {
     "stock": Table(("stock",), (*STOCK_CELLS, "position", "retired")),
     "stock_value": Table(("stock", "property"), ("value",)),
@@ -50,6 +65,18 @@ TABLES: dict[str, Table] = {
     "measured_value": Table(("measured", "property"), ("value",)),
     "lesson": Table(("lesson",), (*LESSON_CELLS, "position")),
     "lesson_term": Table(("lesson", "celsius"), ("first_term", "second_term")),
+    "vessel": Table(("vessel",), (*VESSEL_CELLS, "position", "retired")),
+    "lot": Table(("stock", "lot"), LOT_CELLS),
+    "tank_lot": Table(("stock", "lot"), ("part",)),
+    "dip": Table(("stock", "line"), DIP_CELLS),
+    "batch": Table(("batch",), BATCH_CELLS),
+    "content": Table(("batch", "line"), CONTENT_CELLS),
+    "charge": Table(("batch", "line"), CHARGE_CELLS),
+    "charge_lot": Table(("batch", "line", "lot"), ("part",)),
+    "sample": Table(("batch", "sample"), SAMPLE_CELLS),
+    "result": Table(("batch", "sample", "line"), RESULT_CELLS),
+    "decision": Table(("batch", "line"), DECISION_CELLS),
+    "outcome": Table(("batch", "line"), OUTCOME_CELLS),
     # Cells of catalogue columns that mean nothing to this program: kept, so that an export has them again.
     "extra": Table(("table_name", "row_key", "column_name"), ("text",)),
 }
@@ -146,4 +173,66 @@ MIGRATIONS: tuple[tuple[str, ...], ...] = ((
     """CREATE TABLE lesson_term (
         lesson TEXT NOT NULL REFERENCES lesson (lesson), celsius REAL NOT NULL, first_term REAL NOT NULL,
         second_term REAL, PRIMARY KEY (lesson, celsius))""",
+), (
+    """CREATE TABLE vessel (
+        vessel TEXT NOT NULL PRIMARY KEY, capacity_l REAL, least_fill_l REAL, division_kg REAL, heel_kg REAL,
+        heel_stock TEXT NOT NULL, flash_margin_c REAL, flash_margin_on TEXT NOT NULL, position INTEGER NOT NULL,
+        retired INTEGER NOT NULL)""",
+    # A delivery, or rework of a batch. Values as received are JSON by property code; stock may have gone since.
+    """CREATE TABLE lot (
+        stock TEXT NOT NULL, lot TEXT NOT NULL, received_at TEXT NOT NULL, kg REAL NOT NULL,
+        certificate TEXT NOT NULL, source TEXT NOT NULL, cells TEXT NOT NULL, from_batch TEXT NOT NULL,
+        by TEXT NOT NULL, note TEXT NOT NULL, PRIMARY KEY (stock, lot))""",
+    "CREATE INDEX lot_name ON lot (lot)",
+    "CREATE INDEX lot_batch ON lot (from_batch)",
+    # What a tank holds now, in parts of 1: only a receipt changes them, for what is drawn is drawn mixed.
+    """CREATE TABLE tank_lot (
+        stock TEXT NOT NULL, lot TEXT NOT NULL, part REAL NOT NULL, PRIMARY KEY (stock, lot))""",
+    """CREATE TABLE dip (
+        stock TEXT NOT NULL, line INTEGER NOT NULL, dip_kg REAL NOT NULL, book_kg REAL, corrected INTEGER NOT NULL,
+        at TEXT NOT NULL, by TEXT NOT NULL, why TEXT NOT NULL, PRIMARY KEY (stock, line))""",
+    # The product's limits and rules as they were when the order was taken are JSON in `formula`.
+    """CREATE TABLE batch (
+        batch TEXT NOT NULL PRIMARY KEY, product TEXT NOT NULL, order_no TEXT NOT NULL, customer TEXT NOT NULL,
+        asked REAL NOT NULL, unit TEXT NOT NULL, batch_kg REAL NOT NULL, vessel TEXT NOT NULL, mix_c REAL NOT NULL,
+        formula TEXT NOT NULL, formula_entry INTEGER NOT NULL, heel_ignored TEXT NOT NULL, state TEXT NOT NULL,
+        ordered_at TEXT NOT NULL, ordered_by TEXT NOT NULL, note TEXT NOT NULL, closed_at TEXT NOT NULL,
+        closed_by TEXT NOT NULL, why TEXT NOT NULL)""",
+    "CREATE INDEX batch_state ON batch (state)",
+    "CREATE INDEX batch_order ON batch (order_no)",
+    # In the vessel before anything is charged; cells: its values, parts: what it was made of, both JSON.
+    """CREATE TABLE content (
+        batch TEXT NOT NULL REFERENCES batch (batch), line INTEGER NOT NULL, what TEXT NOT NULL, stock TEXT NOT NULL,
+        kg REAL NOT NULL, counts INTEGER NOT NULL, cells TEXT NOT NULL, parts TEXT NOT NULL, source TEXT NOT NULL,
+        PRIMARY KEY (batch, line))""",
+    # cells: the values of the stock at the moment of charging, JSON.
+    """CREATE TABLE charge (
+        batch TEXT NOT NULL REFERENCES batch (batch), line INTEGER NOT NULL, round INTEGER NOT NULL,
+        stock TEXT NOT NULL, lot TEXT NOT NULL, plan_kg REAL NOT NULL, tolerance_kg REAL NOT NULL, celsius REAL,
+        state TEXT NOT NULL, actual_kg REAL, actual_lot TEXT NOT NULL, at TEXT NOT NULL, by TEXT NOT NULL,
+        checked_at TEXT NOT NULL, checked_by TEXT NOT NULL, why TEXT NOT NULL, cells TEXT NOT NULL,
+        position INTEGER NOT NULL, PRIMARY KEY (batch, line))""",
+    "CREATE INDEX charge_planned ON charge (state, stock)",
+    "CREATE INDEX charge_stock ON charge (stock)",
+    """CREATE TABLE charge_lot (
+        batch TEXT NOT NULL, line INTEGER NOT NULL, lot TEXT NOT NULL, part REAL NOT NULL,
+        PRIMARY KEY (batch, line, lot), FOREIGN KEY (batch, line) REFERENCES charge (batch, line))""",
+    "CREATE INDEX charge_lot_name ON charge_lot (lot)",
+    """CREATE TABLE sample (
+        batch TEXT NOT NULL REFERENCES batch (batch), sample INTEGER NOT NULL, round INTEGER NOT NULL,
+        taken_at TEXT NOT NULL, taken_by TEXT NOT NULL, place TEXT NOT NULL, celsius REAL, note TEXT NOT NULL,
+        PRIMARY KEY (batch, sample))""",
+    """CREATE TABLE result (
+        batch TEXT NOT NULL, sample INTEGER NOT NULL, line INTEGER NOT NULL, property TEXT NOT NULL,
+        value REAL NOT NULL, method TEXT NOT NULL, at TEXT NOT NULL, by TEXT NOT NULL, withdrawn TEXT NOT NULL,
+        PRIMARY KEY (batch, sample, line), FOREIGN KEY (batch, sample) REFERENCES sample (batch, sample))""",
+    """CREATE TABLE decision (
+        batch TEXT NOT NULL REFERENCES batch (batch), line INTEGER NOT NULL, sample INTEGER NOT NULL,
+        decision TEXT NOT NULL, words TEXT NOT NULL, at TEXT NOT NULL, by TEXT NOT NULL, why TEXT NOT NULL,
+        PRIMARY KEY (batch, line))""",
+    # What left the vessel: packed, sample, slops, flush, rework, left (as the next heel).
+    """CREATE TABLE outcome (
+        batch TEXT NOT NULL REFERENCES batch (batch), line INTEGER NOT NULL, what TEXT NOT NULL, kg REAL NOT NULL,
+        stock TEXT NOT NULL, lot TEXT NOT NULL, at TEXT NOT NULL, by TEXT NOT NULL, why TEXT NOT NULL,
+        PRIMARY KEY (batch, line))""",
 ))

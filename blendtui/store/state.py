@@ -19,7 +19,9 @@ from .schema import QUANTITY, TABLES
 FEW = 20  # rows that are looked up one by one
 OWNER = {"stock_value": "stock", "quantity": "stock", "product_limit": "product", "share_rule": "product",
          "trial": "product", "trial_share": "trial", "measured_part": "measured",
-         "measured_part_value": "measured_part", "measured_value": "measured", "lesson_term": "lesson"}
+         "measured_part_value": "measured_part", "measured_value": "measured", "lesson_term": "lesson",
+         "content": "batch", "charge": "batch", "charge_lot": "charge", "sample": "batch", "result": "sample",
+         "decision": "batch", "outcome": "batch"}
 LONE_RULE = """
 SELECT r.product, r.of_name, r.line FROM share_rule r JOIN product p ON p.product = r.product AND p.retired = 0
 WHERE r.of_name = ? AND NOT EXISTS (SELECT 1 FROM stock s WHERE s.retired = 0 AND r.of_name IN (s.stock, s.oil))

@@ -62,7 +62,7 @@ def product(**cells: str) -> str:
     ({"kind": "oil"}, "kind: kind 'oil' is not known; usable are base, vi_improver, additive, "
                       "pour_depressant, rework"),
     ({"api_group": "VI"}, "api_group: group 'VI' is not known; usable are I, II, III, IV, V"),
-    ({"source": "friend"}, "source: source 'friend' is not known; usable are own, certificate, typical"),
+    ({"source": "friend"}, "source: source 'friend' is not known; usable are own, certificate, typical, computed"),
     ({"tested_on": "3/4/2026"}, "tested_on: '3/4/2026' is not a date; write year-month-day, such as 2026-03-01"),
     ({"tested_on": "2026-02-30"}, "tested_on: '2026-02-30' is not a date; write year-month-day, such as 2026-03-01"),
     ({"stock": ""}, "stock: the code is empty; give one"),

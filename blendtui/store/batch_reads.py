@@ -1,0 +1,124 @@
+"""Rows of the file as vessels, batches, lots and dips."""
+
+from __future__ import annotations
+
+import json
+import sqlite3
+from collections import defaultdict
+from collections.abc import Mapping
+from dataclasses import replace
+from typing import Any
+
+from .batch_records import Batch, Charge, Content, Decision, Dip, Lot, Made, Movement, Outcome, Result, Sample, Vessel
+from .errors import NoSuchRow
+from .harmless import harmless
+from .schema import QUANTITY, TABLES, VESSEL_CELLS
+
+MAPPINGS = ("cells", "parts")  # columns that hold a JSON object
+
+
+def _read(con: sqlite3.Connection, kind: type, table: str, rest: str = "", given: tuple[Any, ...] = ()) -> list[Any]:
+    """Rows of a table as records whose fields are its columns."""
+    names = [*TABLES[table].keys, *TABLES[table].columns]
+    return [kind(**_cells(names, row)) for row in con.execute(f"SELECT {', '.join(names)} FROM {table} {rest}", given)]
+
+
+def _cells(names: list[str], row: tuple[Any, ...]) -> dict[str, Any]:
+    return {name: json.loads(value) if name in MAPPINGS else value for name, value in zip(names, row, strict=True)}
+
+
+def vessels(con: sqlite3.Connection) -> list[Vessel]:
+    """The vessels in use, in the plant's order."""
+    rows = con.execute(f"SELECT vessel, {', '.join(VESSEL_CELLS)} FROM vessel WHERE retired = 0 "
+                       "ORDER BY position, vessel")
+    return [Vessel(*row) for row in rows]
+
+
+def batches(con: sqlite3.Connection, state: str | None = None) -> list[Batch]:
+    """Headings, newest first."""
+    where, given = ("WHERE state = ?", (state,)) if state is not None else ("", ())
+    return _read(con, Batch, "batch", f"{where} ORDER BY ordered_at DESC, batch DESC", given)
+
+
+def batch(con: sqlite3.Connection, name: str) -> Made:
+    """One batch with all its rows."""
+    heads = _read(con, Batch, "batch", "WHERE batch = ?", (name,))
+    if not heads:
+        last = [row[0] for row in con.execute("SELECT batch FROM batch ORDER BY ordered_at DESC, batch DESC LIMIT 6")]
+        raise NoSuchRow(f"no batch {harmless(name, 40)!r}; " + (f"the latest are {', '.join(last)}" if last
+                                                                 else "the plant has none yet"))
+
+    def rows(kind: type, order: str) -> tuple[Any, ...]:
+        return tuple(_read(con, kind, kind.__name__.lower(), f"WHERE batch = ? ORDER BY {order}", (name,)))
+
+    lots: defaultdict[int, dict[str, float]] = defaultdict(dict)
+    for line, lot, part in con.execute("SELECT line, lot, part FROM charge_lot WHERE batch = ? ORDER BY lot", (name,)):
+        lots[line][lot] = part
+    charges = tuple(replace(c, lots=lots.get(c.line, {})) for c in rows(Charge, "position, line"))
+    return Made(heads[0], rows(Content, "line"), charges, rows(Sample, "sample"), rows(Result, "sample, line"),
+                rows(Decision, "line"), rows(Outcome, "line"))
+
+
+def lots(con: sqlite3.Connection, stock: str | None = None) -> list[Lot]:
+    """Receipts, oldest first."""
+    where, given = ("WHERE stock = ?", (stock,)) if stock is not None else ("", ())
+    return _read(con, Lot, "lot", f"{where} ORDER BY received_at, stock, lot", given)
+
+
+def tank_lots(con: sqlite3.Connection, stock: str) -> dict[str, float]:
+    """Lot → part of the tank."""
+    return dict(con.execute("SELECT lot, part FROM tank_lot WHERE stock = ? ORDER BY part DESC, lot", (stock,)))
+
+
+def dips(con: sqlite3.Connection, stock: str) -> list[Dip]:
+    """Dips, oldest first."""
+    return _read(con, Dip, "dip", "WHERE stock = ? ORDER BY line", (stock,))
+
+
+def movements(con: sqlite3.Connection, stock: str) -> list[Movement]:
+    """Movements, oldest first."""
+    rows = con.execute("SELECT m.stock, m.mg, m.reason, m.journal, j.at, j.who FROM movement m "
+                       "JOIN journal j ON j.id = m.journal WHERE m.stock = ? ORDER BY m.id", (stock,))
+    return [Movement(row[0], None if row[1] is None else row[1] / 1e6, *row[2:]) for row in rows]
+
+
+def charges_of(con: sqlite3.Connection, stock: str | None, lot: str | None) -> list[Charge]:
+    """Charges of all batches that are of a stock, that hold a lot, or both."""
+    names = [f"c.{n}" for n in (*TABLES["charge"].keys, *TABLES["charge"].columns)]
+    tests, given = ["c.state = 'done'"], []
+    if stock is not None:
+        tests.append("c.stock = ?")
+        given.append(stock)
+    join = "LEFT JOIN charge_lot l ON l.batch = c.batch AND l.line = c.line"
+    if lot is not None:
+        join += " AND l.lot = ?"
+        given.insert(0, lot)
+        tests.append("l.lot IS NOT NULL")
+    found: dict[tuple[str, int], Charge] = {}
+    parts: defaultdict[tuple[str, int], dict[str, float]] = defaultdict(dict)
+    rows = con.execute(f"SELECT {', '.join(names)}, l.lot, l.part FROM charge c {join} WHERE {' AND '.join(tests)} "
+                       "ORDER BY c.at, c.batch, c.line", given)
+    for *row, name, part in rows:
+        charge = Charge(**_cells([n[2:] for n in names], tuple(row)))
+        found.setdefault((charge.batch, charge.line), charge)
+        if name is not None:
+            parts[charge.batch, charge.line][name] = part
+    return [replace(charge, lots=parts.get(key, {})) for key, charge in found.items()]
+
+
+def quantity(con: sqlite3.Connection, stock: str) -> int | None:
+    """What the book says of a stock, mg."""
+    found = con.execute(f"{QUANTITY} AND m.stock = ? GROUP BY m.stock", (stock,)).fetchone()
+    return None if found is None else int(found[1])
+
+
+def as_row(record: object, table: str) -> Mapping[str, Any]:
+    """A record as the cells of its row, keys included: objects as JSON in one spelling."""
+    names = (*TABLES[table].keys, *TABLES[table].columns)
+    cells = {name: getattr(record, name) for name in names if hasattr(record, name)}
+    return {name: spelt(value) if name in MAPPINGS else value for name, value in cells.items()}
+
+
+def spelt(value: Mapping[str, float]) -> str:
+    """A mapping as the file holds it."""
+    return json.dumps(dict(value), ensure_ascii=False, sort_keys=True, separators=(",", ":"), allow_nan=False)

@@ -1,0 +1,52 @@
+"""Oil that is planned into open batches is promised: it is not free for another batch."""
+
+from __future__ import annotations
+
+import sqlite3
+from collections.abc import Sequence
+
+from .errors import PlantError
+from .harmless import harmless
+from .records import Change
+from .schema import QUANTITY
+
+PLANNED = "planned"
+LEAST = 1e-3  # kg: what a sum of decimals may be off
+
+
+def reserved(con: sqlite3.Connection, stock: str | None = None) -> dict[str, float]:
+    """Stock → kg that open batches still have to charge of it."""
+    only, given = (" AND stock = ?", (stock,)) if stock is not None else ("", ())
+    return dict(con.execute(f"SELECT stock, SUM(plan_kg) FROM charge WHERE state = '{PLANNED}'{only} GROUP BY stock",
+                            given))
+
+
+def refuse_double(con: sqlite3.Connection, changes: Sequence[Change]) -> None:
+    """PlantError where a change, applied already, promises more of a stock than its tank can give."""
+    for change in changes:
+        if change.table != "charge" or (change.after or {}).get("state", PLANNED) != PLANNED:
+            continue
+        if change.after is not None and ("plan_kg" in change.after or "stock" in change.after):
+            _refuse(con, change)
+
+
+def _refuse(con: sqlite3.Connection, change: Change) -> None:
+    batch, line = change.key["batch"], change.key["line"]
+    stock, state, plan = con.execute("SELECT stock, state, plan_kg FROM charge WHERE batch = ? AND line = ?",
+                                     (batch, line)).fetchone()
+    found = con.execute("SELECT unpumpable_kg FROM stock WHERE stock = ?", (stock,)).fetchone()
+    mg = con.execute(f"{QUANTITY} AND m.stock = ? GROUP BY m.stock", (stock,)).fetchone()
+    if state != PLANNED or found is None or mg is None:
+        return
+    there = mg[1] / 1e6 - (found[0] or 0.0)
+    promised = reserved(con, stock).get(stock, 0.0)
+    if promised <= there + LEAST:
+        return
+    others = con.execute(f"SELECT DISTINCT c.batch, b.ordered_by FROM charge c JOIN batch b ON b.batch = c.batch "
+                         f"WHERE c.stock = ? AND c.state = '{PLANNED}' AND c.batch <> ? ORDER BY c.batch",
+                         (stock, batch)).fetchall()
+    whose = ", ".join(f"{harmless(b, 40)} ({harmless(who, 40)})" for b, who in others[:4])
+    free = max(0.0, there - promised + plan)
+    raise PlantError(f"{harmless(stock, 40)}: {plan:,.1f} kg are planned and {free:,.1f} kg are free"
+                     + (f"; the rest is promised to {whose}" if others else "; the tank holds no more")
+                     + "; design the batch again")
