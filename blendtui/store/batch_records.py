@@ -5,13 +5,10 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
-from .promises import PLANNED
-
 OPEN, RELEASED, CANCELLED, REWORKED = "open", "released", "cancelled", "reworked"  # states of a batch
-DONE, DROPPED = "done", "dropped"  # states of a charge, beside PLANNED
+PLANNED, DONE, DROPPED = "planned", "done", "dropped"  # states of a charge
 HEEL, LINE, FLUSH = "heel", "line", "flush"  # what may be in a vessel before anything is charged
 PACKED, SAMPLE, SLOPS, REWORK, LEFT = "packed", "sample", "slops", "rework", "left"  # what leaves it, beside FLUSH
-__all__ = ["PLANNED"]
 
 
 @dataclass(frozen=True)

@@ -5,12 +5,12 @@ from __future__ import annotations
 import sqlite3
 from collections.abc import Sequence
 
+from .batch_records import PLANNED
 from .errors import PlantError
 from .harmless import harmless
 from .records import Change
 from .schema import QUANTITY
 
-PLANNED = "planned"
 LEAST = 1e-3  # kg: what a sum of decimals may be off
 
 
