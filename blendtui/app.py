@@ -34,7 +34,7 @@ from blendtui.store.harmless import harmless
 from blendtui.widgets import paint, pasting
 from solver.errors import SolverError
 
-POLL = 2.5  # s between two looks for another person's change
+POLL = 1.4  # s between two looks for another person's change
 KEPT_MESSAGES = 200
 
 Task = tuple[Callable[[], Any], Callable[[Any], None], Callable[[str], None] | None]
@@ -144,19 +144,22 @@ class Console(App[int]):
         return self._pending_changes > 0
 
     def task(self, work: Callable[[], Any], done: Callable[[Any], None],
-             failed: Callable[[str], None] | None = None) -> None:
-        """Do `work` in the plant's thread, after what was asked before; then `done` or `failed` here."""
+             failed: Callable[[str], None] | None = None, *, saying: str = "waiting for the plant file …") -> None:
+        """Do `work` in the plant's thread, after what was asked before; then `done` or `failed` here.
+
+        `saying`: what the status line says where it takes a while.
+        """
         self._pending_changes += 1
         with self._gate:
             self._tasks.append((work, done, failed))
             start, self._draining = not self._draining, True
         if start:
             self.run_worker(self._drain, thread=True, group="plant", exit_on_error=False)
-        self.set_timer(asker.PATIENCE, self._say_waiting)
+        self.set_timer(asker.PATIENCE, lambda: self._say_waiting(saying))
 
-    def _say_waiting(self) -> None:
+    def _say_waiting(self, saying: str) -> None:
         if self.busy:
-            self.page.say("waiting for the plant file …", "wait")
+            self.page.say(saying, "wait")
 
     def _drain(self) -> None:
         while True:
@@ -322,7 +325,7 @@ class Console(App[int]):
 
     def do_back(self) -> None:
         """Esc where there is nothing to drop."""
-        self.say("nothing to drop here; 1 to 8 open the screens, q leaves")
+        self.say("nothing to drop here; 1 to 9 and 0 open the screens, q leaves")
 
     def do_help(self) -> None:
         """Show every command."""

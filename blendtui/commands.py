@@ -8,9 +8,11 @@ from dataclasses import dataclass
 ALL = "everywhere"
 STOCKS, TARGETS, RECIPE, TRIALS = "stocks", "targets", "recipe", "trials"
 WHY, CHOICES, CHANCE, LAB = "why", "choices", "chance", "lab"
+BATCHES, FLOOR = "batches", "floor"
 SCREENS: tuple[tuple[str, str], ...] = ((STOCKS, "Stocks"), (TARGETS, "Targets"), (RECIPE, "Recipe"),
                                         (TRIALS, "Trials"), (WHY, "Why"), (CHOICES, "Else"), (CHANCE, "Sure"),
-                                        (LAB, "Lab"))
+                                        (LAB, "Lab"), (BATCHES, "Batches"), (FLOOR, "Floor"))
+KEYS = {code: str(n % 10) for n, (code, _) in enumerate(SCREENS, 1)}  # the key that opens a screen: 1 to 9, then 0
 MOVES = ("up", "down", "left", "right", "pageup", "pagedown", "home", "end", "ctrl+home", "ctrl+end")
 
 
@@ -49,6 +51,14 @@ COMMANDS: tuple[Command, ...] = (
     _on(STOCKS, "a", "add", "add", "Add a stock under a new code."),
     _on(STOCKS, "c", "copy", "copy", "Copy the stock under the cursor, its quantity aside, under a new code."),
     _on(STOCKS, "d", "retire", "retire", "Take the stock under the cursor out of use; u brings it back."),
+    _on(STOCKS, "i", "receive", "receive", "Record a receipt into the tank under the cursor: kg, lot and the values of "
+        "its certificate; the tank's values are worked out until they are tested."),
+    _on(STOCKS, "p", "dip", "dip", "Record a dip of the tank under the cursor against the book."),
+    _on(STOCKS, "o", "test", "own test", "Give the tank under the cursor the results of its own test: they stand in "
+        "place of what was worked out or certified."),
+    _on(STOCKS, "b", "book", "book", "Show every movement of the stock under the cursor, and the book against the dip.",
+        changes=False),
+    _on(STOCKS, "t", "trace", "trace", "Follow the stock under the cursor, or a lot of it, both ways.", changes=False),
     _on(STOCKS, "v", "add_value", "other", "Give the stock a property that has no column yet, such as "
         "ccs-25."),
 
@@ -142,10 +152,53 @@ COMMANDS: tuple[Command, ...] = (
     _on(LAB, "tab", "pane", "blends/lessons", "Go from the blends to the lessons and back.", shown="Tab",
         changes=False),
 
+    # batches
+    _on(BATCHES, "enter", "open", "floor", "Open the batch under the cursor on the screen Floor.", shown="Enter",
+        changes=False),
+    _on(BATCHES, "/ slash", "filter", "filter", "Show only the batches in whose name, product, vessel, customer, order "
+        "number or state all the typed words are found.", changes=False),
+    _on(BATCHES, "a", "add", "new order", "Take an order for the product all screens speak of: amount, vessel, "
+        "customer, heel and the rest are asked for in turn, then its charges are shown; nothing is written before y."),
+    _on(BATCHES, "d", "cancel", "cancel", "Cancel the batch under the cursor; the reason is asked for, and what was "
+        "promised to it is free again."),
+    _on(BATCHES, "t", "trace", "trace", "Follow a lot, a batch, an order, a customer or a stock both ways, with the "
+        "parts it had.", changes=False),
+    _on(BATCHES, "w", "write", "write card", "Write the card of the batch under the cursor to a file, and say where; a "
+        "name that ends in .html makes a page that prints."),
+
+    # floor
+    _on(FLOOR, "enter", "type", "type", "Type the actual of the charge under the cursor (kg, t, 3 drums); in the "
+        "laboratory, the result of the property under the cursor.", shown="Enter"),
+    _on(FLOOR, "l", "lot", "lot", "Type the lot that is charged in the line under the cursor."),
+    _on(FLOOR, "c", "check", "check", "Second check of the charge under the cursor, under the name of another person."),
+    _on(FLOOR, "x", "miss", "missed", "The charge under the cursor will not be made; the reason is asked for."),
+    _on(FLOOR, "e", "correct", "correct", "Correct the actual of a charge that was made, or withdraw a result; the "
+        "reason is asked for, and what stood there stays on record."),
+    _on(FLOOR, "R", "remedy", "put right", "Show what the batch will be, and the charges to come worked out anew; y "
+        "there puts them in place of the old ones."),
+    _on(FLOOR, "tab", "pane", "charges/lab", "Go from the charges to the laboratory and back.", shown="Tab",
+        changes=False),
+    _on(FLOOR, "s", "sample", "sample", "Record that a sample was taken: place and temperature are asked for."),
+    _on(FLOOR, "v", "verdict", "verdict", "Show the decision that the results ask for, limit by limit, with its "
+        "arithmetic.", changes=False, late=True),
+    _on(FLOOR, "d", "decide", "decide", "Decide on the last sample: release, repeat, fresh sample or trim."),
+    _on(FLOOR, "t", "trim", "trim", "Show what to add so that the measured batch meets every limit; y there plans it."),
+    _on(FLOOR, "p", "out", "pack", "Record what leaves the vessel: kg and as what (packed, sample, slops, flush, "
+        "rework, left).", late=True),
+    _on(FLOOR, "L", "release", "release", "Release the batch under the name of who does; what is missing is named "
+        "first."),
+    _on(FLOOR, "w", "write", "write", "Write the card, or after the release the certificate, to a file; a name that "
+        "ends in .html makes a page that prints.", late=True),
+    _on(FLOOR, "k", "cautions", "cautions", "Show the cautions that apply to these stocks, each with its reason; the "
+        "site's procedure decides.", changes=False),
+    _on(FLOOR, "n", "next", "next", "Go to the next open batch.", changes=False, late=True),
+    _on(FLOOR, "b", "person", "by name", "Type the name under which the steps at this terminal are recorded; empty: "
+        "the login name.", changes=False, late=True),
+
     _on(ALL, "u", "undo", "undo", "Take back your last change, on this screen or another, and say what it was."),
     _on(ALL, "r", "redo", "redo", "Do again what was undone last."),
-    *(_on(ALL, str(n), f"go_{code}", name.lower(), f"Go to the screen {name}.", changes=False, listed=False)
-      for n, (code, name) in enumerate(SCREENS, 1)),
+    *(_on(ALL, KEYS[code], f"go_{code}", name.lower(), f"Go to the screen {name}.", changes=False, listed=False)
+      for code, name in SCREENS),
     Command(MOVES, "move", "move", ALL, "Move by cells, by pages, to the first and last column; with ctrl to the "
             "first and last row.", "arrows, PgUp, PgDn, Home, End", listed=False),
     _on(ALL, "escape", "back", "drop typing", "Drop what is being typed; else take the filter off. It never leaves a "

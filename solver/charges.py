@@ -54,10 +54,12 @@ class Charges:
         stocks = model.table.stocks
         for stock in stocks:
             _check(stock)
-        step = np.array([stock.package_kg or stock.division_kg or 0.0 for stock in stocks])
+        # What is in the vessel already is charged in no steps any more.
+        bulk = [stock if stock.in_vessel_kg is None else Stock(stock.code) for stock in stocks]
+        step = np.array([stock.package_kg or stock.division_kg or 0.0 for stock in bulk])
         there = np.array([s.available_kg or 0.0 for s in stocks])
         whole = Steps(step, np.zeros(len(stocks)))
-        least = np.maximum(step, whole.ceil(np.array([s.least_charge_kg or 0.0 for s in stocks])))
+        least = np.maximum(step, whole.ceil(np.array([s.least_charge_kg or 0.0 for s in bulk])))
         return cls(model, batch, step, least, whole.floor(there), tuple(_demands(model)))
 
     def tolerances(self) -> tuple[float, ...]:

@@ -78,10 +78,17 @@ class Stock:
         return of in (self.code, self.kind) or (self.oil != "" and of == self.oil)
 
     def part_of(self, of: str) -> float:
-        """How much of this stock a share rule on `of` counts, 0–1: all of it, or what it is made of."""
-        if self.matches(of):
+        """How much of this stock a share rule on `of` counts, 0–1: all of it, or what it is made of.
+
+        What is in the vessel has a kind or a group only as far as nobody knows what it was made of; a tank has its
+        own (rework is rework, whatever went into it).
+        """
+        inside = sum(part * stock.part_of(of) for stock, part in self.contents)
+        if not self.matches(of):
+            return inside
+        if self.in_vessel_kg is None or of == self.code or of == self.oil:
             return 1.0
-        return sum(part * stock.part_of(of) for stock, part in self.contents)
+        return inside + max(0.0, 1.0 - sum(part for _, part in self.contents))
 
     def value_of(self, code: str) -> float | None:
         """Value of a property that a stock carries or that follows from its density, in the registry's unit."""

@@ -213,7 +213,7 @@ def _told(found: _Found, least: float | None, time_limit: float) -> WholeRecipe:
     proven = not found.bent and found.cost - found.bound <= 1.01 * GAP * abs(found.cost)
     notes = _about(found)
     if least is not None:
-        notes.append(_extra_words(found.cost - least, least, bool(_rounded(found))))
+        notes.append(_extra_words(found.cost - least, least, bool(rounded_rules(found.charges, found.masses))))
     if not proven and found.bent:
         notes.append("with what the laboratory has taught the limits bend: found step by step, not proven")
     elif not proven:
@@ -235,15 +235,14 @@ def _answer(found: _Found, status: str, least: float | None, missed: tuple[Misse
         replace(recipe, charges_kg=made, batch_kg=sum_kg), made,
         {stocks[i].code: round(float(masses[i] / charges.step[i])) for i in used if stocks[i].package_kg},
         {stocks[i].code: float(charges.step[i]) or None for i in used}, charges.batch, sum_kg, found.tolerance, least,
-        _rounded(found), missed, notes)
+        rounded_rules(charges, masses), missed, notes)
 
 
-def _rounded(found: _Found) -> tuple[Rounded, ...]:
-    """The share rules that the charges keep only to the nearest step."""
-    charges, made = found.charges, []
-    total_kg = float(found.masses.sum())
+def rounded_rules(charges: Charges, masses: Array) -> tuple[Rounded, ...]:
+    """The share rules that exact masses [kg], shape (n,), keep only to the nearest step."""
+    made, total_kg = [], float(masses.sum())
     for demand in charges.demands:
-        share = float(found.shares @ demand.parts)
+        share = float(masses @ demand.parts) / total_kg
         if not demand.low - CLOSE <= share <= demand.high + CLOSE:
             off = share - (demand.low if share < demand.low else demand.high)
             made.append(Rounded(demand.of, demand.low, demand.high, share, off * total_kg,
@@ -293,7 +292,8 @@ def _nearest(charges: Charges, found_free: Outcome, unsettled: bool, watch: Stop
 def _about(found: _Found, nearest_only: bool = False) -> list[str]:
     """The total, rounded rules, and what is charged in any mass."""
     charges, masses = found.charges, found.masses
-    notes = [_total_words(found, nearest_only), *(_rounded_words(each, charges) for each in _rounded(found))]
+    notes = [_total_words(found, nearest_only), *(rounded_words(each, charges.model.table.stocks)
+                                               for each in rounded_rules(charges, masses))]
     free = [stock.code for stock, mass, step in zip(charges.model.table.stocks, masses, charges.step, strict=True)
             if mass > 0.0 and step <= 0.0 and stock.in_vessel_kg is None]
     if free:
@@ -313,9 +313,10 @@ def _total_words(found: _Found, nearest_only: bool) -> str:
             f"{kg(batch)} kg{'' if nearest_only else why}")
 
 
-def _rounded_words(each: Rounded, charges: Charges) -> str:
+def rounded_words(each: Rounded, stocks: Iterable[Stock]) -> str:
+    """What rounding a rule to a whole step makes of it."""
     asked = each.low if each.off_kg < 0.0 else each.high
-    stock = next((s for s in charges.model.table.stocks if s.code == each.of), None)
+    stock = next((s for s in stocks if s.code == each.of), None)
     unit = "package" if stock is not None and stock.package_kg else "step"
     return (f"{each.of} is rounded to a whole {unit} of {kg(each.step_kg)} kg: {100.0 * each.share:.4g} % in place of "
             f"{100.0 * asked:.4g} %, {kg(abs(each.off_kg))} kg {'more' if each.off_kg > 0.0 else 'less'}"

@@ -25,7 +25,7 @@ if TYPE_CHECKING:
     from .session import Session
     from .state import Snapshot
 
-TITLES = tuple((str(n), name) for n, (_, name) in enumerate(commands.SCREENS, 1))
+TITLES = tuple((commands.KEYS[code], name) for code, name in commands.SCREENS)
 WIDE = 110  # columns from which a screen is laid wide
 TYPING_KEYS = [("Enter", "keep"), ("Ctrl+U", "empty it"), ("← →", "move in it"), ("Esc", "drop it")]
 
@@ -118,7 +118,7 @@ class Page(Screen[Any]):
             self.keys.show(commands.key_line(self.NAME))
         elif typing.asking:
             take = [("s", f"take {typing.suggestion}")] if typing.suggestion else []
-            keep = [("y", "keep it as typed")] if typing.keepable else []
+            keep = [("y", typing.yes)] if typing.keepable else []
             self.keys.show([*keep, *take, ("Esc", "drop it")])
         else:
             self.keys.show(TYPING_KEYS)

@@ -16,4 +16,10 @@ Screen { layout: vertical; overflow: hidden; background: ansi_default; color: an
 #head { height: 2; }
 #shares { height: 9; }
 #trials { height: 8; }
+#batches, #charges { height: 1fr; }
+#summary { display: none; height: 16; }
+.-wide #summary { display: block; }
+#tests { height: 1fr; display: none; }
+.-testing #charges { display: none; }
+.-testing #tests, .-wide #tests, .-wide #charges { display: block; }
 """

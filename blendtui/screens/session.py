@@ -33,6 +33,8 @@ class Session:
         product = snapshot.products[0].product if snapshot.products else ""
         self.state = RecipeState(Wishes(product))
         self._ask = ask
+        self.batch = ""  # the one on the screen Floor; empty: the newest open one
+        self.by = ""  # the name under which steps of a batch are recorded; empty: the login name
         self.wishes: dict[str, Wishes] = {}  # of every product spoken of, to come back to
         self.history: list[Wish | str] = []
         self.undone: list[Wish | str] = []

@@ -18,7 +18,7 @@ from blendtui.widgets.lines import OneLine
 from solver.stocks import Stock
 
 from . import words
-from .base import Page
+from .ledger_keys import LedgerCommands
 from .state import StocksState
 
 FIRST = ("name", "kv40", "kv100", "vi", "density15", "on_hand_kg", "price_per_t", "api_group", "kind", "flash", "pour",
@@ -66,7 +66,7 @@ def matches(stock: Stock, words_typed: str) -> bool:
     return all(word in text for word in words_typed.lower().split())
 
 
-class StocksScreen(Page):
+class StocksScreen(LedgerCommands):
     """Table of stocks."""
 
     NAME = commands.STOCKS

@@ -5,14 +5,14 @@ from __future__ import annotations
 import json
 import sqlite3
 from collections import defaultdict
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from typing import Any
 
 from .batch_records import Batch, Charge, Content, Decision, Dip, Lot, Made, Movement, Outcome, Result, Sample, Vessel
 from .errors import NoSuchRow
 from .harmless import harmless
-from .schema import QUANTITY, TABLES, VESSEL_CELLS
+from .schema import QUANTITY_OF, TABLES, VESSEL_CELLS
 
 MAPPINGS = ("cells", "parts")  # columns that hold a JSON object
 
@@ -84,22 +84,21 @@ def movements(con: sqlite3.Connection, stock: str) -> list[Movement]:
 
 def charges_of(con: sqlite3.Connection, stock: str | None, lot: str | None) -> list[Charge]:
     """Charges of all batches that are of a stock, that hold a lot, or both."""
-    names = [f"c.{n}" for n in (*TABLES["charge"].keys, *TABLES["charge"].columns)]
-    tests, given = ["c.state = 'done'"], []
-    if stock is not None:
-        tests.append("c.stock = ?")
-        given.append(stock)
-    join = "LEFT JOIN charge_lot l ON l.batch = c.batch AND l.line = c.line"
-    if lot is not None:
-        join += " AND l.lot = ?"
-        given.insert(0, lot)
-        tests.append("l.lot IS NOT NULL")
+    names = [*TABLES["charge"].keys, *TABLES["charge"].columns]
+    tests = [(column, value) for column, value in (("c.stock", stock), ("l.lot", lot)) if value is not None]
+    where = " AND ".join(f"{column} = ?" for column, _ in tests) or "1 = 1"
+    # By a lot it is found from that lot's own rows, which are few beside the charges that were made.
+    tables = ("charge c LEFT JOIN charge_lot l ON l.batch = c.batch AND l.line = c.line" if lot is None else
+              "charge_lot l JOIN charge c ON c.batch = l.batch AND c.line = l.line")
+    rows = con.execute(f"SELECT {', '.join(f'c.{n}' for n in names)}, l.lot, l.part FROM {tables} WHERE {where} "
+                       "ORDER BY c.at, c.batch, c.line", [value for _, value in tests])
+    state = names.index("state")
     found: dict[tuple[str, int], Charge] = {}
     parts: defaultdict[tuple[str, int], dict[str, float]] = defaultdict(dict)
-    rows = con.execute(f"SELECT {', '.join(names)}, l.lot, l.part FROM charge c {join} WHERE {' AND '.join(tests)} "
-                       "ORDER BY c.at, c.batch, c.line", given)
     for *row, name, part in rows:
-        charge = Charge(**_cells([n[2:] for n in names], tuple(row)))
+        if row[state] != "done":
+            continue
+        charge = Charge(**_cells(names, tuple(row)))
         found.setdefault((charge.batch, charge.line), charge)
         if name is not None:
             parts[charge.batch, charge.line][name] = part
@@ -108,8 +107,8 @@ def charges_of(con: sqlite3.Connection, stock: str | None, lot: str | None) -> l
 
 def quantity(con: sqlite3.Connection, stock: str) -> int | None:
     """What the book says of a stock, mg."""
-    found = con.execute(f"{QUANTITY} AND m.stock = ? GROUP BY m.stock", (stock,)).fetchone()
-    return None if found is None else int(found[1])
+    found = con.execute(QUANTITY_OF, (stock,)).fetchone()[0]
+    return None if found is None else int(found)
 
 
 def as_row(record: object, table: str) -> Mapping[str, Any]:
@@ -122,3 +121,48 @@ def as_row(record: object, table: str) -> Mapping[str, Any]:
 def spelt(value: Mapping[str, float]) -> str:
     """A mapping as the file holds it."""
     return json.dumps(dict(value), ensure_ascii=False, sort_keys=True, separators=(",", ":"), allow_nan=False)
+
+
+# What a trace follows: several batches at once, and where their oil went
+
+TOGETHER = 400  # names in one query
+
+
+def oil_of(con: sqlite3.Connection, names: Sequence[str]) -> dict[str, Made]:
+    """Batches with what went in and came out, and not what the laboratory found; names that are not there left out."""
+    heads = {b.batch: b for b in _of(con, Batch, "batch", names)}
+    rows: defaultdict[tuple[str, str], list[Any]] = defaultdict(list)
+    for kind in (Content, Charge, Outcome):
+        for row in _of(con, kind, "batch", names, "ORDER BY batch, line"):
+            rows[kind.__name__, row.batch].append(row)
+    parts: defaultdict[tuple[str, int], dict[str, float]] = defaultdict(dict)
+    for few in _few(names):
+        for batch, line, lot, part in con.execute("SELECT batch, line, lot, part FROM charge_lot WHERE batch IN "
+                                                  f"({_marks(few)}) ORDER BY lot", few):
+            parts[batch, line][lot] = part
+    return {name: Made(head, tuple(rows["Content", name]),
+                       tuple(replace(c, lots=parts.get((name, c.line), {})) for c in rows["Charge", name]),
+                       outcomes=tuple(rows["Outcome", name])) for name, head in heads.items()}
+
+
+def onward(con: sqlite3.Connection, names: Sequence[str]) -> tuple[list[Lot], list[Content]]:
+    """Receipts that came from these batches, and contents of vessels that are of these batches (or stocks)."""
+    return _of(con, Lot, "from_batch", names), _of(con, Content, "stock", names)
+
+
+def lots_named(con: sqlite3.Connection, lot: str) -> list[Lot]:
+    """Receipts under one lot, of any stock."""
+    return _of(con, Lot, "lot", [lot])
+
+
+def _of(con: sqlite3.Connection, kind: type, column: str, names: Sequence[str], order: str = "") -> list[Any]:
+    return [row for few in _few(names)
+            for row in _read(con, kind, kind.__name__.lower(), f"WHERE {column} IN ({_marks(few)}) {order}", few)]
+
+
+def _few(names: Sequence[str]) -> list[tuple[str, ...]]:
+    return [tuple(names[i:i + TOGETHER]) for i in range(0, len(names), TOGETHER)]
+
+
+def _marks(few: Sequence[str]) -> str:
+    return ", ".join("?" * len(few))

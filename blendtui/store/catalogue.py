@@ -6,14 +6,13 @@ from collections import defaultdict
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from solver.properties import is_stock_code, lookup, stock_codes
 from solver.stocks import GROUPS, KINDS, SOURCES, Stock
 from solver.target import LAWS
 
-from . import catalogue_lab, charging, state
+from . import catalogue_lab, catalogue_vessels, charging, state
 from . import cells as c
 from .cells import Cells
-from .charging import SIGMA, is_value_code, sigma_of
+from .charging import is_value_code, property_spelt, sigma_of
 from .csv_read import Sheet, read_sheet
 from .edits import row_key
 from .errors import CatalogueError, Fault, NoPlant
@@ -33,7 +32,7 @@ REQUIRED = {"stocks.csv": ("stock", "kv40", "kv100"), "products.csv": ("product"
             "limits.csv": ("product", "property"), "shares.csv": ("product", "of"),
             "trials.csv": ("product", "name", "stock", "share_pct"),
             "measured.csv": ("name", "stock", "share_pct"),
-            "lessons.csv": ("version", "kind", "law", "first", "celsius", "first_term")}
+            "lessons.csv": ("version", "kind", "law", "first", "celsius", "first_term"), "vessels.csv": ("vessel",)}
 # Columns of any number besides the known ones.
 FAMILIES = {"stocks.csv": is_value_code, "measured.csv": catalogue_lab.is_value_column}
 
@@ -84,6 +83,7 @@ class _Reading:
         self._read_shares(shares, stocks)
         self._read_trials(trials)
         measured, lessons = self._read_lab()
+        vessels = self._read_vessels(whole=stocks is not None and not stocks.faults)
         self._products_ask_something(products, limits)
         self.notes += [f"{harmless(file, 60)} is not read" for file in self.held
                        if file.lower().endswith(".csv") and file not in REQUIRED]
@@ -91,7 +91,7 @@ class _Reading:
             order = tuple(REQUIRED)
             raise CatalogueError(sorted(self.faults, key=lambda f: (order.index(f.file), f.row)))
         return Catalogue(self.folder, self.state, tuple(self.notes),
-                         frozenset(x.file for x in (trials, measured, lessons) if x is not None))
+                         frozenset(x.file for x in (trials, measured, lessons, vessels) if x is not None))
 
     def _sheet(self, name: str, known: tuple[str, ...], *, needed: bool = False) -> Sheet | None:
         if name not in self.held:
@@ -296,22 +296,16 @@ class _Reading:
             self._note("lessons.csv", "stocks", named - set(self.stocks) - {s.oil for s in self.stocks.values()})
         return measured, lessons
 
+    def _read_vessels(self, *, whole: bool) -> Sheet | None:
+        sheet = self._sheet("vessels.csv", catalogue_vessels.VESSELS)
+        if sheet is not None:
+            catalogue_vessels.read_vessels(sheet, self.faults, self.state, lambda key, cells: self._extras(
+                sheet, "vessel", key, cells, catalogue_vessels.VESSELS), whole=whole)
+        return sheet
+
 
 def _none(column: str) -> bool:
     return False
-
-
-def property_spelt(heading: str) -> str | None:
-    """Code of the property that a heading means in another spelling: `CCS-25`, `Flash point`, `sulphur`."""
-    plain = heading.lower().replace("−", "-")
-    for sign in ("sigma_", "sigma ", "σ_", "σ "):
-        if plain.startswith(sign):
-            of = property_spelt(plain[len(sign):]) or plain[len(sign):].replace(" ", "")
-            return SIGMA + of if sigma_of(SIGMA + of) else None
-    for code in (plain.replace(" ", "_"), plain.replace(" ", ""), plain.replace(" ", "").replace("_", "")):
-        if is_stock_code(code):
-            return code
-    return next((code for code in stock_codes() if lookup(code).name.lower() == plain.replace("_", " ")), None)
 
 
 def _free(rows: dict[Key, Row], product: str, of: str) -> Key:

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from solver.properties import is_stock_code, stock_codes
+from solver.properties import is_stock_code, lookup, stock_codes
 from solver.stocks import Stock
 
 if TYPE_CHECKING:
@@ -34,6 +34,19 @@ def value_order(code: str) -> tuple[float, str]:
 def is_value_code(code: str) -> bool:
     """Is this the code of a value that a stock carries beside its columns: a property, or how sure it is?"""
     return bool(sigma_of(code)) or is_stock_code(code)
+
+
+def property_spelt(heading: str) -> str | None:
+    """Code of the property that a heading means in another spelling: `CCS-25`, `Flash point`, `sulphur`."""
+    plain = heading.lower().replace("−", "-")
+    for sign in ("sigma_", "sigma ", "σ_", "σ "):
+        if plain.startswith(sign):
+            of = property_spelt(plain[len(sign):]) or plain[len(sign):].replace(" ", "")
+            return SIGMA + of if sigma_of(SIGMA + of) else None
+    for code in (plain.replace(" ", "_"), plain.replace(" ", ""), plain.replace(" ", "").replace("_", "")):
+        if is_stock_code(code):
+            return code
+    return next((code for code in stock_codes() if lookup(code).name.lower() == plain.replace("_", " ")), None)
 
 
 def faults(stock: Stock) -> tuple[Doubt, ...]:

@@ -7,7 +7,7 @@ import os
 import shutil
 import sqlite3
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -72,6 +72,10 @@ class Database:
         elif con.execute("PRAGMA application_id").fetchone()[0] != APPLICATION_ID:
             raise NotAPlant(f"{self.shown} is a database of another program, not a plant file; "
                             "open a plant file or a catalogue folder")
+        elif not self.read_only:
+            # A restore that was killed leaves the plant without its log, so that readers would hold up writers.
+            with suppress(sqlite3.OperationalError):
+                con.execute("PRAGMA journal_mode = WAL")
         self._migrate(new)
 
     def _migrate(self, new: bool) -> None:
@@ -153,7 +157,7 @@ class Database:
     # others only once the transaction, and so the wait, is over.
 
     def _sign_path(self) -> Path | None:
-        return None if self.path is None else self.path.with_name(self.path.name + "-writer")
+        return None if self.path is None else _sign_of(self.path)
 
     def _sign(self, who: str) -> None:
         sign = self._sign_path()
@@ -181,15 +185,7 @@ class Database:
 
     def writer(self) -> str:
         """Who is writing the plant at this moment, or "" when that is not known."""
-        sign = self._sign_path()
-        try:
-            signed = json.loads(sign.read_text(encoding="utf-8")) if sign and sign.is_file() else {}
-            os.kill(int(signed["pid"]), 0)
-            return harmless(str(signed["who"]), 60)
-        except PermissionError:
-            return harmless(str(signed["who"]), 60)  # alive, but another user's
-        except (OSError, ValueError, KeyError, TypeError, OverflowError):
-            return ""
+        return "" if self.path is None else writer_of(self.path)
 
     @contextmanager
     def words(self) -> Iterator[None]:
@@ -230,6 +226,23 @@ class Database:
             return self.path is not None and shutil.disk_usage(self.path.parent).free < ROOM
         except OSError:
             return False
+
+
+def _sign_of(path: Path) -> Path:
+    return path.with_name(path.name + "-writer")
+
+
+def writer_of(path: Path) -> str:
+    """Who is writing a plant file at this moment, or "" when that is not known."""
+    sign = _sign_of(path)
+    try:
+        signed = json.loads(sign.read_text(encoding="utf-8")) if sign.is_file() else {}
+        os.kill(int(signed["pid"]), 0)
+        return harmless(str(signed["who"]), 60)
+    except PermissionError:
+        return harmless(str(signed["who"]), 60)  # alive, but another user's
+    except (OSError, ValueError, KeyError, TypeError, OverflowError):
+        return ""
 
 
 def _signature(who: str) -> str:

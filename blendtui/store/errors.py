@@ -9,6 +9,8 @@ PlantError (an Exception)
 ├── PlantFull        the disk is full
 ├── PlantBusy        another program has been writing for too long; carries .who
 ├── ChangedSince     a cell changed after it was read; carries .who, .what and .at
+├── Closed           what is to change belongs to a batch that is closed, and stands
+├── BuiltOn          what is to be taken back has been built on since
 ├── NothingToUndo    there is nothing of one's own to undo or redo
 ├── NoSuchRow        no stock, product or trial of that name
 └── CatalogueError   a catalogue folder has faults; carries .faults, all of them
@@ -64,6 +66,14 @@ class ChangedSince(PlantError):
         self.who = who
         self.what = what
         self.at = at
+
+
+class Closed(PlantError):
+    """What is to change belongs to a batch that is closed, and stands."""
+
+
+class BuiltOn(PlantError):
+    """What is to be taken back has been built on since: a sample, a batch that holds the lot."""
 
 
 class NothingToUndo(PlantError):

@@ -10,15 +10,19 @@ from pathlib import Path
 
 from . import catalogue as names
 from .catalogue_lab import LESSONS, MEASURED, RESULT
+from .catalogue_vessels import VESSELS
 from .charging import is_value_code, value_order
 from .edits import row_key
 from .errors import CatalogueError, PlantError
 from .harmless import harmless
+from .merging import nameable
 from .records import Row, Value
 from .schema import STOCK_CHARGES, STOCK_TEST
 from .state import Key, State
 
 FILES = tuple(names.REQUIRED)
+# What happened is no catalogue: table, one of it, several of it.
+RECORDS = (("batch", "batch", "batches"), ("lot", "lot", "lots"), ("dip", "dip", "dips"))
 Table = tuple[list[str], list[list[str]]]
 
 
@@ -33,7 +37,7 @@ def write_catalogue(state: State, folder: Path) -> tuple[str, ...]:
         present = folder.exists() and _refuse_foreign(folder)
         tables = {"stocks.csv": _stocks(state), "products.csv": _products(state), "limits.csv": _limits(state),
                   "shares.csv": _shares(state), "trials.csv": _trials(state), "measured.csv": _measured(state),
-                  "lessons.csv": _lessons(state)}
+                  "lessons.csv": _lessons(state), "vessels.csv": _vessels(state)}
         tables = {file: table for file, table in tables.items() if table[1] or file in FILES[:2]}
         place = folder if present else folder.parent
         place.mkdir(parents=True, exist_ok=True)
@@ -46,20 +50,21 @@ def write_catalogue(state: State, folder: Path) -> tuple[str, ...]:
             if not present:
                 os.rename(made, folder)  # fails where a folder with files, or a file, has come up meanwhile
             else:
-                _move_in(made, folder)
+                _move_in(made, folder, keep=() if state["vessel"] else ("vessels.csv",))
     except OSError as error:
         raise PlantError(f"cannot write {folder}: {(error.strerror or str(error)).lower()}; choose another "
                          "folder, or free some space") from None
     except RuntimeError:
         raise PlantError(f"{folder} is a link that leads back to itself; choose another folder") from None
-    return _left_behind(state)
+    kept = not state["vessel"] and present and (folder / "vessels.csv").exists()
+    return (*_left_behind(state), *(("vessels.csv is left as it was: the plant has no vessels",) if kept else ()))
 
 
-def _move_in(made: Path, folder: Path) -> None:
+def _move_in(made: Path, folder: Path, keep: tuple[str, ...]) -> None:
     for file in FILES:
         if (made / file).exists():
             os.replace(made / file, folder / file)
-        else:
+        elif file not in keep:
             (folder / file).unlink(missing_ok=True)
 
 
@@ -108,7 +113,7 @@ def _read_back(folder: Path, tables: dict[str, Table]) -> None:
         if fault.row > 1:
             row = tables[fault.file][1][fault.row - 2]
             of = {"trials.csv": f"trial {row[1]} of {row[0]}", "measured.csv": f"measured blend {row[0]}",
-                  "lessons.csv": f"lesson {row[0]}"}.get(fault.file, row[0])
+                  "lessons.csv": f"lesson {row[0]}", "vessels.csv": f"vessel {row[0]}"}.get(fault.file, row[0])
         out = {"trials.csv": "drop that trial", "measured.csv": "drop that blend",
                "lessons.csv": "import a lessons.csv without it"}.get(fault.file, f"retire {of}")
         raise PlantError(f"nothing was exported, for it would not import back: {of} {fault.column}: "
@@ -117,8 +122,19 @@ def _read_back(folder: Path, tables: dict[str, Table]) -> None:
 
 
 def _left_behind(state: State) -> tuple[str, ...]:
-    return tuple(f"retired, so not exported: {table} {harmless(str(key[0]), 60)}"
-                 for table in ("stock", "product") for key, row in state[table].items() if row["retired"])
+    notes = [f"retired, so not exported: {table} {harmless(str(key[0]), 60)}"
+             for table in ("stock", "product", "vessel") for key, row in state[table].items() if row["retired"]]
+    for vessel, row in _live(state, "vessel"):
+        if row["heel_stock"] and not nameable(state, row["heel_stock"]):
+            heel = harmless(str(row["heel_stock"]), 60)
+            notes.append(f"vessel {harmless(vessel, 60)}: its heel {heel} is no stock in use, so the folder does not "
+                         "name it")
+    counts = [f"{len(state[table])} {name if len(state[table]) == 1 else many}" for table, name, many in RECORDS
+              if state[table]]
+    if counts:
+        listed = " and ".join([", ".join(counts[:-1]), counts[-1]] if counts[1:] else counts)
+        notes.append(f"in the plant file only: {listed}; blendtui backup FILE keeps them")
+    return tuple(notes)
 
 
 def text(value: Value) -> str:
@@ -242,6 +258,15 @@ def _lessons(state: State) -> Table:
         cells = {**whole, "version": key[0], "celsius": key[1], **term}
         keyed.append((key, [text(cells.get(x)) for x in LESSONS]))
     return _with_extras(state, "lesson_term", list(LESSONS), keyed)
+
+
+def _vessels(state: State) -> Table:
+    keyed = []
+    for code, row in _live(state, "vessel"):
+        heel = row["heel_stock"] if nameable(state, row["heel_stock"]) else ""
+        cells = {"vessel": code, **row, "heel_stock": heel}
+        keyed.append(((code,), [text(cells[x]) for x in VESSELS]))
+    return _with_extras(state, "vessel", list(VESSELS), keyed)
 
 
 def _by_whole(state: State, whole: str, table: str) -> Iterator[tuple[Key, Row, bool]]:

@@ -86,6 +86,12 @@ def last_hash(con: sqlite3.Connection) -> str:
     return str(found[0]) if found else START
 
 
+def hashed(con: sqlite3.Connection, start: str) -> list[Entry]:
+    """Entries whose hash begins so, oldest first."""
+    rows = con.execute(f"SELECT {COLUMNS} FROM journal WHERE substr(hash, 1, ?) = ? ORDER BY id", (len(start), start))
+    return [entry(row) for row in rows]
+
+
 def undoable(con: sqlite3.Connection, who: str) -> tuple[int | None, int | None]:
     """The entry that `who` would undo next, and the one that a redo would bring back.
 
@@ -94,7 +100,9 @@ def undoable(con: sqlite3.Connection, who: str) -> tuple[int | None, int | None]
     """
     done: list[int] = []
     undone: list[int] = []
-    rows = con.execute("SELECT id, undoes FROM journal WHERE who = ? AND id > 1 ORDER BY id", (who,))
+    # An entry without changes only tells of something, so there is nothing of it to take back.
+    rows = con.execute("SELECT id, undoes FROM journal WHERE who = ? AND id > 1 "
+                       "AND (undoes IS NOT NULL OR changes <> '[]') ORDER BY id", (who,))
     for number, undoes in rows:
         if undoes is None:
             done.append(number)
@@ -108,11 +116,20 @@ def undoable(con: sqlite3.Connection, who: str) -> tuple[int | None, int | None]
     return (done[-1] if done else None), (undone[-1] if undone else None)
 
 
+def on_row(con: sqlite3.Connection, change: Change, before: int | None = None) -> Iterator[Entry]:
+    """Entries that speak of the row of `change`, newest first; only those with a number below `before` if given."""
+    spelt = f'"table":{canonical(change.table)}}}'  # the last name of a change: names stand in their order
+    below, given = ("id < ? AND ", (before,)) if before is not None else ("", ())
+    for row in con.execute(f"SELECT {COLUMNS} FROM journal WHERE {below}instr(changes, ?) > 0 ORDER BY id DESC",
+                           (*given, spelt)):
+        found = entry(row)
+        if any(other.table == change.table and dict(other.key) == dict(change.key) for other in found.changes):
+            yield found
+
+
 def last_change(con: sqlite3.Connection, change: Change, before: int, cells: set[str]) -> Entry | None:
     """The latest entry with a number below `before` that changed one of these cells of the row of `change`."""
-    rows = con.execute(f"SELECT {COLUMNS} FROM journal WHERE id < ? ORDER BY id DESC", (before,))
-    for row in rows:
-        found = entry(row)
+    for found in on_row(con, change, before):
         for other in found.changes:
             if other.table == change.table and dict(other.key) == dict(change.key) and cells & touched(other):
                 return found

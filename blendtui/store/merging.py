@@ -13,30 +13,30 @@ from collections.abc import Mapping, Sequence
 from . import state
 from .edits import row_key
 from .records import Row, Value
+from .schema import RECORD
 from .state import Key, State
 
-OWNED = {"stock": ("stock_value", "quantity"), "product": ("product_limit", "share_rule")}
+OWNED = {"stock": ("stock_value", "quantity"), "product": ("product_limit", "share_rule"), "vessel": ()}
 LINES = ("product_limit", "share_rule")
 TRIALS = ("trial", "trial_share")
 # Optional file → the tables that it holds; a folder without it says nothing of them.
-LAB = {"measured.csv": ("measured", "measured_part", "measured_part_value", "measured_value"),
-       "lessons.csv": ("lesson", "lesson_term"), "vessels.csv": ("vessel",)}
-# What happened: no folder speaks of it, and no import changes it.
-RECORD = ("lot", "tank_lot", "dip", "batch", "content", "charge", "charge_lot", "sample", "result", "decision",
-          "outcome")
+OPTIONAL = {"measured.csv": ("measured", "measured_part", "measured_part_value", "measured_value"),
+            "lessons.csv": ("lesson", "lesson_term"), "vessels.csv": ("vessel",)}
 
 
 def merged(old: State, said: State, given: frozenset[str]) -> tuple[State, tuple[str, ...]]:
     """The state after an import, and what it retires: rows that the catalogue lacks stay, marked retired."""
     new = _with_old_lines(old, {table: dict(rows) for table, rows in said.items()})
     new |= {table: dict(old[table]) for table in RECORD}
-    for table in (*OWNED, "measured", "lesson", "vessel"):
+    for table in (*OWNED, "measured", "lesson"):
         _keep_places(old[table], new[table])
     for table in LINES:
         for product in {key[0] for key in new[table]}:
             _keep_places(_of(old[table], product), _of(new[table], product))
+    _keep_heels(old, new)
+    unsaid = {table for file, tables in OPTIONAL.items() if file not in given for table in tables}
     retired: list[str] = []
-    for owner, tables in OWNED.items():
+    for owner, tables in ((owner, tables) for owner, tables in OWNED.items() if owner not in unsaid):
         gone = {key[0] for key in old[owner] if key not in new[owner]}
         for key in gone:
             new[owner][key,] = {**old[owner][key,], "retired": 1}
@@ -47,10 +47,22 @@ def merged(old: State, said: State, given: frozenset[str]) -> tuple[State, tuple
         new["extra"].update({k: row for k, row in old["extra"].items()
                              if k[0] in (owner, *tables) and json.loads(str(k[1]))[0] in gone})
     _keep_trials(old, new, said["product"] if "trials.csv" in given else {})
-    for tables in (tables for file, tables in LAB.items() if file not in given):
-        new |= {table: dict(old[table]) for table in tables}
-        new["extra"].update({k: row for k, row in old["extra"].items() if k[0] in tables})
+    new |= {table: dict(old[table]) for table in unsaid}
+    new["extra"].update({k: row for k, row in old["extra"].items() if k[0] in unsaid})
     return new, tuple(sorted(retired))
+
+
+def nameable(state: State, heel: Value) -> bool:
+    """Can a folder name what a vessel's heel is: a stock in use? The oil of a batch it cannot."""
+    return state["stock"].get((heel,), {"retired": 1})["retired"] == 0
+
+
+def _keep_heels(old: State, new: State) -> None:
+    """An empty heel_stock says nothing of a heel that no folder can name."""
+    for key, row in new["vessel"].items():
+        before = old["vessel"].get(key, {}).get("heel_stock")
+        if before and not row["heel_stock"] and not nameable(old, before):
+            new["vessel"][key] = {**row, "heel_stock": before}
 
 
 def _keep_trials(old: State, new: State, spoken_of: Mapping[Key, Row]) -> None:

@@ -47,7 +47,7 @@ def open_plant(path: Path | str | None = None, *, who: str | None = None, create
     if path is None:
         return _open_example(who, timeout)
     place = home(path)
-    kind = _kind(place)
+    kind = kind_of(place)
     if kind == "folder":
         return _open_folder(place, who)
     if kind == "other":
@@ -63,7 +63,8 @@ def open_plant(path: Path | str | None = None, *, who: str | None = None, create
     return plant
 
 
-def _kind(place: Path) -> str:
+def kind_of(place: Path) -> str:
+    """What is at a path: "file", "folder", "other" or "nothing"; NoPlant when it may not be looked at."""
     try:
         if place.is_dir():
             return "folder"
@@ -86,7 +87,7 @@ def _spelt(place: Path) -> str:
 
 def _open_example(who: str | None, timeout: float) -> Plant:
     place = example_plant()
-    first = _kind(place) == "nothing"
+    first = kind_of(place) == "nothing"
     if first:
         from .catalogue import read_catalogue
 
@@ -117,7 +118,7 @@ def make_plant(path: Path, catalogue: Catalogue | None, *, who: str | None = Non
     refuse_network(path.parent)
     if len(os.fsencode(path.name)) > LONGEST_NAME:
         raise PlantError(f"{path} has a name of {len(os.fsencode(path.name))} bytes; keep it to {LONGEST_NAME}")
-    _refuse_leftovers(path)
+    refuse_leftovers(path)
     with beside(path) as temporary:
         plant = Plant(Database(temporary, new=True, shown=path), temporary, who=who)
         with plant:
@@ -125,11 +126,12 @@ def make_plant(path: Path, catalogue: Catalogue | None, *, who: str | None = Non
                 plant.fill([], "an empty plant was made")
             else:
                 plant.fill(state.difference(state.empty(), catalogue.state), f"imported {catalogue.folder}")
-        _refuse_leftovers(path)
-        return _put(temporary, path)
+        refuse_leftovers(path)
+        return put(temporary, path)
 
 
-def _refuse_leftovers(path: Path) -> None:
+def refuse_leftovers(path: Path) -> None:
+    """PlantError when a file that is to be made would take over the changes of one that is gone."""
     left = connect.leftovers(path)
     if os.path.lexists(path):
         return  # another has made it, and what stands beside it is its own
@@ -139,10 +141,10 @@ def _refuse_leftovers(path: Path) -> None:
     try:
         connect.clear_leftovers(path)
     except OSError as error:
-        raise _unwritable(path, error) from None
+        raise unwritable(path, error) from None
 
 
-def _put(temporary: Path, path: Path) -> bool:
+def put(temporary: Path, path: Path) -> bool:
     """Give a finished file its name; False when that is taken."""
     try:
         os.link(temporary, path)  # unlike a rename it never replaces what another has made meanwhile
@@ -157,16 +159,17 @@ def _put(temporary: Path, path: Path) -> bool:
     except FileExistsError:
         return False
     except OSError as error:
-        raise _unwritable(path, error) from None
+        raise unwritable(path, error) from None
     try:
         os.replace(temporary, path)
     except OSError as error:
         path.unlink(missing_ok=True)
-        raise _unwritable(path, error) from None
+        raise unwritable(path, error) from None
     return True
 
 
-def _unwritable(path: Path, error: OSError) -> PlantError:
+def unwritable(path: Path, error: OSError) -> PlantError:
+    """The error for a place that refuses to be written."""
     return PlantError(f"cannot write {path}: {(error.strerror or str(error)).lower()}; choose another place")
 
 
@@ -181,7 +184,7 @@ def beside(path: Path) -> Iterator[Path]:
         raise ReadOnlyPlant(f"the folder {path.parent} may not be written; choose another place, "
                             "or ask for the right to write") from None
     except OSError as error:
-        raise _unwritable(path, error) from None
+        raise unwritable(path, error) from None
     try:
         yield folder / path.name
     finally:
@@ -201,7 +204,7 @@ def import_folder(folder: Path | str, path: Path | str | None = None, *, who: st
 
     catalogue = read_catalogue(home(folder))
     place = example_plant() if path is None else home(path)
-    kind = _kind(place)
+    kind = kind_of(place)
     if kind == "folder":
         raise PlantError(f"{place} is a folder; an import goes into a plant file: name one, such as "
                          f"{place / 'my.plant'}")

@@ -8,17 +8,21 @@ import threading
 from collections.abc import Callable, Sequence
 from pathlib import Path
 from types import TracebackType
+from typing import TYPE_CHECKING
 
 from solver.measured import Measured
 from solver.stocks import Stock
 
-from . import audit, batch_reads, journal, promises, reads, state
-from .batch_records import Batch, Charge, Dip, Lot, Made, Movement, Vessel
+from . import audit, batch_reads, clock, closed, journal, promises, reads, state, taking_back
+from .batch_records import Batch, Charge, Content, Dip, Lot, Made, Movement, Vessel
 from .database import Database
 from .errors import ChangedSince, NotAPlant, NothingToUndo, ReadOnlyPlant
 from .harmless import harmless
 from .records import Change, Entry, Lesson, Product, Row, Step, Trial
 from .state import Key
+
+if TYPE_CHECKING:
+    from .backup import Backup
 
 
 def login_name() -> str:
@@ -141,6 +145,21 @@ class Plant:
         with self._lock, self._database.reading() as con:
             return batch_reads.charges_of(con, stock, lot)
 
+    def oil_of(self, batches: Sequence[str]) -> dict[str, Made]:
+        """Batches by name with what went in and came out, without the laboratory's part; unknown names left out."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.oil_of(con, batches)
+
+    def onward(self, batches: Sequence[str]) -> tuple[list[Lot], list[Content]]:
+        """Where the oil of these batches went: receipts of rework, and what stood in a vessel before later batches."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.onward(con, batches)
+
+    def lots_named(self, lot: str) -> list[Lot]:
+        """Receipts under one lot, of any stock."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.lots_named(con, lot)
+
     def last_hash(self) -> str:
         """Hash of the last journal entry: on a card or a certificate it pins everything before it."""
         with self._lock, self._database.reading() as con:
@@ -209,6 +228,7 @@ class Plant:
         last, what = journal.revision(con), harmless(what)
         if not changes and last:
             return last
+        closed.refuse_closed(con, changes)
         number = journal.append(con, self.who, what, changes, harmless(why))
         state.apply(con, changes, number, what)
         promises.refuse_double(con, changes)
@@ -220,7 +240,11 @@ class Plant:
             return state.since(con, change, journal.revision(con) + 1, said)
 
     def undo(self) -> str:
-        """Take back one's own latest entry that still stands, and say what it was."""
+        """Take back one's own latest entry that still stands, and say what it was.
+
+        ChangedSince when another has changed it since, BuiltOn when a later step rests on it, Closed when it belongs
+        to a batch that is closed: that stands, and a correction is a new entry.
+        """
         return self._take_back(0, "nothing of yours is left to undo", "undone")
 
     def redo(self) -> str:
@@ -234,11 +258,13 @@ class Plant:
             if number is None:
                 raise NothingToUndo(nothing)
             old = journal.read(con, number)
-            changes = [c.reversed() for c in reversed(old.changes)]
+            changes = taking_back.reversal(con, old)
+            closed.refuse_closed(con, changes)
             # The words of the entry first made, however often it was undone and done again.
             what = old.what.split(": ", 1)[1] if old.undoes is not None else old.what
             new = journal.append(con, self.who, f"{verb}: {what}", changes, "", number)
             state.apply(con, changes, new, f"{verb}: {what}")
+            promises.refuse_double(con, changes)
             return f"{verb}: {what}"
 
     def _refuse_folder(self) -> None:
@@ -264,3 +290,34 @@ class Plant:
                     return audit.wrong(con)
             except NotAPlant as error:
                 return str(error)
+
+    def backup(self, file: Path | str, *, replace: bool = False) -> Backup:
+        """Write the plant as it is at this moment into one file, checked, while others work in it.
+
+        PlantError when the file is there and `replace` does not say that it may go, or the plant is not sound.
+        """
+        from .backup import write
+
+        if self.folder:
+            raise ReadOnlyPlant(f"{self.path} is a catalogue folder, which has no record to keep; copy the folder, or "
+                                f"make a plant file of it: blendtui import {self.path} --plant FILE")
+        with self._lock:
+            return write(self._database, file, replace=replace)
+
+    def found(self, hash: str) -> list[Entry]:
+        """Entries whose hash begins so."""
+        with self._lock, self._database.reading() as con:
+            return journal.hashed(con, hash)
+
+    def remarks(self) -> tuple[str, ...]:
+        """What is odd in the record and no damage: where the clock went back."""
+        with self._lock, self._database.reading() as con:
+            return clock.remarks(con)
+
+    def clock_back(self) -> float | None:
+        """Seconds by which the clock now stands before the last entry, or None when it does not.
+
+        An entry is written all the same, with the time that the clock shows; a step may question it first.
+        """
+        with self._lock, self._database.reading() as con:
+            return clock.back(con)

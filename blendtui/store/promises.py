@@ -3,31 +3,39 @@
 from __future__ import annotations
 
 import sqlite3
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
-from .batch_records import PLANNED
 from .errors import PlantError
 from .harmless import harmless
-from .records import Change
-from .schema import QUANTITY
+from .records import Change, Value
+from .schema import QUANTITY_OF
 
+PLANNED = "planned"
 LEAST = 1e-3  # kg: what a sum of decimals may be off
+OF_OPEN = f"FROM charge c JOIN batch b ON b.batch = c.batch AND b.state = 'open' WHERE c.state = '{PLANNED}'"
 
 
 def reserved(con: sqlite3.Connection, stock: str | None = None) -> dict[str, float]:
     """Stock → kg that open batches still have to charge of it."""
-    only, given = (" AND stock = ?", (stock,)) if stock is not None else ("", ())
-    return dict(con.execute(f"SELECT stock, SUM(plan_kg) FROM charge WHERE state = '{PLANNED}'{only} GROUP BY stock",
-                            given))
+    only, given = (" AND c.stock = ?", (stock,)) if stock is not None else ("", ())
+    return dict(con.execute(f"SELECT c.stock, SUM(c.plan_kg) {OF_OPEN}{only} GROUP BY c.stock", given))
 
 
 def refuse_double(con: sqlite3.Connection, changes: Sequence[Change]) -> None:
     """PlantError where a change, applied already, promises more of a stock than its tank can give."""
     for change in changes:
-        if change.table != "charge" or (change.after or {}).get("state", PLANNED) != PLANNED:
-            continue
-        if change.after is not None and ("plan_kg" in change.after or "stock" in change.after):
+        if change.table == "charge" and change.after is not None and _promises_more(change.before, change.after):
             _refuse(con, change)
+
+
+def _promises_more(before: Mapping[str, Value] | None, after: Mapping[str, Value]) -> bool:
+    """May a charge promise more oil with these cells than it did?"""
+    if before is None:
+        return after["state"] == PLANNED
+    if after.get("state", PLANNED) != PLANNED:
+        return False
+    again = before.get("state", PLANNED) != PLANNED  # a charge or a drop that is taken back
+    return again or "stock" in after or float(after.get("plan_kg") or 0.0) > float(before.get("plan_kg") or 0.0)
 
 
 def _refuse(con: sqlite3.Connection, change: Change) -> None:
@@ -35,16 +43,15 @@ def _refuse(con: sqlite3.Connection, change: Change) -> None:
     stock, state, plan = con.execute("SELECT stock, state, plan_kg FROM charge WHERE batch = ? AND line = ?",
                                      (batch, line)).fetchone()
     found = con.execute("SELECT unpumpable_kg FROM stock WHERE stock = ?", (stock,)).fetchone()
-    mg = con.execute(f"{QUANTITY} AND m.stock = ? GROUP BY m.stock", (stock,)).fetchone()
+    mg = con.execute(QUANTITY_OF, (stock,)).fetchone()[0]
     if state != PLANNED or found is None or mg is None:
         return
-    there = mg[1] / 1e6 - (found[0] or 0.0)
+    there = mg / 1e6 - (found[0] or 0.0)
     promised = reserved(con, stock).get(stock, 0.0)
     if promised <= there + LEAST:
         return
-    others = con.execute(f"SELECT DISTINCT c.batch, b.ordered_by FROM charge c JOIN batch b ON b.batch = c.batch "
-                         f"WHERE c.stock = ? AND c.state = '{PLANNED}' AND c.batch <> ? ORDER BY c.batch",
-                         (stock, batch)).fetchall()
+    others = con.execute(f"SELECT DISTINCT c.batch, b.ordered_by {OF_OPEN} AND c.stock = ? AND c.batch <> ? "
+                         "ORDER BY c.batch", (stock, batch)).fetchall()
     whose = ", ".join(f"{harmless(b, 40)} ({harmless(who, 40)})" for b, who in others[:4])
     free = max(0.0, there - promised + plan)
     raise PlantError(f"{harmless(stock, 40)}: {plan:,.1f} kg are planned and {free:,.1f} kg are free"

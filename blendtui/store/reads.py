@@ -17,7 +17,7 @@ from .charging import SIGMA
 from .errors import NoSuchRow
 from .harmless import harmless
 from .records import SEPARATOR, Lesson, Product, Trial
-from .schema import LESSON_CELLS, PRODUCT_CELLS, QUANTITY, STOCK_CELLS
+from .schema import LESSON_CELLS, PRODUCT_CELLS, QUANTITY, QUANTITY_OF, STOCK_CELLS
 
 
 def _one(where: str, code: str | None) -> tuple[str, tuple[str, ...]]:
@@ -32,7 +32,8 @@ def stocks(con: sqlite3.Connection, include_retired: bool = False, code: str | N
                                          f"{only} ORDER BY property", given):
         values[name][prop] = value
     promised = promises.reserved(con, code)
-    mg = dict(con.execute(f"{QUANTITY}{only.replace('stock', 'm.stock')} GROUP BY m.stock", given))
+    mg = (dict(con.execute(f"{QUANTITY} GROUP BY m.stock")) if code is None else
+          {code: con.execute(QUANTITY_OF, given).fetchone()[0]})
     rows = con.execute(f"SELECT stock, {', '.join(STOCK_CELLS)} FROM stock WHERE retired <= ?{only} "
                        "ORDER BY position, stock", (int(include_retired), *given))
     return [Stock(code=row[0], **dict(zip(STOCK_CELLS, row[1:], strict=True)), **parted(values.get(row[0], {})),

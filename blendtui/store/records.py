@@ -12,6 +12,12 @@ from .schema import Row, Value
 
 SEPARATOR = "; "  # between the names of the blends that stand behind a lesson
 __all__ = ["SEPARATOR", "Change", "Entry", "Lesson", "Product", "Row", "Step", "Trial", "Value"]
+# How a row of the record is called: by its key, in the plant's words. Every other row is called by its key alone.
+_CALLED = {"content": "{batch} content {line}", "charge": "{batch} charge {line}",
+           "charge_lot": "{batch} charge {line} lot {lot}", "sample": "{batch} sample {sample}",
+           "result": "{batch} sample {sample} result {line}", "decision": "{batch} decision {line}",
+           "outcome": "{batch} outcome {line}", "lot": "{stock} lot {lot}", "tank_lot": "{stock} lot {lot} in the tank",
+           "dip": "{stock} dip {line}"}
 
 
 @dataclass(frozen=True)
@@ -32,9 +38,15 @@ class Change:
         """Does it change nothing?"""
         return self.before == self.after
 
+    @property
+    def named(self) -> str:
+        """The row as a person calls it: `T-101`, `B-0003 charge 2`."""
+        called = _CALLED.get(self.table)
+        return called.format_map(self.key) if called else " ".join(str(v) for k, v in self.key.items() if k != "line")
+
     def words(self) -> str:
         """The change as a person reads it: `T-101 kv40 31.2 → 31.5`."""
-        of = " ".join(str(v) for k, v in self.key.items() if k != "line")
+        of = self.named
         if self.before is None:
             return f"{of} added"
         if self.after is None:

@@ -81,6 +81,10 @@ TABLES: dict[str, Table] = {
     "extra": Table(("table_name", "row_key", "column_name"), ("text",)),
 }
 
+# What happened: no catalogue folder speaks of it, and no import changes it.
+RECORD = ("lot", "tank_lot", "dip", "batch", "content", "charge", "charge_lot", "sample", "result", "decision",
+          "outcome")
+
 # Columns that came with a later step: an entry written before it does not speak of them, and they were empty then.
 LATER: dict[str, Row] = {"stock": dict.fromkeys(STOCK_CHARGES)}
 
@@ -89,6 +93,11 @@ QUANTITY = """
 SELECT m.stock, SUM(m.mg) AS mg FROM movement m
 LEFT JOIN (SELECT stock, MAX(id) AS id FROM movement WHERE mg IS NULL GROUP BY stock) u ON u.stock = m.stock
 WHERE m.id > COALESCE(u.id, 0)
+"""
+# The same of one stock; null where it is unknown.
+QUANTITY_OF = """
+SELECT SUM(mg) FROM movement WHERE stock = ?1
+AND id > COALESCE((SELECT MAX(id) FROM movement WHERE stock = ?1 AND mg IS NULL), 0)
 """
 
 
@@ -235,4 +244,7 @@ MIGRATIONS: tuple[tuple[str, ...], ...] = ((
         batch TEXT NOT NULL REFERENCES batch (batch), line INTEGER NOT NULL, what TEXT NOT NULL, kg REAL NOT NULL,
         stock TEXT NOT NULL, lot TEXT NOT NULL, at TEXT NOT NULL, by TEXT NOT NULL, why TEXT NOT NULL,
         PRIMARY KEY (batch, line))""",
+), (
+    # The sum of a stock's movements is read with every list of stocks: from the index alone.
+    "CREATE INDEX movement_sum ON movement (stock, mg)",
 ))

@@ -14,9 +14,9 @@ from . import journal
 from .errors import ChangedSince
 from .harmless import harmless
 from .records import Change, Entry, Row, Value
-from .schema import QUANTITY, TABLES
+from .schema import QUANTITY, QUANTITY_OF, RECORD, TABLES
 
-FEW = 20  # rows that are looked up one by one
+FEW = 100  # rows that are looked up one by one
 OWNER = {"stock_value": "stock", "quantity": "stock", "product_limit": "product", "share_rule": "product",
          "trial": "product", "trial_share": "trial", "measured_part": "measured",
          "measured_part_value": "measured_part", "measured_value": "measured", "lesson_term": "lesson",
@@ -140,7 +140,12 @@ def _refuse_orphans(con: sqlite3.Connection, group: list[Change], number: int) -
     there = _there(con, list(owners.values()))
     for key, change in owners.items():
         if key not in there:
-            raise since(con, change, number, f"{owner} {' '.join(map(str, key))} is no longer there")
+            raise since(con, change, number, f"{_called(change)} is no longer there")
+
+
+def _called(owner: Change) -> str:
+    """A row that others belong to: `stock T-101`, but `B-0003 charge 2`."""
+    return owner.named if owner.table in RECORD else f"{owner.table} {owner.named}"
 
 
 def _refuse_children(con: sqlite3.Connection, change: Change, number: int) -> None:
@@ -180,8 +185,7 @@ def _where(change: Change) -> tuple[str, list[Value]]:
 def present(con: sqlite3.Connection, change: Change) -> Row | None:
     """The row that a change speaks of as it is now, or None when it is not there."""
     if change.table == "quantity":
-        found = con.execute(QUANTITY + "AND m.stock = ?", (change.key["stock"],)).fetchone()
-        return {"mg": found[1] if found else None}
+        return {"mg": con.execute(QUANTITY_OF, (change.key["stock"],)).fetchone()[0]}
     where, key = _where(change)
     columns = TABLES[change.table].columns
     row = con.execute(f"SELECT {', '.join(columns)} FROM {change.table} WHERE {where}", key).fetchone()
@@ -213,6 +217,7 @@ def _move(con: sqlite3.Connection, group: list[Change], number: int, reason: str
         stock, before, after = change.key["stock"], _mg(change.before), _mg(change.after)
         if now.get(stock) != before:
             raise since(con, change, number)
+        now[stock] = after  # for a further movement of it
         rows.append((stock, None if after is None else after - (before or 0), reason, number))
     con.executemany("INSERT INTO movement (stock, mg, reason, journal) VALUES (?, ?, ?, ?)", rows)
 
@@ -229,13 +234,19 @@ def _mg(cells: object) -> int | None:
 
 def since(con: sqlite3.Connection, change: Change, number: int, said: str = "") -> ChangedSince:
     """The error that says who changed the cells that differ, when and how, before entry `number`."""
-    of = " ".join(str(v) for k, v in change.key.items() if k != "line")
+    of = change.named
     differ = _differing(con, change)
     cells = ", ".join(c for c in TABLES[change.table].columns if c in differ and c not in ("mg", "value"))
-    cell = harmless(said or (f"{of} {cells}".strip() if change.before is not None and len(cells) < 60 else of))
+    # A row of the record is one thing to a person, whatever its cells are called.
+    whole = change.before is None or change.table in RECORD or len(cells) >= 60
+    cell = harmless(said or (of if whole else f"{of} {cells}".strip()))
     last = journal.last_change(con, change, number, differ)
-    if last is None:
-        return ChangedSince(f"{cell} is no longer as it was read; look again and repeat the change")
+    return changed_by(last, cell) if last is not None else ChangedSince(
+        f"{cell} is no longer as it was read; look again and repeat the change")
+
+
+def changed_by(last: Entry, cell: str) -> ChangedSince:
+    """The error that names the entry which changed something meanwhile."""
     return ChangedSince(f"{cell}: {harmless(last.who, 60)} changed it at {last.at} "
                         f"({harmless(last.what, 120)}); look again and repeat the change",
                         who=last.who, what=last.what, at=last.at)

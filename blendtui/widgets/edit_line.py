@@ -24,6 +24,8 @@ class Typing:
     asking: bool = False  # a question about the text is open in the status line
     suggestion: str | None = None
     keepable: bool = True  # may the text be kept although it was questioned
+    yes: str = "keep it as typed"  # what y does
+    only_y: bool = False  # Enter does not: what is asked could not be taken back by hand
 
 
 @dataclass(frozen=True)
@@ -66,10 +68,14 @@ class EditLine(Canvas):
         self._then, self._drop = then, drop
         self.paint()
 
-    def ask(self, suggestion: str | None, *, keepable: bool = True) -> None:
-        """The text was questioned: y or Enter keeps it (if it may be), s takes the suggestion, Esc drops it."""
+    def ask(self, suggestion: str | None, *, keepable: bool = True, step: str = "") -> None:
+        """The text was questioned: y or Enter keeps it (if it may be), s takes the suggestion, Esc drops it.
+
+        `step`: what y does where that is more than keeping the text; Enter does not do it then.
+        """
         if self.typing is not None:
-            self.typing = replace(self.typing, asking=True, suggestion=suggestion, keepable=keepable, whole=False)
+            self.typing = replace(self.typing, asking=True, suggestion=suggestion, keepable=keepable, whole=False,
+                                  yes=step or self.typing.yes, only_y=bool(step))
             self.paint()
 
     def stop(self) -> None:
@@ -104,7 +110,7 @@ class EditLine(Canvas):
         now = self.typing
         if not now.asking:
             return Ended(now.text) if key == "enter" else None
-        if now.keepable and (key == "enter" or character in ("y", "Y")):
+        if now.keepable and ((key == "enter" and not now.only_y) or character in ("y", "Y")):
             return Ended(now.text, confirmed=True)
         if character in ("s", "S") and now.suggestion is not None:
             return Ended(now.suggestion)

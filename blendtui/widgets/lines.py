@@ -11,10 +11,14 @@ from .paint import BAD, BOLD, CURSOR, PLAIN, WARN, Line, Run, fit, wrap
 
 SIGNS = {"note": ("", PLAIN), "done": ("done: ", PLAIN), "question": ("? ", WARN), "refused": ("! ", BAD),
          "wait": ("… ", PLAIN)}
+REMARK = 13  # columns of the title line that are the remark's, whatever the screens are called
 
 
 class TitleLine(Canvas):
-    """The screens by their numbers, the one that is open marked, and a remark at the right."""
+    """The screens by their numbers, the one that is open marked, and a remark at the right.
+
+    Where not all names find room, those whose numbers lie farthest from the open one's go first; the numbers stay.
+    """
 
     def __init__(self, names: Sequence[tuple[str, str]], current: str) -> None:
         super().__init__(id="title")
@@ -31,12 +35,11 @@ class TitleLine(Canvas):
     def draw(self, width: int, height: int) -> list[Line]:
         """One line."""
         line: Line = []
-        for key, name in self.names:
+        for key, name in self._fitted(width):
             # Brackets as well as reverse video: some terminals have only one of them.
-            open_here = name == self.current
             after = line and line[-1][1] is CURSOR
             gap = "" if after else " "
-            line += [(f"[{key} {name}]", CURSOR) if open_here else (f"{gap}{key} {name}", PLAIN)]
+            line += [(f"[{key} {name}]", CURSOR) if name == self.current else (f"{gap}{key} {name}".rstrip(), PLAIN)]
         used = sum(len(text) for text, _ in line)
         room, remark = max(0, width - used - 1), self.remark
         for part in self.more:
@@ -45,6 +48,19 @@ class TitleLine(Canvas):
                 break
             remark += part
         return [[*line, (" " + fit(remark, room, "right"), PLAIN)]]
+
+    def _fitted(self, width: int) -> list[tuple[str, str]]:
+        """Numbers and names, as many names as leave the remark its room."""
+        count = len(self.names)
+        here = next(n for n, (_, name) in enumerate(self.names) if name == self.current)
+        # The keys stand in a row whose ends are equally near to the hand, so the way round counts too.
+        far = sorted((n for n in range(count) if n != here),
+                     key=lambda n: (-min((n - here) % count, (here - n) % count), n))
+        shown = list(self.names)
+        while far and sum(len(key) + len(name) + 2 - (not name) for key, name in shown) + 1 > width - REMARK:
+            shown[far[0]] = (shown[far[0]][0], "")
+            del far[0]
+        return shown
 
 
 class StatusLine(Canvas):

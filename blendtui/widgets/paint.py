@@ -62,8 +62,11 @@ def adopt(environment: Mapping[str, str] | None = None) -> None:
 
 def shown(text: str) -> str:
     """Text as this terminal can draw it."""
-    if not LOOK.ascii or text.isascii():
-        return text
+    return text if not LOOK.ascii or text.isascii() else plain(text)
+
+
+def plain(text: str) -> str:
+    """Text in the characters that every terminal and printer has, in the same columns."""
     return "".join(c if c.isascii() else "?" * cell_len(c) for c in text.translate(_ASCII))
 
 

@@ -38,7 +38,7 @@ def test_labels_are_short_and_help_is_a_sentence() -> None:
 
 @pytest.mark.parametrize("screen", SCREENS)
 async def test_the_key_line_shows_the_screens_own_keys_and_help(path: Path, size: Size, screen: str) -> None:
-    async with started(path, size, screen=str(SCREENS.index(screen) + 1)) as driver:
+    async with started(path, size, screen=commands.KEYS[screen]) as driver:
         line = driver.page.keys.text()
         assert "? help" in line
         assert "u undo" in line
@@ -120,7 +120,7 @@ async def test_escape_never_leaves_a_screen(path: Path) -> None:
         for key, screen in (("2", "targets"), ("4", "trials"), ("3", "recipe"), ("1", "stocks")):
             await driver.press(key, "escape")
             assert driver.app.current_mode == screen
-            assert driver.page.status.message == "nothing to drop here; 1 to 8 open the screens, q leaves"
+            assert driver.page.status.message == "nothing to drop here; 1 to 9 and 0 open the screens, q leaves"
 
 
 async def test_quit_leaves_at_once_when_all_is_saved(path: Path) -> None:

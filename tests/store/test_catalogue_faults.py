@@ -246,9 +246,9 @@ def test_an_empty_cell_is_unknown_and_never_zero(folder):
 
 
 def test_unknown_columns_and_files_are_reported(folder):
-    place = folder(stocks="stock,kv40,kv100,ccs-25,shelf\nA,30,5,1500,7\n", vessels="vessel\nK1\n")
+    place = folder(stocks="stock,kv40,kv100,ccs-25,shelf\nA,30,5,1500,7\n", kettles="vessel\nK1\n")
     plant = open_plant(place)
-    assert plant.notes == ("stocks.csv: unknown column shelf: kept, not used", "vessels.csv is not read")
+    assert plant.notes == ("stocks.csv: unknown column shelf: kept, not used", "kettles.csv is not read")
     assert plant.stock("A").values == {"ccs-25": 1500.0}
 
 

@@ -61,9 +61,9 @@ def test_a_new_folder_comes_whole_or_not_at_all(plant, tmp_path, monkeypatch):
 
 def test_other_files_of_a_catalogue_folder_stay(plant, folder):
     place = folder("out")
-    (place / "vessels.csv").write_text("mine")
+    (place / "kettles.csv").write_text("mine")
     export_plant(plant, place)
-    assert (place / "vessels.csv").read_text() == "mine"
+    assert (place / "kettles.csv").read_text() == "mine"
     assert not [p for p in place.iterdir() if p.name.startswith(".")]
 
 

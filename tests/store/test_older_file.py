@@ -1,4 +1,4 @@
-"""A plant file of the first schema: it opens, is brought up to date, and its past still stands and can be undone."""
+"""A plant file of an older schema: it opens, is brought up to date, and its past still stands and can be undone."""
 
 from __future__ import annotations
 
@@ -12,17 +12,22 @@ from blendtui.store.errors import ChangedSince
 from blendtui.store.opening import open_plant
 from blendtui.store.plant import Plant
 from blendtui.store.schema import APPLICATION_ID, MIGRATIONS, STOCK_CHARGES
+from tests.store.batch_steps import charge, order, receive
 
 # Written by the program as it was before the second step: an import, a price, and a stock added, by anna.
 OLDER = Path(__file__).parent / "older_plant.sql"
 
 
-@pytest.fixture
-def older(tmp_path: Path) -> Path:
-    place = tmp_path / "older.plant"
+@pytest.fixture(params=range(1, len(MIGRATIONS)))
+def older(tmp_path: Path, request: pytest.FixtureRequest) -> Path:
+    """That plant after the first, the second … step."""
+    place, steps = tmp_path / "older.plant", request.param
     con = sqlite3.connect(place)
     con.executescript(OLDER.read_text(encoding="utf-8"))
-    con.executescript(f"PRAGMA application_id = {APPLICATION_ID}; PRAGMA user_version = 1; PRAGMA journal_mode = WAL")
+    for statement in (statement for step in MIGRATIONS[1:steps] for statement in step):
+        con.execute(statement)
+    con.executescript(f"PRAGMA application_id = {APPLICATION_ID}; PRAGMA user_version = {steps}; "
+                      "PRAGMA journal_mode = WAL")
     con.close()
     return place
 
@@ -61,3 +66,16 @@ def test_new_cells_are_written_into_it(older: Path, tmp_path: Path) -> None:
         # Anna's next is the stock she added, which has a cell of bert's by now.
         with pytest.raises(ChangedSince, match=r"^C division_kg: bert changed it at"):
             plant.undo()
+
+
+def test_batches_are_made_in_it(older: Path) -> None:
+    with open_plant(older, who="anna") as plant:
+        assert (plant.batches(), plant.vessels(), plant.lots()) == ([], [], [])
+        order(plant, "B-0001", ("A", 500.0))
+        receive(plant, "A", "L1", 1000.0)
+        charge(plant, "B-0001", 1, 490.0)
+        assert plant.stock("A").on_hand_kg == 40_510.0
+        assert plant.verify() is None
+        plant.undo()
+        assert (plant.stock("A").on_hand_kg, plant.stock("A").reserved_kg) == (41_000.0, 500.0)
+        assert plant.verify() is None

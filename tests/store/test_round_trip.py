@@ -41,6 +41,7 @@ def same(one: Plant, two: Plant) -> None:
     assert one.products() == two.products()
     assert one.trials() == two.trials()
     assert (one.measured(), one.lessons(True)) == (two.measured(), two.lessons(True))
+    assert one.vessels() == two.vessels()
 
 
 def test_the_example(example):
@@ -55,7 +56,7 @@ def test_the_example_is_as_it_is_written(example, tmp_path):
     for file in ("products.csv", "limits.csv", "shares.csv"):
         assert len((tmp_path / "out" / file).read_text().splitlines()) == len(
             (example / file).read_text().splitlines())
-    for file in ("stocks.csv", "measured.csv"):
+    for file in ("stocks.csv", "measured.csv", "vessels.csv"):
         assert (tmp_path / "out" / file).read_text() == (example / file).read_text()
 
 

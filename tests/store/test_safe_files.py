@@ -153,16 +153,16 @@ def test_a_killed_session_loses_nothing_it_has_saved(path, plant, tmp_path):
 
 @pytest.mark.parametrize("links", [True, False])
 def test_an_import_that_comes_second_goes_into_the_plant_of_the_first(folder, tmp_path, monkeypatch, links):
-    place, put = tmp_path / "x.plant", opening._put
+    place, put = tmp_path / "x.plant", opening.put
 
     def late(temporary, path):
-        monkeypatch.setattr(opening, "_put", put)
+        monkeypatch.setattr(opening, "put", put)
         import_folder(folder("first"), path, who="anna")
         return put(temporary, path)
 
     if not links:
         monkeypatch.setattr(opening.os, "link", lambda old, new: (_ for _ in ()).throw(PermissionError(1, "no")))
-    monkeypatch.setattr(opening, "_put", late)
+    monkeypatch.setattr(opening, "put", late)
     done = import_folder(folder("second", products="product,grade\nP32,ISO VG 32\n"), place, who="bertil")
     assert done.retired == ("P46",)
     with open_plant(place) as plant:

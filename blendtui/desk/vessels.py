@@ -1,0 +1,192 @@
+"""What can be done with vessels: kettles and blending tanks, cell by cell."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+from blendtui.store import cells as check
+from blendtui.store import edits
+from blendtui.store.batch_edits import added, changed
+from blendtui.store.batch_records import OPEN, Vessel
+from blendtui.store.catalogue_vessels import HOTTEST_MARGIN, LARGEST_L, vessel_faults
+from blendtui.store.harmless import harmless
+from blendtui.store.plant import Plant
+from blendtui.store.records import Change, Step
+from blendtui.store.state import change_of
+
+from .errors import DeskError
+from .stocks import Edit
+
+CHARGE_ORDER = "charge_order"  # a column of vessels.csv: the plant's own order of charging (charge_lines.py)
+
+
+@dataclass(frozen=True)
+class VesselCell:
+    """One cell of a vessel that can be edited."""
+
+    code: str  # field of Vessel, or CHARGE_ORDER
+    heading: str
+    unit: str = ""
+
+
+VESSEL_CELLS: tuple[VesselCell, ...] = (
+    VesselCell("capacity_l", "capacity", "L"), VesselCell("least_fill_l", "least fill", "L"),
+    VesselCell("division_kg", "scale division", "kg"), VesselCell("heel_kg", "heel", "kg"),
+    VesselCell("heel_stock", "heel of"), VesselCell("flash_margin_c", "margin to flash", "°C"),
+    VesselCell("flash_margin_on", "margin typed on"), VesselCell(CHARGE_ORDER, "order of charging"))
+_BY_CODE = {c.code: c for c in VESSEL_CELLS}
+
+
+def vessel(plant: Plant, code: str) -> Vessel:
+    """A vessel by its code, whatever the case; DeskError names those there are."""
+    there = plant.vessels()
+    found = next((v for v in there if v.vessel == code), None) or next(
+        (v for v in there if v.vessel.casefold() == code.strip().casefold()), None)
+    if found is None:
+        have = ", ".join(harmless(v.vessel, 20) for v in there[:12])
+        raise DeskError(f"no vessel {harmless(code, 40)!r}; " + (f"the plant has {have}" if have else
+                        "the plant has none yet: blendtui vessel add NAME --set capacity_l=24000"))
+    return found
+
+
+def charge_order(plant: Plant, code: str) -> tuple[str, ...]:
+    """The plant's own order of charging in this vessel, as names; empty: the usual one."""
+    row = plant.row("extra", "vessel", edits.row_key((code,)), CHARGE_ORDER)
+    return tuple(str((row or {}).get("text") or "").split())
+
+
+def text_of(plant: Plant, of: Vessel, cell: str) -> str:
+    """A cell as it is shown and as it may be typed back."""
+    if cell == CHARGE_ORDER:
+        return " ".join(charge_order(plant, of.vessel))
+    value = getattr(of, cell)
+    return "" if value is None else value if isinstance(value, str) else f"{value:.12g}"
+
+
+def set_cell(plant: Plant, code: str, cell: str, typed: str) -> Edit:
+    """Give a vessel's cell what was typed, with its unit if it is another; empty: unknown.
+
+    A margin to the flash point that is typed without its date gets today's. DeskError for what cannot be true.
+    """
+    if cell not in _BY_CODE:
+        raise DeskError(f"a vessel has no {harmless(cell, 40)!r}; it has {', '.join(_BY_CODE)}")
+    old, heading, unit = vessel(plant, code), _BY_CODE[cell].heading, _BY_CODE[cell].unit
+    before = text_of(plant, old, cell)
+    if cell == CHARGE_ORDER:
+        changes, after = _own_order(plant, old, typed)
+    else:
+        new = _with(plant, old, cell, typed.strip())
+        _refuse(new)
+        cells = {c: getattr(new, c) for c in (x.code for x in VESSEL_CELLS if x.code != CHARGE_ORDER)
+                 if getattr(new, c) != getattr(old, c)}
+        changes, after = ([changed(old, **cells)] if cells else []), text_of(plant, new, cell)
+    if not changes:
+        return Edit("unchanged", f"{old.vessel} {heading}: unchanged")
+    said = f"{old.vessel} {heading} {before or 'empty'} → {after or 'empty'}" + (f" {unit}" if after and unit else "")
+    plant.change(changes, said)
+    return Edit("saved", said)
+
+
+def _own_order(plant: Plant, of: Vessel, typed: str) -> tuple[list[Change], str]:
+    from .charge_lines import names_of
+
+    names = names_of(typed, plant.stocks())
+    before, after = " ".join(charge_order(plant, of.vessel)), " ".join(names)
+    key = ("vessel", edits.row_key((of.vessel,)), CHARGE_ORDER)
+    if before == after:
+        return [], after
+    return [change_of("extra", key, {"text": before} if before else None, {"text": after} if after else None)], after
+
+
+def _with(plant: Plant, old: Vessel, cell: str, typed: str) -> Vessel:
+    """The vessel with what was typed in this cell."""
+    try:
+        if cell == "heel_stock":
+            return replace(old, heel_stock=_heel_of(plant, typed))
+        if cell == "flash_margin_on":
+            return replace(old, flash_margin_on=check.iso_date(typed))
+        value = _number(cell, typed, old)
+    except check.CellError as error:
+        raise DeskError(f"{harmless(old.vessel, 40)} {_BY_CODE[cell].heading}: {error}") from None
+    if cell == "flash_margin_c":
+        # A margin is a decision of a day: without a date nobody could tell whether it still stands.
+        return replace(old, flash_margin_c=value, flash_margin_on="" if value is None else _today())
+    return replace(old, **{cell: value})
+
+
+def _today() -> str:
+    from datetime import datetime
+
+    return datetime.now().date().isoformat()
+
+
+def _heel_of(plant: Plant, typed: str) -> str:
+    """A stock or a batch that the heel is of; DeskError where the plant has neither."""
+    name = check.plain(typed)
+    if name and name not in {s.code for s in plant.stocks(include_retired=True)} | {b.batch for b in plant.batches()}:
+        raise DeskError(f"{harmless(name, 40)!r} is no stock and no batch of this plant; mend the name, or leave it "
+                        "empty and type the heel's values with the order")
+    return name
+
+
+def _number(cell: str, typed: str, old: Vessel) -> float | None:
+    from solver.scales import parse, split
+
+    if not typed:
+        return None
+    if cell.endswith("_l"):
+        number, unit = split(typed)
+        value = number if unit in ("", "l") else parse(typed, "mass", 1000.0)  # 1 L of 1000 kg/m³ is 1 kg
+        if unit in ("kg", "t", "lb", "lbs", "g"):
+            raise DeskError(f"{harmless(typed, 40)!r} is a mass; a vessel's {_BY_CODE[cell].heading} is in litres")
+        return check.number(repr(value), least=0.0, most=LARGEST_L) if cell == "least_fill_l" else check.positive(
+            repr(value), LARGEST_L)
+    if cell == "flash_margin_c":
+        number, unit = split(typed)
+        value = number / 1.8 if unit in ("f", "°f") else parse(typed, "temperature")  # a difference has no offset
+        return check.number(repr(value), least=0.0, most=HOTTEST_MARGIN)
+    value = parse(typed, "mass")
+    if cell == "division_kg":
+        return check.positive(repr(value), check.LARGEST_KG)
+    return check.number(repr(value), least=0.0, most=check.LARGEST_KG)
+
+
+def _refuse(of: Vessel) -> None:
+    fault = next(vessel_faults(of), None)
+    if fault is not None:
+        raise DeskError(f"{harmless(of.vessel, 40)}: {fault[1]}; {fault[2]}")
+
+
+def add_vessel(plant: Plant, code: str) -> Vessel:
+    """Add a vessel under a code, of which nothing is known yet; a retired one of that code comes back as it was."""
+    try:
+        code = check.code(code.strip())
+    except check.CellError as error:
+        raise DeskError(str(error)) from None
+    if any(v.vessel.casefold() == code.casefold() for v in plant.vessels()):
+        raise DeskError(f"there is a vessel {code} already; give the new one another code")
+    row = plant.row("vessel", code)
+    if row is not None:
+        changes = [change_of("vessel", (code,), {"retired": 1}, {"retired": 0})]
+    else:
+        changes = added(Vessel(code))
+        position = edits.next_position(plant, "vessel")
+        first = changes[0]
+        changes = [replace(first, after={**(first.after or {}), "position": position, "retired": 0})]
+    plant.change(changes, f"vessel {code} added")
+    return vessel(plant, code)
+
+
+def retire_vessel(plant: Plant, code: str, *, why: str = "") -> str:
+    """Take a vessel out of use; undo brings it back. DeskError while a batch is open in it."""
+    old = vessel(plant, code)
+
+    def make() -> Step:
+        held = [b.batch for b in plant.batches(OPEN) if b.vessel == old.vessel]
+        if held:
+            raise DeskError(f"{old.vessel} holds {', '.join(held[:4])}, which "
+                            f"{'is' if len(held) == 1 else 'are'} open; release or cancel first")
+        return Step((edits.retired("vessel", old.vessel),), f"vessel {old.vessel} retired", why)
+
+    plant.step(make)
+    return f"vessel {old.vessel} retired"

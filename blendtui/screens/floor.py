@@ -1,0 +1,371 @@
+"""The floor: one batch from its first charge to its release, by keyboard alone."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+from textual.widget import Widget
+
+from blendtui import commands
+from blendtui.store.batch_records import DONE, DROPPED, PLANNED, Charge
+from blendtui.store.harmless import harmless
+from blendtui.widgets.grid import Cell, Column, Grid, more_only
+from blendtui.widgets.head import Head
+from blendtui.widgets.lines import OneLine
+from blendtui.widgets.paint import BAD, BOLD, DIM, PLAIN, cut_line
+
+from . import floor_lab, floor_view, reading, remedy
+from .floor_lab import LabCommands
+from .floor_out import OutCommands
+from .floor_view import CardLine, Seen
+
+CHARGES = (Column("mark", "", "", 1, "left"), Column("line", "no", "", 4, "left"),
+           Column("stock", "stock", "", 10, "left"), Column("plan", "plan", "kg", 8),
+           Column("tolerance", "±", "kg", 4), Column("lot", "lot", "", 11, "left"),
+           Column("scale", "scale", "kg", 8), Column("actual", "actual", "kg", 8), Column("by", "who", "", 8, "left"),
+           Column("check", "check", "", 8, "left"), Column("at", "when", "", 16, "left"),
+           Column("packages", "packages", "kg", 10, "left"), Column("why", "why", "", 40, "left"))
+LAB_KEYS = ("enter", "tab", "s", "v", "d", "t", "p", "L", "e", "w", "k", "n")  # first on the laboratory's key line
+
+
+@dataclass(frozen=True)
+class FloorState:
+    """The batch as it was read last, and where the keys go."""
+
+    testing: bool = False  # to the laboratory, else to the charges
+    seen: Seen | None = None
+    lots: dict[int, str] = field(default_factory=dict)  # line → lot typed for a charge to come
+
+
+class FloorScreen(LabCommands, OutCommands):
+    """The charges over the laboratory; on a small terminal one of the two."""
+
+    NAME = commands.FLOOR
+
+    def __init__(self) -> None:
+        super().__init__()
+        self.state = FloorState()
+        self.head = Head()
+        self.charges = Grid(id="charges", fixed=3)
+        self.charges.foot = more_only
+        self.charges.picked = self._show_row
+        self.tests = Grid(id="tests", fixed=2)
+        self.tests.foot = more_only
+        self.tests.active = False
+        self.tests.picked = self._show_row
+        self.caution = OneLine(id="caution")
+        self.lines: list[CardLine] = []
+        self.lab_lines: list[floor_lab.LabLine] = []
+        self.read_for: tuple[int, str] | None = None
+        self.shown_name = ""  # of the batch on the screen
+
+    def body(self) -> Iterable[Widget]:
+        """Heading and next step, charges, laboratory, cautions."""
+        return self.head, self.charges, self.tests, self.caution
+
+    @property
+    def seen(self) -> Seen | None:
+        """The batch as it was read last."""
+        return self.state.seen
+
+    @property
+    def charge(self) -> Charge | None:
+        """The charge under the cursor."""
+        return self.lines[self.charges.row].charge if self.charges.row < len(self.lines) else None
+
+    # Reading and showing
+
+    def refresh_page(self) -> None:
+        """Show what is there, and read it again where the plant has changed."""
+        wanted = (self.snapshot.revision, self.session.batch)
+        if wanted != self.read_for:
+            self.read_for, plant = wanted, self.program.plant
+            self.program.task(lambda: floor_view.look(plant, wanted[1]), lambda seen: self._looked(wanted, seen),
+                              lambda refusal: self._looked(wanted, None))
+        self._show()
+        super().refresh_page()
+
+    def _looked(self, wanted: tuple[int, str], seen: Seen | None) -> None:
+        if wanted != self.read_for:
+            return
+        name = seen.made.name if seen else ""
+        other, self.shown_name = name != self.shown_name, name
+        if seen is not None and not self.session.batch:
+            self.session.batch = name  # a batch that is ordered later does not take its place
+            self.read_for = (wanted[0], name)
+        to_come = {c.line for c in seen.made.to_charge} if seen else set()
+        lots = {} if other else {line: lot for line, lot in self.state.lots.items() if line in to_come}
+        moved_on = other or self._was_next(seen)
+        self.state = replace(self.state, seen=seen, lots=lots)
+        self._show(to_next=moved_on)
+
+    def _was_next(self, seen: Seen | None) -> bool:
+        """Did the cursor stand on the next charge, and is that another one now?"""
+        before = self.seen
+        if before is None or seen is None or not before.made.to_charge or self.charge is None:
+            return False
+        now = seen.made.to_charge[0].line if seen.made.to_charge else None
+        return self.charge.line == before.made.to_charge[0].line != now
+
+    def _show(self, *, to_next: bool = False) -> None:
+        seen, here = self.seen, self.charge
+        self.lines = list(floor_view.card_lines(seen, self.state.lots)) if seen else []
+        self.lab_lines = floor_lab.lab_lines(seen) if seen else []
+        row = next((n for n, x in enumerate(self.lines) if here and x.charge.line == here.line), None)
+        if to_next:
+            row = next((n for n, x in enumerate(self.lines) if x.charge.state == PLANNED), row or 0)
+        self.charges.empty = "no charges" if seen else ("reading the batch …" if self.read_for is None else
+                                                        "no batch yet: on the screen Batches, a takes an order")
+        self.charges.show(CHARGES, len(self.lines), self._cell, row=row)
+        self.tests.empty = "no sample yet; s records one once everything is charged" if seen else ""
+        self.tests.show(floor_lab.COLUMNS, len(self.lab_lines), self._lab_cell)
+        self._show_head()
+        self._show_row()
+
+    def _show_head(self) -> None:
+        seen = self.seen
+        if seen is None:
+            self.head.show([])
+            self.caution.show()
+            return
+        width = self.size.width
+        self.head.show([cut_line([(f"{seen.name}: ", BOLD), (floor_view.headline(seen), PLAIN)], width),
+                        cut_line([("next: ", BOLD), (floor_view.next_words(seen), PLAIN)], width)])
+        titles = ", ".join(c.title for c in seen.cautions)
+        self.caution.show((f"k: {len(seen.cautions)} cautions: ", BOLD), (f"{titles}. Site procedure decides.", PLAIN))
+
+    def _cell(self, row: int, column: int) -> Cell:
+        line, code = self.lines[row], CHARGES[column].code
+        text = line.cells[code]
+        if code in ("mark", "actual") and line.cells["mark"] == "!":
+            return text, BAD
+        return (text, DIM) if line.charge.state == DROPPED else text
+
+    def _lab_cell(self, row: int, column: int) -> Cell:
+        return floor_lab.cell(self.lab_lines[row], column)
+
+    def _show_row(self) -> None:
+        seen = self.seen
+        count = len(self.lab_lines if self.state.testing else self.lines)
+        grid = self.tests if self.state.testing else self.charges
+        who = f"as {harmless(self.session.by, 20)}" if self.session.by else ""
+        self.title_line.show(harmless(self.shown_name, 12) or "no batch",
+                             f" {grid.row + 1} of {count}" if count else "", f" {who}" if who else "")
+        if seen is None:
+            self.edit.show("", "")
+        elif self.state.testing:
+            self.edit.show(*floor_lab.told(self.lab_lines, self.tests.row))
+        else:
+            self.edit.show(*self._told())
+
+    def _told(self) -> tuple[str, str]:
+        """The charge under the cursor and what is known of it that has no room in the table."""
+        charge, seen = self.charge, self.seen
+        if charge is None or seen is None:
+            return "", ""
+        cells = self.lines[self.charges.row].cells
+        stock = seen.stocks.get(charge.stock)
+        told = [harmless(stock.name) if stock else "", f"{charge.celsius:g} °C" if charge.celsius is not None else "",
+                f"{cells['packages']} kg" if cells["packages"] else "", f"lot {cells['lot']}" if cells["lot"] else "",
+                f"checked by {cells['check']}" if charge.checked_by else "", cells["why"]]
+        return f"{charge.line} {harmless(charge.stock)}", ", ".join(part for part in told if part)
+
+    def spare(self) -> int:
+        """Blank lines under the tables in sight."""
+        shown = [grid for grid in (self.charges, self.tests) if grid.display]
+        return min(grid.size.height - grid.needs() for grid in shown)
+
+    def on_resize(self) -> None:
+        """Lay everything for the new size."""
+        self._show()
+
+    def show_keys(self) -> None:
+        """Keys of the pane that has them first."""
+        if self.state.testing and not self.edit.active:
+            found = {c.keys[0]: (c.key, c.label) for c in commands.of(self.NAME) if c.screen == self.NAME}
+            listed = [found[key] for key in LAB_KEYS]
+            self.keys.show([*listed, *(pair for pair in commands.key_line(self.NAME) if pair not in found.values())])
+        else:
+            super().show_keys()
+
+    # Commands
+
+    def move(self, key: str) -> None:
+        """Move in the charges or in the laboratory."""
+        if (self.tests if self.state.testing else self.charges).move(key):
+            self._show_row()
+
+    def do_pane(self) -> None:
+        """From the charges to the laboratory, and back."""
+        self.go_pane(not self.state.testing)
+
+    def go_pane(self, testing: bool) -> None:
+        """Let the laboratory or the charges have the keys."""
+        self.state = replace(self.state, testing=testing)
+        self.set_class(testing, "-testing")
+        self.charges.activate(not testing)
+        self.tests.activate(testing)
+        self._show_row()
+        self.show_keys()
+
+    def do_next(self) -> None:
+        """Go to the next open batch."""
+        from blendtui.store.batch_records import OPEN
+
+        plant, here = self.program.plant, self.shown_name
+
+        def then(found: list[Any]) -> None:
+            names = [b.batch for b in found]
+            if not names or names == [here]:
+                self.say("no other batch is open")
+                return
+            self.session.batch = names[(names.index(here) + 1) % len(names)] if here in names else names[0]
+            self.refresh_page()
+
+        self.program.task(lambda: plant.batches(OPEN), then)
+
+    def do_person(self) -> None:
+        """Type the name under which steps are recorded here."""
+        def then(name: str) -> None:
+            self.session.by = name
+            self._show_row()
+            self.say(f"steps are recorded under {name or self.program.plant.who}")
+
+        self.type_checked("your name, for the record (empty: the login name)", self.session.by,
+                          lambda text: harmless(text, 60), then)
+
+    def do_cautions(self) -> None:
+        """Show the cautions in full."""
+        if self.seen is None:
+            self.say("there is no batch here")
+            return
+        text = ["Reminders, each with its reason; none is a permission. The site's procedures, safety data sheets,",
+                "permits and local codes decide."]
+        for each in self.seen.cautions:
+            text += ["", each.title.upper(), f"  {each.reason}", f"  {each.advice}"]
+        self.app.push_screen(reading.ReadingScreen(f"Cautions for {self.seen.name}", text))
+
+    def do_type(self) -> None:
+        """Type the actual of a charge, or a result."""
+        if self.state.testing:
+            self.type_result()
+        else:
+            self.type_actual()
+
+    def of_charge(self, *wanted: str) -> Charge | None:
+        """The charge under the cursor if it is in such a state; else say what it is, and None."""
+        charge = self.charge
+        if self.state.testing:
+            self.refuse("Tab goes to the charges first")
+        elif charge is None:
+            self.refuse("there is no charge here")
+        elif charge.state not in wanted:
+            told = {DONE: f"charged by {harmless(charge.by, 30)} already; e corrects it, and says why",
+                    DROPPED: "given up as missed; R shows what the batch will be without it",
+                    PLANNED: "not charged yet; Enter types its actual"}
+            self.refuse(f"line {charge.line}, {harmless(charge.stock, 30)}, is {told[charge.state]}")
+        else:
+            return charge
+        return None
+
+    def type_actual(self) -> None:
+        """Type what was charged in the line under the cursor."""
+        charge = self.of_charge(PLANNED, DROPPED)
+        if charge is None or self.seen is None:
+            return
+        plant, name, by = self.program.plant, self.seen.made.name, self.session.by
+        lot = self.state.lots.get(charge.line, "")
+
+        def make(typed: str, sure: bool) -> Any:
+            from blendtui.desk import charging
+
+            return charging.charge(plant, name, charge.line, typed, lot=lot, by=by, sure=sure)
+
+        step = floor_view.division_of(self.seen, charge)
+        plan = f"{floor_view.kg(charge.plan_kg, step)} kg ± {floor_view.kg(charge.tolerance_kg, step)}"
+        self.type_step(f"{charge.line} {harmless(charge.stock, 20)} charged (kg, t or drums; plan {plan})", "", make,
+                       self.say_charged, yes="it was so")
+
+    def say_charged(self, done: Any) -> None:
+        """Say what a charge did to the batch, and where the remedy is."""
+        more = ["R shows it, and y there plans it"] if done.remedy is not None else []
+        self.program.say(harmless("; ".join([*done.words, *more]), 2000), "refused" if done.odd else "done")
+
+    def do_lot(self) -> None:
+        """Type the lot of the charge under the cursor, then its actual."""
+        charge = self.of_charge(PLANNED)
+        if charge is None or self.seen is None:
+            return
+        parts = floor_view.lots_words(self.seen.lots.get(charge.stock, {}))
+
+        def then(lot: str) -> None:
+            lots = {k: v for k, v in self.state.lots.items() if k != charge.line}
+            self.state = replace(self.state, lots={**lots, charge.line: lot} if lot else lots)
+            self._show()
+            self.type_actual()
+
+        self.type_checked(f"{charge.line} {harmless(charge.stock, 20)} lot (in the tank: {parts or 'none on record'})",
+                          self.state.lots.get(charge.line, charge.lot), str.strip, then)
+
+    def do_check(self) -> None:
+        """Second check of a charge, by another person."""
+        charge = self.of_charge(DONE)
+        if charge is None or self.seen is None:
+            return
+        plant, name = self.program.plant, self.seen.made.name
+
+        def make(by: str, sure: bool) -> Any:
+            from blendtui.desk import charging
+
+            return charging.check(plant, name, charge.line, by=by, sure=sure)
+
+        self.type_step(f"{charge.line} {harmless(charge.stock, 20)} checked by (another than "
+                       f"{harmless(charge.by, 20)})", "", make,
+                       lambda made: self.program.say(f"line {charge.line} checked", "done"))
+
+    def do_miss(self) -> None:
+        """The charge under the cursor will not be made."""
+        charge = self.of_charge(PLANNED)
+        if charge is None or self.seen is None:
+            return
+        plant, name, by = self.program.plant, self.seen.made.name, self.session.by
+
+        def make(why: str, sure: bool) -> Any:
+            from blendtui.desk import charging
+
+            return charging.miss(plant, name, charge.line, why=why, by=by, sure=sure)
+
+        self.type_why(f"line {charge.line}, {harmless(charge.stock, 20)}, is not charged", make, self.say_charged,
+                      yes="give it up")
+
+    def do_correct(self) -> None:
+        """Correct a charge that was made, or withdraw a result."""
+        if self.state.testing:
+            self.withdraw_result()
+            return
+        charge = self.of_charge(DONE)
+        if charge is None or self.seen is None:
+            return
+        plant, name, by = self.program.plant, self.seen.made.name, self.session.by
+        step = floor_view.division_of(self.seen, charge)
+
+        def then(typed: str) -> None:
+            def make(why: str, sure: bool) -> Any:
+                from blendtui.desk import charging
+
+                return charging.correct(plant, name, charge.line, typed, why=why, by=by, sure=sure)
+
+            self.type_why(f"line {charge.line} is corrected to {harmless(typed, 20)}", make, self.say_charged,
+                          yes="it was so")
+
+        self.type_checked(f"{charge.line} {harmless(charge.stock, 20)} truly charged, kg",
+                          floor_view.kg(charge.actual_kg, step), str.strip, then)
+
+    def do_remedy(self) -> None:
+        """Show what the batch will be, and the charges to come worked out anew."""
+        if self.seen is None:
+            self.say("there is no batch here")
+            return
+        remedy.show_outlook(self, self.seen.made)

@@ -1,0 +1,175 @@
+"""The ledger at the screen of stocks: receipts, dips, the book of a tank, and where it went."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from blendtui.desk.errors import DeskError
+from blendtui.store.harmless import harmless
+from solver.stocks import Stock
+
+from .steps import StepPage
+
+
+class LedgerCommands(StepPage):
+    """The steps of the ledger, on the stock under the cursor."""
+
+    @property
+    def stock(self) -> Stock | None:
+        """The stock under the cursor; the screen knows it."""
+        raise NotImplementedError
+
+    def _tank(self) -> Stock | None:
+        if self.stock is None:
+            self.say("there is no stock here; a adds one")
+        return self.stock
+
+    def do_receive(self) -> None:
+        """Record a receipt: quantity, lot and what its certificate says."""
+        stock = self._tank()
+        if stock is None:
+            return
+        plant, code, by = self.program.plant, stock.code, self.session.by
+
+        def then(found: list[Any]) -> None:
+            kg, lot, certificate, cells, keep = found
+
+            def make(sure: bool) -> Any:
+                from blendtui.desk import ledger
+
+                return ledger.receive(plant, code, kg, lot, cells=cells, certificate=certificate, keep=keep, by=by,
+                                      sure=sure)
+
+            self.take_step(make, self._say_words, yes="it was so")
+
+        named = harmless(code, 20)
+        self.ask_through([
+            (f"{named} received (kg, t, L)", str, lambda text: _mass(text, stock)), (f"{named} lot", str, _lot),
+            (f"{named} number of its certificate (empty: none)", str, str.strip),
+            (f"{named} values on it (kv40 31.2, kv100 5.35, density15 871)", str, read_cells),
+            (f"{named} what it does not say is as in the tank (yes, no)", lambda: "no", _yes)], then)
+
+    def do_test(self) -> None:
+        """Give the tank the results of its own test."""
+        stock = self._tank()
+        if stock is None:
+            return
+        plant, code, by = self.program.plant, stock.code, self.session.by
+
+        def then(cells: dict[str, str]) -> None:
+            def make(sure: bool) -> Any:
+                from blendtui.desk import ledger
+
+                return ledger.test(plant, code, cells, by=by, sure=sure)
+
+            self.take_step(make, self._say_words, yes="it was so")
+
+        self.type_checked(f"{harmless(code, 20)} tested (kv40 31.2, kv100 5.35, density15 871)", "", read_cells, then)
+
+    def do_dip(self) -> None:
+        """Record a dip against the book; where they differ the book may be set to it, with the reason."""
+        stock = self._tank()
+        if stock is None:
+            return
+        plant, code, by = self.program.plant, stock.code, self.session.by
+
+        def then(found: list[Any]) -> None:
+            kg, correct = found
+            if correct:
+                self.type_why(f"the book of {harmless(code, 20)} is set to its dip",
+                              lambda why, sure: _dip(plant, code, kg, True, why, by, sure), self._say_words,
+                              yes="set it")
+            else:
+                self.take_step(lambda sure: _dip(plant, code, kg, False, "", by, sure), self._say_words,
+                               yes="it was so")
+
+        named = harmless(code, 20)
+        self.ask_through([(f"{named} dip (kg, t, L at 15 °C)", str, lambda text: _mass(text, stock)),
+                          (f"{named} set the book to it (yes, no)", lambda: "no", _yes)], then)
+
+    def _say_words(self, done: Any) -> None:
+        self.program.say(harmless("; ".join(done.words), 1500), "done")
+
+    def do_book(self) -> None:
+        """Show every movement of the stock, and the book against the dip."""
+        stock = self._tank()
+        if stock is None:
+            return
+        plant, code = self.program.plant, stock.code
+
+        from .reading import ReadingScreen
+
+        def work() -> list[str]:
+            from blendtui.desk import ledger
+
+            return book_lines(ledger.book(plant, code))
+
+        head = f"Book of {harmless(code, 40)}"
+        self.program.task(work, lambda text: self.app.push_screen(ReadingScreen(head, text)))
+
+    def do_trace(self) -> None:
+        """Follow the stock, or a lot of it, both ways."""
+        from . import tracing  # what the first screen needs not waits until it is asked for
+
+        tracing.ask(self, self.stock.code if self.stock else "")
+
+
+def _dip(plant: Any, code: str, kg: float, correct: bool, why: str, by: str, sure: bool) -> Any:
+    from blendtui.desk import ledger
+
+    return ledger.dip(plant, code, kg, correct=correct, why=why, by=by, sure=sure)
+
+
+def _mass(typed: str, stock: Stock) -> float:
+    from blendtui.desk import typed as desk
+
+    return desk.mass(typed, stock.density15)
+
+
+def book_lines(book: Any) -> list[str]:
+    """The book of a stock in lines of 80 columns, its movements newest first."""
+    from blendtui.desk import batches, numbers
+
+    said = [*(harmless(each, 400) for each in book.words), ""]
+    if book.parts:
+        lots = ", ".join(f"{harmless(lot, 40)} {numbers.pct(part)} %" for lot, part in book.parts.items())
+        said += [f"in the tank: {lots}", ""]
+    said.append(f"{'when':<16} {'who':<10} {'kg':>11} {'book, kg':>11}  what")
+    for line in reversed(book.lines):
+        kg = "unknown" if line.kg is None else f"{line.kg:+.1f}"
+        balance = "unknown" if line.balance_kg is None else f"{line.balance_kg:.1f}"
+        said.append(f"{batches.when(line.at):<16} {harmless(line.who, 10):<10} {kg:>11} {balance:>11}  "
+                    f"{harmless(line.words, 200)}")
+    return said
+
+
+def _lot(typed: str) -> str:
+    if not typed.strip():
+        raise DeskError("a lot is needed: type the supplier's, or a mark of your own")
+    return typed.strip()
+
+
+def _yes(typed: str) -> bool:
+    text = typed.strip().lower()
+    if text not in ("y", "yes", "n", "no"):
+        raise DeskError("type yes or no")
+    return text in ("y", "yes")
+
+
+def read_cells(typed: str) -> dict[str, str]:
+    """Values as typed, `kv40 31.2, kv100 5.35, flash 214`: property → its text.
+
+    >>> read_cells("KV40 31.2, flash 110 C")
+    {'kv40': '31.2', 'flash': '110 C'}
+    """
+    from .words import property_code
+
+    found: dict[str, str] = {}
+    for part in (p.strip() for p in typed.split(",")):
+        if not part:
+            continue
+        name, _, value = part.partition(" ")
+        if not value.strip():
+            raise DeskError(f"{harmless(part, 40)!r}: type a property, a blank and its value, parted by commas")
+        found[property_code(name)] = value.strip()
+    return found

@@ -1,0 +1,223 @@
+"""An order, asked for part by part; its charges are shown, and nothing is written before they are taken."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any
+
+from blendtui.desk.errors import DeskError
+from blendtui.store.batch_records import Vessel
+from blendtui.store.harmless import harmless
+
+from . import reading
+from .base import step
+from .words import property_code
+
+if TYPE_CHECKING:
+    from .batches import BatchesScreen
+
+def ask(page: BatchesScreen) -> None:
+    """Read the vessels, then ask for the order."""
+    product = page.snapshot.product(page.session.product)
+    if product is None:
+        page.say("there is no product yet: add one on the screen Targets", "refused")
+        return
+    plant = page.program.plant
+
+    def then(vessels: list[Vessel]) -> None:
+        if not vessels:
+            page.program.say("the plant has no vessel yet: blendtui vessel add NAME, or a vessels.csv in its catalogue",
+                             "refused")
+            return
+        Asking(page, product.product, vessels).begin(product.batch_kg)
+
+    page.program.task(plant.vessels, then)
+
+
+Step = tuple[str, str, Callable[[str], Any]]  # label, text to begin with, reader
+
+
+class Asking:
+    """The questions of one order; what was typed last for the same product stands on the line again."""
+
+    def __init__(self, page: BatchesScreen, product: str, vessels: list[Vessel]) -> None:
+        self.page, self.product, self.vessels = page, product, vessels
+        self.typed: dict[str, str] = page.typed_orders.setdefault(product, {})
+        self.found: dict[str, Any] = {}
+
+    def begin(self, batch_kg: float | None) -> None:
+        """Ask the first question."""
+        self.begun = f"{batch_kg:.10g} kg" if batch_kg else ""
+        self._ask(0)
+
+    def _steps(self) -> list[tuple[str, Step]]:
+        vessel = next((v for v in self.vessels if v.vessel == self.found.get("vessel")), self.vessels[0])
+        heel = f"{vessel.heel_kg:.10g}" if vessel.heel_kg else "0"
+        names = " ".join(harmless(v.vessel, 12) for v in self.vessels[:8])
+        steps: list[tuple[str, Step]] = [
+            ("amount", ("amount (15 t, 15000 kg, 16000 L15, 16000 L20)", self.begun, amount)),
+            ("vessel", (f"vessel ({names})", vessel.vessel, self._vessel)),
+            ("customer", ("customer (empty: none)", "", str.strip)),
+            ("order_no", ("the customer's order number (empty: none)", "", str.strip)),
+            ("limits", ("customer's limits, tighter (kv40 44 48, vi 98; empty: none)", "", limits)),
+            ("mix_c", ("mixing temperature, °C", "60", celsius)),
+            ("heel_kg", ("heel in the vessel, kg", heel, mass)),
+            ("heel_stock", ("heel is of which stock or batch (or its values: kv40 46 kv100 6.8 density15 875)",
+                            vessel.heel_stock, str.strip)),
+            ("line", ("line holds (kg and stock: 40 N150; empty: nothing)", "", line)),
+            ("flush", ("flush oil (kg, stock, in or out: 60 N150 in; empty: none)", "", flush)),
+            ("heel_ignored", ("leave heel and line out of the sums (why; empty: they count)", "", str.strip))]
+        if self.found.get("heel_kg") == 0.0:
+            steps = [each for each in steps if each[0] != "heel_stock"]
+        if self.found.get("heel_kg") == 0.0 and not self.found.get("line"):
+            steps = [each for each in steps if each[0] != "heel_ignored"]
+        return steps
+
+    def _vessel(self, typed: str) -> str:
+        able = [v.vessel for v in self.vessels if v.vessel.casefold() == typed.casefold()]
+        if not able:
+            raise DeskError(f"no vessel {harmless(typed, 30)!r}; there are "
+                            f"{', '.join(harmless(v.vessel, 20) for v in self.vessels)}")
+        return able[0]
+
+    def _ask(self, at: int) -> None:
+        steps = self._steps()
+        if at == len(steps):
+            self._propose()
+            return
+        name, (label, begun, read) = steps[at]
+
+        def kept(text: str) -> Any:
+            found = read(text)
+            self.typed[name] = text
+            return found
+
+        def then(found: Any) -> None:
+            if name == "vessel" and found != self.found.get("vessel"):
+                for each in ("heel_kg", "heel_stock"):  # those of the vessel stand on the line
+                    if self.found.get("vessel"):
+                        self.typed.pop(each, None)
+            self.found[name] = found
+            self._ask(at + 1)
+
+        self.page.type_checked(step(at + 1, len(steps), f"{harmless(self.product, 16)} {label}"),
+                               self.typed.get(name, begun), kept, then)
+
+    def order(self) -> Any:
+        """What was typed, as an order."""
+        from blendtui.desk.orders import Order
+
+        found = dict(self.found)
+        kg, unit = found.pop("amount")
+        heel = found.pop("heel_stock", "")
+        cells = heel_values(heel)
+        return Order(self.product, kg, found.pop("vessel"), unit, heel_stock="" if cells else heel, heel_cells=cells,
+                     **found)
+
+    def _propose(self) -> None:
+        page, plant, order = self.page, self.page.program.plant, self.order()
+
+        def work() -> tuple[Any, list[str]]:
+            from blendtui.desk import orders
+
+            found = orders.propose(plant, order)
+            return found, proposal_lines(found)
+
+        def show(found: tuple[Any, list[str]]) -> None:
+            page.say("")
+            proposal, text = found
+            keys = [("y", "take the order", lambda: self._take(order))] if proposal.charges else []
+            page.app.push_screen(reading.ReadingScreen(f"{harmless(self.product, 20)}: the charges of this order; "
+                                                       "nothing is written yet", text, keys))
+
+        page.program.task(work, show, saying="working out the charges …")
+
+    def _take(self, order: Any) -> None:
+        page, plant, by = self.page, self.page.program.plant, self.page.session.by
+
+        def make(sure: bool) -> Any:
+            from blendtui.desk import orders
+
+            return orders.take(plant, order, by=by, sure=sure)
+
+        def done(made: Any) -> None:
+            page.typed_orders.pop(self.product, None)
+            page.wanted = page.session.batch = made.name
+            page.program.say(f"{made.name} is ordered; Enter opens it on the floor, w writes its card", "done")
+
+        page.take_step(make, done, yes="take it")
+
+
+def proposal_lines(proposal: Any) -> list[str]:
+    """A proposal as lines of 80 columns."""
+    return []
+
+
+# Readers of what is typed
+
+def amount(typed: str) -> tuple[float, str]:
+    """An amount and its unit as an order has them: kg, L15 or L20."""
+    from solver.scales import parse, split
+
+    number, unit = split(typed)
+    if unit in ("l15", "l20", "l", "litres", "litre"):
+        return number, "L20" if unit == "l20" else "L15"
+    return parse(typed, "mass"), "kg"
+
+
+def mass(typed: str) -> float:
+    """A mass [kg]; nothing typed is none."""
+    from solver.scales import parse
+
+    return parse(typed, "mass") if typed.strip() else 0.0
+
+
+def celsius(typed: str) -> float | None:
+    """A temperature [°C]; nothing typed is the desk's own."""
+    from solver.scales import parse
+
+    return parse(typed, "temperature") if typed.strip() else None
+
+
+def limits(typed: str) -> dict[str, tuple[str, str]]:
+    """Limits as typed, `kv40 44 48, vi 98`: property → low and high; `-` leaves a side open.
+
+    >>> limits("kv40 44 48, vi 98")
+    {'kv40': ('44', '48'), 'vi': ('98', '')}
+    """
+    found = {}
+    for part in (p.split() for p in typed.split(",") if p.strip()):
+        if not 2 <= len(part) <= 3:
+            raise DeskError(f"{harmless(' '.join(part), 40)!r}: type a property, its low and its high (- for none)")
+        name, low, high = (*part, "")[:3]
+        found[property_code(name)] = tuple("" if side in ("-", "–") else side for side in (low, high))
+    return found  # type: ignore[return-value]
+
+
+def line(typed: str) -> tuple[float, str] | None:
+    """What a line holds: kg and stock."""
+    if not typed.strip():
+        return None
+    parts = typed.split()
+    if len(parts) < 2:
+        raise DeskError(f"{harmless(typed, 40)!r}: type kg and a stock, such as 40 N150")
+    return mass(" ".join(parts[:-1])), parts[-1]
+
+
+def flush(typed: str) -> tuple[float, str, bool] | None:
+    """Flush oil: kg, stock, and whether it goes into the batch."""
+    if not typed.strip():
+        return None
+    *rest, way = typed.split()
+    if way.lower() not in ("in", "out") or len(rest) < 2:
+        raise DeskError(f"{harmless(typed, 40)!r}: type kg, a stock, and in (it goes into the batch) or out, such as "
+                        "60 N150 in")
+    return mass(" ".join(rest[:-1])), rest[-1], way.lower() == "in"
+
+
+def heel_values(typed: str) -> dict[str, str]:
+    """Values of a heel whose origin is unknown, `kv40 46 kv100 6.8`; empty where a stock or batch was typed."""
+    parts = typed.split()
+    if len(parts) < 2 or len(parts) % 2:
+        return {}
+    return {property_code(name): value for name, value in zip(parts[::2], parts[1::2], strict=True)}

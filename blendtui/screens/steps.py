@@ -1,0 +1,90 @@
+"""A step of a batch as a screen takes it: done in the plant's thread, and what is unlikely is asked first."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+from blendtui.desk.errors import DeskError
+from blendtui.widgets.edit_line import Ended
+
+from .base import Page, step
+
+Make = Callable[[bool], Any]  # does the step; with True although it was questioned
+Done = Callable[[Any], None]
+
+
+class StepPage(Page):
+    """A screen that takes steps of a batch."""
+
+    def take_step(self, make: Make, done: Done, *, yes: str = "do it", again: Callable[[], None] | None = None) -> None:
+        """Do `make(False)`; a question of the desk is put to the operator, and y does `make(True)`.
+
+        `again`: begins to type once more where the step was refused or its question dropped with a key that is
+        no answer.
+        """
+        from blendtui.desk.batches import Questioned
+
+        def work(sure: bool) -> tuple[Any, str]:
+            try:
+                return make(sure), ""
+            except Questioned as asked:
+                return None, str(asked)
+
+        def took(found: tuple[Any, str]) -> None:
+            result, asked = found
+            if asked:
+                self.question(asked, yes, lambda: self.program.change(lambda: work(True), took, failed))
+            else:
+                done(result)
+
+        def failed(refusal: str) -> None:
+            if again:
+                again()
+
+        self.program.change(lambda: work(False), took, failed)
+
+    def question(self, words: str, yes: str, then: Callable[[], None]) -> None:
+        """Ask: y does it, Esc drops it, and Enter alone does nothing."""
+        self.edit.start("y or Esc", "", lambda ended: then(), lambda: self.say("dropped; nothing was changed"))
+        self.edit.ask(None, step=yes)
+        self.program.say(f"{words} – y: {yes} · Esc: drop it", "question")
+        self.show_keys()
+
+    def type_step(self, label: str, text: str, make: Callable[[str, bool], Any], done: Done, *, yes: str = "do it",
+                  whole: bool = True) -> None:
+        """Type something and do `make(typed, sure)` with it; what is refused comes back to the line."""
+        def then(ended: Ended) -> None:
+            self.take_step(lambda sure: make(ended.text.strip(), sure), done, yes=yes,
+                           again=lambda: self.type_step(label, ended.text, make, done, yes=yes, whole=False))
+
+        self.type_text(label, text, then, whole=whole)
+
+    def type_why(self, of: str, make: Callable[[str, bool], Any], done: Done, *, yes: str = "do it") -> None:
+        """Ask for a reason, which may not be empty, and do `make(why, sure)`."""
+        self.type_checked(f"why {of}", "", _reason, lambda why: self.take_step(
+            lambda sure: make(why, sure), done, yes=yes))
+
+    def ask_through(self, steps: list[tuple[str, Callable[[], str], Callable[[str], Any]]],
+                    then: Callable[[list[Any]], None]) -> None:
+        """Ask for several things in turn, each read as soon as it is typed: (label, text to begin with, reader)."""
+        found: list[Any] = []
+
+        def ask() -> None:
+            label, text, read = steps[len(found)]
+            self.type_checked(step(len(found) + 1, len(steps), label), text(), read, took)
+
+        def took(value: Any) -> None:
+            found.append(value)
+            if len(found) < len(steps):
+                ask()
+            else:
+                then(found)
+
+        ask()
+
+
+def _reason(typed: str) -> str:
+    if not typed.strip():
+        raise DeskError("a reason is needed here: a few words that another person will understand")
+    return typed.strip()
