@@ -36,6 +36,7 @@ from solver.errors import SolverError
 
 POLL = 1.4  # s between two looks for another person's change
 KEPT_MESSAGES = 200
+WAITING = "waiting for the plant file …"
 
 Task = tuple[Callable[[], Any], Callable[[Any], None], Callable[[str], None] | None]
 
@@ -76,7 +77,7 @@ class Console(App[int]):
         self.ahead: list[Any] = []  # keys and pastes that came before it was there
         self._then: Callable[[Any], None] | None = None
         self._tasks: deque[Task] = deque()
-        self._pending_changes = 0
+        self._asked = self._ended = 0  # tasks; they end in the order in which they were asked for
         self._gate = threading.Lock()
         self._draining = False
         self._leaving = False
@@ -141,25 +142,19 @@ class Console(App[int]):
     @property
     def busy(self) -> bool:
         """Is a change on its way to the plant?"""
-        return self._pending_changes > 0
+        return self._ended < self._asked
 
     def task(self, work: Callable[[], Any], done: Callable[[Any], None],
-             failed: Callable[[str], None] | None = None, *, saying: str = "waiting for the plant file …") -> None:
-        """Do `work` in the plant's thread, after what was asked before; then `done` or `failed` here.
-
-        `saying`: what the status line says where it takes a while.
-        """
-        self._pending_changes += 1
+             failed: Callable[[str], None] | None = None, *, saying: str = WAITING) -> None:
+        """Do `work` in the plant's thread, in turn; then `done` or `failed` here. `saying`: where it takes a while."""
+        self._asked += 1
         with self._gate:
             self._tasks.append((work, done, failed))
             start, self._draining = not self._draining, True
         if start:
             self.run_worker(self._drain, thread=True, group="plant", exit_on_error=False)
-        self.set_timer(asker.PATIENCE, lambda: self._say_waiting(saying))
-
-    def _say_waiting(self, saying: str) -> None:
-        if self.busy:
-            self.page.say(saying, "wait")
+        number = self._asked
+        self.set_timer(asker.PATIENCE, lambda: self._ended < number and self.page.say(saying, "wait"))
 
     def _drain(self) -> None:
         while True:
@@ -177,7 +172,7 @@ class Console(App[int]):
 
     def on_finished(self, message: messages.Finished) -> None:
         """A task ended."""
-        self._pending_changes -= 1
+        self._ended += 1
         if message.refusal:
             if message.failed:
                 message.failed(message.refusal)
@@ -190,7 +185,7 @@ class Console(App[int]):
             self.page.feed_later()
 
     def change(self, work: Callable[[], Any], done: Callable[[Any], None],
-               failed: Callable[[str], None] | None = None) -> None:
+               failed: Callable[[str], None] | None = None, *, saying: str = WAITING) -> None:
         """Do a change to the plant; then read the plant again, ask for the recipe, and `done`."""
         plant = self.plant
 
@@ -207,7 +202,7 @@ class Console(App[int]):
                 self.adopt(snapshot)
             done(result)
 
-        self.task(both, then, failed)
+        self.task(both, then, failed, saying=saying)
 
     def adopt(self, snapshot: Snapshot) -> None:
         """Show the plant as it is now, and ask for the recipe again."""

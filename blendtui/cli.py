@@ -104,7 +104,7 @@ def _parser() -> argparse.ArgumentParser:
     command.set_defaults(every_fault=True)
     command = add("export", _export, "write the plant as a catalogue folder")
     command.add_argument("folder", type=path, metavar="FOLDER")
-    for name in ("design", "why", "choices", "chance", "lab", "record", "stock", "trace"):
+    for name in ("design", "why", "choices", "chance", "lab", "vessel", "batch", "record", "stock", "trace"):
         import_module(f"blendtui.headless.{name}").register(add)
     add("stocks", _stocks, "list the stocks")
     add("products", _products, "list the products")

@@ -54,7 +54,7 @@ COMMANDS: tuple[Command, ...] = (
     _on(STOCKS, "i", "receive", "receive", "Record a receipt into the tank under the cursor: kg, lot and the values of "
         "its certificate; the tank's values are worked out until they are tested."),
     _on(STOCKS, "p", "dip", "dip", "Record a dip of the tank under the cursor against the book."),
-    _on(STOCKS, "o", "test", "own test", "Give the tank under the cursor the results of its own test: they stand in "
+    _on(STOCKS, "o", "test", "test", "Give the tank under the cursor the results of its own test: they stand in "
         "place of what was worked out or certified."),
     _on(STOCKS, "b", "book", "book", "Show every movement of the stock under the cursor, and the book against the dip.",
         changes=False),

@@ -9,7 +9,7 @@ import numpy as np
 
 from .errors import StockError, TargetError
 from .laws import basis_of, knows_viscosity
-from .properties import Array
+from .properties import Array, volume_at
 from .requirements import Requirement
 from .stocks import GROUPS, KINDS, Stock, StockTable
 from .target import ShareRule, Target
@@ -161,6 +161,9 @@ def _reason(stock: Stock, viscous: bool, target: Target,
     for need in requirements:
         if need.entry.basis not in ("mass", "volume") or need.unknown_ok:
             continue
+        if volume_at(need.code) is not None and stock.density15 is None:
+            return LeftOut(stock.code, f"its density is unknown and the product limits its {need.entry.name}",
+                           "density15")
         if stock.value_of(need.code) is None:
             return LeftOut(stock.code, f"its {need.entry.name} is unknown and the product limits it",
                            need.code)

@@ -13,6 +13,7 @@ from itertools import count
 
 import numpy as np
 
+from .charges import Charges
 from .enclosure import Enclosure, Piece
 from .linear import Polytope, Stopwatch, solve
 from .properties import Array
@@ -201,9 +202,12 @@ def largest_batch(stocks: StockTable | Iterable[Stock], target: Target, *,
     ceiling; None when no blend meets the target.
 
     The rows are homogeneous, so they hold for masses as for shares: maximise Σ m_i over m_i ≤ what the
-    tank can give. Whole-number rules are left out.
+    tank can give. Whole-number rules are left out. What is in the vessel takes part with its mass.
     """
-    model = build(stocks, replace(target, batch_kg=None, max_stocks=None, min_share=None))
+    table = as_table(stocks)
+    if any(s.in_vessel_kg is not None for s in table.stocks):
+        return _largest_on(table, target, Stopwatch(time_limit))
+    model = build(table, replace(target, batch_kg=None, max_stocks=None, min_share=None))
     if model.short or any(need.empty for need in model.requirements) or len(model.table) == 0:
         return None
     available = model.table.available
@@ -219,3 +223,16 @@ def largest_batch(stocks: StockTable | Iterable[Stock], target: Target, *,
     return float(outcome.x.sum()) * unit
 
 
+def _largest_on(table: StockTable, target: Target, watch: Stopwatch) -> float | None:
+    """The largest batch on top of what is in the vessel [kg]; its rules are rows, for they are shares of the total."""
+    least = sum(s.in_vessel_kg or 0.0 for s in table.stocks)
+    model = build(table, replace(target, batch_kg=least, max_stocks=None, min_share=None))
+    if model.short or any(need.empty for need in model.requirements):
+        return None
+    loose = StockTable(replace(s, division_kg=None, package_kg=None, least_charge_kg=None) for s in model.table.stocks)
+    most = float(model.table.available.sum())
+    charges = Charges.of(replace(model, table=loose), 0.5 * (least + most))
+    problem = replace(charges.problem(0.5 * (most - least)), steps=None)
+    limits = replace(model, rows=tuple(row for row in model.rows if not row.of_shares))
+    outcome, _ = exact_search(limits, problem, -np.ones(len(loose)), watch, gap=1e-5)
+    return None if outcome.x is None else float(outcome.x.sum()) * charges.batch

@@ -71,7 +71,7 @@ class Demands:
     def _of_lists(self) -> Iterable[Demand]:
         yield from (Demand("left out", code, "high", 0.0, stocks=(code,)) for code in sorted(self.target.left_out))
         for name, codes in self.families.items():
-            every = sum(family(s) == name for s in self.table.stocks)
+            every = sum(family(s) == name for s in self.table.stocks if s.in_vessel_kg is None)
             yield Demand("list", name, "high", 0.0, stocks=codes, whole_family=len(codes) == every)
 
     def with_only(self, held: Set[Demand], moved: dict[tuple[str, str], float] | None = None) -> Target:
@@ -90,13 +90,20 @@ class Demands:
             rules=(*rules, *(ShareRule(code) for code in let_in)),
             left_out=self.target.left_out - {d.name for d in gone if d.kind == "left out"},
             held={code: share for code, share in self.target.held.items() if code not in free},
-            batch_kg=None if "on hand" in kinds else self.target.batch_kg,
+            batch_kg=None if "on hand" in kinds and not self.in_vessel else self.target.batch_kg,
             max_stocks=None if "most stocks" in kinds else self.target.max_stocks,
             min_share=None if "least share" in kinds else self.target.min_share)
 
     def only(self, held: Set[Demand], moved: dict[tuple[str, str], float] | None = None) -> Model:
         """The model of the target with these demands only."""
-        return build(self.table, self.with_only(held, moved))
+        plenty = self.in_vessel and not any(d.kind == "on hand" for d in held)
+        table = self.table.plentiful(self.target.batch_kg or 0.0) if plenty else self.table
+        return build(table, self.with_only(held, moved))
+
+    @property
+    def in_vessel(self) -> bool:
+        """Is something in the vessel, so that the batch stays what it is where quantities on hand are let go?"""
+        return any(s.in_vessel_kg is not None for s in self.table.stocks)
 
     # Which demands a blend breaks
 
@@ -136,7 +143,8 @@ class Demands:
         if demand.kind in ("left out", "list"):
             return _over(float(x @ [code in demand.stocks for code in table.codes]))
         if demand.kind == "on hand":
-            return _over(float(np.max(x - table.available / limit, initial=0.0)))
+            available = self.table.available[[self.table.index(code) for code in table.codes]]
+            return _over(float(np.max(x - available / limit, initial=0.0)))
         used = x[table.counted & (x > CLOSE) & np.array([c not in self.target.held for c in table.codes])]
         if demand.kind == "most stocks":
             return max(0.0, float(np.sum(table.counted & (x > CLOSE))) - limit)
@@ -209,7 +217,8 @@ def _families(table: StockTable, target: Target) -> dict[str, tuple[str, ...]]:
     """The stocks that a product does not name, by API group or kind; those of a treat rate aside."""
     found: dict[str, list[str]] = {}
     for stock in table.stocks:
-        if stock.kind not in TREATED and stock.code not in target.held and not named(stock, target):
+        chosen = stock.kind not in TREATED and stock.code not in target.held and stock.in_vessel_kg is None
+        if chosen and not named(stock, target):
             found.setdefault(family(stock), []).append(stock.code)
     return {name: tuple(codes) for name, codes in found.items()}
 

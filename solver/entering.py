@@ -82,13 +82,17 @@ class StockPrices(Priced):
         return found if again.x is None else again
 
     def stocks(self) -> Iterator[StockPrice]:
-        """Every stock that may serve, those used first: its price of leaving or of entering."""
+        """Every stock that may serve, those used first: its price of leaving or of entering.
+
+        What is in the vessel already neither leaves nor enters.
+        """
         if self.least.x is None:
             return
         x = self.least.x
         guesses = self._guesses(x)
         for i in sorted(range(len(x)), key=lambda i: (x[i] <= TOUCH, -x[i])):
-            yield self._critical_of(i, guesses[i])
+            if self.model.table.stocks[i].in_vessel_kg is None:
+                yield self._critical_of(i, guesses[i])
 
     def _critical_of(self, i: int, guess: float) -> StockPrice:
         assert self.least.x is not None
@@ -212,7 +216,7 @@ class StockPrices(Priced):
     def _quantity_reach(self, i: int, share: float) -> Reach:
         batch = self.target.batch_kg
         assert batch is not None
-        free = build(self.table, replace(self.target, batch_kg=None))
+        free = build(self.table.plentiful(batch), self.target)
         rule = float(free.hi[free.table.index(self.model.table.codes[i])])
 
         def at(kg: float) -> Outcome:

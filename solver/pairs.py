@@ -111,12 +111,12 @@ def index_at(taught: Effective, celsius: float) -> float | None:
 
 def effective(table: StockTable, lessons: Iterable[Lesson], law: str, celsius: float) -> dict[int, float]:
     """Position of a stock → the index with which it blends under this law at this temperature [°C]."""
-    found = {}
+    found: dict[int, float] = {}
     for taught in lessons:
-        if isinstance(taught, Effective) and taught.law == law and taught.stock in table.codes:
+        if isinstance(taught, Effective) and taught.law == law:
             at = index_at(taught, celsius)
             if at is not None:
-                found[table.codes.index(taught.stock)] = at
+                found |= {i: at for i, s in enumerate(table.stocks) if taught.stock in (s.code, s.poured.code)}
     return found
 
 
@@ -127,7 +127,7 @@ def excesses(table: StockTable, lessons: Iterable[Lesson], law: str, celsius: fl
         if not isinstance(pair, Excess):
             continue
         at = terms_at(pair, celsius) if pair.law == law else None
-        members = [np.array([1.0 if name in (s.code, s.oil) else 0.0 for s in table.stocks])
+        members = [np.array([1.0 if name in s.names else 0.0 for s in table.stocks])
                    for name in (pair.first, pair.second)]
         if at is not None and any(at) and all(m.any() for m in members):
             first.append(members[0])

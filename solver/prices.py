@@ -139,6 +139,8 @@ class LimitPrices(Priced):
         if batch is None:
             return
         for i, stock in enumerate(self.model.table.stocks):
+            if stock.in_vessel_kg is not None:
+                continue
             available = float(self.model.table.available[i])
             if available < batch * (1.0 - AT) and abs(float(x[i]) - available / batch) <= AT:
                 step = min(SHARE_STEP * batch, 0.5 * available)

@@ -154,7 +154,8 @@ def with_more(table: StockTable, target: Target, more: Sequence[Stock]) -> Model
     rules = [ShareRule(code) for code in sorted(codes)]
     for rule in target.rules:
         capped = rule.high <= 0.0 and any(rule.of == new.code or new.matches(rule.of) for new in more)
-        others = [s.code for s in table.stocks if s.code not in codes and s.matches(rule.of)] if capped else []
+        others = [s.code for s in table.stocks if s.code not in codes and s.matches(rule.of)
+                  and s.in_vessel_kg is None] if capped else []
         rules += [ShareRule(code, high=0.0) for code in others] if capped else [rule]
     stocks = [s for s in table.stocks if s.code not in codes]
     return build(StockTable([*stocks, *more]), replace(target, rules=tuple(rules), left_out=target.left_out - codes))
@@ -243,6 +244,8 @@ class _Judged:
 
 
 def _judged(demands: Demands, stock: Stock) -> _Judged:
+    if stock.in_vessel_kg is not None:
+        return _Judged((), stock, ())
     why_not, assumed = (*_against(demands, stock), *_scarce(demands, stock)), []
     stands_in, tried = neutral(demands.model), stock
     if stock.code in demands.model.table.codes and why_not:

@@ -246,16 +246,17 @@ def _read(table: StockTable, x: Array, target: Target, needs: tuple[Requirement,
 
 def lessons_used(table: StockTable, x: Array, target: Target) -> tuple[Lesson, ...]:
     """Which of the laboratory's lessons speak of a stock or a pair that the blend x, shape (n,), holds."""
-    used = {name for s, share in zip(table.stocks, x, strict=True) if share > 0.0 for name in (s.code, s.oil) if name}
+    there = [s for s, share in zip(table.stocks, x, strict=True) if share > 0.0]
+    codes, names = {code for s in there for code in (s.code, s.poured.code)}, {name for s in there for name in s.names}
     return tuple(e for e in target.lessons if e.law in (target.law, *target.also_laws)
-                 and (e.stock in used if isinstance(e, Effective) else {e.first, e.second} <= used))
+                 and (e.stock in codes if isinstance(e, Effective) else {e.first, e.second} <= names))
 
 
 def _beyond(lesson: Lesson, table: StockTable, x: Array) -> list[str]:
     """In words, where a blend holds more or less of a stock than its lesson was measured at."""
     if not isinstance(lesson, Effective):
         return []
-    share = float(x[table.index(lesson.stock)])
+    share = float(sum(v for v, s in zip(x, table.stocks, strict=True) if lesson.stock in (s.code, s.poured.code)))
     low, high = lesson.shares
     if low - 1e-9 <= share <= high + 1e-9:
         return []

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 
 import numpy as np
@@ -77,6 +77,17 @@ class Stock:
             return self.api_group != "" and self.api_group == of[6:].strip().upper()
         return of in (self.code, self.kind) or (self.oil != "" and of == self.oil)
 
+    @property
+    def poured(self) -> Stock:
+        """The stock that it is: itself, or the one stock of which what is in the vessel (a charge) is all made."""
+        whole = self.in_vessel_kg is not None and len(self.contents) == 1 and self.contents[0][1] >= 1.0 - 1e-9
+        return self.contents[0][0].poured if whole else self
+
+    @property
+    def names(self) -> frozenset[str]:
+        """The codes and oils under which what the laboratory has taught knows it."""
+        return frozenset({self.code, self.oil, self.poured.code, self.poured.oil} - {""})
+
     def part_of(self, of: str) -> float:
         """How much of this stock a share rule on `of` counts, 0–1: all of it, or what it is made of.
 
@@ -129,6 +140,12 @@ class StockTable:
     def column(self, code: str) -> Array:
         """Values of one registry property [its unit], shape (n,), NaN where unknown."""
         return _array(s.value_of(code) for s in self.stocks)
+
+    def plentiful(self, kg: float) -> StockTable:
+        """The same stocks with so much on hand of each that is known and not empty, or what there is."""
+        return StockTable(s if s.in_vessel_kg is not None or not s.available_kg else
+                          replace(s, on_hand_kg=max(s.available_kg, kg), unpumpable_kg=None, reserved_kg=0.0)
+                          for s in self.stocks)
 
     @cached_property
     def density(self) -> Array:

@@ -19,19 +19,18 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from .errors import StockError
+from .laws import knows_viscosity
 from .linear import Stopwatch
 from .properties import Array
-from .recipe import Recipe, design, empty, predict_all, recipe_of
+from .recipe import Recipe, empty, predict_all, recipe_of
 from .rows import as_table
 from .stocks import Stock, StockTable
 from .target import ShareRule, Target
-from .trim_vessel import Ask, Found, Vessel, as_it_is, check, counted_inside, filled, off_by, over_by, vessel_of
+from .trim_vessel import ABSURD, Ask, Found, Vessel, as_it_is, check, counted_inside, filled, off_by, over_by, vessel_of
 from .whole import Rounded, rounded_rules
 
 __all__ = ["ABSURD", "Trim", "additions", "effect", "with_and_without"]
 
-ABSURD = 0.25  # part of the contents: a larger addition is no trim any more (common practice)
-FAR_LESS = 0.8  # of an addition's mass: what another one must come to for it to be named
 DRAWN_STEP = 1.0  # kg to which what is drawn off is rounded up, where whole steps are asked
 
 
@@ -47,7 +46,7 @@ class Trim:
     before: Mapping[str, float | None] = field(default_factory=dict)  # properties of what is in the vessel now
     cost: float | None = None  # of the additions, in currency
     gap: float | None = None  # (cost or mass − what none is below)/cost or mass
-    absurd: bool = False  # more than ABSURD of the contents is added
+    absurd: bool = False  # more than ABSURD of the contents is added, or drawn off
     least_mass_kg: float | None = None  # where absurd: the least mass of any additions that would do …
     least_mass: Mapping[str, float] = field(default_factory=dict)  # … and of what
     litres: float | None = None  # volume of the total at the temperature of the fill
@@ -96,7 +95,7 @@ def additions(contents: Sequence[Stock], stocks: StockTable | Iterable[Stock], t
     held of charges still to come (total_kg, or least_kg above the contents) while it can be; `broken` says where it
     is not. A share rule that the contents break is held as asked, for additions dilute: by a part of 0.02 over it is
     let be. Where nothing mends it, or for rules named in `forgiven` (the formulator's word), it is held no tighter
-    than the contents are, and `broken` says so. A low side that is forgiven is open.
+    than the contents are, and `broken` says so. The low side of a forgiven rule is open: its additive is not topped up.
 
     Raises StockError where a mass, a KV or a density of what is in the vessel is unknown, TargetError, StockError or
     RangeError on other bad input.
@@ -112,7 +111,22 @@ def additions(contents: Sequence[Stock], stocks: StockTable | Iterable[Stock], t
 
 
 def found_for(ask: Ask, may: May, watch: Stopwatch) -> Trim:
-    """The additions for limits as they stand, in the first of the ways that has any."""
+    """The additions for limits as they stand; where there are none, why."""
+    found, stopped = searched(ask, may, watch)
+    if found is not None:
+        return found
+    from .trim_why import nearest_to, reasons
+
+    before, vessel = effect(ask.contents, target=ask.target), vessel_of(ask, may.forgiven)
+    if stopped or watch.over:
+        words = "time ran out before additions were found; give it more time, or allow fewer stocks"
+        return Trim("stopped", recipe=empty(vessel.model, "stopped", (words,)), before=before, notes=(words,))
+    near = nearest_to(vessel, watch)
+    return Trim("infeasible", recipe=near, before=before, notes=reasons(vessel, may.forgiven, near, watch))
+
+
+def searched(ask: Ask, may: May, watch: Stopwatch) -> tuple[Trim | None, bool]:
+    """The additions in the first of the ways that has any, and whether time ran out in one that had none by then."""
     forgiven = may.forgiven
     stopped = False
     for way in _ways(ask, forgiven, may.grow):
@@ -120,15 +134,15 @@ def found_for(ask: Ask, may: May, watch: Stopwatch) -> Trim:
         if way.draw:
             drawn = _drawn(vessel, way, ask, watch) if may.draw and ask.contents else None
             if drawn is not None:
-                return drawn
+                return drawn, stopped
             continue
         found = Found("optimal", vessel.contents) if as_it_is(vessel) else vessel.solve(watch)
         if found.masses is not None:
-            return _made(vessel, found, way, ask, watch)
+            return _made(vessel, found, way, ask, watch), stopped
         stopped |= found.status == "stopped"
         if watch.over:
             break
-    return _none(ask, forgiven, stopped or watch.over, watch)
+    return None, stopped
 
 
 @dataclass(frozen=True)
@@ -195,8 +209,7 @@ def _made(vessel: Vessel, found: Found, way: _Way, asked: Ask, watch: Stopwatch)
     trim = Trim(
         found.status, made, total, way.drawn_kg, recipe_for(vessel, masses, found.status),
         effect(way.ask.contents, target=way.ask.target), float(table.price @ added) / 1000.0, found.gap,
-        vessel.ask.total_kg is None and vessel.ask.least_kg <= way.ask.content_kg
-        and float(added.sum()) > ABSURD * vessel.ask.content_kg,
+        _absurd(vessel, way, float(added.sum())),
         litres=vessel.litres_of(masses),
         packages={s.code: round(made[s.code] / s.package_kg) for s in table.stocks
                   if way.ask.whole and s.package_kg and s.code in made},
@@ -209,6 +222,12 @@ def _made(vessel: Vessel, found: Found, way: _Way, asked: Ask, watch: Stopwatch)
     over = _over(way.ask, way.forgiven) if trim.absurd or way.draw else ()
     spared = _least(way.ask, (*way.forgiven, *over), watch) if over else {}
     return replace(trim, notes=words(vessel, way.ask, trim, over, spared, asked.total_kg))
+
+
+def _absurd(vessel: Vessel, way: _Way, added: float) -> bool:
+    """Is more than a quarter of the contents added to them, or drawn off? Charges still to come are no trim."""
+    to_come = vessel.ask.total_kg is not None or vessel.ask.least_kg > way.ask.content_kg
+    return way.drawn_kg > ABSURD * way.ask.content_kg or (not to_come and added > ABSURD * vessel.ask.content_kg)
 
 
 def _least(ask: Ask, forgiven: tuple[str, ...], watch: Stopwatch) -> dict[str, float]:
@@ -252,36 +271,12 @@ def _rule_words(rule: ShareRule, share: float) -> str:
     return f"{rule.of} is {100 * share:.3g} % of it, and the product asks {side}: the formulator has to agree"
 
 
-def _none(ask: Ask, forgiven: tuple[str, ...], stopped: bool, watch: Stopwatch) -> Trim:
-    """No additions: why, and what comes nearest with the vessel as full as it may be."""
-    from .trim_words import why_none
-
-    before = effect(ask.contents, target=ask.target) if ask.contents else {}
-    vessel = vessel_of(ask, forgiven)
-    if stopped:
-        words = "time ran out before additions were found; give it more time, or allow fewer stocks"
-        return Trim("stopped", recipe=empty(vessel.model, "stopped", (words,)), before=before, notes=(words,))
-    totals = [max(vessel.most, ask.content_kg)]
-    if ask.total_kg is None and ask.content_kg >= max(ask.least_kg, 1e-9):
-        totals.append(ask.content_kg)
-    near = min((design(vessel.model.table, replace(vessel.model.target, batch_kg=kg, max_stocks=None),
-                       time_limit=max(1.0, watch.left)) for kg in totals), key=lambda made: _missed(vessel, made))
-    near = replace(near, status="infeasible", cost_per_t=None)
-    return Trim("infeasible", recipe=near, before=before, notes=why_none(vessel, near))
-
-
-def _missed(vessel: Vessel, made: Recipe) -> float:
-    """By how much a blend misses all limits together, in units of their reproducibilities."""
-    values = [(need, made.predicted.get(need.code)) for need in vessel.model.requirements]
-    return np.inf if made.shares is None else sum(need.units_missed(v) for need, v in values if v is not None)
-
-
 def effect(contents: Sequence[Stock], *, law: str | None = None, target: Target | None = None
            ) -> dict[str, float | None]:
     """Every property of what is in a vessel, by code, in the registry's unit; None where a part of it lacks the value.
 
     contents: stocks with in_vessel_kg [kg]. The law is the target's, Refutas without one; a target's limits and
-    lessons are read too. StockError for a content without mass or viscosity; {} for none at all.
+    lessons are read too. StockError for a content without mass or what the law needs; {} for none at all.
     """
     goal = target or Target("")
     ask = Ask(tuple(contents), (), replace(goal, law=law or goal.law), total_kg=1.0)
@@ -289,10 +284,12 @@ def effect(contents: Sequence[Stock], *, law: str | None = None, target: Target 
     if not contents:
         return {}
     table = StockTable(contents)
-    lacking = next((s for s in contents if s.blending_kv is None), None)
-    if lacking is not None:
-        raise StockError(f"{lacking.code}: its KV40 and KV100 are not both known; measure them on one sample",
-                         stock=lacking.code, cell="kv40" if lacking.kv40 is None else "kv100")
+    lacking = np.flatnonzero(~knows_viscosity(ask.target.law, table))
+    if len(lacking):
+        stock = contents[int(lacking[0])]
+        cell = "density15" if stock.blending_kv is not None else "kv40" if stock.kv40 is None else "kv100"
+        raise StockError(f"{stock.code}: the law {ask.target.law} needs its {cell}, which is unknown; type it",
+                         stock=stock.code, cell=cell)
     masses = np.array([s.in_vessel_kg or 0.0 for s in contents])
     limited = tuple(x.property for x in goal.limits if x.property != "vi")
     return predict_all(table, masses / masses.sum(), ask.target.law, limited, goal.lessons)

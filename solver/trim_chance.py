@@ -24,12 +24,14 @@ from .properties import Array
 from .requirements import Requirement
 from .rows import Model, without_guards
 from .tails import margin
-from .trim import May, Trim, found_for, recipe_for
+from .trim import May, Trim, found_for, recipe_for, searched
 from .trim_vessel import Ask, vessel_of
 from .uncertainty import Carried, errors_of
 
 STEPS = 8  # of moving limits and trimming anew; two or three are usual
 FINER = 2e-3  # part of what may be missed that is aimed at besides, so that rounding leaves the chance reached
+STEPPED = 4  # of those in whole steps
+FURTHER = 1.02  # by which limits are moved further where it does not settle
 HALVINGS = 9  # of the way to the highest chance: to 0.1 %
 Moves = dict[tuple[str, str], float]
 
@@ -52,6 +54,16 @@ class _Judge:
         errors = errors_of(model.table, target, model.requirements, self._law(model, x))
         return errors.at(x), model.requirements
 
+    def worst(self, trim: Trim) -> float:
+        """The least chance of any limit."""
+        carried, needs = self.carried(trim)
+        return min(closed_chances(carried, needs).values(), default=1.0)
+
+    def trimmed(self, moves: Moves, watch: Stopwatch) -> Trim | None:
+        """The additions for limits that are moved; None: none."""
+        target = self.ask.target
+        return searched(replace(self.ask, target=replace(target, moved={**target.moved, **moves})), self.may, watch)[0]
+
     def _law(self, model: Model, x: Array) -> Mapping[str, float] | None:
         if self.law_sigma is None or len(self.ask.contents) != 1:
             return self.law_sigma
@@ -64,8 +76,8 @@ def at_chance(ask: Ask, chance: float, law_sigma: Mapping[str, float] | None, ma
               watch: Stopwatch) -> Trim:
     """The least additions found whose every limit is met with this chance; else those of the highest chance found.
 
-    status: as `additions` has it for the limits moved inward, "stopped" where the chance is not reached. Raises
-    TargetError for a chance outside 0.5 to 0.999.
+    status: "optimal" where the least additions for the limits alone have the chance, else "stopped": found, and not
+    proven; `reached` says whether with the chance. Raises TargetError for a chance outside 0.5 to 0.999.
     """
     if not LOWEST <= chance <= HIGHEST:
         raise TargetError(f"a chance of {100 * chance:g} % cannot be asked; choose 50 to 99.9 %", where="confidence")
@@ -74,17 +86,29 @@ def at_chance(ask: Ask, chance: float, law_sigma: Mapping[str, float] | None, ma
     plain = found_for(ask, may, watch)
     if plain.additions_kg is None:
         return replace(plain, chance=chance, reached=False)
-    best = _settled(judge, plain, chance, watch)
-    if best is not None:
-        return _told(judge, best, plain, chance, True)
-    low, high, best = LOWEST, chance, plain
+    if judge.worst(plain) >= chance:
+        return _told(judge, plain, plain, chance, True)
+    loose = replace(judge, ask=replace(ask, whole=False))
+    best = _settled(loose, plain, chance, watch)
+    goal = chance
+    if best is None:
+        best = _highest(loose, plain, chance, watch)
+        goal = judge.worst(best)
+    if ask.whole:
+        best = _in_steps(judge, best, plain, goal, watch)
+    return _told(judge, best, plain, chance, judge.worst(best) >= chance)
+
+
+def _highest(judge: _Judge, plain: Trim, chance: float, watch: Stopwatch) -> Trim:
+    """The additions of the highest chance below the asked one for which some are found."""
+    low, high, best = min(max(LOWEST, judge.worst(plain)), chance), chance, plain
     for _ in range(HALVINGS):
         middle = 0.5 * (low + high)
         found = _settled(judge, best, middle, watch)
         low, high, best = (low, middle, best) if found is None else (middle, high, found)
         if watch.over:
             break
-    return _told(judge, best, plain, chance, False)
+    return best
 
 
 def _settled(judge: _Judge, start: Trim, chance: float, watch: Stopwatch) -> Trim | None:
@@ -93,20 +117,31 @@ def _settled(judge: _Judge, start: Trim, chance: float, watch: Stopwatch) -> Tri
     before: Moves = {}
     for step in range(STEPS):
         carried, needs = judge.carried(trim)
-        if min(closed_chances(carried, needs).values(), default=1.0) >= chance:
-            return trim
         if step > 2:
-            more *= 1.02
+            more *= FURTHER
         moves = _moves(carried, needs, 1.0 - chance, more)
-        if watch.over or moves == before:
+        found = None if watch.over or moves == before else judge.trimmed(moves, watch)
+        if found is None:
             return None
-        before = moves
-        asked = replace(judge.ask, target=replace(judge.ask.target, moved={**judge.ask.target.moved, **moves}))
-        found = found_for(asked, judge.may, watch)
-        if found.additions_kg is None:
-            return None
-        trim = found
+        if judge.worst(found) >= chance:
+            return found
+        trim, before = found, moves
     return None
+
+
+def _in_steps(judge: _Judge, loose: Trim, plain: Trim, chance: float, watch: Stopwatch) -> Trim:
+    """Whole steps near additions in any quantities that have a chance: the first that have it too, else the surest."""
+    best, near, more = plain, loose, 1.0
+    for _ in range(STEPPED):
+        carried, needs = judge.carried(near)
+        found = None if watch.over else judge.trimmed(_moves(carried, needs, 1.0 - chance, more), watch)
+        if found is None:
+            break
+        best = max(best, found, key=judge.worst)
+        if judge.worst(found) >= chance:
+            return found
+        near, more = found, more * FURTHER
+    return best
 
 
 def _moves(carried: Carried, needs: tuple[Requirement, ...], missed: float, more: float) -> Moves:
@@ -153,7 +188,10 @@ def _told(judge: _Judge, trim: Trim, plain: Trim, chance: float, reached: bool) 
     ask = judge.ask.kept(1.0 - trim.drawn_kg / judge.ask.content_kg) if trim.drawn_kg > 0.0 else judge.ask
     vessel = vessel_of(ask, judge.may.forgiven)
     used = trim.recipe.charges_kg if trim.recipe is not None and trim.recipe.charges_kg else {}
-    recipe = recipe_for(vessel, np.array([used.get(code, 0.0) for code in vessel.model.table.codes]), trim.status)
+    # Limits that follow the errors of what they judge are no rows: only what needed no moving is proven.
+    proven = trim.status == "optimal" and trim is plain
+    status = "optimal" if proven and reached else "stopped"
+    recipe = recipe_for(vessel, np.array([used.get(code, 0.0) for code in vessel.model.table.codes]), status)
     if reached:
         said = f"each limit is met with a chance of at least {100 * chance:g} %"
     else:
@@ -164,5 +202,7 @@ def _told(judge: _Judge, trim: Trim, plain: Trim, chance: float, reached: bool) 
     extra = (trim.added_kg or 0.0) - (plain.added_kg or 0.0)
     if abs(extra) >= 0.5:
         said += f"; that takes {abs(extra):,.0f} kg {'more' if extra > 0.0 else 'less'} than to reach the limits only"
-    return replace(trim, recipe=recipe, status=trim.status if reached else "stopped", chance=chance, reached=reached,
+    if reached and not proven:
+        said += "; found step by step, not proven to be the least"
+    return replace(trim, recipe=recipe, status=status, chance=chance, reached=reached,
                    chances=chances, together=at_once, notes=(said, *trim.notes))

@@ -28,6 +28,7 @@ from .stocks import Stock, StockTable
 from .target import ShareRule, Target
 from .volume import HIGHEST, LOWEST, litres
 
+ABSURD = 0.25  # part of the contents: to add or draw off more is no trim any more (common practice)
 SMALL = 0.02  # part of what a rule asks by which contents may be off without a trim for it (common practice)
 TIMES = 20.0  # a total of more than so many times the contents is a new batch, no trim
 MOST_DRAWN = 0.9  # part of the contents: to draw off more is to begin anew
@@ -79,6 +80,7 @@ class Vessel:
     """One vessel, ready to be solved."""
 
     ask: Ask
+    table: StockTable  # contents, then everything that was offered
     model: Model  # of contents and of every stock that may serve; its rows are those of the limits only
     contents: Array  # (n,) kg in the vessel, 0 for what may be added
     least: float  # kg that the total must be …
@@ -112,7 +114,7 @@ class Vessel:
         for least, most in self._spans():
             if most < least or self.model.short or any(need.empty for need in self.model.requirements):
                 continue
-            charges, problem = self._problem(least, most)
+            charges, problem = self.problem(least, most)
             outcome = exact_search(self.model, problem, self.cost(), watch, gap=GAP,
                                    gap_absolute=WORTH[self.ask.whole])[0]
             if outcome.x is not None:
@@ -130,7 +132,7 @@ class Vessel:
         for least, most in self._spans(drawn=True):
             if most < least:
                 continue
-            charges, problem = self._problem(least, most)
+            charges, problem = self.problem(least, most)
             held = self.contents / charges.batch
             tied = replace(problem, lo=np.where(here, (1.0 - MOST_DRAWN) * held, problem.lo),
                            hi=np.where(here, held, problem.hi)).with_rows(self._ties(), hold=0.0)
@@ -163,7 +165,7 @@ class Vessel:
         for tolerance in self._charges(total).tolerances():
             yield max(total - tolerance, 0.0 if drawn else self.ask.content_kg), total + tolerance
 
-    def _problem(self, least: float, most: float) -> tuple[Charges, Polytope]:
+    def problem(self, least: float, most: float) -> tuple[Charges, Polytope]:
         """All masses that can be charged to a total within a span [kg], and their unit."""
         batch, slack = 0.5 * (least + most), 0.5 * (most - least)
         charges = self._charges(batch)
@@ -227,7 +229,8 @@ def vessel_of(ask: Ask, forgiven: Collection[str] = ()) -> Vessel:
     if ask.fill is not None:
         celsius = ask.fill[1]
         volume = np.array([litres(1.0, float(density), celsius) for density in model.table.density])
-    return Vessel(ask, model, here, start if ask.total_kg is None else ask.total_kg, _most(ask, model, volume), volume)
+    least = start if ask.total_kg is None else ask.total_kg
+    return Vessel(ask, table, model, here, least, _most(ask, model, volume), volume)
 
 
 def _most(ask: Ask, model: Model, volume: Array | None) -> float:
@@ -297,7 +300,7 @@ def _target_of(ask: Ask, table: StockTable, forgiven: Collection[str]) -> Target
         off = off_by(rule, share)
         if off > 0.0 and (off <= SMALL or rule.of in forgiven):
             rule = replace(rule, high=min(1.0, share))
-        elif off < 0.0 and rule.of in forgiven:
+        if rule.of in forgiven:
             rule = replace(rule, low=0.0)
         rules.append(rule)
     permitted = {table.codes[i] for i in candidates(table, target)}

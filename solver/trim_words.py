@@ -7,8 +7,7 @@ from typing import TYPE_CHECKING
 
 from .charges import kg
 from .properties import lookup
-from .recipe import Recipe
-from .trim_vessel import Ask, Vessel, over_by
+from .trim_vessel import ABSURD, Ask, Vessel
 from .whole import rounded_words
 
 if TYPE_CHECKING:
@@ -16,6 +15,7 @@ if TYPE_CHECKING:
 
 TOLD = ("vi", "flash")  # what a trim for the viscosity changes besides, and nobody asked for
 NOTABLE = 1e-9  # kg: less is nothing
+FAR_LESS = 0.8  # of an addition's mass: what another one must come to for it to be named
 
 
 def words(vessel: Vessel, ask: Ask, trim: Trim, over: tuple[str, ...], spared: Mapping[str, float],
@@ -33,7 +33,7 @@ def words(vessel: Vessel, ask: Ask, trim: Trim, over: tuple[str, ...], spared: M
     found += _drawn(ask, trim)
     found += _absurd(vessel, trim)
     if over:
-        would = f"{_amounts(spared)} would do" if spared else "nothing would do either"
+        would = f"{amounts(spared)} would do" if spared else "nothing would do either"
         found.append(f"{', '.join(over)}: what is in the vessel is over the product's rule; with that let be {would}, "
                      "and the formulator decides")
     found += _changes(trim)
@@ -53,24 +53,27 @@ def words(vessel: Vessel, ask: Ask, trim: Trim, over: tuple[str, ...], spared: M
 def _drawn(ask: Ask, trim: Trim) -> list[str]:
     if trim.drawn_kg <= 0.0:
         return []
-    part = 100.0 * trim.drawn_kg / ask.content_kg
-    return [f"draw off {kg(trim.drawn_kg)} kg first, {part:.3g} % of what is there: nothing can be added that would "
-            "bring the whole of it inside"]
+    part = trim.drawn_kg / ask.content_kg
+    absurd = ("; to draw off more than a quarter is absurd (common practice): rework it, or get room or oil first"
+              if part > ABSURD else "")
+    return [f"draw off {kg(trim.drawn_kg)} kg first, {100.0 * part:.3g} % of what is there: nothing can be added that "
+            f"would bring the whole of it inside{absurd}"]
 
 
 def _absurd(vessel: Vessel, trim: Trim) -> list[str]:
-    if not trim.absurd or trim.added_kg is None:
-        return []
     there = vessel.ask.content_kg
-    said = (f"{_amounts(trim.additions_kg or {})} onto {there:,.0f} kg is absurd: more than a quarter of what is "
+    if not trim.absurd or trim.added_kg is None or trim.added_kg <= ABSURD * there:
+        return []
+    said = (f"{amounts(trim.additions_kg or {})} onto {there:,.0f} kg is absurd: more than a quarter of what is "
             "there (common practice)")
     less = trim.least_mass_kg
-    if less is not None and less < 0.8 * trim.added_kg:
-        return [f"{said}; {_amounts(trim.least_mass)} would do"]
+    if less is not None and less < FAR_LESS * trim.added_kg:
+        return [f"{said}; {amounts(trim.least_mass)} would do"]
     return [f"{said}; of the oils allowed none needs less"]
 
 
-def _amounts(masses: Mapping[str, float]) -> str:
+def amounts(masses: Mapping[str, float]) -> str:
+    """Masses in words: `1,226 kg of BRIGHT and 12 kg of ADD`."""
     return " and ".join(f"{mass:,.0f} kg of {code}" for code, mass in masses.items() if mass > NOTABLE)
 
 
@@ -108,20 +111,3 @@ def _room(vessel: Vessel, trim: Trim) -> list[str]:
         most, celsius = vessel.ask.fill
         said += f", {trim.litres:,.0f} L at {celsius:g} °C of the {most:,.0f} L that may be in it"
     return [said]
-
-
-def why_none(vessel: Vessel, near: Recipe) -> tuple[str, ...]:
-    """Why nothing can be added that would do, and what comes nearest."""
-    found = []
-    for rule, share in over_by(vessel.ask):
-        found.append(f"{rule.of} is {100 * share:.3g} % of what is in the vessel, and at most {100 * rule.high:g} % is "
-                     "asked")
-    asked = vessel.ask.total_kg
-    if asked is not None and asked < vessel.ask.content_kg:
-        found.append(f"{vessel.ask.content_kg:,.0f} kg are in the vessel, more than the total of {asked:,.0f} kg")
-    if near.meets_all and near.shares is not None:
-        found.append("only whole steps, the room or the rules of the additives stand in the way")
-    else:
-        found.append("no additions of the oils allowed bring every limit inside" + (
-            f"; with the vessel at {near.batch_kg:,.0f} kg: " if near.batch_kg else ": ") + "; ".join(near.reasons))
-    return tuple(found)

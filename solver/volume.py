@@ -20,7 +20,7 @@ def density_at(density15: Any, celsius: Any) -> Any:
     """Density [kg/m³] at a temperature [°C], any shape.
 
     >>> round(float(density_at(870.0, 60.0)), 1)
-    841.3
+    841.5
     """
     density, step = np.asarray(density15, dtype=np.float64), np.asarray(celsius, dtype=np.float64) - 15.0
     alpha = K1 / density

@@ -15,7 +15,7 @@ from tests.desk.made_batches import all_charged, at, charged, drawn, ordered, sa
 
 ROOT = Path(__file__).parent.parent
 CHARGES = {"LN15A": 1500.0, "HT06": 12300.0, "HT12": 1040.0, "HP85": 127.5, "PD20": 30.0}
-THIN = {"kv40": 40.3, "kv100": 6.31}
+THIN = {"kv40": 40.3, "kv100": 6.45}
 GOOD = {"kv40": 45.9, "kv100": 7.05, "flash": 229.0, "pour": -18.0}
 
 
@@ -72,10 +72,12 @@ def test_trim_is_taken(batch, plant):
     asked = answer(batch, "trim", "B-0001", "--aim", "mass", "--only", "HT12")
     code, out, err = batch("trim", "B-0001", "--aim", "mass", "--only", "HT12", "--take", "--by", "Gerd", "--sure")
     assert (code, err) == (0, "")
-    assert "Planned as trim 1: line 6, 7, 8 of the card; their oil is reserved." in " ".join(out.split())
-    planned = {c.stock: c.plan_kg for c in plant.batch("B-0001").to_charge}
-    assert planned == asked["additions_kg"]
-    assert set(planned) == {"HT12", "HP85", "PD20"}  # the additives keep their treat rates
+    assert "Planned as trim 1: line 6, 7, 8, 9 of the card; their oil is reserved." in " ".join(out.split())
+    planned = plant.batch("B-0001").to_charge
+    assert [c.stock for c in planned] == ["HT12", "HP85", "PD20", "HT12"]  # the additives keep their treat rates
+    sums = {code: sum(c.plan_kg for c in planned if c.stock == code) for code in asked["additions_kg"]}
+    assert sums == pytest.approx(asked["additions_kg"])
+    assert "kg of HT12 are kept back to rinse" in " ".join(out.split())
 
 
 def test_a_trim_with_a_chance(batch, plant):
@@ -146,7 +148,7 @@ def test_nobody_releases_what_was_checked_by_the_one_who_charged_it(batch, plant
     sampled(plant, 2, GOOD, hour=12, decision="release")
     code, _, err = batch("release", "B-0001", "--by", "gerd")
     assert code == 2
-    assert "charged and checked by one person: line 6 (HT12, gerd), " in err
+    assert "charged and checked by one person: lines 6 (HT12, gerd), 7 (HP85, gerd), " in err
 
 
 def test_a_certificate_is_written_once(batch, plant, tmp_path):

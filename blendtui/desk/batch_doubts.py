@@ -18,6 +18,7 @@ from .errors import DeskError
 from .reason_words import heading, unit
 
 FAR_KV = 0.25  # of the predicted KV: a result from here on is questioned
+FAR_DENSITY = 0.01  # of the predicted density
 FAR_R = 3.0  # reproducibilities from which another result is questioned …
 FAR_PART = 0.25  # … where it is also so far off, as a part of the prediction (°C: by the R alone)
 SLIP = (8.0, 12.5)  # ratio of two figures within which a point may have slipped by one place
@@ -30,7 +31,8 @@ def ask(sure: bool, doubts: Iterable[str]) -> None:
     """Question a step for everything that is unlikely of it, unless the answer was given."""
     found = list(doubts)
     if found:
-        batches.question(sure, "; ".join(found))
+        words = "; ".join(found)
+        batches.question(sure, words if words.endswith((".", "?")) else f"{words}.")
 
 
 # Clock and times
@@ -40,7 +42,7 @@ def clock(made: Made, sure: bool) -> str:
     at, last = now(), last_entry(made)
     if at < last:
         batches.question(sure, f"the clock says {batches.when(at)}, and the record of {harmless(made.name, 40)} goes "
-                               f"to {batches.when(last)}: was the clock set back? Set it, or say that it is right")
+                               f"to {batches.when(last)}: was the clock set back? Set it, or say that it is right.")
     return at
 
 
@@ -109,10 +111,10 @@ def _far(code: str, value: float, predicted: float | None) -> Iterator[str]:
     entry = lookup(code)
     off, r = abs(value - predicted), entry.reproducibility(predicted)
     relative = off / abs(predicted) if predicted else float("inf")
-    if numbers.is_kv(code):
-        far = relative > FAR_KV
+    if numbers.is_kv(code) or code == "density15":
+        far = relative > (FAR_KV if code != "density15" else FAR_DENSITY)
     else:
-        far = off > FAR_R * r and (entry.unit == "°C" or code == "density15" or relative > FAR_PART)
+        far = off > FAR_R * r and (entry.unit == "°C" or relative > FAR_PART)
     if not far:
         return
     slipped = value > 0.0 and predicted > 0.0 and SLIP[0] <= max(value / predicted, predicted / value) <= SLIP[1]

@@ -19,7 +19,7 @@ from solver.errors import TargetError
 from solver.properties import lookup, volume_at
 
 from . import batch_doubts, batches
-from .batch_lessons import lesson_changes
+from .batch_lessons import MINUTE, lesson_changes
 from .batch_outlook import predicted
 from .batch_verdict import DECISIONS, NO_RESULT, RELEASE, LimitVerdict, Verdict, verdict
 from .errors import DeskError
@@ -136,7 +136,7 @@ def _typed(values: Mapping[str, str]) -> dict[str, float]:
 
 def _refuse_time(sample: Sample, at: str) -> None:
     batch_doubts.refuse_future("a result", at)
-    if at[:batch_doubts.MINUTE] < sample.taken_at[:batch_doubts.MINUTE]:
+    if at[:MINUTE] < sample.taken_at[:MINUTE]:
         raise DeskError(f"a result at {batches.when(at)} is dated before its sample {sample.sample}, which was drawn "
                         f"at {batches.when(sample.taken_at)}; mend the time, or name the right sample")
 
@@ -184,6 +184,7 @@ def decide(plant: Plant, batch: str, *, decision: str = "", why: str = "", by: s
             raise DeskError(f"{harmless(batch, 40)} has no sample of what is in the vessel now; draw one and enter its "
                             "results before anything is decided")
         final = _final(made, says, chosen, reason)
+        _refuse_twice(made, says, final, reason)
         line = 1 + max((d.line for d in made.decisions), default=0)
         found = Decision(made.name, line, number, final, "; ".join(says.words), at, who, reason)
         changes: list[Change] = [*added(found), *lesson_changes(plant, made, number)]
@@ -220,6 +221,19 @@ def _final(made: Made, says: Verdict, chosen: str, reason: str) -> str:
     if final != says.decision and not reason:
         raise DeskError(f"the results say {says.decision}, not {final}: {_worst(says)}; to decide otherwise type why")
     return final
+
+
+def _refuse_twice(made: Made, says: Verdict, final: str, reason: str) -> None:
+    """DeskError where the sample was decided on already and its results are what they were then."""
+    last = next((d for d in reversed(made.decisions) if d.sample == says.sample), None)
+    if last is None or last.words != "; ".join(says.words):
+        return
+    told = (f"sample {last.sample} was decided already: {last.decision}, {harmless(last.by, 40)}, "
+            f"{batches.when(last.at)}")
+    if last.decision == final:
+        raise DeskError(f"{told}; nothing has changed since")
+    if not reason:
+        raise DeskError(f"{told}; to decide otherwise on the same results type why")
 
 
 def _worst(says: Verdict) -> str:

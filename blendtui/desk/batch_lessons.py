@@ -103,8 +103,11 @@ def _own_code(code: str, thing: Content | Charge) -> str:
 
 
 def _lots(things: list[tuple[Content | Charge, float]]) -> str:
+    """The lots by name, as far as they have one."""
+    from .topping_up import EARLIER
+
     lots = {lot: None for thing, _ in things if isinstance(thing, Charge)
-            for lot in (thing.lots or ({thing.actual_lot: 1.0} if thing.actual_lot else {}))}
+            for lot in (thing.lots or ({thing.actual_lot: 1.0} if thing.actual_lot else {})) if lot != EARLIER}
     return ", ".join(lots)
 
 

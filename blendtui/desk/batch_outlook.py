@@ -1,16 +1,17 @@
 """What a batch will be if the rest is charged as planned: predicted, and judged by its frozen target.
 
-In the vessel is what was charged, with the values it had then; once a sample was decided to be trimmed it is the batch
-as the laboratory found it, and what was charged since.
+In the vessel is what was charged, with the values it had then; once a trim is planned it is the batch as the laboratory
+found it, and what was charged since.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
-from blendtui.store.batch_records import DROPPED, Made
+from blendtui.store.batch_records import DROPPED, Made, Vessel
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.errors import SolverError
@@ -36,7 +37,7 @@ class Outlook:
     """A batch as it will be; None where it cannot be predicted."""
 
     made: Made
-    total_kg: float  # when all is charged
+    total_kg: float  # when all is charged, a heel that is ignored included
     recipe: Recipe | None
     why_not: str  # why it cannot be predicted
     missed: tuple[str, ...]  # limits and share rules that it will miss, in words
@@ -82,12 +83,22 @@ def outlook(plant: Plant, made: Made) -> Outlook:
     stocks = own_stocks(plant, made)
     target = batches.target_of(plant, made)
     inside, rest = contents(plant, made, target), to_come(made)
-    vessel = next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
-    return read(made, inside, rest, stocks, target, None if vessel is None else vessel.capacity_l)
+    vessel = vessel_of(plant, made)
+    return _read(made, inside, rest, stocks, target, None if vessel is None else vessel.capacity_l)
 
 
-def read(made: Made, inside: Sequence[Stock], rest: Mapping[str, float], stocks: Sequence[Stock], target: Target,
-         capacity_l: float | None = None) -> Outlook:
+def vessel_of(plant: Plant, made: Made) -> Vessel | None:
+    """The vessel of a batch, while the plant has it."""
+    return next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
+
+
+def apart_kg(made: Made, inside: Sequence[Stock]) -> float:
+    """What the vessel holds besides what the sums are about [kg]: a heel that is ignored."""
+    return max(0.0, made.in_vessel_kg - sum(s.in_vessel_kg or 0.0 for s in inside))
+
+
+def _read(made: Made, inside: Sequence[Stock], rest: Mapping[str, float], stocks: Sequence[Stock], target: Target,
+          capacity_l: float | None) -> Outlook:
     """The outlook of contents and charges to come [kg by stock]."""
     from solver.recipe import evaluate
 
@@ -96,15 +107,16 @@ def read(made: Made, inside: Sequence[Stock], rest: Mapping[str, float], stocks:
         masses[code] = masses.get(code, 0.0) + kg
     total = sum(masses.values())
     if total <= 0.0:
-        return Outlook(made, 0.0, None, "nothing is in the vessel and nothing is to come", (), (), None, capacity_l)
-    wanted = [s for s in stocks if s.code in rest]
+        return Outlook(made, made.in_vessel_kg, None, "nothing is in the vessel and nothing is to come", (), (), None,
+                       capacity_l)
+    wanted, whole = [s for s in stocks if s.code in rest], total + apart_kg(made, inside)
     target = replace(target, batch_kg=total)
     try:
         recipe = evaluate([*inside, *wanted], {code: kg / total for code, kg in masses.items() if kg > 0.0}, target)
     except SolverError as error:
-        return Outlook(made, total, None, str(error), (), (), None, capacity_l)
+        return Outlook(made, whole, None, str(error), (), (), None, capacity_l)
     density = recipe.predicted.get("density15")
-    fill = None if density is None else litres(total, density, made.head.mix_c)
+    fill = None if density is None else litres(whole, density, made.head.mix_c)  # a heel that is ignored too
     limits = [x for x in recipe.limits if x.property != "cost_per_t"]
     missed = [miss_words(x) for x in limits if outside(x)] + _rules(target, [*inside, *wanted], masses, made)
     missed += [f"{harmless(code, 40)} is not on the product's list: the formulator decides"
@@ -113,7 +125,7 @@ def read(made: Made, inside: Sequence[Stock], rest: Mapping[str, float], stocks:
         missed.append(f"room: {numbers.litres(fill)} L at {made.head.mix_c:g} °C, the vessel holds "
                       f"{numbers.litres(capacity_l)} L")
     near = tuple(near_words(x) for x in limits if x.met is False and not outside(x))
-    return Outlook(made, total, recipe, "", tuple(missed), near, fill, capacity_l)
+    return Outlook(made, whole, recipe, "", tuple(missed), near, fill, capacity_l)
 
 
 def predicted(plant: Plant, made: Made) -> Mapping[str, float | None]:
@@ -201,14 +213,15 @@ def _apart(limit: LimitResult, at: float | None) -> str:
 
 
 def _rules(target: Target, stocks: Sequence[Stock], masses: Mapping[str, float], made: Made) -> list[str]:
-    """Share rules that the whole batch breaks by more than its steps and tolerances explain."""
+    """Share rules that the whole batch breaks by more than whole steps and tolerances explain."""
     total = sum(masses.values())
     found = []
     for rule in target.rules:
         kg = sum(masses.get(s.code, 0.0) * s.part_of(rule.of) for s in stocks)
-        off = max(rule.low * total - kg, kg - rule.high * total)
-        if off > max(_allowed(rule, stocks, made), OFTEN * total):
-            asked = (f"low {100.0 * rule.low:g}" if rule.low * total > kg else f"high {100.0 * rule.high:g}")
+        low, high = rule.low * total, rule.high * total
+        off = max(low - kg, kg - high)
+        if off > max(_allowed(rule, low, high, stocks, made), OFTEN * total):
+            asked = f"low {100.0 * rule.low:g}" if low > kg else f"high {100.0 * rule.high:g}"
             found.append(f"{harmless(rule.of, 40)} {numbers.figures(100.0 * kg / total, 3)} %, {asked} % "
                          f"(by {numbers.kg(off)} kg)")
     return found
@@ -225,10 +238,12 @@ def unlisted(made: Made, stocks: Sequence[Stock], target: Target) -> list[str]:
     return [s.code for i, s in enumerate(table.stocks) if i not in permitted]
 
 
-def _allowed(rule: ShareRule, stocks: Sequence[Stock], made: Made) -> float:
-    """What a rule may be off [kg]: half a step of what serves it, or the tolerance of its charges."""
+def _allowed(rule: ShareRule, low: float, high: float, stocks: Sequence[Stock], made: Made) -> float:
+    """What a rule may be off [kg]: what the nearest whole step is off, and the tolerance of its charges."""
     serving = [s for s in stocks if s.part_of(rule.of) > 0.0]
-    codes = {s.code for s in serving} | {of.code for s in serving for of, _ in s.contents}
-    steps = [s.package_kg or s.division_kg or 0.0 for s in (*serving, *(of for s in serving for of, _ in s.contents))]
-    tolerances = [c.tolerance_kg for c in made.charges if c.stock in codes and c.state != DROPPED]
-    return max([max(steps, default=0.0) / 2.0, *tolerances])
+    plain = [*serving, *(of for s in serving for of, _ in s.contents)]
+    step = max((s.package_kg or s.division_kg or 0.0 for s in plain), default=0.0)
+    below = step * math.floor(high / step + OFTEN) if step > 0.0 else high
+    nearest = max(0.0, min(low - below, below + step - high))
+    codes = {s.code for s in plain}
+    return nearest + max((c.tolerance_kg for c in made.charges if c.stock in codes and c.state != DROPPED), default=0.0)

@@ -54,14 +54,10 @@ class LimitVerdict:
     side: str  # the nearer side, low or high
     distance: float | None  # inside it; negative outside
     reproducibility: float | None  # R at that side
+    in_r: float | None  # the distance in units of R
     decision: str
     words: str  # the arithmetic
     sources: tuple[str, ...] = ()
-
-    @property
-    def in_r(self) -> float | None:
-        """The distance in units of R."""
-        return None if self.distance is None or not self.reproducibility else self.distance / self.reproducibility
 
 
 @dataclass(frozen=True)
@@ -183,7 +179,7 @@ def _limit(need: Requirement, made: Made, draw: Sequence[Sample]) -> LimitVerdic
     sides = [(side, at) for side, at in (("low", need.low), ("high", need.high)) if at is not None]
     if not found:
         asked = and_of([f"{side} {numbers.value(need.code, at)}" for side, at in sides])
-        return LimitVerdict(need.code, need.low, need.high, None, 0, "", None, None, NO_RESULT,
+        return LimitVerdict(need.code, need.low, need.high, None, 0, "", None, None, None, NO_RESULT,
                             f"{heading(need.code)}: no result ({f'{asked} {unit(need.code)}'.rstrip()})", need.sources)
     value, count = fmean(m for m, _, _ in found), sum(n for _, n, _ in found)
     inside, r, side, at = min(((value - at if side == "low" else at - value, _r(need.code, at), side, at)
@@ -193,15 +189,21 @@ def _limit(need: Requirement, made: Made, draw: Sequence[Sample]) -> LimitVerdic
     more = f": {TRIM}, for sample {before} was outside too" if before else f": {decision}"
     if decision == REPEAT and count > len(found):
         more = f": {REPEAT}, and it was repeated already: release it with a reason, or trim it inwards"
-    methods = _other_methods(need.code, made, draw)
     older = "" if found[0][2] in [s.sample for s in draw] else f" (sample {found[0][2]})"
-    words = (f"{_amount(need.code, value)}{f' (mean of {count})' if count > 1 else ''}{older}, {side} "
-             f"{numbers.value(need.code, at)}: {'inside' if inside >= 0.0 else 'outside'} by "
-             f"{numbers.figures(abs(inside), 3)} = {abs(inside) / r:.2f} R (R {numbers.figures(r, 3)}, "
-             f"{lookup(need.code).method}){f', measured by {and_of(methods)}' if methods else ''}"
-             f"{SCANT[decision]}{more}")
-    return LimitVerdict(need.code, need.low, need.high, value, count, side, inside, r, TRIM if before else decision,
-                        words, need.sources)
+    start = f"{_amount(need.code, value)}{f' (mean of {count})' if count > 1 else ''}{older}"
+    words = f"{start}, {_arithmetic(need.code, side, at, inside, r, made, draw)}{SCANT[decision]}{more}"
+    return LimitVerdict(need.code, need.low, need.high, value, count, side, inside, r, inside / r,
+                        TRIM if before else decision, words, need.sources)
+
+
+def _arithmetic(code: str, side: str, at: float, inside: float, r: float, made: Made, draw: Sequence[Sample]) -> str:
+    """`low 41.40: inside by 3.80 = 7.52 R (R 0.505, ASTM D445)`."""
+    methods, part = _other_methods(code, made, draw), abs(inside) / r
+    # Beside a threshold two decimals would show it on the wrong side.
+    shown = f"{part:.4f}" if min(abs(part - SURE), abs(part - 1.0)) < 0.005 else f"{part:.2f}"
+    return (f"{side} {numbers.value(code, at)}: {'inside' if inside >= 0.0 else 'outside'} by "
+            f"{numbers.figures(abs(inside), 3)} = {shown} R (R {numbers.figures(r, 3)}, {lookup(code).method})"
+            + (f", measured by {and_of(methods)}" if methods else ""))
 
 
 def _amount(code: str, value: float) -> str:
@@ -243,6 +245,8 @@ def _other_methods(code: str, made: Made, draw: Sequence[Sample]) -> list[str]:
 def _missing(limit: LimitVerdict, made: Made, draw: Sequence[Sample]) -> str:
     if limit.property != "vi":
         return heading(limit.property)
+    if any(all(standing(made, s, c) for c in PAIR) for s in draw):
+        return "VI (these KV40 and KV100 have none: KV100 is below 2 mm²/s, or not below KV40)"
     have = [f"sample {s.sample} has only {heading(c)}" for s in draw for c in PAIR if standing(made, s, c)]
     return "VI (KV40 and KV100 from one sample" + (f"; {and_of(have)}" if have else "") + ")"
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from statistics import fmean
 from typing import TYPE_CHECKING, Any
@@ -13,6 +13,7 @@ from blendtui.store.batch_records import PACKED, RELEASED, Made, Sample
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.properties import lookup
+from solver.target import Target
 
 from . import batch_lessons, batches, numbers, release
 from .batch_verdict import PAIR, drawn_together, mean_of, standing
@@ -28,7 +29,7 @@ FROM_RESULTS = "Every figure is a laboratory result on this batch, or (viscosity
 CAUTION = ("Local rules and licensed practice decide whether this oil may be sold and used as named; a certificate "
            "speaks of the sample that was tested and of nothing else.")
 UNITS = {"L15": "L at 15 °C", "L20": "L at 20 °C"}
-LABEL, METHOD, FIGURE = 29, 17, 11  # columns; the last three are figures
+LABEL, METHOD, DATE, FIGURE = 24, 16, 11, 9  # columns: what, by which method, on which day; three figures
 
 
 @dataclass(frozen=True)
@@ -106,8 +107,8 @@ def certificate(plant: Plant, batch: str) -> Certificate:
         f"{numbers.batch(head.asked)} {UNITS.get(head.unit, head.unit)}" if head.asked else "",
         sum(packed) if packed else None,
         tuple(f"{s.sample}, drawn {batches.when(s.taken_at)}" + (f", {s.place}" if s.place else "") for s in draw),
-        _lines(made, draw, needs), decided.why if decided is not None else "", tests, head.closed_by,
-        batches.when(head.closed_at), entry, last)
+        _lines(made, draw, [_asked_by(need, target) for need in needs]), decided.why if decided is not None else "",
+        tests, head.closed_by, batches.when(head.closed_at), entry, last)
 
 
 def _product_name(plant: Plant, code: str) -> str:
@@ -140,12 +141,15 @@ def _line(code: str, made: Made, draw: Sequence[Sample], need: Requirement | Non
     methods = dict.fromkeys([CALCULATED] if code == "vi" else [r.method or entry.method for r in results])
     return Line(code, entry.name, entry.unit, ", ".join(methods), fmean(m for m, _ in means), sum(n for _, n in means),
                 batches.when(max(r.at for r in results))[:10], need.low if need else None, need.high if need else None,
-                tuple(dict.fromkeys(map(_asks, need.sources))) if need else (), calculated=code == "vi")
+                need.sources if need else (), calculated=code == "vi")
 
 
-def _asks(source: str) -> str:
-    """Who asks for a limit, as a customer reads it."""
-    return source if source.startswith(("grade ", "customer", "order")) else "the product"
+def _asked_by(need: Requirement, target: Target) -> Requirement:
+    """A limit with those who ask for it, as a customer reads it; a line that is only a guard asks nothing of an oil."""
+    closed = {x.source for x in target.limits if x.property == need.code and (x.low is not None or x.high is not None)}
+    asks = (x for x in need.sources if x.startswith("grade ") or x in closed)
+    return replace(need, sources=tuple(dict.fromkeys(
+        x if x.startswith(("grade ", "customer ")) else "the product" for x in asks)))
 
 
 # Text
@@ -185,8 +189,8 @@ def certificate_text(made: Certificate) -> str:
     lines = [TITLE, "=" * WIDTH]
     for head, text in facts(made):
         lines += _wrapped(f"{head:<10}{text}", 10)
-    lines += ["", f"{'property':<{LABEL}} {'method':<{METHOD}}{'result':>{FIGURE}}{'least':>{FIGURE}}"
-                  f"{'most':>{FIGURE}}".rstrip(), "-" * WIDTH]
+    lines += ["", f"{'property':<{LABEL}} {'method':<{METHOD}}{'date':<{DATE}}{'result':>{FIGURE}}{'least':>{FIGURE}}"
+                  f"{'most':>{FIGURE}}", "-" * WIDTH]
     for line in made.lines:
         lines += _row(line)
     lines += ["-" * WIDTH]
@@ -209,8 +213,9 @@ def _row(line: Line) -> list[str]:
     rows = []
     for n in range(max(len(labels), len(methods))):
         label, method = (each[n] if n < len(each) else "" for each in (labels, methods))
-        rows.append(f"{label:<{LABEL}} {method:<{METHOD}}{figures if n == 0 else ''}".rstrip())
-    return [*rows, f"  {line.on}"] if line.on else rows
+        rest = f"{line.on:<{DATE}}{figures}" if n == 0 else ""
+        rows.append(f"{label:<{LABEL}} {method:<{METHOD}}{rest}".rstrip())
+    return rows
 
 
 def write_new(path: Path, text: str, what: str = "certificate") -> str:

@@ -71,8 +71,8 @@ def names_of(typed: str, stocks: Sequence[Stock]) -> tuple[str, ...]:
     for word in typed.replace(",", " ").split():
         name = word if word in known else word.lower()
         if name not in known:
-            raise DeskError(f"{harmless(word, 40)!r} is no stock, oil or kind, and none of {', '.join(ROLES)}; an order "
-                            "of charging names these, such as: light heavy vi_improver additive rinse")
+            raise DeskError(f"{harmless(word, 40)!r} is no stock, oil or kind, and none of {', '.join(ROLES)}; an "
+                            "order of charging names these, such as: light heavy vi_improver additive rinse")
         found[name] = None
     return tuple(found)
 
@@ -99,7 +99,7 @@ def _line(stock: Stock, role: str, kg: float) -> Line:
 
 
 def _rinse(light: Stock, kg: float) -> float:
-    """How much of the light stock is kept back [kg], in whole steps; 0 where too little would be left of either part."""
+    """How much of the light stock is kept back [kg], in whole steps; 0 where either part would be too little."""
     step, least = light.package_kg or light.division_kg or 0.0, light.least_charge_kg or 0.0
     part = RINSE * kg if step <= 0.0 else step * int(RINSE * kg / step + HAIR)
     return round(part, 6) if part > 0.0 and min(part, kg - part) >= max(step, least) * (1.0 - HAIR) else 0.0

@@ -12,22 +12,23 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from blendtui.store.batch_edits import added, changed, lots_of, moved, tank_parts
-from blendtui.store.batch_records import DONE, DROPPED, PLANNED, Charge, Made, Vessel
+from blendtui.store.batch_records import DONE, DROPPED, PLANNED, Charge, Made
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.store.records import Change, Step
 from solver.stocks import Stock
 
 from . import batch_doubts, batches, charging_words, numbers
-from .batch_outlook import Outlook, contents
+from .batch_outlook import Outlook, contents, vessel_of
 from .batch_outlook import outlook as plain_outlook
-from .charging_remedy import planned_anew, with_remedy
+from .charging_remedy import as_weighed, planned_anew, with_remedy
 from .errors import DeskError
 from .release import clock
 
 if TYPE_CHECKING:
     from solver.trim import Trim
 
+PLAN = ("plan_kg", "tolerance_kg", "state", "why", "position")  # cells of a line that planning anew may change
 LONGEST = 300  # characters of a typed reason
 CELLS = ("stock", "state", "actual_kg", "actual_lot", "at", "by", "celsius", "why", "cells", "checked_at", "checked_by")
 
@@ -94,7 +95,8 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
             celsius: float | None = None, by: str = "", sure: bool = False) -> Charged:
     """Correct an actual, with its reason: the tank is moved by the difference, and the second check is due again.
 
-    0 says that nothing was charged: the line is to come again (Questioned).
+    0 says that nothing was charged: the line is to come again (Questioned). The same kg again only adds a reason that
+    was missing.
     """
     who, reason, given = batches.person(plant, by), harmless(why.strip(), LONGEST), harmless(lot.strip(), 60)
     if not reason:
@@ -111,19 +113,19 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
         clock(plant, made, sure)
         if _is_nothing(kg):
             batches.question(sure, f"was nothing charged on line {line}? Then {numbers.batch(row.actual_kg)} kg go "
-                                   f"back to {harmless(oil.code, 40)} and the line is to come again")
+                                   f"back to {harmless(oil.code, 40)} and the line is to come again.")
             return _taken_back(plant, made, row, oil, tank, reason)
         mass = charging_words.read_kg(kg, row, oil, celsius)
         off = mass - (row.actual_kg or 0.0)
         if abs(off) <= charging_words.HAIR and given in ("", row.actual_lot) and celsius in (None, row.celsius):
-            raise DeskError(f"line {line} says {numbers.batch(mass)} kg already; nothing was changed")
+            return _reasoned(made, row, oil, tank, reason)
         # The tank is asked for the difference only, and the vessel holds the first entry already.
         back = replace(oil, on_hand_kg=None if oil.on_hand_kg is None else oil.on_hand_kg + (row.actual_kg or 0.0))
         without = replace(made, charges=tuple(c for c in made.charges if c.line != line))
         batch_doubts.ask(sure, _asked(plant, without, row, back, mass, given, tank, celsius))
         done = replace(row, actual_kg=mass, actual_lot=given or row.actual_lot, by=who, checked_at="", checked_by="",
                        celsius=row.celsius if celsius is None else celsius,
-                       why=f"corrected from {numbers.batch(row.actual_kg)} kg ({row.by}): {reason}",
+                       why=_after(f"corrected from {numbers.batch(row.actual_kg)} kg ({row.by}): {reason}", row.why),
                        cells=_cells(plant, oil, given, tank) if given else row.cells,
                        lots=_lots(oil, given, tank) if given else row.lots)
         changes = (changed(row, **{cell: getattr(done, cell) for cell in CELLS}), *lots_of(done, row), moved(oil, -off),
@@ -132,6 +134,9 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
                     f"{numbers.batch(mass)} kg", reason, (made, row, done, oil, tank))
 
     made, row, done, oil, tank = _result(plant.step(make))
+    if done == replace(row, why=done.why):
+        return _told(plant, batch, line, [f"line {line}, {harmless(row.stock, 40)}: its reason is recorded"], before,
+                     False, oil.code)
     return _told(plant, batch, line, list(_corrected_words(made, row, done, oil, tank)), before, True, oil.code)
 
 
@@ -207,12 +212,13 @@ def replan(plant: Plant, batch: str, *, by: str = "", why: str = "") -> Made:
         if batches.opened(plant, batch) != seen:
             raise DeskError(f"{harmless(batch, 40)} has changed meanwhile; look at it again and plan anew")
         said = reason or f"planned anew by {who}"
-        lines, new = planned_anew(seen, trim, plant.stocks(include_retired=True), _vessel(plant, seen), said)
+        lines, new = planned_anew(seen, trim, as_weighed(plant.stocks(include_retired=True), vessel_of(plant, seen)),
+                                  said)
         old = {c.line: c for c in seen.charges}
-        changes: list[Change] = [changed(old[c.line], plan_kg=c.plan_kg, state=c.state, why=c.why) for c in lines]
+        changes: list[Change] = [changed(old[c.line], **{cell: getattr(c, cell) for cell in PLAN}) for c in lines]
         changes += [change for c in new for change in added(c)]
-        if trim.total_kg is not None:
-            changes.append(changed(seen.head, batch_kg=trim.total_kg))
+        total = seen.in_vessel_kg + sum(c.plan_kg for c in (*lines, *new) if c.state == PLANNED)
+        changes.append(changed(seen.head, batch_kg=total))
         return Step(tuple(changes), f"{batch}: charges to come planned anew", said)
 
     plant.step(make)
@@ -239,13 +245,9 @@ def _asked(plant: Plant, made: Made, row: Charge, oil: Stock, kg: float, lot: st
     """Everything that is unlikely of an actual."""
     target = batches.target_of(plant, made)
     yield from charging_words.substituted(row, oil, target)
-    yield from charging_words.doubts(made, row, oil, kg, _vessel(plant, made), contents(plant, made, target), celsius)
+    yield from charging_words.doubts(made, row, oil, kg, vessel_of(plant, made), contents(plant, made, target), celsius)
     elsewhere = [x.stock for x in plant.lots() if x.lot == lot] if lot and lot not in tank else []
     yield from charging_words.foreign_lot(oil, lot, tank, elsewhere)
-
-
-def _vessel(plant: Plant, made: Made) -> Vessel | None:
-    return next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
 
 
 def _reason(row: Charge, oil: Stock, reason: str) -> str:
@@ -289,6 +291,19 @@ def _tank_after(plant: Plant, oil: Stock, tank: Mapping[str, float], *draws: tup
     return tank_parts(oil.code, dict(tank), {lot: kg / total for lot, kg in masses.items() if kg > charging_words.HAIR})
 
 
+def _after(reason: str, before: str) -> str:
+    """A reason, with the one that stood there before."""
+    return f"{reason}; before: {before}"[:LONGEST] if before else reason
+
+
+def _reasoned(made: Made, row: Charge, oil: Stock, tank: Mapping[str, float], reason: str) -> Step:
+    """Give a charge the reason that it lacked; DeskError where it has one, for then nothing is corrected."""
+    if row.why:
+        raise DeskError(f"line {row.line} says {numbers.batch(row.actual_kg)} kg already; nothing was changed")
+    return Step((changed(row, why=reason),), f"{made.name} line {row.line}: reason recorded", reason,
+                (made, row, replace(row, why=reason), oil, tank))
+
+
 def _taken_back(plant: Plant, made: Made, row: Charge, oil: Stock, tank: Mapping[str, float], reason: str) -> Step:
     """A line that was not charged after all: it is to come again."""
     was = row.actual_kg or 0.0
@@ -320,7 +335,7 @@ def _corrected_words(made: Made, row: Charge, done: Charge, oil: Stock, tank: Ma
 
 
 def _told(plant: Plant, batch: str, line: int, words: Sequence[str], before: Outlook, odd: bool, stock: str) -> Charged:
-    """What a step did, told: effects and remedy only where it was off."""
+    """What a step did, told: effects and remedy where it was off, or where a limit is missed by it."""
     made = plant.batch(batch)
     after = plain_outlook(plant, made)
     effects = charging_words.effects_of(before, after)
@@ -328,7 +343,8 @@ def _told(plant: Plant, batch: str, line: int, words: Sequence[str], before: Out
     oil = next((s for s in plant.stocks() if s.code == stock), None)
     if oil is not None and charging_words.short_of(oil) > charging_words.HAIR:
         said += charging_words.promised_words(oil, [b for b in _promised(plant, stock) if b != batch])
-    if odd:
+    # Within tolerance a charge moves a batch about the edge of its guard; that it misses a limit by it is told.
+    if odd or (after.missed and not before.missed):
         after = with_remedy(plant, made, after)
         limited = [] if after.recipe is None else [x.property for x in after.recipe.limits]
         said += charging_words.effect_words(effects, limited)

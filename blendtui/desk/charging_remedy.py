@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
@@ -11,12 +11,12 @@ from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.errors import SolverError
 from solver.stocks import Stock
-from solver.target import Target
 
-from . import batches, numbers
-from .batch_outlook import Outlook, contents, outlook, own_stocks, to_come
+from . import batches, charge_lines, formulas, numbers
+from .batch_outlook import Outlook, apart_kg, contents, outlook, own_stocks, to_come, vessel_of
+from .errors import DeskError
 from .sheet import charge_order
-from .trimming import MOST_FILL, tolerance
+from .trimming import MOST_FILL
 
 if TYPE_CHECKING:
     from solver.trim import Trim
@@ -45,48 +45,57 @@ def remedy(plant: Plant, made: Made, ahead: Outlook) -> Trim:
     """The charges to come solved anew, the least change first.
 
     With the oils still to come to the total as planned; with every oil of the product's list; then the same to a
-    larger total, as far as the vessel has room; last, with oil drawn off first.
+    larger total, as far as the vessel has room; then with oil drawn off first. Where nothing keeps every share rule,
+    the first of them that meets every limit (Trim.broken names the rule).
     """
     from solver.trim import additions
 
-    stocks, target = own_stocks(plant, made), batches.target_of(plant, made)
+    target, vessel = batches.target_of(plant, made), vessel_of(plant, made)
     inside = contents(plant, made, target)
     live = {s.code for s in plant.stocks()}
-    every = [s for s in stocks if s.code in live]
+    every = as_weighed([s for s in own_stocks(plant, made) if s.code in live], vessel)
     # The rules of a product name stocks that may not be left out of the table; so the others are left out by name.
     others = frozenset(live - set(to_come(made)))
     fill = _fill(made, ahead, inside)
-    total = max(made.head.batch_kg, sum(s.in_vessel_kg or 0.0 for s in inside))
+    total = max(made.head.batch_kg - apart_kg(made, inside), sum(s.in_vessel_kg or 0.0 for s in inside))
     planned = replace(target, batch_kg=total)
     narrow = replace(planned, left_out=planned.left_out | others)
-    ways: tuple[tuple[Target, dict[str, float], bool], ...] = (
-        (narrow, {"total_kg": total}, False), (planned, {"total_kg": total}, False),
-        (narrow, {"least_kg": total}, False), (planned, {"least_kg": total}, False),
-        (planned, {"least_kg": total}, True))
-    none: Trim | SolverError | None = None
-    for goal, asked, draw in ways:
+    best: Trim | None = None  # additions that break a rule, else what says why there are none
+    fault: SolverError | None = None
+    for goal, larger, draw in ((narrow, False, False), (planned, False, False), (narrow, True, False),
+                               (planned, True, False), (planned, True, True)):
         if draw and not inside:
             continue
         try:
-            found = additions(inside, every, goal, fill=fill, may_draw=draw, time_limit=TIME, **asked)
+            found = additions(inside, every, goal, fill=fill, total_kg=None if larger else total,
+                              least_kg=total if larger else 0.0, may_draw=draw, time_limit=TIME)
         except SolverError as error:
-            none = none or error
+            fault = fault or error
             continue
-        if found.additions_kg is not None:
+        if found.additions_kg is not None and not found.broken:
             return found
-        none = found
-    if isinstance(none, SolverError):
-        raise none
-    assert none is not None
-    return none
+        if best is None or best.additions_kg is None:
+            best = found
+    if best is None:
+        raise fault or DeskError("nothing is in the vessel and nothing is to come")
+    return best
+
+
+def as_weighed(stocks: Sequence[Stock], vessel: Vessel | None) -> list[Stock]:
+    """The stocks with the divisions by which they are weighed into the vessel."""
+    return list(stocks) if vessel is None else charge_lines.in_steps(stocks, vessel)
 
 
 def _fill(made: Made, ahead: Outlook, inside: Sequence[Stock]) -> tuple[float, float] | None:
-    """Most litres at mixing temperature: what practice fills, or what was planned where that is more."""
+    """Most litres at mixing temperature of what the sums are about: as the order fills the vessel, or as it was
+    planned where that is more."""
     if ahead.capacity_l is None or any(s.density15 is None for s in inside):
         return None
+    most = float(formulas.how_of(made).get("most_fill_pct", 100.0 * MOST_FILL)) / 100.0
     planned = (ahead.fill_l or 0.0) if ahead.total_kg <= made.head.batch_kg * (1.0 + 1e-9) else 0.0
-    return min(ahead.capacity_l, max(MOST_FILL * ahead.capacity_l, planned)), made.head.mix_c
+    litres = min(ahead.capacity_l, max(most * ahead.capacity_l, planned))
+    # A heel that is ignored takes its room; its density is near that of the rest.
+    return litres * (1.0 - apart_kg(made, inside) / max(ahead.total_kg, made.in_vessel_kg)), made.head.mix_c
 
 
 def remedy_words(made: Made, trim: Trim) -> Iterator[str]:
@@ -110,29 +119,49 @@ def remedy_words(made: Made, trim: Trim) -> Iterator[str]:
     total = "" if trim.total_kg is None or abs(trim.total_kg - made.head.batch_kg) < 0.5 else (
         f"; the batch becomes {numbers.batch(trim.total_kg)} kg")
     yield f"would bring every limit back: {', '.join(steps) or 'the charges to come as they are'}{total}"
+    yield from trim.broken
 
 
 # The charges to come, planned anew
 
-def planned_anew(made: Made, trim: Trim, stocks: Sequence[Stock], vessel: Vessel | None, why: str
-                 ) -> tuple[list[Charge], list[Charge]]:
+def planned_anew(made: Made, trim: Trim, stocks: Sequence[Stock], why: str) -> tuple[list[Charge], list[Charge]]:
     """(lines as they are to be in place of those to come, new lines): the remedy as lines of the card.
 
-    A stock that stands on several lines keeps their proportions; what a step leaves over goes to the last of them.
+    A stock that stands on several lines keeps their proportions; what a step leaves over goes to the last of them. A
+    new stock comes before the first line that is charged after it in the usual order. `stocks`: as they are weighed.
     """
     new, by_code = dict(trim.additions_kg or {}), {s.code: s for s in stocks}
-    changed: list[Charge] = []
+    kept: dict[int, Charge] = {}
     for code in dict.fromkeys(c.stock for c in made.to_charge):
-        lines = [c for c in made.to_charge if c.stock == code]
-        for row, kg in zip(lines, _split(new.pop(code, 0.0), lines, by_code[code]), strict=True):
-            state = PLANNED if kg > LEAST else DROPPED
-            changed.append(replace(row, plan_kg=kg if state == PLANNED else row.plan_kg, state=state,
-                                   why=why if state == DROPPED else row.why))
-    line, place = max(c.line for c in made.charges), max(c.position for c in made.charges)
-    extra = [s for s in charge_order([by_code[code] for code in new]) if new[s.code] > LEAST]
-    added = [Charge(made.name, line + n, made.rounds, s.code, "", new[s.code], tolerance(s, new[s.code], vessel),
-                    why=why, position=place + n) for n, s in enumerate(extra, 1)]
-    return changed, added
+        rows = [c for c in made.to_charge if c.stock == code]
+        for row, kg in zip(rows, _split(new.pop(code, 0.0), rows, by_code[code]), strict=True):
+            if kg <= LEAST:
+                kept[row.line] = replace(row, state=DROPPED, why=why)
+            elif abs(kg - row.plan_kg) > LEAST:
+                kept[row.line] = replace(row, plan_kg=kg, tolerance_kg=charge_lines.tolerance(by_code[code], kg))
+            else:
+                kept[row.line] = row
+    line = max(c.line for c in made.charges)
+    extra = [Charge(made.name, line + n, made.rounds, x.stock.code, "", x.kg, x.tolerance_kg, why=why) for n, x
+             in enumerate((x for x in charge_lines.lines(new, stocks) if x.role != charge_lines.RINSES), 1)]
+    extra = [replace(c, plan_kg=new[c.stock]) for c in extra]  # of a new stock nothing is kept back to rinse
+    return _placed(made, list(kept.values()), extra, by_code)
+
+
+def _placed(made: Made, kept: list[Charge], extra: list[Charge], stocks: Mapping[str, Stock]
+            ) -> tuple[list[Charge], list[Charge]]:
+    """The lines with their places on the card: those to come follow those that are done."""
+    if not extra:
+        return kept, extra
+    rank = {s.code: n for n, s in enumerate(charge_order([stocks[c.stock] for c in (*kept, *extra)]))}
+    order = sorted(kept, key=lambda c: (c.position, c.line))
+    for row in extra:
+        after = next((n for n, c in enumerate(order) if rank[c.stock] > rank[row.stock]), len(order))
+        order.insert(after, row)
+    first = 1 + max((c.position for c in made.charges if c.state != PLANNED), default=0)
+    placed = [replace(c, position=first + n) for n, c in enumerate(order)]
+    own = {c.line for c in kept}
+    return [c for c in placed if c.line in own], [c for c in placed if c.line not in own]
 
 
 def _split(kg: float, lines: Sequence[Charge], stock: Stock) -> list[float]:

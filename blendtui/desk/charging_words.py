@@ -12,7 +12,7 @@ from solver.stocks import Stock
 from solver.target import Target
 
 from . import batches, numbers
-from .batch_outlook import Outlook, fill_of
+from .batch_outlook import Outlook, apart_kg, fill_of
 from .errors import DeskError
 from .reason_words import and_of, heading, unit
 from .typed import mass
@@ -91,7 +91,7 @@ def doubts(made: Made, row: Charge, oil: Stock, kg: float, vessel: Vessel | None
         yield (f"{name}: by the book the tank holds {numbers.batch(oil.on_hand_kg)} kg, less than the "
                f"{numbers.batch(kg)} kg typed; dip it")
     if vessel is not None and vessel.capacity_l is not None:
-        masses = [(s, s.in_vessel_kg or 0.0) for s in inside] + [(oil, kg)]
+        masses = [(s, s.in_vessel_kg or 0.0) for s in inside] + [(oil, kg + apart_kg(made, inside))]
         fill = fill_of(masses, made.head.mix_c)
         if fill is not None and fill > vessel.capacity_l:
             yield (f"with it the vessel {harmless(vessel.vessel, 40)} would hold {numbers.litres(fill)} L at "
@@ -148,6 +148,8 @@ def charged_words(row: Charge, done: Charge, oil: Stock) -> Iterator[str]:
         part = f" ({numbers.fixed(100.0 * abs(off) / row.plan_kg, 1)} %)" if row.plan_kg > 0.0 else ""
         yield (f"OUTSIDE TOLERANCE: {start}, {plan}: {numbers.kg(abs(off))} kg{part} too "
                f"{'much' if off > 0.0 else 'little'}, the tolerance is {numbers.kg(row.tolerance_kg)} kg")
+        if not done.why:
+            yield "its reason is due before a release; type it with the charge, or correct the line with the same kg"
     yield from _packages(row, kg, oil)
 
 

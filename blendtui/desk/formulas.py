@@ -36,7 +36,8 @@ def customer_limits(target: Target, typed: Mapping[str, tuple[str, str]], custom
     graded = grade(target.grade).limits if target.grade.strip() else ()
     product = {need.code: need for need in merge([*graded, *target.limits])} if (*graded, *target.limits) else {}
     if not product:
-        raise DeskError(f"{harmless(target.product, 40)} has no limits; give it a grade or a limit before it is ordered")
+        raise DeskError(f"{harmless(target.product, 40)} has no limits; give it a grade or a limit before it is "
+                        "ordered")
     source = f"{CUSTOMER} {harmless(customer, 40)}".strip()
     found: dict[str, Limit] = {}
     for name, sides in typed.items():
@@ -65,8 +66,8 @@ def _limit(code: str, sides: tuple[str, str], source: str, own: list[Limit]) -> 
                 check.limit_value(repr(value), code)
             except check.CellError as error:
                 raise DeskError(f"the customer's {heading(code)}: {error}") from None
-    return Limit(code, low, high, max((x.guard for x in own), default=0.0), max((x.guard_pct for x in own), default=0.0),
-                 source, any(x.unknown_ok for x in own))
+    guard, guard_pct = (max((getattr(x, name) for x in own), default=0.0) for name in ("guard", "guard_pct"))
+    return Limit(code, low, high, guard, guard_pct, source, any(x.unknown_ok for x in own))
 
 
 def _number(text: str) -> float:

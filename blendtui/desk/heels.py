@@ -21,6 +21,7 @@ from . import batches, numbers, typed
 from .errors import DeskError
 
 Part = tuple[float, str]  # kg, stock
+FAR = 0.25  # of a KV from which a measured heel is questioned
 BATCH_LAW = "refutas"  # of what no laboratory measured of a batch whose law is not known
 
 
@@ -55,6 +56,9 @@ def _content(plant: Plant, what: str, kg: float, of: str, measured: Mapping[str,
     called = {HEEL: "the heel", LINE: "the line", FLUSH: "the flush oil"}[what]
     cells, parts, source = _known(plant, of, called, stocks)
     cells = {**cells, **measured}
+    if "kv40" in cells and "kv100" in cells and cells["kv100"] >= cells["kv40"]:
+        raise DeskError(f"{called}: KV40 {numbers.kv(cells['kv40'])} and KV100 {numbers.kv(cells['kv100'])} mm²/s: an oil "
+                        "is thinner hot than cold; swapped?")
     lacks = [name for name in batches.DATUM if name not in cells]
     if lacks:
         raise DeskError(f"{called} of {numbers.batch(kg)} kg{f' ({harmless(of, 40)})' if of else ''}: its "
@@ -75,8 +79,8 @@ def _known(plant: Plant, of: str, called: str, stocks: Mapping[str, Stock]
     try:
         made = plant.batch(of)
     except NoSuchRow:
-        raise DeskError(f"{called} is said to be of {harmless(of, 40)!r}, which is no stock and no batch of this plant; "
-                        "mend the name, or type its values") from None
+        raise DeskError(f"{called} is said to be of {harmless(of, 40)!r}, which is no stock and no batch of this "
+                        "plant; mend the name, or type its values") from None
     cells, parts = of_batch(made, stocks)
     return cells, parts, "batch"
 
@@ -93,7 +97,8 @@ def of_batch(made: Made, stocks: Mapping[str, Stock]) -> tuple[dict[str, float],
 
     last = max((c.at for c in made.charges if c.state == DONE), default="")
     # What left after the last charge took its part of everything and changed nothing of what stays.
-    made = replace(made, outcomes=tuple(o for o in made.outcomes if o.at < last))
+    head = replace(made.head, heel_ignored="")  # its own heel is in it, whether its sums were about that or not
+    made = replace(made, head=head, outcomes=tuple(o for o in made.outcomes if o.at < last))
     inside = batches.in_vessel(made, stocks)
     total = sum(s.in_vessel_kg or 0.0 for s in inside)
     if total <= 0.0:
@@ -110,6 +115,19 @@ def _law(made: Made) -> str:
     import json
 
     return str(json.loads(made.head.formula).get("law") or BATCH_LAW) if made.head.formula else BATCH_LAW
+
+
+def doubts(contents: Sequence[Content], stocks: Mapping[str, Stock]) -> list[str]:
+    """Where what was measured of a heel is far from what it is said to be of."""
+    said = []
+    for content in (c for c in contents if c.source == "measured" and c.stock in stocks):
+        own = batches.cells_of(stocks[content.stock])
+        for code in ("kv40", "kv100"):
+            if code in own and abs(content.cells[code] / own[code] - 1.0) > FAR:
+                said.append(f"the {content.what} is said to be of {harmless(content.stock, 40)} ({code.upper()} "
+                            f"{numbers.kv(own[code])} mm²/s), and {numbers.kv(content.cells[code])} was measured: is it of "
+                            "something else, or mixed?")
+    return said
 
 
 def refuse_fuller(vessel: Vessel, contents: Sequence[Content]) -> None:
@@ -138,7 +156,7 @@ def words(contents: Sequence[Content]) -> list[str]:
     """What is in the vessel already, a sentence each."""
     said = []
     for c in contents:
-        kv = ", ".join(f"{name} {numbers.kv(c.cells.get(code))}" for code, name in (("kv40", "KV40"), ("kv100", "KV100")))
+        kv = ", ".join(f"{code.upper()} {numbers.kv(c.cells.get(code))}" for code in ("kv40", "kv100"))
         of = f" of {harmless(c.stock, 40)}" if c.stock else ""
         where = {"measured": "measured", "typed": "typed", "stock": "as the stock is today",
                  "batch": "as its batch was measured, the rest predicted"}.get(c.source, c.source)

@@ -16,7 +16,7 @@ from solver.stocks import Stock
 
 from . import batches, numbers, typed
 from .errors import DeskError
-from .receiving import USUAL, Received, live, receive, signed, too_much
+from .receiving import USUAL, Received, asked, live, receive, signed, too_much
 from .topping_up import COMPUTED, PAIR, cells_changed, codes_of, value_of
 
 __all__ = ["Book", "Dipped", "Line", "Received", "Tested", "book", "dip", "receive", "test"]
@@ -87,7 +87,7 @@ def test(plant: Plant, stock: str, values: Mapping[str, str | float], *, on: str
         _refuse_impossible(tested, results)
         questions = _odd_results(plant, tank, tested, results, day)
         if questions:
-            batches.question(sure, f"{harmless(stock, 40)}: " + "; ".join(questions))
+            batches.question(sure, f"{harmless(stock, 40)}: {asked(questions)}")
         still = tuple(c for c in codes_of(tank) if c not in results) if tank.source == COMPUTED else ()
         said = ", ".join(f"{c} {value_of(tank, c) if value_of(tank, c) is not None else 'unknown'} → {v:.12g}"
                          for c, v in results.items())
@@ -172,7 +172,7 @@ def dip(plant: Plant, stock: str, kg: float | str, *, celsius: float | None = No
             raise DeskError(f"{harmless(stock, 40)}: say why the book is set to the dip: it stands in the record")
         odd = too_much(plant, tank, found)
         if odd:
-            batches.question(sure, f"{harmless(stock, 40)}: " + "; ".join(odd))
+            batches.question(sure, f"{harmless(stock, 40)}: {asked(odd)}")
         line = 1 + max((d.line for d in plant.dips(stock)), default=0)
         made = Dip(stock, line, found, tank.on_hand_kg, int(correct), now(), batches.person(plant, by),
                    typed.name(why, "reason"))

@@ -2,9 +2,9 @@
 
     m_vessel = m_asked + m_heel + m_line,   Σ charges = m_asked − m_flush
 
-for as much as stood in the vessel and its line before stays there after (the heel of the next batch), and flush oil that
-goes into the batch is part of what is asked. Where heel and line are left out of the sums the recipe is that of the
-charges alone; the room they take in the vessel is counted all the same.
+for as much as stood in the vessel and its line before stays there after (the heel of the next batch), and flush oil
+that goes into the batch is part of what is asked. Where heel and line are left out of the sums the recipe is that of
+the charges alone; the room they take in the vessel is counted all the same.
 """
 
 from __future__ import annotations
@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING
 
 from blendtui.store.batch_records import FLUSH, Batch, Content, Made, Vessel
 from blendtui.store.harmless import harmless
+from solver.properties import lookup
 from solver.stocks import Stock
 from solver.target import Limit, Target
 from solver.volume import density_at, litres
@@ -30,6 +31,7 @@ TIME_LIMIT = 10.0  # s
 ROUNDS = 20  # of litres becoming kg; each is some thousand times nearer than the last
 SLIGHT = 0.03  # part by which no change of the recipe moves a volume: what is further off never fits
 CELSIUS_OF = {"L15": 15.0, "L20": 20.0}
+GUESS = 0.87  # kg/L, about that of base oils: where the density begins
 TOLD = ("kv40", "kv100", "vi", "density15")  # effects of a heel that are told whether they are limited or not
 
 
@@ -63,7 +65,7 @@ class Designed:
     density15: float | None  # kg/m³, of what the vessel holds; None: unknown
     fill_l: float | None  # of it at mixing temperature
     fill_pct: float | None  # of the vessel
-    effects: Mapping[str, tuple[float | None, float | None]] = field(default_factory=dict)  # with heel and line, without
+    effects: Mapping[str, tuple[float | None, float | None]] = field(default_factory=dict)  # with heel, without
     remarks: tuple[str, ...] = ()
     reasons: tuple[str, ...] = ()  # why there is no blend
 
@@ -77,16 +79,21 @@ def work_out(plan: Plan) -> Designed:
     """The charges of a plan. SolverError or DeskError in one line where it cannot be."""
     inside = _inside(plan)
     free = _first(plan, inside)
+    if free.shares is None:  # the shares that are allowed cannot reach 100 %, however much is asked
+        asked_kg = plan.asked if plan.unit == "kg" else GUESS * plan.asked
+        return _none(plan, free, asked_kg, None, _why(inside, plan, _target(plan, asked_kg), free, free.reasons))
     asked_kg, words = _asked(plan, inside, free)
-    free_density = free.predicted.get("density15")
-    room = _room_words(plan, asked_kg, free_density)
+    density = free.predicted["density15"] or 0.0  # known: the search was told to use no other stock
+    room = _room_words(plan, asked_kg, density)
     if room:
-        return _none(plan, free, asked_kg, free_density, room)
+        return _none(plan, free, asked_kg, density, room)
     target = replace(_target(plan, asked_kg), limits=(*plan.target.limits, *_fill_limits(plan, asked_kg)))
     recipe, notes = _solved(plan, inside, target)
     status = "infeasible" if recipe.status == "infeasible" or recipe.charges_kg is None else recipe.status
     if status == "infeasible":
-        return _none(plan, recipe, asked_kg, recipe.predicted.get("density15"), _why(inside, plan, target, notes))
+        room = _room_words(plan, asked_kg, recipe.predicted.get("density15") or density, slight=0.0)
+        why = (*room, *_why(inside, plan, target, free, notes))
+        return _none(plan, recipe, asked_kg, recipe.predicted.get("density15"), why)
     own = {s.code for s in inside}
     charges = {code: kg for code, kg in (recipe.charges_kg or {}).items() if code not in own and kg > 1e-6}
     found = charge_lines.lines(charges, plan.stocks, plan.charges_in)
@@ -114,30 +121,34 @@ def _target(plan: Plan, asked_kg: float) -> Target:
     return replace(plan.target, batch_kg=asked_kg + (0.0 if plan.heel_ignored else apart_kg(plan.contents)))
 
 
+def _in_any_mass(plan: Plan, inside: Sequence[Stock], asked_kg: float) -> Recipe:
+    """The least cost in any mass, without the fill, of stocks whose density is known."""
+    lowest = Limit("density15", lookup("density15").lowest, source=f"vessel {plan.vessel.vessel}")
+    target = _target(plan, asked_kg)
+    found = blends.best([*plan.stocks, *inside], replace(target, limits=(*target.limits, lowest)), TIME_LIMIT)
+    return replace(found, limits=tuple(x for x in found.limits if x.sources != (lowest.source,)))
+
+
 def _first(plan: Plan, inside: Sequence[Stock]) -> Recipe:
     """The least cost in any mass, without the fill: enough for a density."""
-    asked = plan.asked if plan.unit == "kg" else 0.87 * plan.asked
+    asked = plan.asked if plan.unit == "kg" else GUESS * plan.asked
     flush = sum(c.kg for c in plan.contents if c.what == FLUSH and c.counts)
     if asked <= flush:
         raise DeskError(f"{numbers.batch(flush)} kg of flush oil go into a batch of {numbers.batch(asked)} kg: nothing "
                         "is left to charge; order more, or let the flush oil be pumped out (out)")
-    return blends.best([*plan.stocks, *inside], _target(plan, asked), TIME_LIMIT)
+    return _in_any_mass(plan, inside, asked)
 
 
 def _asked(plan: Plan, inside: Sequence[Stock], free: Recipe) -> tuple[float, list[str]]:
     """What is asked [kg]; litres by the density that is predicted for just so many kg (a fixed point)."""
     if plan.unit == "kg":
         return plan.asked, []
-    celsius, kg, recipe = CELSIUS_OF[plan.unit], 0.87 * plan.asked, free
+    celsius, kg, recipe = CELSIUS_OF[plan.unit], GUESS * plan.asked, free
     for _ in range(ROUNDS):
-        density = recipe.predicted.get("density15")
-        if density is None:
-            raise DeskError(f"{numbers.batch(plan.asked)} L cannot be kg: the density of the blend is not known, for "
-                            "a stock has none; order in kg, or enter the density")
-        before, kg = kg, plan.asked * float(density_at(density, celsius)) / 1000.0
+        before, kg = kg, plan.asked * float(density_at(recipe.predicted["density15"], celsius)) / 1000.0
         if abs(kg - before) <= 1e-9 * kg:
             break
-        recipe = blends.best([*plan.stocks, *inside], _target(plan, kg), TIME_LIMIT)
+        recipe = _in_any_mass(plan, inside, kg)
     kg = round(kg, 6)
     return kg, [f"{plan.asked:,.10g} L at {celsius:g} °C are {numbers.batch(kg)} kg by the density that is predicted, "
                 f"{numbers.fixed(1000.0 * kg / plan.asked, 1)} kg/m³ at {celsius:g} °C"]
@@ -161,15 +172,12 @@ def _fill_limits(plan: Plan, asked_kg: float) -> tuple[Limit, ...]:
                   source=f"vessel {harmless(plan.vessel.vessel, 40)}, fill at {plan.mix_c:g} °C"),)
 
 
-def _room_words(plan: Plan, asked_kg: float, density15: float | None) -> tuple[str, ...]:
-    """Why so much does not go into the vessel whatever the recipe is; empty: it may."""
-    if density15 is None:
-        raise DeskError("the fill at mixing temperature cannot be told: the density of a stock that would serve is not "
-                        "known; enter it")
+def _room_words(plan: Plan, asked_kg: float, density15: float, slight: float = SLIGHT) -> tuple[str, ...]:
+    """Why so much does not go into the vessel; empty: it may, or by `slight` of it another recipe may do."""
     total = asked_kg + apart_kg(plan.contents)
     density, name = float(density_at(density15, plan.mix_c)), harmless(plan.vessel.vessel, 40)
     fill, most, least = 1000.0 * total / density, most_fill(plan), plan.vessel.least_fill_l or 0.0
-    if (1.0 - SLIGHT) * least <= fill <= (1.0 + SLIGHT) * most:
+    if (1.0 - slight) * least <= fill <= (1.0 + slight) * most:
         return ()
     stays = apart_kg(plan.contents)
     words = f"{numbers.batch(total)} kg take {numbers.litres(fill)} L at {plan.mix_c:g} °C, and {name}"
@@ -191,14 +199,19 @@ def _solved(plan: Plan, inside: Sequence[Stock], target: Target) -> tuple[Recipe
     return replace(made.recipe, charges_kg=made.charges_kg), list(made.notes)
 
 
-def _why(inside: Sequence[Stock], plan: Plan, target: Target, notes: Sequence[str]) -> tuple[str, ...]:
-    """Why there is no blend: what cannot hold together, then what the search itself has to say."""
+def _why(inside: Sequence[Stock], plan: Plan, target: Target, free: Recipe, notes: Sequence[str]) -> tuple[str, ...]:
+    """Why there is no blend: what cannot hold together, then what the search itself has to say.
+
+    `free`: what was found in any mass and without the fill.
+    """
     from .reason_words import conflict_words
     from .reasons import reasons
 
     said: list[str] = []
-    for report in reasons([*plan.stocks, *inside], target):
+    # The tanks alone: what they cannot meet, no heel is to blame for.
+    for report in reasons(plan.stocks, target):
         if report.status == "optimal":
+            said = ["without what is in the vessel a blend exists"] if inside and free.status == "infeasible" else []
             break
         if "conflicts" in report.done:
             said = [conflict_words(c, report.left_out) for c in report.conflicts]
@@ -218,7 +231,8 @@ def _pct(fill: float | None, plan: Plan) -> float | None:
 
 # What is told of it
 
-def _told(plan: Plan, recipe: Recipe, lines: Sequence[charge_lines.Line], asked_kg: float, words: list[str]) -> Designed:
+def _told(plan: Plan, recipe: Recipe, lines: Sequence[charge_lines.Line], asked_kg: float, words: list[str]
+          ) -> Designed:
     charges = _by_stock(lines)
     everything = batches.in_vessel(_as_made(plan, False), plan.known)
     held = {s.code: s.in_vessel_kg or 0.0 for s in everything}

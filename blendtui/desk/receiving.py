@@ -54,6 +54,8 @@ def receive(plant: Plant, stock: str, kg: float | str, lot: str, *, cells: Mappi
     quantity beyond ten times what the tank ever held, a viscosity further from the tank's than lots differ, values
     that products limit and that would be lost, a date before the last receipt or after now.
     """
+    from solver import recipe  # noqa: F401  (slow to import: not while others wait for this transaction)
+
     def make() -> Step:
         tank, given = live(plant, stock), typed.values(cells or {})
         amount = typed.mass(kg, given.get("density15") or tank.density15)
@@ -63,9 +65,9 @@ def receive(plant: Plant, stock: str, kg: float | str, lot: str, *, cells: Mappi
                                           batches.person(plant, by), typed.name(note, "note")))
         refuse(tank, came, receipt)
         done, changes = taken_in(plant, tank, came, receipt, law)
-        questions = questionable(plant, tank, came, receipt, done.lost)
+        questions = questionable(plant, tank, came, done)
         if questions:
-            batches.question(sure, f"{harmless(stock, 40)}: " + "; ".join(questions))
+            batches.question(sure, f"{harmless(stock, 40)}: {asked(questions)}")
         what = f"{stock} received {numbers.kg(amount)} kg, lot {receipt.lot}{signed(plant, by)}"
         return Step(tuple(changes), what, why, replace(done, words=_words(tank, done, keep)))
 
@@ -81,6 +83,11 @@ def live(plant: Plant, code: str) -> Stock:
     if any(s.code == code for s in plant.stocks(include_retired=True)):
         raise DeskError(f"{harmless(code, 40)} is retired; take it into use again, or name another stock")
     return plant.stock(code)
+
+
+def asked(questions: list[str]) -> str:
+    """Several questions in one line."""
+    return "; ".join(questions).replace("?; ", "? ")
 
 
 def signed(plant: Plant, by: str) -> str:
@@ -156,15 +163,18 @@ def _refuse_known_lot(plant: Plant, receipt: Lot) -> None:
 
 # What is odd
 
-def questionable(plant: Plant, tank: Stock, came: Stock, receipt: Lot, lost: tuple[str, ...]) -> list[str]:
+def questionable(plant: Plant, tank: Stock, came: Stock, done: Received) -> list[str]:
     """What is unlikely of a receipt, in words."""
     from solver.doubts import doubts
 
-    found = too_much(plant, tank, receipt.kg)
+    found = too_much(plant, tank, done.lot.kg)
     found += [d.says for d in doubts(came)]
     found += _another_oil(plant, tank, came)
-    found += _needed(plant, tank, lost)
-    return found + _odd_time(plant, receipt) + _more_than_left(plant, receipt)
+    if tank.blending_kv is not None and done.stock.blending_kv is None:
+        found.append("its viscosity would be unknown, and no recipe could use it: type what the certificate says, or "
+                     "have the tank's own value kept")
+    found += _needed(plant, tank, done.lost)
+    return found + _odd_time(plant, done.lot) + _more_than_left(plant, done.lot)
 
 
 def too_much(plant: Plant, tank: Stock, kg: float) -> list[str]:
@@ -185,10 +195,10 @@ def _another_oil(plant: Plant, tank: Stock, came: Stock) -> list[str]:
         if here is None or new is None or abs(new - here) <= USUAL * here:
             continue
         alike = [s.code for s in plant.stocks() if s.code != tank.code and _near(s, came)]
-        hint = f"; {' and '.join(harmless(c, 40) for c in alike[:3])} would fit" if alike else ""
+        hint = f" {' and '.join(harmless(c, 40) for c in alike[:3])} would fit" if alike else ""
         return [f"{code.upper()} {numbers.kv(new)} of the delivery is {abs(new / here - 1.0):.0%} "
                 f"{'above' if new > here else 'below'} the tank's {numbers.kv(here)}, and lots of one oil differ by up "
-                f"to {USUAL:.0%}: is it this oil{hint}?"]
+                f"to {USUAL:.0%}: is it this oil?{hint}"]
     return []
 
 
@@ -246,7 +256,7 @@ def _words(tank: Stock, done: Received, kept: bool) -> tuple[str, ...]:
     if kept:
         said.append("for what the papers do not say the tank's own values were taken")
     if done.lost:
-        said.append(f"no longer known, for one of the two has no value: {_names(done.lost)}")
+        said.append(f"no longer known, for tank or delivery has no value: {_names(done.lost)}")
     return tuple(said)
 
 

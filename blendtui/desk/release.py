@@ -1,7 +1,8 @@
 """Release of a batch: what is still missing, each named, and the step itself.
 
 **Lots.** Every charge names a lot, bulk tanks included: of a tank of which no receipt was ever recorded the lot is
-not known, and it is received (which gives the tank its lot from then on) or typed on the charge (a correction).
+not known, and it is received (which gives the tank its lot from then on) or typed on the charge (a correction). Where
+a tank held oil before its first receipt the lots received are enough, and the rest is remarked.
 **Results.** They are those of the samples that the verdict counts (batch_verdict.py): the newest after the last
 charge. KV40 and KV100 come from one sample. What no result of the record can tell (pumping, HTHS) is said on the
 certificate.
@@ -31,6 +32,7 @@ if TYPE_CHECKING:
     from solver.requirements import Requirement
 
 FREE_ROUNDS = 2  # trims that need no reason: practice says at most two, then the formulator
+TOLD = 0.001  # part of a charge of which no lot is known from which on it is remarked
 STEP = 5.0  # s: what the clocks of two machines, or of one that is being set right, may differ by
 
 
@@ -77,7 +79,7 @@ def _of_charges(made: Made) -> Iterator[str]:
     yield from _named("no second check", [c for c in done if not c.checked_by])
     yield from _named("charged and checked by one person", alone, lambda c: harmless(c.by, 40),
                       ": nobody releases what was checked by the one who charged it; let another person check it")
-    yield from _named("lot not known", [c for c in done if not c.lots and not c.actual_lot], None,
+    yield from _named("lot not known", [c for c in done if not known_lots(c)], None,
                       ": receive it or type it as a correction of the charge")
     yield from _named("outside tolerance and no reason", [c for c in done if _off(c) and not c.why], _off_words)
     yield from _named("dropped and no reason", [c for c in made.charges if c.state == DROPPED and not c.why])
@@ -87,9 +89,16 @@ def _of_charges(made: Made) -> Iterator[str]:
 
 def _named(what: str, charges: Sequence[Charge], more: Callable[[Charge], str] | None = None, do: str = ""
            ) -> list[str]:
-    """One thing that some charges lack, with each of them: `no second check: line 1 (A), line 2 (B)`."""
-    each = [f"line {c.line} ({harmless(c.stock, 40)}{', ' + more(c) if more else ''})" for c in charges]
-    return [f"{what}: {', '.join(each)}{do}"] if each else []
+    """One thing that some charges lack, with each of them: `no second check: lines 1 (A), 2 (B)`."""
+    each = [f"{c.line} ({harmless(c.stock, 40)}{', ' + more(c) if more else ''})" for c in charges]
+    return [f"{what}: line{'s' if len(each) > 1 else ''} {', '.join(each)}{do}"] if each else []
+
+
+def known_lots(charge: Charge) -> list[str]:
+    """The lots of a charge that have a name; of oil from before a tank's first receipt nobody knows any."""
+    from .topping_up import EARLIER
+
+    return [lot for lot in charge.lots or ([charge.actual_lot] if charge.actual_lot else []) if lot != EARLIER]
 
 
 def _off(charge: Charge) -> bool:
@@ -141,12 +150,18 @@ def remarks(plant: Plant, made: Made) -> tuple[str, ...]:
     """What does not stand in the way of a release and should be known."""
     from .batch_verdict import RELEASE
     from .formulas import changes_since
+    from .topping_up import EARLIER
 
     said = []
     since = changes_since(plant, made)
     if since:
         said.append(f"{harmless(made.head.product, 40)} has changed since this batch was ordered ({', '.join(since)}): "
                     f"it is judged by the formula as it was (journal entry {made.head.formula_entry})")
+    for charge in made.charged:
+        part = charge.lots.get(EARLIER, 0.0)
+        if part >= TOLD and known_lots(charge):
+            said.append(f"line {charge.line} ({harmless(charge.stock, 40)}): {100.0 * part:.3g} % of it is from before "
+                        "the tank's first receipt, and of no known lot")
     on = newest(made)
     decided = decision_on(made, on.sample) if on is not None else None
     if decided is not None and decided.decision == RELEASE and decided.why:

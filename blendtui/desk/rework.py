@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass, replace
+from typing import Any
 
 from blendtui.store import batch_edits, edits
 from blendtui.store.batch_records import (
@@ -22,7 +23,6 @@ from blendtui.store.batch_records import (
     Outcome,
 )
 from blendtui.store.cells import CellError, stock_code
-from blendtui.store.database import now
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.store.records import Change, Step
@@ -32,13 +32,15 @@ from solver.stocks import Stock
 from . import batch_lessons, batches, numbers, typed
 from .balance import NOTHING, Balance, balance
 from .errors import DeskError
-from .receiving import next_lot, signed, taken_in
+from .receiving import next_lot, refuse, signed, taken_in
+from .release import clock
 from .topping_up import OWN_COLUMN, PAIR, delivered
 
 __all__ = ["Balance", "Left", "Values", "balance", "leave", "values_of"]
 WHAT = (PACKED, SAMPLE, SLOPS, FLUSH, REWORK, LEFT)
 KEPT = (REWORK, FLUSH)  # what may go into a stock
-GAIN = 0.01  # of what went in: packing may show so much more than the book, scales being scales
+WEIGHED = (PACKED, LEFT)  # on other scales than what went in …
+GAIN = 0.01  # … and so they may be more than the book by this part of what went in
 OVER = 1.05  # of what was asked: more is questioned
 
 
@@ -69,20 +71,25 @@ def leave(plant: Plant, batch: str, kg: float | str, what: str, *, stock: str = 
     back part of what was recorded as packed, sample, slops or left, with its reason. A batch that was open or
     cancelled and whose vessel is emptied into rework is closed as reworked.
 
-    Refused: more than the vessel holds (packing may exceed the book by 1 %, questioned), rework without a reason or
-    a family, a stock that is no rework or of another family. Questioned unless `sure`: 5 % more packed than asked.
+    Refused: more than the vessel holds (what is packed or left may exceed the book by 1 %, questioned), rework
+    without a reason or a family, a stock that is no rework or of another family. Questioned unless `sure`: 5 % more
+    packed than asked, a heel recorded after the vessel was charged again.
     """
+    from solver import recipe  # noqa: F401  (slow to import: not while others wait for this transaction)
+
     def make() -> Step:
         made = plant.batch(batch)
-        values = values_of(plant, made)
+        # Read only where it is asked for: of litres, and of what goes into a stock.
+        values = values_of(plant, made) if isinstance(kg, str) or made.head.unit != "kg" or what in KEPT else None
         amount = typed.mass(kg, None if values is None else values.cells.get("density15"))
-        out = Outcome(made.name, 1 + max((o.line for o in made.outcomes), default=0), what, amount, stock,
-                      typed.name(lot, "lot"), now(), batches.person(plant, by), typed.name(why, "reason"))
+        line = 1 + max((o.line for o in made.outcomes), default=0)
+        out = Outcome(made.name, line, what, amount, stock, typed.name(lot, "lot"), clock(plant, made, sure),
+                      batches.person(plant, by), typed.name(why, "reason"))
         _refuse(made, out, family)
         _question(plant, made, out, values, sure)
         out, changes, words = _into(plant, made, out, family, values)
         after = replace(made, outcomes=(*made.outcomes, out))
-        changes += [*batch_edits.added(out), *_heel(plant, after, out, words), *_closed(after, out, words)]
+        changes += [*batch_edits.added(out), *_heel(plant, after, out, words), *_closed(plant, after, out, words)]
         said = f"{made.name}: {numbers.kg(amount)} kg {what}{f' into {out.stock}' if out.stock else ''}"
         rest = f"; {numbers.kg(max(0.0, after.in_vessel_kg))} kg are in {_vessel(made)} by the book"
         words = [said + (rest if what != LEFT else ""), *_asked(after, out, values), *words]
@@ -93,7 +100,7 @@ def leave(plant: Plant, batch: str, kg: float | str, what: str, *, stock: str = 
     return done
 
 
-def _fields(out: Outcome) -> dict[str, object]:
+def _fields(out: Outcome) -> dict[str, Any]:
     return {name: getattr(out, name) for name in Outcome.__dataclass_fields__}
 
 
@@ -113,9 +120,9 @@ def _refuse(made: Made, out: Outcome, family: str) -> None:
     if out.kg < 0.0 or (out.kg == 0.0 and out.what != LEFT):
         _refuse_taking_back(made, out)
     there = made.in_vessel_kg
-    if out.what != PACKED and out.kg > there + NOTHING:
-        raise DeskError(f"{name}: {numbers.kg(out.kg)} kg is more than the {numbers.kg(max(0.0, there))} kg that "
-                        f"{_vessel(made)} holds of it by the book")
+    if out.kg > max(0.0, there) + (GAIN * balance(made).in_kg if out.what in WEIGHED else 0.0) + NOTHING:
+        raise DeskError(f"{name}: {numbers.kg(out.kg)} kg {out.what} is more than the {numbers.kg(max(0.0, there))} kg "
+                        f"that {_vessel(made)} holds of it by the book; is the unit right, was a charge not recorded?")
 
 
 def _refuse_taking_back(made: Made, out: Outcome) -> None:
@@ -140,15 +147,11 @@ def _question(plant: Plant, made: Made, out: Outcome, values: Values | None, sur
                       and b.ordered_at > made.head.ordered_at and plant.batch(b.batch).charged), "")
         if later:
             batches.question(sure, f"{name}: {_vessel(made)} has taken {later} since; is this still what stands in it?")
-    if out.what != PACKED or out.kg < 0.0:
-        return
-    came = balance(made).in_kg
-    if out.kg > there + GAIN * came + NOTHING:
-        raise DeskError(f"{name}: {numbers.kg(out.kg)} kg packed is more than the {numbers.kg(max(0.0, there))} kg "
-                        f"that {_vessel(made)} holds of it by the book; is the unit right, was a charge not recorded?")
-    if out.kg > there + NOTHING:
+    if out.kg > max(0.0, there) + NOTHING:
         batches.question(sure, f"{name}: {numbers.kg(out.kg)} kg is {numbers.kg(out.kg - there)} kg more than "
                                f"{_vessel(made)} holds of it by the book; was it weighed?")
+    if out.what != PACKED or out.kg < 0.0:
+        return
     asked, packed = asked_kg(made, values), balance(made).packed_kg + out.kg
     if asked is not None and asked > 0.0 and packed > OVER * asked:
         batches.question(sure, f"{name}: {numbers.kg(packed)} kg packed, and {numbers.kg(asked)} kg were asked for; is "
@@ -196,7 +199,7 @@ def values_of(plant: Plant, made: Made) -> Values | None:
             cost = read.cost_per_t
         except SolverError:
             pass  # a charge without viscosity: then only the laboratory knows
-    tested = {}
+    tested: dict[str, float] = {}
     for sample in batch_lessons.of_last_round(made):
         tested |= {c: v for c, v in batch_lessons.means(made, sample.sample).items() if _is_value(c)}
     cells |= tested
@@ -231,9 +234,7 @@ def _into(plant: Plant, made: Made, out: Outcome, family: str, values: Values | 
     if new:
         oil = replace(oil, price_per_t=values.cost_per_t)
         changes, oil = edits.new_stock(plant, oil), replace(oil, on_hand_kg=0.0)
-    if oil.on_hand_kg is None or oil.on_hand_kg < 0.0:
-        raise DeskError(f"{harmless(oil.code, 40)}: its book quantity is not known; dip the tank first and set the "
-                        "book to the dip")
+    refuse(oil, came, receipt)
     done, taken = taken_in(plant, oil, came, receipt, _law(plant, made))
     if new:
         taken = [_first_quantity(c) for c in taken]
@@ -306,13 +307,20 @@ def _heel(plant: Plant, after: Made, out: Outcome, words: list[str]) -> list[Cha
     return [batch_edits.changed(vessel, heel_kg=kept, heel_stock=heel)]
 
 
-def _closed(after: Made, out: Outcome, words: list[str]) -> list[Change]:
-    """A batch that was not released and whose oil is gone, into rework at least in part, is closed as reworked."""
+def _closed(plant: Plant, after: Made, out: Outcome, words: list[str]) -> list[Change]:
+    """A batch that was not released and whose oil is gone, into rework at least in part, is closed as reworked.
+
+    Its vessel is empty then, unless it was recorded that a heel was left.
+    """
     head = after.head
     if head.state not in (OPEN, CANCELLED) or out.kg < 0.0 or after.in_vessel_kg > NOTHING:
         return []
-    why = next((o.why for o in reversed(after.outcomes) if o.what == REWORK), "")
+    last = max((c.at for c in after.charged), default="")
+    why = next((o.why for o in reversed(after.outcomes) if o.what == REWORK and o.at >= last), "")
     if not why:
         return []
     words.append(f"{after.name} is closed: reworked, {harmless(why, 200)}")
-    return [batch_edits.changed(head, state=REWORKED, closed_at=out.at, closed_by=out.by, why=why)]
+    emptied = not any(o.what == LEFT for o in after.outcomes)
+    vessel = next((v for v in plant.vessels() if emptied and v.vessel == head.vessel), None)
+    return [batch_edits.changed(head, state=REWORKED, closed_at=out.at, closed_by=out.by, why=why),
+            *([] if vessel is None else [batch_edits.changed(vessel, heel_kg=0.0, heel_stock="")])]

@@ -10,16 +10,19 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from typing import Any
 
 from blendtui.store.reads import joined
 from solver.stocks import Stock
+
+from .errors import DeskError
 
 COMPUTED = "computed"
 PAIR = ("kv40", "kv100")
 OWN_COLUMN = (*PAIR, "density15", "blend_kv40", "blend_kv100")
 LEAST_PART = 1e-12  # of a tank: a lot with less is gone
 EARLIER = "before"  # the lot under which oil stands that was there before the first receipt
-_STAND_IN = {"kv40": 32.0, "kv100": 5.4}  # mm²/s, where a viscosity is unknown and is not asked for
+STAND_IN = (32.0, 5.4)  # mm²/s at 40 and 100 °C
 
 
 @dataclass(frozen=True)
@@ -44,9 +47,10 @@ def codes_of(*stocks: Stock) -> tuple[str, ...]:
 def delivered(tank: Stock, cells: Mapping[str, float], keep: bool = False) -> Stock:
     """A delivery as a stock: the values typed, and with `keep` the tank's own for every other."""
     of = {c: value_of(tank, c) for c in codes_of(tank)} if keep else {}
-    given: dict[str, float | None] = {**of, **cells}
+    given: dict[str, Any] = {**of, **cells}
     others = {c: v for c, v in given.items() if c not in OWN_COLUMN and v is not None}
-    return Stock(tank.code, kind=tank.kind, values=others, **{c: given.get(c) for c in OWN_COLUMN})
+    own: dict[str, Any] = {c: given.get(c) for c in OWN_COLUMN}
+    return Stock(tank.code, kind=tank.kind, values=others, **own)
 
 
 def topped_up(tank: Stock, came: Stock, kg: float, *, source: str, tested_on: str, law: str = "refutas") -> Mixed:
@@ -57,39 +61,48 @@ def topped_up(tank: Stock, came: Stock, kg: float, *, source: str, tested_on: st
     Blending viscosities that no certificate gave stay: they are the plant's own of this material.
     """
     there = tank.on_hand_kg or 0.0
-    pair = {c: value_of(came, c) if came.blend_kv40 is not None else value_of(tank, c)
-            for c in ("blend_kv40", "blend_kv100")}
+    pair: dict[str, Any] = {c: value_of(came, c) if came.blend_kv40 is not None else value_of(tank, c)
+                            for c in ("blend_kv40", "blend_kv100")}
     if there <= 0.0:
         lost = tuple(c for c in codes_of(tank) if value_of(came, c) is None and c not in pair)
         return Mixed(replace(tank, kv40=came.kv40, kv100=came.kv100, density15=came.density15, values=dict(came.values),
                              sigmas={}, source=source, tested_on=tested_on, **pair), lost)
     x = there / (there + kg)
-    if came.blend_kv40 is not None and tank.blending_kv is not None:
-        blending = _blend(*(_neat(s, s.blending_kv) for s in (tank, came)), x, law)
-        pair = {"blend_kv40": blending["kv40"], "blend_kv100": blending["kv100"]}
-    found = _blend(_neat(tank), _neat(came), x, law)
-    both = {c: found.get(c) for c in codes_of(tank, came) if c not in pair
-            and value_of(tank, c) is not None and value_of(came, c) is not None}
-    known = {c: v for c, v in both.items() if v is not None}
+    if came.blend_kv40 is not None:
+        blending = _blend(_as(tank, tank.blending_kv), _as(came, came.blending_kv), x, law) if tank.blending_kv else {}
+        pair = {"blend_kv40": blending.get("kv40"), "blend_kv100": blending.get("kv100")}
+    neat = _neat(tank) is not None and _neat(came) is not None
+    found = _blend(_as(tank, _neat(tank)), _as(came, _neat(came)), x, law)
+    known: dict[str, Any] = {c: found.get(c) for c in codes_of(tank, came) if c not in pair and (neat or c not in PAIR)
+                             and found.get(c) is not None and value_of(tank, c) is not None
+                             and value_of(came, c) is not None}
     lost = tuple(c for c in codes_of(tank, came) if c not in known and c not in pair)
-    return Mixed(replace(tank, **{c: known.get(c) for c in (*PAIR, "density15")}, **pair, sigmas={}, source=COMPUTED,
-                         tested_on="", values={c: v for c, v in known.items() if c not in OWN_COLUMN}), lost)
+    own: dict[str, Any] = {c: known.get(c) for c in (*PAIR, "density15")}
+    return Mixed(replace(tank, **own, **pair, sigmas={}, source=COMPUTED, tested_on="",
+                         values={c: v for c, v in known.items() if c not in OWN_COLUMN}), lost)
 
 
-def _neat(stock: Stock, pair: tuple[float, float] | None = None) -> Stock:
-    """A stock as it blends by its neat viscosity, or by this pair."""
-    kv = dict(zip(PAIR, pair, strict=True)) if pair else {
-        c: value_of(stock, c) if value_of(stock, c) is not None else _STAND_IN[c] for c in PAIR}
-    return replace(stock, blend_kv40=None, blend_kv100=None, **kv)
+def _neat(stock: Stock) -> tuple[float, float] | None:
+    return None if stock.kv40 is None or stock.kv100 is None else (stock.kv40, stock.kv100)
+
+
+def _as(stock: Stock, pair: tuple[float, float] | None) -> Stock:
+    """A stock that blends by this pair; by another where its viscosity is unknown and is not asked for."""
+    kv40, kv100 = pair or STAND_IN
+    return replace(stock, blend_kv40=None, blend_kv100=None, kv40=kv40, kv100=kv100)
 
 
 def _blend(tank: Stock, came: Stock, x: float, law: str) -> Mapping[str, float | None]:
     import numpy as np
 
+    from solver.laws import check_law, knows_viscosity
     from solver.recipe import predict_all
     from solver.stocks import StockTable
 
-    table = StockTable([replace(tank, code="tank"), replace(came, code="delivery")])
+    table = StockTable([tank, replace(came, code=f"{came.code} delivered")])
+    if not knows_viscosity(check_law(law), table).all():
+        raise DeskError(f"{tank.code}: the law {law} needs the density of the tank and of the delivery; type it, or "
+                        "mix by a law in mass")
     return predict_all(table, np.array([x, 1.0 - x]), law)
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 from blendtui.store.batch_records import Batch, Lot
 from blendtui.store.harmless import harmless
@@ -12,6 +13,7 @@ from blendtui.store.plant import Plant
 from . import batches, numbers
 from .errors import DeskError
 from .oil_past import Past, whole
+from .topping_up import EARLIER
 from .trace_back import Back, Node, Origin, receipt_words
 from .trace_forward import Forward, Place, Use
 
@@ -45,7 +47,7 @@ def trace(plant: Plant, name: str, *, kind: str = "") -> Trace:
     """
     past, name = Past(plant), name.strip()
     heads = plant.batches()
-    found = {"batch": [b for b in heads if b.batch == name], "lot": plant.lots_named(name),
+    found: dict[str, list[Any]] = {"batch": [b for b in heads if b.batch == name], "lot": _lots(plant, name),
              "stock": [name] if name in past.stocks else [],
              "order": [b for b in heads if name and b.order_no == name],
              "customer": [b for b in heads if name and b.customer == name]}
@@ -55,10 +57,20 @@ def trace(plant: Plant, name: str, *, kind: str = "") -> Trace:
     what = kind or kinds[0]
     also = tuple(k for k in kinds if k != what)
     if what == "lot":
-        return _of_lots(past, name, also, plant.lots_named(name))
+        return _of_lots(past, name, also, found["lot"])
     if what == "stock":
         return _of_stock(past, name, also)
     return _of_batches(past, name, what, also, [b for b in heads if b in found[what]])
+
+
+def _lots(plant: Plant, name: str) -> list[Lot]:
+    """Receipts of this name, and lots that stand in charges alone: read off a drum, and never received here."""
+    if name in ("", EARLIER):
+        return []
+    received, charged = plant.lots_named(name), plant.charges_of(lot=name)
+    alone = dict.fromkeys(c.stock for c in charged if not any(x.stock == c.stock for x in received))
+    return [*received, *(Lot(stock, name, "", sum((c.actual_kg or 0.0) * c.lots[name] for c in charged
+                                                  if c.stock == stock)) for stock in alone)]
 
 
 def _nothing(name: str, kind: str, kinds: Sequence[str], heads: Sequence[Batch]) -> str:
@@ -72,7 +84,8 @@ def _nothing(name: str, kind: str, kinds: Sequence[str], heads: Sequence[Batch])
 def _of_lots(past: Past, name: str, also: tuple[str, ...], lots: Sequence[Lot]) -> Trace:
     kg, back = sum(x.kg for x in lots), Back(past)
     nodes = tuple(back.lot(x.stock, x.lot, x.kg, x.kg / kg if kg else 0.0) for x in lots)
-    words = [f"{x.stock} lot {x.lot}: {receipt_words(x, x.lot)}"
+    words = [f"{x.stock} lot {x.lot}: " + (receipt_words(x, x.lot) if x.received_at else
+                                           f"no receipt was recorded; {numbers.kg(x.kg)} kg of it were charged")
              + (f", rework of {x.from_batch}" if x.from_batch else "") for x in lots]
     if len(lots) > 1:
         words.append("several stocks had a lot of this name; all are traced together")

@@ -21,6 +21,7 @@ class Node:
     part: float  # 0–1
     words: str = ""
     below: tuple[Node, ...] = ()
+    mark: str = ""  # what is odd of it, in two or three words
 
 
 @dataclass(frozen=True)
@@ -70,15 +71,18 @@ class Back:
         below = tuple(self.lot(charge.stock, lot, kg * of, part * of, above) for lot, of in
                       sorted(lots.items(), key=lambda each: -each[1]))
         words = f"charged {batches.when(charge.at)}" + (f" by {charge.by}" if charge.by else "")
-        return Node("charge", charge.stock, kg, part, words if lots else f"{words}; no lot was recorded", below)
+        return Node("charge", charge.stock, kg, part, words if lots else f"{words}; no lot was recorded", below,
+                    "" if lots else "no lot")
 
     def _content(self, content: Content, kg: float, part: float, above: frozenset[str]) -> Node:
         made = self.past.made(content.stock) if content.stock and content.stock not in self.past.stocks else None
         if made is None:
             self.ends(content.stock, "", kg, part)
-            return Node(content.what, content.stock, kg, part, "" if content.stock else "of unknown origin")
+            mark = "no lot" if content.stock else "unknown origin"
+            return Node(content.what, content.stock, kg, part, mark, (), mark)
         below = self.batch(content.stock, left_at(made), kg, part, above)
-        return Node(content.what, content.stock, kg, part, "" if below else "not followed further", below)
+        mark = "" if below else "not followed"
+        return Node(content.what, content.stock, kg, part, mark and f"{mark} further", below, mark)
 
     def lot(self, stock: str, lot: str, kg: float, part: float, above: frozenset[str] = frozenset()) -> Node:
         """A lot, and the batch it is rework of."""
@@ -86,9 +90,10 @@ class Back:
         made = self.past.made(receipt.from_batch) if receipt is not None and receipt.from_batch else None
         if receipt is None or made is None:
             self.ends(stock, lot, kg, part)
-            return Node("lot", lot, kg, part, receipt_words(receipt, lot))
+            return Node("lot", lot, kg, part, receipt_words(receipt, lot), (), "" if receipt else "no receipt")
         below = self.batch(made.name, drawn_at(made, stock, lot), kg, part, above)
-        return Node("lot", lot, kg, part, f"rework of {made.name}" + ("" if below else ", not followed further"), below)
+        words = f"rework of {made.name}"
+        return Node("lot", lot, kg, part, words + ("" if below else ", not followed further"), below, words)
 
     def ends(self, stock: str, lot: str, kg: float, part: float) -> None:
         """Oil that is followed no further: a lot that was bought, or of which nothing more is known."""

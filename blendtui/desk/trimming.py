@@ -1,8 +1,7 @@
 """The trim of a measured batch: what to add, found from the laboratory's results and never from the prediction.
 
-What the vessel holds is one stock with the values that the laboratory found (the mean of what stands on the samples
-that count), the mass that the book says, and the composition that was charged. What was not measured is taken from the
-prediction and said to be. Additions are sought by solver/trim.py over what is free in the tanks today.
+What the vessel holds is one stock (measured_batch.py). Additions are sought by solver/trim.py over what is free in the
+tanks today, in the room that the vessel has at mixing temperature.
 """
 
 from __future__ import annotations
@@ -16,8 +15,6 @@ from blendtui.store.batch_records import Charge, Made, Vessel
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.store.records import Step
-from solver.errors import SolverError
-from solver.properties import lookup
 from solver.stocks import Stock
 from solver.target import Target
 
@@ -30,16 +27,16 @@ from .batch_verdict import (
     REPEAT,
     SEVERITY,
     TRIM,
-    drawn_together,
-    mean_of,
     verdict,
 )
 from .errors import DeskError
-from .reason_words import heading
+from .measured_batch import measured_batch
 
 if TYPE_CHECKING:
     from solver.trim import Trim
 
+__all__ = ["MOST_FILL", "Effect", "Proposed", "measured_batch", "propose", "proposed_json", "take", "take_proposed",
+           "tolerance"]
 MOST_FILL = 0.90  # of the capacity at mixing temperature: common practice, trim and foam included
 SECONDS = 5.0
 AIMS = ("cost", "mass")
@@ -47,6 +44,8 @@ SHOWN = ("kv40", "kv100", "vi", "flash", "density15")  # told before and after e
 NOISE = {FRESH: "the batch is outside by less than R: a trim on that is trimming noise; draw a fresh sample first",
          REPEAT: "the batch is inside, nearer than 0.59 R: repeat the test before oil is added",
          RELEASE: "the results say release: oil that is added can only take the batch away from where it is"}
+UNGUARDED = ("no trim keeps the product's guards: this one meets the limits themselves, and its next result may fall "
+             "outside one that it comes near to")
 
 
 @dataclass(frozen=True)
@@ -84,55 +83,6 @@ class Proposed:
         return bool(self.trim.additions_kg)
 
 
-# The measured batch
-
-def measured_batch(plant: Plant, made: Made, target: Target) -> tuple[Stock, tuple[int, ...], tuple[str, ...]]:
-    """The batch as one stock of its measured values, the samples they are of, and what was not measured.
-
-    DeskError without KV40 and KV100 of one sample drawn after the last charge.
-    """
-    draw = drawn_together(made)
-    if not draw:
-        raise DeskError(f"{harmless(made.name, 40)} has no sample of what is in the vessel now: a trim starts from the "
-                        "measured batch, not from the predicted one; draw a sample and measure KV40 and KV100")
-    if not any(all(mean_of(made, s, code) for code in PAIR) for s in draw):
-        have = ", ".join(heading(code) for code in PAIR if any(mean_of(made, s, code) for s in draw)) or "neither"
-        raise DeskError(f"sample {', '.join(str(s.sample) for s in draw)} of {harmless(made.name, 40)} has {have}: a "
-                        "trim moves both viscosities, so measure KV40 and KV100 on one sample first")
-    measured: dict[str, float] = {}
-    for code in dict.fromkeys(r.property for r in made.results if r.property != "vi"):
-        found = [m[0] for m in (mean_of(made, s, code) for s in draw) if m is not None]
-        if found:
-            measured[code] = sum(found) / len(found)
-    stocks = batches.by_code(plant)
-    expected = _predicted(made, target, stocks)
-    asked = [need.code for need in release.asked_of(target)[0] if need.code != "vi"]
-    guessed = tuple(code for code in dict.fromkeys([*asked, "density15"]) if code not in measured)
-    cells = {**{c: v for c, v in expected.items() if v is not None and c != "vi"}, **measured}
-    name = batches.CODE if batches.CODE not in stocks else f"{batches.CODE} of {made.name}"
-    batch = batches.as_stock(name, cells, name="measured batch", in_vessel_kg=made.in_vessel_kg, source="own",
-                             contents=batches.made_of(batches.composition(made), stocks))
-    return batch, tuple(s.sample for s in draw), tuple(_guess_words(code, cells.get(code)) for code in guessed)
-
-
-def _predicted(made: Made, target: Target, stocks: dict[str, Stock]) -> dict[str, float | None]:
-    """What is predicted of what was charged; nothing where part of it has no known viscosity."""
-    from solver.trim import effect
-
-    try:
-        return effect(batches.in_vessel(made, stocks), target=target)
-    except SolverError:
-        return {}
-
-
-def _guess_words(code: str, value: float | None) -> str:
-    entry = lookup(code)
-    if value is None:
-        return f"{entry.name} was not measured, and cannot be predicted"
-    told = f"{numbers.value(code, value)} {entry.unit}".rstrip()
-    return f"{entry.name} was not measured: {told} is the prediction, not a result"
-
-
 # The proposal
 
 def propose(plant: Plant, batch: str, *, aim: str = "cost", chance: float | None = None, stocks: Sequence[str] = ()
@@ -143,10 +93,6 @@ def propose(plant: Plant, batch: str, *, aim: str = "cost", chance: float | None
     base stocks and rework that may be added; additives are topped up all the same. DeskError while charges are to
     come, without KV40 and KV100 of one sample, or for what cannot be asked; where nothing will do, .trim says why.
     """
-    from solver.trim import additions
-
-    from .law_error import law_sigma
-
     if aim not in AIMS:
         raise DeskError(f"{harmless(aim, 40)!r} is no aim; a trim is sought by cost or by mass")
     made = batches.opened(plant, batch)
@@ -157,18 +103,76 @@ def propose(plant: Plant, batch: str, *, aim: str = "cost", chance: float | None
     target = batches.target_of(plant, made)
     whole, samples, guessed = measured_batch(plant, made, target)
     vessel = next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
-    sigma = law_sigma(plant, target.law, target.product) if chance is not None else None
+    # The formula may name a stock that is out of use by now: it stands in the table, and is left out by name.
+    there = _in_steps(plant.stocks(include_retired=True), vessel)
     measured = _with_result(made, samples)
-    there = _in_steps(plant.stocks(), vessel)
-    allowed = replace(target, left_out=_left_out(there, stocks))
-    trim = additions([whole], there, allowed, fill=_room(made, vessel), aim=aim, chance=chance,
-                     law_sigma=sigma, time_limit=SECONDS)
+    found = _found(plant, made, whole, there, target, _Wish(aim, chance, tuple(stocks), _room(made, vessel)))
+    trim = found.trim
     number = made.rounds + 1
-    questions = tuple(_questions(made, target, trim, samples))
-    words = (*questions, *_round_words(number), *guessed, *_room_words(made, vessel), *trim.notes)
-    return Proposed(made, trim, _charges(plant, made, trim, number, there), tuple(dict.fromkeys(words)), number, whole,
+    questions = (*_questions(made, target, trim, samples), *found.questions)
+    charges, ordered = _charges(plant, made, trim, number, there)
+    words = (*questions, *_round_words(number), *guessed, *_room_words(made, vessel, trim), *found.beside, *trim.notes,
+             *ordered)
+    return Proposed(made, trim, charges, tuple(dict.fromkeys(words)), number, whole,
                     samples, aim, tuple(_effects(target, trim, whole, measured)), questions,
                     tuple(s for s in plant.stocks() if s.code in (trim.additions_kg or {})))
+
+
+@dataclass(frozen=True)
+class _Wish:
+    """What is asked of a trim."""
+
+    aim: str
+    chance: float | None
+    only: tuple[str, ...]
+    room: tuple[float, float] | None  # most litres, at °C
+
+
+@dataclass(frozen=True)
+class _Answer:
+    """A trim, and what there is to say of how it was found."""
+
+    trim: Trim
+    beside: tuple[str, ...] = ()
+    questions: tuple[str, ...] = ()
+
+
+def _found(plant: Plant, made: Made, whole: Stock, there: Sequence[Stock], target: Target, wish: _Wish) -> _Answer:
+    """The trim, with what another one would be.
+
+    Where no trim keeps the product's guards (they are for predictions) the limits themselves are held. A trim that
+    brings in more stocks than the product allows gives way to one of the oils that are in the batch, where such a one
+    is no absurd one and needs no more drawn off.
+    """
+    from solver.rows import without_guards
+    from solver.trim import additions
+
+    from .law_error import law_sigma
+
+    sigma = law_sigma(plant, target.law, target.product) if wish.chance is not None else None
+    live = [s.code for s in plant.stocks()]
+
+    def solve(goal: Target, only: Sequence[str]) -> Trim:
+        return additions([whole], there, replace(goal, left_out=_left_out(there, live, only)), fill=wish.room,
+                         aim=wish.aim, chance=wish.chance, law_sigma=sigma,
+                         whole=bool(_how(made).get("whole", True)), time_limit=SECONDS)
+
+    questions: tuple[str, ...] = ()
+    trim = solve(target, wish.only)
+    if trim.additions_kg is None and wish.chance is None and without_guards(target) != target:
+        bare = solve(without_guards(target), wish.only)
+        if bare.additions_kg is not None:
+            trim, target, questions = bare, without_guards(target), (UNGUARDED,)
+    inside = {s.code for s, _ in whole.contents if s.counted} & set(live)
+    if not trim.broken or target.max_stocks is None or wish.only or not inside:
+        return _Answer(trim, (), questions)
+    within = solve(target, sorted(inside))
+    if not within.additions_kg or within.absurd or within.drawn_kg > trim.drawn_kg or len(within.broken) >= len(
+            trim.broken):
+        return _Answer(trim, (), questions)
+    other = ", ".join(f"{code} {numbers.kg(kg)} kg" for code, kg in (trim.additions_kg or {}).items())
+    return _Answer(within, (f"only oils that are in it are added, for the product allows {target.max_stocks}; of its "
+                            f"whole list it would be {other} for {numbers.cost(trim.cost)}",), questions)
 
 
 def _with_result(made: Made, samples: Sequence[int]) -> frozenset[str]:
@@ -177,20 +181,30 @@ def _with_result(made: Made, samples: Sequence[int]) -> frozenset[str]:
     return frozenset(found | ({"vi"} if set(PAIR) <= found else set()))
 
 
-def _left_out(stocks: Sequence[Stock], only: Sequence[str]) -> frozenset[str]:
-    """Base stocks and rework that are not among those that alone may be added; DeskError for one that is not there."""
-    strangers = [code for code in only if all(s.code != code for s in stocks)]
+def _how(made: Made) -> dict[str, Any]:
+    """How the charges of the order were worked out: most fill, whole steps, temperatures of the tanks."""
+    from .formulas import how_of  # which is built on the laboratory's steps, and these on the measured batch above
+
+    return how_of(made)
+
+
+def _left_out(stocks: Sequence[Stock], live: Sequence[str], only: Sequence[str]) -> frozenset[str]:
+    """Stocks out of use, and base stocks and rework that are not among those that alone may be added.
+
+    DeskError for one of those that is not there.
+    """
+    strangers = [harmless(code, 40) for code in only if code not in live]
     if strangers:
-        raise DeskError(f"no stock {', '.join(harmless(code, 40) for code in strangers)}; the plant has "
-                        f"{', '.join(s.code for s in stocks[:12])}")
-    return frozenset(s.code for s in stocks if only and s.counted and s.code not in only)
+        raise DeskError(f"no stock {', '.join(strangers)}; the plant has {', '.join(live[:12])}")
+    return frozenset(s.code for s in stocks if s.code not in live or (only and s.counted and s.code not in only))
 
 
 def _room(made: Made, vessel: Vessel | None) -> tuple[float, float] | None:
     """Most litres, and the temperature at which they are counted; None: the vessel's capacity is not known."""
     if vessel is None or vessel.capacity_l is None:
         return None
-    return MOST_FILL * vessel.capacity_l, made.head.mix_c
+    asked = _how(made).get("most_fill_pct")
+    return vessel.capacity_l * (MOST_FILL if asked is None else float(asked) / 100.0), made.head.mix_c
 
 
 def _questions(made: Made, target: Target, trim: Trim, samples: Sequence[int]) -> Iterator[str]:
@@ -218,7 +232,14 @@ def _round_words(number: int) -> Iterator[str]:
         yield f"this is trim {number}: at most two, then the formulator; it is taken only with a reason"
 
 
-def _room_words(made: Made, vessel: Vessel | None) -> Iterator[str]:
+def _draw_command(made: Made, trim: Trim) -> str:
+    return f"blendtui batch draw {harmless(made.name, 40)} {trim.drawn_kg:g} --as rework --family NAME --why TEXT"
+
+
+def _room_words(made: Made, vessel: Vessel | None, trim: Trim) -> Iterator[str]:
+    if trim.drawn_kg > 0.0:
+        yield (f"what is drawn off goes to rework ({_draw_command(made, trim)}); then ask for the trim anew, for its "
+               "charges are planned onto what is left")
     yield f"{numbers.batch(made.in_vessel_kg)} kg are in the vessel by the book"
     if vessel is None or vessel.capacity_l is None:
         name = harmless(made.head.vessel, 40) or "the vessel"
@@ -242,16 +263,19 @@ def _effects(target: Target, trim: Trim, batch: Stock, measured: frozenset[str])
 
 # The charges
 
-def _charges(plant: Plant, made: Made, trim: Trim, number: int, stocks: Sequence[Stock]) -> tuple[Charge, ...]:
-    """The additions as lines of the card, after the others, in the order of charging."""
-    from .charge_lines import lines
+def _charges(plant: Plant, made: Made, trim: Trim, number: int, stocks: Sequence[Stock]
+             ) -> tuple[tuple[Charge, ...], tuple[str, ...]]:
+    """The additions as lines of the card, after the others, and by which order they stand, in words."""
+    from .charge_lines import lines, order_words
     from .vessels import charge_order
 
+    own = charge_order(plant, made.head.vessel)
+    rows = lines(trim.additions_kg or {}, stocks, own)
     line = 1 + max((c.line for c in made.charges), default=0)
     place = 1 + max((c.position for c in made.charges), default=0)
-    rows = lines(trim.additions_kg or {}, stocks, charge_order(plant, made.head.vessel))
-    return tuple(Charge(made.name, line + n, number, row.stock.code, "", row.kg, row.tolerance_kg,
-                        _celsius(made, row.stock.code), position=place + n) for n, row in enumerate(rows))
+    charges = tuple(Charge(made.name, line + n, number, row.stock.code, "", row.kg, row.tolerance_kg,
+                           _celsius(made, row.stock.code), position=place + n) for n, row in enumerate(rows))
+    return charges, (order_words(rows, own),) if len(rows) > 1 else ()
 
 
 def tolerance(stock: Stock, kg: float, vessel: Vessel | None) -> float:
@@ -269,8 +293,10 @@ def _in_steps(stocks: Sequence[Stock], vessel: Vessel | None) -> list[Stock]:
 
 
 def _celsius(made: Made, stock: str) -> float | None:
-    """Temperature of a tank as this batch knows it; None: nobody said."""
-    return next((c.celsius for c in reversed(made.charges) if c.stock == stock and c.celsius is not None), None)
+    """Temperature of a tank as this batch last knew it, or as its order says; None: nobody said."""
+    last = (c.celsius for c in reversed(made.charges) if c.stock == stock and c.celsius is not None)
+    tanks = _how(made).get("tank_c") or {}
+    return next(last, tanks.get(stock, tanks.get("")))
 
 
 # The step
@@ -325,7 +351,7 @@ def _refuse(proposed: Proposed, reason: str) -> None:
         raise DeskError(f"{name}: no trim: {'; '.join(trim.notes)}")
     if trim.drawn_kg > 0.0:
         raise DeskError(f"{name}: the room is too small: draw off {numbers.kg(trim.drawn_kg)} kg first, which goes to "
-                        "rework (blendtui batch draw), then ask for the trim anew")
+                        f"rework ({_draw_command(proposed.made, trim)}), then ask for the trim anew")
     if not trim.additions_kg:
         raise DeskError(f"{name} meets every limit as it was measured; there is nothing to add")
     if proposed.round > release.FREE_ROUNDS and not reason:

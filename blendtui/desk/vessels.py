@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 from blendtui.store import cells as check
@@ -68,34 +69,44 @@ def set_cell(plant: Plant, code: str, cell: str, typed: str) -> Edit:
 
     A margin to the flash point that is typed without its date gets today's. DeskError for what cannot be true.
     """
-    if cell not in _BY_CODE:
-        raise DeskError(f"a vessel has no {harmless(cell, 40)!r}; it has {', '.join(_BY_CODE)}")
-    old, heading, unit = vessel(plant, code), _BY_CODE[cell].heading, _BY_CODE[cell].unit
-    before = text_of(plant, old, cell)
-    if cell == CHARGE_ORDER:
-        changes, after = _own_order(plant, old, typed)
-    else:
-        new = _with(plant, old, cell, typed.strip())
-        _refuse(new)
-        cells = {c: getattr(new, c) for c in (x.code for x in VESSEL_CELLS if x.code != CHARGE_ORDER)
-                 if getattr(new, c) != getattr(old, c)}
-        changes, after = ([changed(old, **cells)] if cells else []), text_of(plant, new, cell)
+    return set_cells(plant, code, {cell: typed})
+
+
+def set_cells(plant: Plant, code: str, typed: Mapping[str, str]) -> Edit:
+    """Several cells in one step: all of them or none."""
+    old = vessel(plant, code)
+    new, changes = old, []
+    for cell, text in typed.items():
+        if cell not in _BY_CODE:
+            raise DeskError(f"a vessel has no {harmless(cell, 40)!r}; it has {', '.join(_BY_CODE)}")
+        if cell == CHARGE_ORDER:
+            changes += _own_order(plant, old, text)
+        else:
+            new = _with(plant, new, cell, text.strip())
+    _refuse(new)
+    cells = {c: getattr(new, c) for c in _BY_CODE if c != CHARGE_ORDER and getattr(new, c) != getattr(old, c)}
+    if cells:
+        changes.append(changed(old, **cells))
     if not changes:
-        return Edit("unchanged", f"{old.vessel} {heading}: unchanged")
-    said = f"{old.vessel} {heading} {before or 'empty'} → {after or 'empty'}" + (f" {unit}" if after and unit else "")
-    plant.change(changes, said)
-    return Edit("saved", said)
+        return Edit("unchanged", f"{old.vessel}: unchanged")
+    said = [f"{_BY_CODE[c].heading} {text_of(plant, old, c) or 'empty'} → {text_of(plant, new, c) or 'empty'}"
+            + (f" {_BY_CODE[c].unit}" if cells[c] is not None and _BY_CODE[c].unit else "") for c in cells]
+    if CHARGE_ORDER in typed and len(changes) > bool(cells):
+        said.append(f"order of charging {typed[CHARGE_ORDER].strip() or 'the usual'}")
+    words = f"{old.vessel} {', '.join(said)}"
+    plant.change(changes, words)
+    return Edit("saved", words)
 
 
-def _own_order(plant: Plant, of: Vessel, typed: str) -> tuple[list[Change], str]:
+def _own_order(plant: Plant, of: Vessel, typed: str) -> list[Change]:
     from .charge_lines import names_of
 
     names = names_of(typed, plant.stocks())
     before, after = " ".join(charge_order(plant, of.vessel)), " ".join(names)
     key = ("vessel", edits.row_key((of.vessel,)), CHARGE_ORDER)
     if before == after:
-        return [], after
-    return [change_of("extra", key, {"text": before} if before else None, {"text": after} if after else None)], after
+        return []
+    return [change_of("extra", key, {"text": before} if before else None, {"text": after} if after else None)]
 
 
 def _with(plant: Plant, old: Vessel, cell: str, typed: str) -> Vessel:
@@ -111,7 +122,7 @@ def _with(plant: Plant, old: Vessel, cell: str, typed: str) -> Vessel:
     if cell == "flash_margin_c":
         # A margin is a decision of a day: without a date nobody could tell whether it still stands.
         return replace(old, flash_margin_c=value, flash_margin_on="" if value is None else _today())
-    return replace(old, **{cell: value})
+    return replace(old, **{cell: value})  # type: ignore[arg-type]
 
 
 def _today() -> str:

@@ -34,7 +34,7 @@ def add_to(of_batch: Add) -> None:
 
 def _amount(command: argparse.ArgumentParser) -> None:
     command.add_argument("batch", metavar="BATCH", help="such as B-0001")
-    command.add_argument("amount", metavar="AMOUNT", help="kg, or with its unit: '14.8 t', '17000 L' (at 15 °C)")
+    command.add_argument("amount", metavar="AMOUNT", nargs="+", help="kg, or with its unit: 14.8 t, 17000 L (at 15 °C)")
 
 
 def _pack(options: argparse.Namespace) -> int:
@@ -43,7 +43,7 @@ def _pack(options: argparse.Namespace) -> int:
 
 def _draw(options: argparse.Namespace) -> int:
     if options.what not in DRAWN:
-        raise BadInput(f"--as {options.what}: usable are {', '.join(DRAWN)}; what is sold is packed: blendtui batch pack")
+        raise BadInput(f"--as {options.what}: usable are {', '.join(DRAWN)}; what is sold is packed: batch pack")
     return _leave(options, options.what, stock=options.stock, family=options.family, lot=options.lot)
 
 
@@ -51,8 +51,8 @@ def _leave(options: argparse.Namespace, what: str, **more: str) -> int:
     from blendtui.desk import rework
 
     with opened(options) as plant:
-        done = answered(lambda: rework.leave(plant, options.batch, options.amount, what, by=options.by, why=options.why,
-                                             sure=options.sure, **more))
+        done = answered(lambda: rework.leave(plant, options.batch, " ".join(options.amount), what, by=options.by,
+                                             why=options.why, sure=options.sure, **more))
         state = plant.batch(options.batch).head.state
     answer = asdict(done)
     show(options, {**{name: value for name, value in answer.items() if name != "words"}, "state": state,

@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from .common import DONE, NO_BLEND, Add, BadInput, opened, path, say, show
+from .stock import answered, person
 
 if TYPE_CHECKING:
     from blendtui.desk.certificate import Certificate
@@ -22,10 +23,10 @@ def add_to(of_batch: Add) -> None:
     made.add_argument("--only", action="append", default=[], metavar="STOCK",
                       help="the only oil that may be added; may be repeated; additives are topped up all the same")
     made.add_argument("--take", action="store_true", help="plan it: its charges join the card and reserve their oil")
-    _person(made)
+    person(made)
     made = of_batch("release", _release, "release a batch that lacks nothing")
     _batch(made)
-    _person(made)
+    person(made)
     made = of_batch("certificate", _certificate, "certificate of analysis of a released batch")
     _batch(made)
     made.add_argument("--write", metavar="FILE", type=path, help="as text, to a new file")
@@ -34,12 +35,6 @@ def add_to(of_batch: Add) -> None:
 
 def _batch(command: argparse.ArgumentParser) -> None:
     command.add_argument("batch", metavar="BATCH", help="such as B-0001")
-
-
-def _person(command: argparse.ArgumentParser) -> None:
-    command.add_argument("--by", metavar="NAME", default="", help="who does it; else the login name")
-    command.add_argument("--why", metavar="TEXT", default="", help="the reason, where one is due")
-    command.add_argument("--sure", action="store_true", help="what is questioned has been looked at and is so")
 
 
 # Trim
@@ -55,7 +50,8 @@ def _trim(options: argparse.Namespace) -> int:
         with quiet():
             found = trimming.propose(plant, options.batch, aim=options.aim, chance=wanted, stocks=options.only)
         if options.take and found.trim.additions_kg is not None:
-            taken = trimming.take_proposed(plant, found, by=options.by, why=options.why, sure=options.sure)
+            taken = answered(lambda: trimming.take_proposed(plant, found, by=options.by, why=options.why,
+                                                            sure=options.sure))
     answer = {**trimming.proposed_json(found), "taken": taken is not None}
     show(options, answer, trim_text(found, taken is not None))
     return DONE if found.trim.additions_kg is not None else NO_BLEND
@@ -120,7 +116,8 @@ def _release(options: argparse.Namespace) -> int:
     from blendtui.desk import batches, release
 
     with opened(options) as plant:
-        made = release.release(plant, options.batch, by=options.by, why=options.why, sure=options.sure)
+        made = answered(lambda: release.release(plant, options.batch, by=options.by, why=options.why,
+                                                sure=options.sure))
         remarks = release.remarks(plant, made)
         entry, last = plant.revision(), plant.last_hash()
     head = made.head

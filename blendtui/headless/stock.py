@@ -30,7 +30,7 @@ def register(add: Add) -> None:
         return made
 
     made = of_stock("receive", _receive, "receive a delivery: what is in the tank is then a mixture")
-    made.add_argument("amount", metavar="AMOUNT", help="kg, or with its unit: '24 t', '12000 L' (at 15 °C)")
+    made.add_argument("amount", metavar="AMOUNT", nargs="+", help="kg, or with its unit: 24 t, 12000 L (at 15 °C)")
     made.add_argument("--lot", metavar="LOT", default="", help="as on its papers")
     made.add_argument("--certificate", metavar="NUMBER", default="")
     _values(made, "off the certificate, such as kv40=30.4; may be repeated")
@@ -48,7 +48,7 @@ def register(add: Add) -> None:
     made.add_argument("--method", metavar="TEXT", default="")
     person(made)
     made = of_stock("dip", _dip, "a tank dip against the book")
-    made.add_argument("amount", metavar="AMOUNT", help="kg, or with its unit: '61.2 t', '70000 L'")
+    made.add_argument("amount", metavar="AMOUNT", nargs="+", help="kg, or with its unit: 61.2 t, 70000 L")
     made.add_argument("--at", metavar="T", help="°C of the tank, of litres; else they are litres at 15 °C")
     made.add_argument("--correct", action="store_true", help="set the book to the dip; needs --why")
     person(made)
@@ -70,7 +70,8 @@ def answered(work: Callable[[], Done]) -> Done:
     try:
         return work()
     except Questioned as error:
-        raise BadInput(f"{error} Nothing was done; if it is so: --sure") from None
+        asked = str(error) if str(error).endswith(("?", ".")) else f"{error}."
+        raise BadInput(f"{asked} Nothing was done; if it is so: --sure") from None
 
 
 def lines_of(words: Sequence[str]) -> str:
@@ -111,7 +112,7 @@ def _receive(options: argparse.Namespace) -> int:
     values = values_of(options.value)
     with opened(options) as plant:
         done = answered(lambda: ledger.receive(
-            plant, options.stock, options.amount, options.lot, cells=values, certificate=options.certificate,
+            plant, options.stock, " ".join(options.amount), options.lot, cells=values, certificate=options.certificate,
             source=options.source, from_batch=options.from_batch, on=options.on, note=options.note, keep=options.keep,
             by=options.by, why=options.why, sure=options.sure, law=options.law))
         stock = plant.stock(options.stock)
@@ -140,7 +141,7 @@ def _dip(options: argparse.Namespace) -> int:
 
     celsius = None if options.at is None else number(options.at, "--at", "temperature")
     with opened(options) as plant:
-        done = answered(lambda: ledger.dip(plant, options.stock, options.amount, celsius=celsius,
+        done = answered(lambda: ledger.dip(plant, options.stock, " ".join(options.amount), celsius=celsius,
                                            correct=options.correct, by=options.by, why=options.why, sure=options.sure))
     show(options, {"dip": dip_json(done.dip), "differs_pct": done.differs_pct, "said": list(done.words)},
          lines_of(done.words))
@@ -170,8 +171,9 @@ def dip_json(dip: Dip) -> dict[str, Any]:
 
 def book_json(found: Book) -> dict[str, Any]:
     """Answer of `stock book`."""
+    dip = None if found.last_dip is None else dip_json(found.last_dip)
     return {"stock": found.stock.code, "balance_kg": found.balance_kg, "promised_kg": found.promised_kg,
-            "free_kg": found.stock.available_kg, "last_dip": None if found.last_dip is None else dip_json(found.last_dip),
+            "free_kg": found.stock.available_kg, "last_dip": dip,
             "lots_in_tank": dict(found.parts), "lots": [lot_json(x) for x in found.lots],
             "movements": [asdict(x) for x in found.lines], "said": list(found.words)}
 

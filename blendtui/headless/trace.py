@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from blendtui.desk.trace import Node, Trace, Use
 
 NAME = 42  # columns of a step's name
+MARK, DEEPEST = 19, 8
 MOST_STEPS = 80  # lines of steps back on paper; JSON has all of them
 
 
@@ -71,10 +72,9 @@ def _steps(found: Trace) -> str:
     if not any(node.below for node in found.back):
         return ""
     for depth, node in steps[:MOST_STEPS]:
-        name = f"{'  ' * min(depth, 8)}{node.what if node.what != 'charge' else ''} {harmless(node.name, 60)}".rstrip()
-        name = name if node.what != "charge" else f"{'  ' * min(depth, 8)}{harmless(node.name, 60)}"
-        lines.append(f"{name[:NAME]:<{NAME}} {numbers.kg(node.kg):>9} {numbers.pct(node.part):>7}"
-                     + (f" {_short(node.words)}" if node.words else ""))
+        name = "  " * min(depth, DEEPEST) + ("" if node.what == "charge" else f"{node.what} ") + harmless(node.name, 60)
+        lines.append(f"{name[:NAME]:<{NAME}} {numbers.kg(node.kg):>9} {numbers.pct(node.part):>7} "
+                     f"{harmless(node.mark, MARK)}".rstrip())
     if len(steps) > MOST_STEPS:
         lines.append(f"and {len(steps) - MOST_STEPS} steps more: --json has all of them")
     return "\n".join(lines)
@@ -84,13 +84,6 @@ def _walk(node: Node, depth: int) -> Iterator[tuple[int, Node]]:
     yield depth, node
     for below in node.below:
         yield from _walk(below, depth + 1)
-
-
-def _short(words: str) -> str:
-    """What fits beside a step: the origins below it say the rest."""
-    return next((mark for start, mark in (("rework of", words), ("of unknown", words), ("not followed", words),
-                                          ("from before", "unknown lot")) if words.startswith(start)),
-                "no lot" if "no lot" in words else "")[:19]
 
 
 def _origins(found: Trace) -> str:

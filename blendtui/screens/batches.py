@@ -21,10 +21,10 @@ from . import floor_view, ordering, reading, tracing
 from .floor_view import Seen
 from .steps import StepPage
 
-LIST = (Column("batch", "batch", "", 8, "left"), Column("product", "product", "", 10, "left"),
-        Column("kg", "quantity", "kg", 9), Column("vessel", "vessel", "", 8, "left"),
-        Column("stage", "stage", "", 20, "left"), Column("customer", "customer", "", 12, "left"),
-        Column("order_no", "order", "", 7, "left"), Column("ordered_at", "ordered", "", 16, "left"),
+LIST = (Column("batch", "batch", "", 8, "left"), Column("product", "product", "", 9, "left"),
+        Column("asked", "ordered", "", 10), Column("vessel", "vessel", "", 7, "left"),
+        Column("stage", "stage", "", 22, "left"), Column("customer", "customer", "", 11, "left"),
+        Column("order_no", "order", "", 7, "left"), Column("ordered_at", "at", "", 16, "left"),
         Column("ordered_by", "by", "", 10, "left"), Column("note", "note", "", 20, "left"))
 
 
@@ -112,8 +112,8 @@ class BatchesScreen(StepPage):
         self._read_in_sight()
 
     def _cell(self, batch: Batch, code: str) -> Cell:
-        if code == "kg":
-            return floor_view.kg(batch.batch_kg, None)
+        if code == "asked":
+            return f"{batch.asked:.10g} {batch.unit}"
         if code == "stage":
             return self.state.stages.get(batch.batch, OPEN) if batch.state == OPEN else batch.state.upper()
         if code == "ordered_at":

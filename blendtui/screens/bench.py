@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from blendtui.desk import lab_plan
 from blendtui.store.harmless import harmless
+from blendtui.widgets.paint import plain
 
 from .base import Page
 from .reading import ReadingScreen, write
@@ -20,7 +21,7 @@ def show(page: Page) -> None:
     name = f"{session.product}-bench-{today}.txt"
 
     def shown(text: list[str]) -> None:
-        keys = [("w", "write to a file", lambda: write(page, "the plan", name, lambda html: "\n".join(text)))]
+        keys = [("w", "write to a file", lambda: write(page, "plan", name, lambda html: plain("\n".join(text))))]
         page.app.push_screen(ReadingScreen("Bench blend", text, keys))
 
     page.program.task(lambda: [*head, *lab_plan.words(lab_plan.plan(recipe, answer.stocks))], shown)

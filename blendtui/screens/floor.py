@@ -131,10 +131,16 @@ class FloorScreen(LabCommands, OutCommands):
             self.caution.show()
             return
         width = self.size.width
+        missed = floor_view.missed_words(seen)
         self.head.show([cut_line([(f"{seen.name}: ", BOLD), (floor_view.headline(seen), PLAIN)], width),
                         cut_line([("next: ", BOLD), (floor_view.next_words(seen), PLAIN)], width)])
-        titles = ", ".join(c.title for c in seen.cautions)
-        self.caution.show((f"k: {len(seen.cautions)} cautions: ", BOLD), (f"{titles}. Site procedure decides.", PLAIN))
+        if missed:
+            self.caution.show((missed, BAD))
+            return
+        titles = ", ".join(f"! {c.title}" if c.warns else c.title for c in seen.cautions)
+        warns = any(c.warns for c in seen.cautions)
+        self.caution.show((f"k: {len(seen.cautions)} cautions, site procedure decides: ", BOLD),
+                          (titles, BAD if warns else PLAIN))
 
     def _cell(self, row: int, column: int) -> Cell:
         line, code = self.lines[row], CHARGES[column].code
@@ -241,10 +247,10 @@ class FloorScreen(LabCommands, OutCommands):
         if self.seen is None:
             self.say("there is no batch here")
             return
-        text = ["Reminders, each with its reason; none is a permission. The site's procedures, safety data sheets,",
+        text = ["Reminders, each with its reason; none is a permission. The site's procedures, safety data sheets, "
                 "permits and local codes decide."]
         for each in self.seen.cautions:
-            text += ["", each.title.upper(), f"  {each.reason}", f"  {each.advice}"]
+            text += ["", each.title.upper(), f"  {each.reason}", f"{'! ' if each.warns else '  '}{each.advice}"]
         self.app.push_screen(reading.ReadingScreen(f"Cautions for {self.seen.name}", text))
 
     def do_type(self) -> None:
@@ -284,7 +290,7 @@ class FloorScreen(LabCommands, OutCommands):
             return charging.charge(plant, name, charge.line, typed, lot=lot, by=by, sure=sure)
 
         step = floor_view.division_of(self.seen, charge)
-        plan = f"{floor_view.kg(charge.plan_kg, step)} kg ± {floor_view.kg(charge.tolerance_kg, step)}"
+        plan = f"{floor_view.kg(charge.plan_kg, step)} kg ± {floor_view.tolerance(charge.tolerance_kg, step)}"
         self.type_step(f"{charge.line} {harmless(charge.stock, 20)} charged (kg, t or drums; plan {plan})", "", make,
                        self.say_charged, yes="it was so")
 

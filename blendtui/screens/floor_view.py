@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from blendtui.desk import batches
-from blendtui.store.batch_records import DONE, DROPPED, OPEN, PLANNED, RELEASED, Batch, Charge, Made, Vessel
+from blendtui.store.batch_records import DONE, DROPPED, LEFT, OPEN, PLANNED, RELEASED, Batch, Charge, Made, Vessel
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.stocks import Stock
@@ -26,6 +27,7 @@ class Seen:
     cautions: tuple[Any, ...] = ()
     verdict: Any = None  # on the newest samples; None: none was drawn
     missing: tuple[str, ...] = ()  # for the release
+    missed: tuple[str, ...] = ()  # limits and rules that it will miss if the rest is charged as planned
 
     @property
     def name(self) -> str:
@@ -41,7 +43,7 @@ def newest(plant: Plant) -> str:
 
 def look(plant: Plant, name: str) -> Seen | None:
     """Read a batch and what stands beside it; None where the plant has no batch yet."""
-    from blendtui.desk import batch_lab, cautions, release
+    from blendtui.desk import batch_lab, batch_outlook, cautions, release
 
     name = name or newest(plant)
     if not name:
@@ -51,9 +53,12 @@ def look(plant: Plant, name: str) -> Seen | None:
     lots = {c.stock: plant.tank_lots(c.stock) for c in made.to_charge}
     is_open = made.head.state == OPEN
     verdict = batch_lab.verdict(made, batches.target_of(plant, made)) if made.samples else None
-    used = [stocks[c] for c in dict.fromkeys(c.stock for c in made.charges) if c in stocks]
-    return Seen(made, vessel, stocks, lots, tuple(cautions.cautions(used, vessel, made.head.mix_c)), verdict,
-                tuple(release.missing(plant, made)) if is_open else ())
+    ahead = batch_outlook.outlook(plant, made) if is_open else None
+    going = [stocks[c] for c in dict.fromkeys(c.stock for c in made.charges if c.state != DROPPED) if c in stocks]
+    heel = batches.in_vessel(replace(made, head=replace(made.head, heel_ignored=""), charges=()), stocks)
+    told = cautions.cautions([*heel, *going], vessel, made.head.mix_c, fill_l=ahead.fill_l if ahead else None)
+    return Seen(made, vessel, stocks, lots, told, verdict, tuple(release.missing(plant, made)) if is_open else (),
+                ahead.missed if ahead and made.to_charge else ())
 
 
 def results_of_last(made: Made) -> bool:
@@ -87,6 +92,17 @@ def kg(mass: float | None, division: float | None) -> str:
     text = f"{mass:.{places}f}"
     # A recipe that is not to be charged in whole steps has digits that a scale does not show: they are not hidden.
     return text if abs(float(text) - mass) < 5e-4 else f"{mass:.3f}".rstrip("0")
+
+
+def tolerance(mass: float, division: float | None) -> str:
+    """A tolerance [kg] as a scale can show it, rounded down: what is said to be inside is inside.
+
+    >>> tolerance(41.675, 5.0), tolerance(0.54, 0.1), tolerance(0.3, 1.0)
+    ('41', '0.5', '0.3')
+    """
+    places = decimals(division)
+    shown = math.floor(mass * 10 ** places + 1e-9) / 10 ** places
+    return f"{shown:.{places}f}" if shown else f"{mass:.2g}"
 
 
 def division_of(seen: Seen, charge: Charge) -> float | None:
@@ -123,8 +139,15 @@ def headline(seen: Seen) -> str:
     """Batch, product, quantity, vessel and stage in one line."""
     head = seen.made.head
     whose = ", ".join(harmless(part, 30) for part in (head.customer, head.order_no) if part)
-    return (f"{harmless(head.product, 20)}, {kg(head.batch_kg, seen.vessel.division_kg if seen.vessel else None)} kg "
-            f"in {harmless(head.vessel, 20)}: {stage_words(seen.made)}" + (f"; for {whose}" if whose else ""))
+    mass = kg(head.batch_kg, seen.vessel.division_kg if seen.vessel else None)
+    where = f"in {harmless(head.vessel, 20)}" if head.state == OPEN else harmless(head.vessel, 20)
+    return (f"{harmless(head.product, 20)}, {mass} kg {where}: {stage_words(seen.made)}"
+            + (f"; for {whose}" if whose else ""))
+
+
+def missed_words(seen: Seen) -> str:
+    """What the batch will miss as it is planned, for the line of its next step."""
+    return f"! as planned it misses {harmless('; '.join(seen.missed), 200)}; R: put right" if seen.missed else ""
 
 
 def stage_words(made: Made) -> str:
@@ -140,8 +163,10 @@ def next_words(seen: Seen) -> str:
     """What to do next, in one plain sentence, with the key that does it."""
     made, head = seen.made, seen.made.head
     if head.state != OPEN:
-        return ("p packs or draws off what is in the vessel; w writes the certificate" if head.state == RELEASED
-                else "nothing is left to do; its record stands")
+        empty = any(o.what == LEFT for o in made.outcomes) or made.in_vessel_kg <= 0.0
+        if head.state == RELEASED:
+            return ("" if empty else "p packs, and records what stays in the vessel; ") + "w writes the certificate"
+        return "nothing; its record stands" if empty else "p draws off what is in the vessel; its record stands"
     if made.to_charge:
         return _charge_words(seen, made.to_charge[0])
     if not any(s.round == made.rounds for s in made.samples):
@@ -210,7 +235,7 @@ def card_lines(seen: Seen, typed_lots: Mapping[int, str]) -> Iterator[CardLine]:
         yield CardLine(charge, {
             "mark": mark(charge, to_come), "line": f"{charge.line}" + (f" T{charge.round}" if charge.round else ""),
             "stock": harmless(charge.stock), "plan": kg(charge.plan_kg, step),
-            "tolerance": kg(charge.tolerance_kg, step), "lot": _lot(seen, charge, typed_lots),
+            "tolerance": tolerance(charge.tolerance_kg, step), "lot": _lot(seen, charge, typed_lots),
             "scale": kg(readings[charge.line], seen.vessel.division_kg if seen.vessel else None)
             if charge.line in readings else "",
             "actual": "missed" if charge.state == DROPPED else kg(charge.actual_kg, step)

@@ -101,8 +101,9 @@ class LedgerCommands(StepPage):
 
         def work() -> list[str]:
             from blendtui.desk import ledger
+            from blendtui.headless.stock import book_text
 
-            return book_lines(ledger.book(plant, code))
+            return book_text(ledger.book(plant, code)).split("\n")
 
         head = f"Book of {harmless(code, 40)}"
         self.program.task(work, lambda text: self.app.push_screen(ReadingScreen(head, text)))
@@ -124,23 +125,6 @@ def _mass(typed: str, stock: Stock) -> float:
     from blendtui.desk import typed as desk
 
     return desk.mass(typed, stock.density15)
-
-
-def book_lines(book: Any) -> list[str]:
-    """The book of a stock in lines of 80 columns, its movements newest first."""
-    from blendtui.desk import batches, numbers
-
-    said = [*(harmless(each, 400) for each in book.words), ""]
-    if book.parts:
-        lots = ", ".join(f"{harmless(lot, 40)} {numbers.pct(part)} %" for lot, part in book.parts.items())
-        said += [f"in the tank: {lots}", ""]
-    said.append(f"{'when':<16} {'who':<10} {'kg':>11} {'book, kg':>11}  what")
-    for line in reversed(book.lines):
-        kg = "unknown" if line.kg is None else f"{line.kg:+.1f}"
-        balance = "unknown" if line.balance_kg is None else f"{line.balance_kg:.1f}"
-        said.append(f"{batches.when(line.at):<16} {harmless(line.who, 10):<10} {kg:>11} {balance:>11}  "
-                    f"{harmless(line.words, 200)}")
-    return said
 
 
 def _lot(typed: str) -> str:

@@ -5,11 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import TYPE_CHECKING, Any
 
+from blendtui.desk import numbers
 from blendtui.desk.errors import DeskError
 from blendtui.store.batch_records import Vessel
 from blendtui.store.harmless import harmless
 
-from . import reading
+from . import floor_view, reading, words
 from .base import step
 from .words import property_code
 
@@ -61,6 +62,7 @@ class Asking:
             ("order_no", ("the customer's order number (empty: none)", "", str.strip)),
             ("limits", ("customer's limits, tighter (kv40 44 48, vi 98; empty: none)", "", limits)),
             ("mix_c", ("mixing temperature, °C", "60", celsius)),
+            ("tank_c", ("temperature of the tanks, °C (45, or LIGHT 45 HEAVY 55)", "20", tank_celsius)),
             ("heel_kg", ("heel in the vessel, kg", heel, mass)),
             ("heel_stock", ("heel is of which stock or batch (or its values: kv40 46 kv100 6.8 density15 875)",
                             vessel.heel_stock, str.strip)),
@@ -109,8 +111,8 @@ class Asking:
 
         found = dict(self.found)
         kg, unit = found.pop("amount")
-        heel = found.pop("heel_stock", "")
-        cells = heel_values(heel)
+        heel = found.pop("heel_stock", None)
+        cells = heel_values(heel or "")
         return Order(self.product, kg, found.pop("vessel"), unit, heel_stock="" if cells else heel, heel_cells=cells,
                      **found)
 
@@ -148,9 +150,52 @@ class Asking:
         page.take_step(make, done, yes="take it")
 
 
-def proposal_lines(proposal: Any) -> list[str]:
-    """A proposal as lines of 80 columns."""
-    return []
+def proposal_lines(found: Any) -> list[str]:
+    """A proposal in lines of 80 columns: what it comes to, the charges, what the heel does, what is to be known."""
+    order = found.order
+    of = ", ".join(harmless(part, 30) for part in (order.customer, order.order_no) if part)
+    fill = (f", {numbers.litres(found.fill_l)} L at {order.mix_c or 60.0:g} °C, {found.fill_pct:.0f} % of it"
+            if found.fill_l is not None and found.fill_pct is not None else "")
+    said = [f"{harmless(order.product, 20)}{f' for {of}' if of else ''}: {numbers.batch(found.asked_kg)} kg asked; "
+            f"{harmless(order.vessel, 20)} then holds {numbers.batch(found.batch_kg)} kg{fill}"]
+    if found.charges:
+        said += ["", f"{'CHARGES':<20} {'kg':>10} {'± kg':>6} {'mass %':>7}  {'lot':<14} °C"]
+    else:
+        said += ["", "! NO BLEND MEETS THIS ORDER", *(harmless(each, 600) for each in found.reasons)]
+    for charge in found.charges:
+        step = found.steps_kg.get(charge.stock)
+        at = "" if charge.celsius is None else f"{charge.celsius:g}"
+        share = numbers.pct(charge.plan_kg / found.batch_kg)
+        said.append(f"  {harmless(charge.stock, 18):<18} {floor_view.kg(charge.plan_kg, step):>10} "
+                    f"{floor_view.tolerance(charge.tolerance_kg, step):>6} {share:>7}  "
+                    f"{harmless(charge.lot, 14):<14} {at}")
+    said += _limit_lines(found) + _heel_lines(found)
+    if found.questions or found.remarks:
+        said += ["", "TO KNOW", *(f"? {harmless(each, 600)}" for each in found.questions),
+                 *(f"  {harmless(each, 600)}" for each in found.remarks)]
+    return [*said, "", words.CAUTION]
+
+
+def _limit_lines(found: Any) -> list[str]:
+    limits = [x for x in found.recipe.limits if x.property != "cost_per_t" and not x.property.startswith("vol")]
+    said = ["", f"{'PREDICTED':<20} {'value':>9} {'low':>9} {'high':>9}"] if limits else []
+    for limit in limits:
+        figures = " ".join(f"{numbers.value(limit.property, each) if each is not None else '':>9}"
+                           for each in (limit.value, limit.low, limit.high))
+        sign = {True: "", None: "  unknown", False: "  ! not met"}[limit.met]
+        said.append(f"  {words.heading(limit.property):<18} {figures} {words.unit(limit.property)}{sign}")
+    return said
+
+
+def _heel_lines(found: Any) -> list[str]:
+    if not found.effects:
+        return []
+    said = ["", f"{'HEEL AND LINE':<20} {'with':>9} {'without':>9}"]
+    for code, sides in found.effects.items():
+        if None not in sides:
+            shown = " ".join(f"{numbers.value(code, each):>9}" for each in sides)
+            said.append(f"  {words.heading(code):<18} {shown} {words.unit(code)}")
+    return said
 
 
 # Readers of what is typed
@@ -177,6 +222,21 @@ def celsius(typed: str) -> float | None:
     from solver.scales import parse
 
     return parse(typed, "temperature") if typed.strip() else None
+
+
+def tank_celsius(typed: str) -> dict[str, float]:
+    """Temperatures of the tanks [°C]: one for all, or stock by stock.
+
+    >>> tank_celsius("45"), tank_celsius("LIGHT 45 HEAVY 55 C")
+    ({'': 45.0}, {'LIGHT': 45.0, 'HEAVY': 55.0})
+    """
+    parts = [part for part in typed.replace(",", " ").split() if part.upper() not in ("C", "°C")]
+    if len(parts) == 1:
+        return {"": celsius(parts[0]) or 0.0}
+    if len(parts) % 2:
+        raise DeskError(f"{harmless(typed, 40)!r}: type one temperature for all tanks, or a stock and its temperature "
+                        "for each, such as LIGHT 45 HEAVY 55")
+    return {stock: celsius(at) or 0.0 for stock, at in zip(parts[::2], parts[1::2], strict=True)}
 
 
 def limits(typed: str) -> dict[str, tuple[str, str]]:

@@ -7,10 +7,9 @@ from pathlib import Path
 
 from textual import events
 
-from blendtui.desk import sheet
 from blendtui.desk.errors import DeskError
 from blendtui.desk.stocks import Edit
-from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, plain, wrap
+from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, wrap
 
 from .base import Page
 from .overlays import TextScreen
@@ -59,15 +58,14 @@ def write(page: Page, what: str, name: str, make: Callable[[bool], str]) -> None
     program = page.program
 
     def save(typed: str, sure: bool) -> Edit:
-        if not typed.strip():
-            raise DeskError(f"no file name: type where {what} is to be written")
-        path = program.sheets / Path(typed.strip()).expanduser()
-        made = make(is_page(typed))
-        # What any printer can print; a page of HTML has a way to spell every character in it.
-        made = made.encode("ascii", "xmlcharrefreplace").decode("ascii") if is_page(typed) else plain(made)
-        return Edit("saved", sheet.write_sheet(path, made.rstrip("\n") + "\n"))
+        from blendtui.desk.certificate import write_new
 
-    page.type_cell(f"write {what} to", str(program.sheets / name), save)
+        if not typed.strip():
+            raise DeskError(f"no file name: type where the {what} is to be written")
+        path = program.sheets / Path(typed.strip()).expanduser()
+        return Edit("saved", write_new(path, make(is_page(typed)).rstrip("\n") + "\n", what))
+
+    page.type_cell(f"write the {what} to", str(program.sheets / name), save)
 
 
 # The papers of a batch

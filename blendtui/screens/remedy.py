@@ -96,28 +96,9 @@ def show_trim(page: StepPage, made: Made) -> None:
 
 
 def trim_lines(proposed: Any) -> list[str]:
-    """A trim in lines: what to add, what it does to each property, and what is to be known."""
-    trim = proposed.trim
-    said = ["TO ADD"]
-    for charge in proposed.charges:
-        count = trim.packages.get(charge.stock)
-        said.append(f"  {harmless(charge.stock, 20):<20} {numbers.kg(charge.plan_kg):>9} kg"
-                    + (f"  {count} packages" if count else ""))
-    if not proposed.charges:
-        said.append("  nothing")
-    if trim.total_kg is not None:
-        fill = f", {numbers.litres(trim.litres)} L at {proposed.made.head.mix_c:g} °C" if trim.litres else ""
-        cost = f"; cost {numbers.cost(trim.cost)}" if trim.cost is not None else ""
-        said.append(f"  the vessel then holds {numbers.batch(trim.total_kg)} kg{fill}{cost}")
-    if trim.drawn_kg:
-        said += ["", f"! draw off {numbers.kg(trim.drawn_kg)} kg first (p on the floor), then ask for the trim anew"]
-    said += ["", "WHAT IT DOES", f"  {'':<16} {'now':>9} {'then':>9} {'low':>9} {'high':>9}"]
-    for effect in proposed.effects:
-        figures = " ".join(f"{numbers.value(effect.property, each) if each is not None else '':>9}"
-                           for each in (effect.before, effect.after, effect.low, effect.high))
-        unmet = {False: "  ! not met", None: "", True: ""}[effect.met]
-        now = "" if effect.measured else "  now: predicted"
-        said.append(f"  {words.heading(effect.property):<16} {figures} {words.unit(effect.property)}{now}{unmet}")
-    said += ["", "TO KNOW", *(f"{'? ' if each in proposed.questions else '  '}{harmless(each, 600)}"
-                             for each in proposed.words)]
-    return said
+    """A trim in lines, what must be done first at the head of it."""
+    from blendtui.headless.batch_release import trim_text
+
+    first = [f"! draw off {numbers.kg(proposed.trim.drawn_kg)} kg first (p on the floor), then ask for the trim anew",
+             ""] if proposed.trim.drawn_kg else []
+    return [*first, *trim_text(proposed, False).split("\n")]

@@ -17,7 +17,8 @@ Done = Callable[[Any], None]
 class StepPage(Page):
     """A screen that takes steps of a batch."""
 
-    def take_step(self, make: Make, done: Done, *, yes: str = "do it", again: Callable[[], None] | None = None) -> None:
+    def take_step(self, make: Make, done: Done, *, yes: str = "do it", again: Callable[[], None] | None = None,
+                  saying: str = "putting it on record …") -> None:
         """Do `make(False)`; a question of the desk is put to the operator, and y does `make(True)`.
 
         `again`: begins to type once more where the step was refused or its question dropped with a key that is
@@ -34,7 +35,7 @@ class StepPage(Page):
         def took(found: tuple[Any, str]) -> None:
             result, asked = found
             if asked:
-                self.question(asked, yes, lambda: self.program.change(lambda: work(True), took, failed))
+                self.question(asked, yes, lambda: self.program.change(lambda: work(True), took, failed, saying=saying))
             else:
                 done(result)
 
@@ -42,7 +43,7 @@ class StepPage(Page):
             if again:
                 again()
 
-        self.program.change(lambda: work(False), took, failed)
+        self.program.change(lambda: work(False), took, failed, saying=saying)
 
     def question(self, words: str, yes: str, then: Callable[[], None]) -> None:
         """Ask: y does it, Esc drops it, and Enter alone does nothing."""

@@ -20,11 +20,11 @@ def table_of(record: object) -> str:
 
 
 def added(record: Any) -> list[Change]:
-    """Add a record of batch_records; of a charge its lots too."""
+    """Add a record of batch_records; of a charge its lots too. A vessel still lacks its position and `retired`."""
     table = table_of(record)
     row = as_row(record, table)
     key = tuple(row[k] for k in TABLES[table].keys)
-    changes = [change_of(table, key, None, {c: row[c] for c in TABLES[table].columns})]
+    changes = [change_of(table, key, None, {c: row[c] for c in TABLES[table].columns if c in row})]
     return changes + (lots_of(record) if isinstance(record, Charge) else [])
 
 

@@ -103,7 +103,7 @@ class _Reading:
                            property_spelt if name == "stocks.csv" else None)
         self.faults += sheet.faults
         unknown = [x for x in sheet.columns
-                   if x not in known and not FAMILIES.get(name, _none)(x)]
+                   if x not in known and not FAMILIES.get(name, _none)(x) and x != catalogue_vessels.USED.get(name)]
         if unknown:
             self.notes.append(f"{name}: unknown column{'s' * (len(unknown) > 1)} "
                               f"{harmless(', '.join(unknown), 200)}: kept, not used")

@@ -14,6 +14,8 @@ from .schema import VESSEL_CELLS
 from .state import Key, State
 
 VESSELS = ("vessel", *VESSEL_CELLS)
+# A column that is kept as unknown ones are, though the desk knows it: the plant's own order of charging.
+USED = {"vessels.csv": "charge_order"}
 HEEL_DENSITY = 0.87  # kg/L: about that of base oils, enough to see that a heel cannot be in its vessel
 LARGEST_L = 1e9
 HOTTEST_MARGIN = 300.0  # °C

@@ -1,7 +1,9 @@
 """A batch that is released, cancelled or reworked stands: what it was ordered as, held, was charged and measured.
 
-What may still come after it is closed: outcomes (packing), decisions, lots that name it, and the note of its heading.
-The entry that closes it may change all of it; no later one does, and none opens it again.
+What may still come after it is closed: outcomes (packing), further decisions, lots that name it, and the note of its
+heading. A decision that is there stands as well: another one corrects it.
+The entry that closes it may change all of it; no later one does, and none opens it again. Only the oil of a cancelled
+batch may still become rework, which closes it as reworked.
 """
 
 from __future__ import annotations
@@ -9,7 +11,7 @@ from __future__ import annotations
 import sqlite3
 from collections.abc import Sequence
 
-from .batch_records import OPEN
+from .batch_records import CANCELLED, OPEN, REWORKED
 from .errors import Closed
 from .harmless import harmless
 from .journal import touched
@@ -17,13 +19,14 @@ from .records import Change
 
 STANDS = ("batch", "content", "charge", "charge_lot", "sample", "result")
 FREE = {"note"}  # cells of the heading
+CLOSING = {"state", "closed_at", "closed_by", "why"}
 
 
 def refuse_closed(con: sqlite3.Connection, changes: Sequence[Change]) -> None:
     """Closed where a change, not applied yet, touches what stands of a batch that an earlier entry closed."""
     known: dict[object, str] = {}
     for change in changes:
-        if change.table not in STANDS or (change.table == "batch" and touched(change) <= FREE):
+        if _may_follow(change):
             continue
         name = change.key["batch"]
         if name not in known:
@@ -32,3 +35,13 @@ def refuse_closed(con: sqlite3.Connection, changes: Sequence[Change]) -> None:
         if known[name] != OPEN:
             raise Closed(f"{harmless(str(name), 40)} is {harmless(known[name], 20)}: its record stands; "
                          "a correction is a new entry")
+
+
+def _may_follow(change: Change) -> bool:
+    """May this still come after its batch is closed, or has it no batch?"""
+    if change.table == "decision":
+        return change.before is None
+    if change.table != "batch":
+        return change.table not in STANDS
+    before, after = ((cells or {}).get("state") for cells in (change.before, change.after))
+    return touched(change) <= FREE or ((before, after) == (CANCELLED, REWORKED) and touched(change) <= CLOSING)

@@ -10,7 +10,8 @@ import sqlite3
 from collections.abc import Iterator
 
 from . import journal
-from .errors import BuiltOn, PlantError
+from .batch_records import DONE, LEFT
+from .errors import BuiltOn
 from .harmless import harmless
 from .records import Change, Entry
 from .schema import QUANTITY_OF, RECORD
@@ -32,6 +33,7 @@ def reversal(con: sqlite3.Connection, entry: Entry) -> list[Change]:
 
 def _reversed(con: sqlite3.Connection, entry: Entry) -> Iterator[Change]:
     by_steps = any(c.table in RECORD for c in entry.changes)
+    came = any(c.table == "lot" and c.before is None for c in entry.changes)
     now: dict[object, int | None] = {}
     for change in reversed(entry.changes):
         back = change.reversed()
@@ -45,9 +47,9 @@ def _reversed(con: sqlite3.Connection, entry: Entry) -> Iterator[Change]:
         before, step = now[stock], int(mg[1] or 0) - int(mg[0] or 0)
         if before is None:
             continue  # nobody knows the quantity any more, and it stays unknown
-        if step < 0 and before + step < 0:
-            raise PlantError(f"{harmless(str(stock), 40)}: {-step / 1e6:,.1f} kg cannot be taken back from "
-                             f"{before / 1e6:,.1f} kg; some of it has gone out since: correct the quantity instead")
+        if came and before + step < 0:
+            raise BuiltOn(f"{harmless(str(stock), 40)}: {-step / 1e6:,.1f} kg cannot be taken back from "
+                          f"{before / 1e6:,.1f} kg; some of it has gone out since: correct the quantity instead")
         now[stock] = before + step
         yield Change(back.table, back.key, {"mg": before}, {"mg": before + step})
 
@@ -81,7 +83,7 @@ def _changed_since(con: sqlite3.Connection, change: Change, number: int) -> Entr
 
 def _refuse_sampled(con: sqlite3.Connection, entry: Entry) -> None:
     """BuiltOn when the vessel was sampled after a charge or a content that is to be taken back."""
-    for batch in dict.fromkeys(c.key["batch"] for c in entry.changes if c.table in ("charge", "content")):
+    for batch in dict.fromkeys(c.key["batch"] for c in entry.changes if _moves_oil(c)):
         for (sample,) in con.execute("SELECT sample FROM sample WHERE batch = ? ORDER BY sample", (batch,)):
             drawn = change_of("sample", (batch, sample), None, None)
             last = next(journal.on_row(con, drawn), None)
@@ -90,13 +92,34 @@ def _refuse_sampled(con: sqlite3.Connection, entry: Entry) -> None:
                               "and its results rest on this step; correct the step instead of taking it back")
 
 
+def _moves_oil(change: Change) -> bool:
+    """Does a change alter what is in a vessel? A plan, a drop or a second check does not."""
+    if change.table != "charge":
+        return change.table == "content"
+    before, after = change.before or {}, change.after or {}
+    return DONE in (before.get("state"), after.get("state")) or "actual_kg" in before.keys() & after.keys()
+
+
 def _refuse_held(con: sqlite3.Connection, entry: Entry) -> None:
-    """BuiltOn when a receipt is to be taken back whose oil is in a batch."""
+    """BuiltOn when a receipt is to be taken back whose oil is in a batch, or a heel that another batch began with."""
     for change in entry.changes:
-        if change.table != "lot" or change.before is not None:
+        if change.before is not None or change.table not in ("lot", "outcome"):
+            continue
+        if change.table == "outcome":
+            _refuse_begun(con, change)
             continue
         found = con.execute(HELD_IN, (change.key["lot"], change.key["stock"])).fetchone()
         if found:
             held = change_of("charge", tuple(found), None, None).named
             raise BuiltOn(f"{harmless(change.named, 100)} is in {harmless(held, 60)} already; correct the receipt "
                           "instead of taking it back")
+
+
+def _refuse_begun(con: sqlite3.Connection, change: Change) -> None:
+    if (change.after or {}).get("what") != LEFT:
+        return
+    found = con.execute("SELECT batch FROM content WHERE stock = ? ORDER BY batch LIMIT 1",
+                        (change.key["batch"],)).fetchone()
+    if found:
+        raise BuiltOn(f"{harmless(change.named, 100)} is the heel of {harmless(found[0], 40)} already; correct it "
+                      "instead of taking it back")

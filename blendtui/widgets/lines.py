@@ -17,7 +17,8 @@ REMARK = 13  # columns of the title line that are the remark's, whatever the scr
 class TitleLine(Canvas):
     """The screens by their numbers, the one that is open marked, and a remark at the right.
 
-    Where not all names find room, those whose numbers lie farthest from the open one's go first; the numbers stay.
+    Where not all names find room, those whose numbers lie farthest from the open one's go first; the numbers stay,
+    and so does the name of the first screen, the way home.
     """
 
     def __init__(self, names: Sequence[tuple[str, str]], current: str) -> None:
@@ -54,7 +55,7 @@ class TitleLine(Canvas):
         count = len(self.names)
         here = next(n for n, (_, name) in enumerate(self.names) if name == self.current)
         # The keys stand in a row whose ends are equally near to the hand, so the way round counts too.
-        far = sorted((n for n in range(count) if n != here),
+        far = sorted((n for n in range(1, count) if n != here),
                      key=lambda n: (-min((n - here) % count, (here - n) % count), n))
         shown = list(self.names)
         while far and sum(len(key) + len(name) + 2 - (not name) for key, name in shown) + 1 > width - REMARK:

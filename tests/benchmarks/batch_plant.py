@@ -52,6 +52,12 @@ def make(path: Path) -> None:
         Past(plant).write()
 
 
+def make_empty(path: Path) -> None:
+    """The same stocks and product, and nothing that happened."""
+    with open_plant(path, who="bench", create=True) as plant:
+        Past(plant).begin()
+
+
 class Past:
     """The quantities and lots of every tank while the past is written."""
 
@@ -62,6 +68,14 @@ class Past:
 
     def write(self) -> None:
         """All of it, in entries of some hundred changes."""
+        self.begin()
+        for first in range(0, BATCHES, TOGETHER):
+            every = range(first, first + TOGETHER)
+            self.plant.change([x for n in every for x in (*self.receipt(n), *self.batch(n))],
+                              f"batches {first + 1} to {first + TOGETHER}")
+
+    def begin(self) -> None:
+        """Stocks, and a product."""
         stocks = [Stock(code(n), name=f"Stock number {n:03}", kind="base", api_group="II", price_per_t=800.0 + n,
                         density15=855.0 + 0.2 * n, kv40=20.0 + n, kv100=4.0 + 0.06 * n) for n in range(STOCKS)]
         # Places are read from the file, so one is counted here.
@@ -71,10 +85,6 @@ class Past:
         self.plant.change([change_of("product", ("P46",), None, {
             "name": "", "grade": "ISO VG 46", "batch_kg": None, "law": "", "max_cost_per_t": None, "max_stocks": None,
             "min_share_pct": None, "only_listed": 0, "note": "", "retired": 0, "position": 1})], "P46 added")
-        for first in range(0, BATCHES, TOGETHER):
-            every = range(first, first + TOGETHER)
-            self.plant.change([x for n in every for x in (*self.receipt(n), *self.batch(n))],
-                              f"batches {first + 1} to {first + TOGETHER}")
 
     def receipt(self, n: int) -> Iterator[Change]:
         """The nth delivery: a lot of a tank that holds the last two."""

@@ -63,7 +63,7 @@ async def test_the_batch_stands_with_its_next_step_in_a_sentence(path: Path, siz
         assert rows[0][:7] == ["▸", "1", "LIGHT", "8950", "45", "L-17", "9100"]
         assert rows[1][:6] == ["2", "HEAVY", "5780", "30", "H-4", "14880"]
         assert rows[2][:6] == ["3", "PACK", "120", "0.5", "P-9", "15000"]
-        assert "Site procedure decides" in driver.page.caution.text()
+        assert "site procedure decides" in driver.page.caution.text()
         for line in driver.text().splitlines():
             assert len(line) <= size[0]
 
@@ -109,9 +109,6 @@ async def test_ten_times_the_plan_is_asked_about_and_enter_alone_does_not_do_it(
         assert driver.plant.batch("B-0001").charges[0].actual_kg is None
         await driver.press("escape")
         assert driver.plant.batch("B-0001").charges[0].actual_kg is None
-        await driver.press("enter")
-        await driver.type("1790.0001")
-        assert driver.plant.batch("B-0001").charges[0].state == "planned" or "charged" in driver.status
 
 
 async def test_what_is_questioned_is_done_with_y(path: Path) -> None:
@@ -140,7 +137,8 @@ async def test_a_lot_that_is_not_in_the_tank_is_asked_about(path: Path, size: Si
         assert "lot L-99 is not in LIGHT, which holds L-17" in driver.status
         await driver.press("y")
         assert driver.plant.batch("B-0001").charges[0].actual_lot == "L-99"
-        assert driver.page.charges.text().splitlines()[2].startswith("! 1") or "L-99" in driver.page.charges.text()
+        assert "L-99" in driver.page.charges.text()
+        assert "L-99 is recorded as typed" in driver.status
 
 
 async def test_the_second_check_is_by_another_person(path: Path, size: Size) -> None:
@@ -150,7 +148,6 @@ async def test_the_second_check_is_by_another_person(path: Path, size: Size) -> 
         await driver.press("up", "c")
         await driver.type("Anna")
         assert "the second check is by another person" in driver.status
-        await driver.type("\x15")
         await driver.press("escape", "c")
         await driver.type("ben")
         assert driver.plant.batch("B-0001").charges[0].checked_by == "ben"
@@ -210,7 +207,7 @@ async def test_keys_that_have_no_meaning_in_a_state_say_why(path: Path, size: Si
         for key, said in (("c", "is not charged yet"), ("e", "is not charged yet"), ("d", "no sample to decide on"),
                           ("v", "no sample to judge"), ("t", "is still being charged")):
             await driver.press(key)
-            assert said in driver.status or said in driver.page.status.message, key
+            assert said in driver.page.status.message, key
         await driver.press("enter")
         await driver.type("8950")
         await driver.press("up", "enter")
@@ -310,21 +307,65 @@ async def test_a_trim_is_shown_and_planned_only_when_taken(path: Path, size: Siz
     async with started(path, size, screen="0") as driver:
         await charged(driver)
         await sampled(driver, kv40="40.0")
-        if "y: it was so" in driver.status:
-            await driver.press("y")
+        assert "where 46.81 mm²/s is predicted" in driver.status
+        await driver.press("y")
         await sampled_more(driver, kv100="6.25", flash="222")
         await driver.press("d")
         await driver.type("trim")
         await driver.press("t")
         shown = driver.app.screen.page_text.text()
-        assert "TO ADD" in shown
-        assert "HEAVY" in shown or "BRIGHT" in shown
+        assert "trim 1 (least cost), from sample 1: add" in " ".join(shown.split())
+        assert "BRIGHT" in shown
         assert all(c.round == 0 for c in driver.plant.batch("B-0001").charges)
         await driver.press("y")
         added = [c for c in driver.plant.batch("B-0001").charges if c.round == 1]
         assert added
         assert "trim 1 is planned" in driver.status
-        assert f"next: trim 1, charge {floor_view.kg(added[0].plan_kg, None)[:3]}" in driver.page.head.text()
+        assert f"next: trim 1, charge {floor_view.kg(added[0].plan_kg, 5.0)} kg of {added[0].stock}" in (
+            driver.page.head.text())
+
+
+async def test_a_trim_too_many_asks_for_its_reason(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    from blendtui.desk import release
+
+    monkeypatch.setattr(release, "FREE_ROUNDS", 0)
+    async with started(path, screen="0") as driver:
+        await charged(driver)
+        await sampled(driver, kv40="40.0")
+        await driver.press("y")
+        await sampled_more(driver, kv100="6.25", flash="222")
+        await driver.press("d")
+        await driver.type("trim")
+        await driver.press("t", "y")
+        assert "why a trim 1 is made" in driver.text()
+        await driver.type("formulator was asked")
+        added = [c for c in driver.plant.batch("B-0001").charges if c.round == 1]
+        assert added
+        assert {c.why for c in added} == {"formulator was asked"}
+
+
+async def test_too_small_a_kettle_says_what_to_draw_off_first(path: Path) -> None:
+    with open_plant(path, who="carla") as plant:
+        from blendtui.desk import vessels
+
+        vessels.set_cell(plant, "K1", "capacity_l", "19700")
+    async with started(path, screen="0") as driver:
+        await charged(driver)
+        await sampled(driver, kv40="40.0")
+        await driver.press("y")
+        await sampled_more(driver, kv100="6.25", flash="222")
+        await driver.press("d")
+        await driver.type("trim")
+        await driver.press("t")
+        assert driver.app.screen.page_text.text().startswith("! draw off")
+        assert "y plan this trim" not in driver.app.screen.keys.text()
+        await driver.press("escape", "p")
+        await driver.type("rework")
+        for text in ("600", "", "H46", "no room for the trim"):
+            await driver.type(text)
+        out = driver.plant.batch("B-0001").outcomes[0]
+        assert (out.what, out.kg) == ("rework", 600.0)
+        assert out.stock in [s.code for s in driver.plant.stocks()]
 
 
 async def test_cautions_are_a_key_away_and_never_a_clearance(path: Path, size: Size) -> None:
@@ -353,7 +394,7 @@ async def test_without_a_batch_the_floor_says_where_one_is_ordered(made_once: Pa
     bare = Path(shutil.copy(made_once, tmp_path / "bare.plant"))
     async with started(bare, size, screen="0") as driver:
         assert "on the screen Batches, a takes an order" in driver.text()
-        await driver.press("enter", "l", "c", "x", "e", "R", "s", "v", "d", "t", "p", "L", "w", "k", "n", "tab", "enter")
+        await driver.press("enter", *"lcxeRsvdtpLwkn", "tab", "enter")
         assert driver.app.current_mode == "floor"
         assert driver.app.is_running
 

@@ -224,7 +224,7 @@ async def test_what_to_weigh_on_the_bench_is_shown_and_written(path: Path, size:
         name = Path(driver.page.edit.typing.text)
         assert name.name.startswith(f"{product}-bench-")
         await driver.press("enter")
-        assert driver.status == f"sheet written to {name}"
+        assert driver.status == f"plan written to {name}"
         assert "BENCH BLEND" in name.read_text(encoding="ascii")
         await driver.press("p", "w", "enter")
         assert "is there already; choose another name" in driver.page.status.message

@@ -95,6 +95,11 @@ def test_a_limit_without_a_result_blocks_release_and_is_named():
                               "has only KV40) and flash point")
 
 
+def test_an_oil_without_a_viscosity_index_is_said_to_have_none():
+    found = batch_lab.verdict(made((1, "kv40", 5.0), (1, "kv100", 1.6), (1, "flash", 230.0)), TARGET)
+    assert found.missing == ("VI (these KV40 and KV100 have none: KV100 is below 2 mm²/s, or not below KV40)",)
+
+
 def test_both_viscosities_come_from_one_sample():
     apart = made((1, "kv40", 46.0), (2, "kv100", 6.9), (2, "flash", 230.0))
     found = batch_lab.verdict(apart, TARGET)
@@ -139,7 +144,7 @@ def test_a_fresh_sample_counts_and_the_older_stays_visible():
     assert "sample 1 does not count: a newer one counts (KV40 41.00, KV100 6.900)" in found.remarks
     again = batch_lab.verdict(with_kv40(41.0, ((2, "kv40", 41.1), (2, "kv100", 6.5))), TARGET)
     assert again.decision == TRIM
-    assert again.limits[0].words.endswith("outside by 0.300 = 0.59 R (R 0.505, ASTM D445), by less than R: trim, for "
+    assert again.limits[0].words.endswith("outside by 0.300 = 0.5940 R (R 0.505, ASTM D445), by less than R: trim, for "
                                           "sample 1 was outside too")
 
 
@@ -238,6 +243,21 @@ def test_a_decision_makes_the_batch_a_measured_blend_in_the_same_step(plant):
     assert plant.revision() == before + 1
 
 
+def test_the_same_results_are_decided_on_once_or_with_a_reason(plant):
+    batch_lab.sample(plant, "B-0001")
+    values = expected(plant)
+    batch_lab.results(plant, "B-0001", 1, values)
+    batch_lab.decide(plant, "B-0001", decision="fresh", why="label unreadable", by="Carl")
+    with pytest.raises(DeskError, match=r"^sample 1 was decided already: fresh sample, Carl, .*; nothing has changed"):
+        batch_lab.decide(plant, "B-0001", decision="fresh", why="again")
+    with pytest.raises(DeskError, match="to decide otherwise on the same results type why"):
+        batch_lab.decide(plant, "B-0001")
+    assert batch_lab.decide(plant, "B-0001", why="label found").decision == RELEASE
+    batch_lab.results(plant, "B-0001", 1, {"kv40": values["kv40"]})
+    assert batch_lab.decide(plant, "B-0001").decision == RELEASE
+    assert [d.line for d in plant.batch("B-0001").decisions] == [1, 2, 3]
+
+
 def test_another_decision_than_the_results_needs_a_reason(plant):
     batch_lab.sample(plant, "B-0001")
     batch_lab.results(plant, "B-0001", 1, expected(plant))
@@ -306,6 +326,21 @@ def test_a_result_far_from_what_was_charged_is_questioned(plant, factor, words):
     assert plant.batch("B-0001").results == ()
     batch_lab.results(plant, "B-0001", 1, {"kv40": repr(factor * kv40)}, sure=True)
     assert plant.batch("B-0001").results[0].value == pytest.approx(factor * kv40)
+
+
+@pytest.mark.parametrize(("code", "off", "odd"), [
+    ("density15", 5.0, False), ("density15", 12.0, True), ("flash", 40.0, False), ("flash", -60.0, True)])
+def test_other_results_are_questioned_by_their_own_measure(plant, code, off, odd):
+    from blendtui.desk.batch_outlook import predicted
+
+    batch_lab.sample(plant, "B-0001")
+    value = repr(predicted(plant, plant.batch("B-0001"))[code] + off)
+    if odd:
+        with pytest.raises(Questioned, match="is it the right figure, sample and property"):
+            batch_lab.results(plant, "B-0001", 1, {code: value})
+    else:
+        batch_lab.results(plant, "B-0001", 1, {code: value})
+    assert len(plant.batch("B-0001").results) == (0 if odd else 1)
 
 
 def test_a_result_a_little_off_is_taken(plant):

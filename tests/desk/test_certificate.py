@@ -25,7 +25,7 @@ A,LIGHT,base,90000,800,868,30.6,5.23,214
 B,,base,90000,1100,897,490,32,300
 """
 PRODUCTS = "product,name,grade\nP100,Circulating oil <100> & more,ISO VG 100\n"
-LIMITS = "product,property,low,high\nP100,vi,95,\nP100,flash,205,\n"
+LIMITS = "product,property,low,high,guard\nP100,kv40,,,2%\nP100,vi,95,,2\nP100,flash,205,,\n"
 RESULTS = {"kv40": 101.234, "kv100": 11.456, "flash": 238.4, "density15": 880.12}
 
 
@@ -112,7 +112,7 @@ def test_who_asks_for_a_limit(plant):
     made = released(plant, target=goal)
     assert made.lines[0].bounds == ("96", "104")
     assert [x for x in certificate.notes(made) if x.startswith("Limits of")] == [
-        "Limits of grade ISO VG 100: KV at 40 °C.", "Limits of customer Möller: KV at 40 °C.",
+        "Limits of grade ISO VG 100: KV at 40 °C.", "Limits of customer Möller: KV at 40 °C.",  # no word of the guard
         "Limits of the product: viscosity index, flash point."]
 
 
@@ -138,7 +138,7 @@ def test_the_text(plant):
     assert max(map(len, lines)) <= 80
     assert lines[0] == "CERTIFICATE OF ANALYSIS"
     head = next(n for n, line in enumerate(lines) if line.startswith("property"))
-    assert lines[head + 2] == ("KV at 40 °C, mm²/s            ASTM D445              101.2         90        110")
+    assert lines[head + 2] == "KV at 40 °C, mm²/s       ASTM D445       2026-05-04     101.2       90      110"
     assert certificate.CAUTION in " ".join(line.strip() for line in lines)
     assert certificate.FROM_RESULTS in " ".join(line.strip() for line in lines)
     assert plant.last_hash() in text

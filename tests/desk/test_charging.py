@@ -13,7 +13,7 @@ from blendtui.desk.batches import Questioned
 from blendtui.desk.errors import DeskError
 from blendtui.store.batch_edits import changed, tank_parts
 from blendtui.store.batch_records import DONE, DROPPED, HEEL, PLANNED, Content, Lot, Sample
-from blendtui.store.errors import NoSuchRow
+from blendtui.store.errors import NoSuchRow, PlantError
 from blendtui.store.opening import open_plant
 from blendtui.store.plant import Plant
 from blendtui.store.records import Step
@@ -30,19 +30,19 @@ C,base,I,20000,500,1000,880,98,10.9,10,,240
 D,base,II,20000,500,1000,880,31,5.25,10,,212
 ADD,additive,,3600,,3500,986,60,7.5,,180,150
 """
-LIMITS = "product,property,low,high,guard\nP,kv40,,,1%\nP,vi,90,,\nP,flash,200,,\n"
+LIMITS = "product,property,low,high,guard\nP,kv40,49.5,52.5,0.5\nP,vi,90,,\nP,flash,200,,\n"
 SHARES = "product,of,low_pct,high_pct\nP,ADD,3.6,3.6\nP,A,,\nP,B,,\nP,C,,\n"
-PLAN = {"A": 6000.0, "B": 800.0, "C": 2840.0, "ADD": 360.0}  # KV40 54.6 by the law: inside VG 46? see LOWER
+PLAN = {"A": 6000.0, "B": 800.0, "C": 2840.0, "ADD": 360.0}  # KV40 50.78 by Refutas
 TOLERANCE = {"A": 30.0, "B": 10.0, "C": 15.0, "ADD": 4.0}
 
 
 @pytest.fixture
 def plant(tmp_path: Path) -> Iterator[Plant]:
-    """10 t of a product of KV40 50 to 60 in a vessel of 14,000 L, with all its charges to come."""
+    """10 t of a product of KV40 49.5 to 52.5 in a vessel of 14,000 L, with all its charges to come."""
     path = plant_file(tmp_path, stocks=STOCKS, products="product,grade,only_listed\nP,,yes\n",
-                      limits=LIMITS.replace("kv40,,,1%", "kv40,48,58,0.5"), shares=SHARES,
+                      limits=LIMITS, shares=SHARES,
                       vessels="vessel,capacity_l,least_fill_l,division_kg,heel_kg,heel_stock,flash_margin_c,"
-                              "flash_margin_on\nK1,14000,3000,10,,,30,2026-01-12\n")
+                              "flash_margin_on\nK1,14000,3000,10,,,30,2026-01-12\nK9,20000,,50,,,,\n")
     with open_plant(path, who="anna") as opened:
         ordered(opened, "P", PLAN, mix_c=60.0)
         rows = opened.batch("B-0001").charges
@@ -124,9 +124,9 @@ def test_ten_degrees_are_worth_0_7_percent_of_a_volume(plant):
 
 @pytest.mark.parametrize(("typed", "words"), [
     (-3.0, "-3 kg cannot have been charged; where nothing was, drop the line with its reason"),
-    (0.0, "0 kg cannot have been charged"), (float("nan"), "no mass"), (float("inf"), "no mass"), ("nan", "not a number"),
-    ("", "not a number"), ("12,5", "comma"), ("5 barrels", "unit"), ("3 drums", "comes in bulk"), ("-3 t", "cannot have"),
-    ("1e99", "is more than")])
+    (0.0, "0 kg cannot have been charged"), (float("nan"), "no mass"), (float("inf"), "no mass"), ("", "not a number"),
+    ("nan", "not a number"), ("12,5", "comma"), ("5 barrels", "unit"), ("3 drums", "comes in bulk"),
+    ("-3 t", "cannot have"), ("1e99", "is more than")])
 def test_what_is_no_mass_is_refused(plant, typed, words):
     plant.step(lambda: Step((changed(line(plant, 1), celsius=None),), "no temperature"))
     with pytest.raises((DeskError, SolverError), match=words):
@@ -155,13 +155,13 @@ def test_a_missed_or_doubled_drum_is_told(plant, typed, kg, words):
 
 # Outside tolerance
 
-def test_a_charge_outside_tolerance_goes_through_and_is_told_with_its_effects_and_its_remedy(plant):
+def test_a_charge_outside_tolerance_goes_through_and_is_told_with_its_remedy(plant):
     done = charging.charge(plant, "B-0001", 1, 6900.0, by="Ben")
     assert line(plant, 1).actual_kg == 6900.0
-    assert done.words[0] == ("OUTSIDE TOLERANCE: line 1, A: 6900 kg charged, 6000 kg planned: 900 kg (15.0 %) too much, the "
-                             "tolerance is 30.0 kg")
-    assert any(x.startswith("planned → now: KV40 ") and "VI" in x for x in done.words)
-    assert any(x.startswith("MISSES ADD 3.3 %, low 3.6 % (by 32.4 kg)") for x in done.words)
+    assert done.words[0] == ("OUTSIDE TOLERANCE: line 1, A: 6900 kg charged, 6000 kg planned: 900 kg (15.0 %) too "
+                             "much, the tolerance is 30.0 kg")
+    assert any(x.startswith("planned → now: KV40 50.78 → 48.58 mm²/s, KV100 ") for x in done.words)
+    assert "MISSES KV40 48.58 mm²/s, low 49.50" in done.words
     assert done.words[-1].startswith("would bring every limit back: ")
     assert done.remedy is not None
     # The remedy as it is recomputed: every limit with its guard, the treat rate to half a drum.
@@ -175,7 +175,7 @@ def test_a_charge_outside_tolerance_goes_through_and_is_told_with_its_effects_an
 
 def test_the_remedy_planned_anew_is_what_the_batch_then_is(plant):
     done = charging.charge(plant, "B-0001", 2, 1100.0)  # of the heavy oil 300 kg too much
-    assert any(x.startswith("MISSES KV40") or "nearer than its guard" in x for x in done.words)
+    assert "MISSES KV40 53.52 mm²/s, high 52.50" in done.words
     remedy = dict(done.remedy.additions_kg)
     made = charging.replan(plant, "B-0001", by="Ben", why="bright stock over")
     assert {c.stock: c.plan_kg for c in made.to_charge} == remedy
@@ -219,25 +219,60 @@ def test_a_stock_on_two_lines_keeps_their_proportions(plant):
     assert first.plan_kg / (first.plan_kg + last.plan_kg) == pytest.approx(5.0 / 6.0, abs=0.002)
 
 
+def test_an_ignored_heel_takes_room_and_no_part_in_the_sums(plant):
+    heel = Content("B-0002", 1, HEEL, "B", 200.0, cells=batches.cells_of(plant.stock("B")))
+    ordered(plant, "P", PLAN, name="B-0002", contents=(heel,), heel_ignored="same family")
+    made = plant.batch("B-0002")
+    ahead = charging.outlook(plant, made)
+    assert (made.head.batch_kg, ahead.total_kg) == (10200.0, 10200.0)
+    assert ahead.predicted["kv40"] == pytest.approx(50.77501445814014, rel=1e-9)  # as without a heel
+    done = charging.charge(plant, "B-0002", 2, 1100.0)
+    assert done.remedy.total_kg == pytest.approx(10000.0, abs=5.0)  # of what the sums are about
+    assert charging.replan(plant, "B-0002").head.batch_kg == pytest.approx(10200.0, abs=5.0)
+
+
+def test_the_remedy_is_weighed_as_the_vessel_weighs(plant):
+    ordered(plant, "P", PLAN, name="B-0002", vessel="K9")
+    done = charging.charge(plant, "B-0002", 2, 1100.0)
+    steps = {code: kg % 50.0 for code, kg in done.remedy.additions_kg.items() if code != "ADD"}
+    assert steps
+    assert set(steps.values()) == {0.0}
+
+
+def test_a_new_oil_comes_before_what_is_charged_after_it(plant):
+    """With C gone the remedy needs another oil, and it goes in before the package."""
+    charging.charge(plant, "B-0001", 1, 6900.0)
+    charging.miss(plant, "B-0001", 2, why="pump down")
+    made = charging.replan(plant, "B-0001")
+    to_come = [c.stock for c in made.to_charge]
+    assert to_come.index("B") < to_come.index("ADD")
+    assert [c.position for c in made.to_charge] == sorted({c.position for c in made.to_charge})
+    assert min(c.position for c in made.to_charge) > line(plant, 1).position
+    fresh = next(c for c in made.to_charge if c.stock == "B")
+    assert (fresh.line > 4, fresh.round, fresh.why) == (True, 0, "planned anew by anna")
+    assert fresh.tolerance_kg == max(0.005 * fresh.plan_kg, 5.0)
+    assert charging.outlook(plant, made).good
+
+
 def test_others_who_lose_their_promise_are_named(plant):
     ordered(plant, "P", {"D": 1000.0, "C": 16000.0}, name="B-0002")
     done = charging.charge(plant, "B-0001", 3, 4000.0)
-    assert any(x.startswith("C: 500 kg that were promised to B-0002 are no longer there") for x in done.words), done.words
+    assert any(x.startswith("C: 500 kg that were promised to B-0002 are no longer there") for x in done.words)
 
 
 # What is questioned
 
 @pytest.mark.parametrize(("number", "kg", "said", "words"), [
     (2, 8000.0, {}, "8000 kg is 10 times the planned 800 kg: has the point slipped by one place"),
-    (2, 80.0, {}, "80 kg is 0.10 times the planned 800 kg: has the point slipped"),
-    (2, 4500.0, {}, r"4500 kg is 5\.6 times the planned 800 kg$"),
+    (2, 80.0, {}, "80.0 kg is 0.10 times the planned 800 kg: has the point slipped"),
+    (2, 4500.0, {}, r"4500 kg is 5\.6 times the planned 800 kg\.$"),
     (3, 20500.0, {}, "by the book the tank holds 20000 kg, less than the 20500 kg typed; dip it"),
-    (1, 13000.0, {}, "the vessel K1 would hold 15462 L at 60 °C, and it takes 14000 L"),
+    (1, 13000.0, {}, "the vessel K1 would hold 15486 L at 60 °C, and it takes 14000 L"),
     (1, 6000.0, {"celsius": 185.0}, "A at 185 °C is past the site's margin of 30 °C to it .*: site procedure decides"),
     (1, 6000.0, {"celsius": 185.0}, "no temperature of a tank or drum"),
     (1, 6000.0, {"celsius": -40.0}, "no temperature of a tank or drum"),
     (1, 6000.0, {"stock": "B", "why": "x"}, "B in place of A: it is on the list of P"),
-    (1, 6000.0, {"stock": "D", "why": "x"}, "D in place of A: NOT on the list of P; the same viscosity is not permission")])
+    (1, 6000.0, {"stock": "D", "why": "x"}, "D in place of A: NOT on the list of P; the same viscosity is not perm")])
 def test_what_is_unlikely_is_questioned_and_goes_through(plant, number, kg, said, words):
     with pytest.raises(Questioned, match=words):
         charging.charge(plant, "B-0001", number, kg, **said)
@@ -291,7 +326,7 @@ def test_drums_of_one_lot_leave_the_others(plant):
 
 
 def test_another_stock_is_recorded_only_with_its_reason(plant):
-    with pytest.raises(DeskError, match="^D in place of A is recorded only with its reason; type why$"):
+    with pytest.raises(DeskError, match=r"^D in place of A is recorded only with its reason; type why$"):
         charging.charge(plant, "B-0001", 1, 6000.0, stock="D", sure=True)
     with pytest.raises(DeskError, match="the plant has no stock 'ZZ'"):
         charging.charge(plant, "B-0001", 1, 6000.0, stock="ZZ", sure=True)
@@ -307,14 +342,41 @@ def test_another_stock_is_recorded_only_with_its_reason(plant):
 def test_a_line_that_is_charged_names_who_did_it(plant):
     charging.charge(plant, "B-0001", 1, 6000.0, by="Ben")
     when = batches.when(line(plant, 1).at)
-    with pytest.raises(DeskError, match=f"^Ben charged 6000 kg of A on line 1 at {when}; to mend it: blendtui batch correct "
-                                        "B-0001 1 KG --why TEXT$"):
+    with pytest.raises(DeskError, match=f"^Ben charged 6000 kg of A on line 1 at {when}; to mend it: blendtui batch "
+                                        "correct B-0001 1 KG --why TEXT$"):
         charging.charge(plant, "B-0001", 1, 6000.0, sure=True)
     assert plant.stock("A").on_hand_kg == 54000.0
 
 
+def test_two_at_the_same_line_the_second_is_told_who_was_quicker(plant):
+    with open_plant(plant.path, who="ben") as other:
+        assert other.batch("B-0001").to_charge[0].line == 1
+        charging.charge(plant, "B-0001", 1, 6000.0)
+        with pytest.raises(DeskError, match="anna charged 6000 kg of A on line 1"):
+            charging.charge(other, "B-0001", 1, 6010.0)
+        charging.charge(other, "B-0001", 2, 800.0)
+    assert (plant.stock("A").on_hand_kg, plant.stock("B").on_hand_kg) == (54000.0, 59200.0)
+    assert [c.by for c in plant.batch("B-0001").charged] == ["anna", "ben"]
+    assert plant.verify() is None
+
+
+def test_a_plan_that_was_solved_for_another_state_is_not_taken(plant, monkeypatch):
+    charging.charge(plant, "B-0001", 2, 1100.0)
+    solve = charging.with_remedy
+
+    def slow(*given: object) -> object:
+        found = solve(*given)
+        charging.charge(plant, "B-0001", 1, 6000.0)
+        return found
+
+    monkeypatch.setattr(charging, "with_remedy", slow)
+    with pytest.raises(DeskError, match="B-0001 has changed meanwhile; look at it again and plan anew"):
+        charging.replan(plant, "B-0001")
+    assert plant.batch("B-0001").head.batch_kg == 10000.0
+
+
 def test_lines_and_batches_that_are_not_there(plant):
-    with pytest.raises(DeskError, match="^B-0001 has no line 9; its lines are 1 A, 2 B, 3 C, 4 ADD$"):
+    with pytest.raises(DeskError, match=r"^B-0001 has no line 9; its lines are 1 A, 2 B, 3 C, 4 ADD$"):
         charging.charge(plant, "B-0001", 9, 10.0)
     with pytest.raises(NoSuchRow, match="no batch 'B-7'; the latest are B-0001"):
         charging.charge(plant, "B-7", 1, 10.0)
@@ -340,7 +402,7 @@ def test_a_charge_after_the_sample_says_that_the_sample_is_old(plant):
     charging.charge(plant, "B-0001", 1, 6000.0)
     put(plant, Sample("B-0001", 1, 0, at(9), "carl"))
     done = charging.charge(plant, "B-0001", 2, 800.0)
-    assert any(x.startswith("sample 1 was drawn before this charge and no longer speaks of the batch") for x in done.words)
+    assert any(x.startswith("sample 1 was drawn before this charge and no longer speaks") for x in done.words)
 
 
 def test_a_clock_that_was_set_back_is_questioned(plant):
@@ -366,7 +428,7 @@ def test_a_batch_that_cannot_be_predicted_is_charged_all_the_same(plant):
 def test_a_correction_moves_the_tank_by_the_difference_and_clears_the_check(plant):
     charging.charge(plant, "B-0001", 1, 6000.0, by="anna")
     charging.check(plant, "B-0001", 1, by="Ben")
-    with pytest.raises(DeskError, match="^a correction needs its reason"):
+    with pytest.raises(DeskError, match=r"^a correction needs its reason"):
         charging.correct(plant, "B-0001", 1, 6100.0)
     done = charging.correct(plant, "B-0001", 1, 6100.0, why="read again", by="Cara")
     row = line(plant, 1)
@@ -379,6 +441,20 @@ def test_a_correction_moves_the_tank_by_the_difference_and_clears_the_check(plan
         charging.correct(plant, "B-0001", 1, 6100.0, why="again")
     entry = plant.journal(1)[0]
     assert (entry.what, entry.why) == ("B-0001 line 1: 6000 kg corrected to 6100 kg", "read again")
+
+
+def test_a_reason_that_was_missing_is_recorded_and_the_check_stands(plant):
+    due = "its reason is due before a release; type it with the charge, or correct the line with the same kg"
+    assert charging.charge(plant, "B-0001", 1, 6100.0).words[1] == due
+    assert due not in charging.charge(plant, "B-0001", 2, 900.0, why="valve stuck").words
+    charging.check(plant, "B-0001", 1, by="Ben")
+    done = charging.correct(plant, "B-0001", 1, 6100.0, why="meter read late")
+    assert done.words == ("line 1, A: its reason is recorded",)
+    row = line(plant, 1)
+    assert (row.why, row.checked_by, row.by) == ("meter read late", "Ben", "anna")
+    assert plant.stock("A").on_hand_kg == 53900.0
+    charging.correct(plant, "B-0001", 1, 6120.0, why="read again", by="Cara")
+    assert line(plant, 1).why == "corrected from 6100 kg (anna): read again; before: meter read late"
 
 
 def test_a_correction_is_questioned_as_a_charge_is(plant):
@@ -416,13 +492,13 @@ def test_the_lot_alone_can_be_corrected(plant):
 @pytest.mark.parametrize("who", ["anna", "Anna ", " A N N A"])
 def test_the_second_check_is_by_another_person(plant, who):
     charging.charge(plant, "B-0001", 1, 6000.0, by="anna")
-    with pytest.raises(DeskError, match="^line 1 was entered by anna: the second check is by another person$"):
+    with pytest.raises(DeskError, match=r"^line 1 was entered by anna: the second check is by another person$"):
         charging.check(plant, "B-0001", 1, by=who)
     assert line(plant, 1).checked_by == ""
     row = charging.check(plant, "B-0001", 1, by="Ben")
     assert row == line(plant, 1)
     assert (row.checked_by, row.checked_at >= row.at) == ("Ben", True)
-    with pytest.raises(DeskError, match="line 1 was checked by Ben at .* already"):
+    with pytest.raises(DeskError, match=r"line 1 was checked by Ben at .* already"):
         charging.check(plant, "B-0001", 1, by="Cara")
 
 
@@ -436,7 +512,7 @@ def test_the_login_name_counts_where_no_name_is_typed(plant):
 
 
 def test_a_missed_line_is_dropped_with_its_reason_and_its_effects(plant):
-    with pytest.raises(DeskError, match="^a line is dropped only with its reason"):
+    with pytest.raises(DeskError, match=r"^a line is dropped only with its reason"):
         charging.miss(plant, "B-0001", 4)
     done = charging.miss(plant, "B-0001", 4, why="no drums on the yard", by="Ben")
     assert (line(plant, 4).state, line(plant, 4).why) == (DROPPED, "no drums on the yard (Ben)")
@@ -446,10 +522,10 @@ def test_a_missed_line_is_dropped_with_its_reason_and_its_effects(plant):
     assert done.remedy.additions_kg["ADD"] == 360.0
     with pytest.raises(DeskError, match="line 4 was dropped already"):
         charging.miss(plant, "B-0001", 4, why="again")
-    with pytest.raises(Questioned, match=r"line 4 was dropped \(no drums on the yard \(Ben\)\); is it charged after all"):
+    with pytest.raises(Questioned, match=r"line 4 was dropped \(no drums on the yard \(Ben\)\); is it charged"):
         charging.charge(plant, "B-0001", 4, "2 drums", lot="D1")
     charging.charge(plant, "B-0001", 4, "2 drums", lot="D1", sure=True)
-    with pytest.raises(DeskError, match="charged 360 kg of ADD on line 4 .*: it cannot be dropped; correct it instead"):
+    with pytest.raises(DeskError, match=r"charged 360 kg of ADD on line 4 .*: it cannot be dropped; correct it"):
         charging.miss(plant, "B-0001", 4, why="x")
 
 
@@ -507,3 +583,39 @@ def test_random_overcharges_are_put_right_or_said_not_to_be(plant):
         plant.step(lambda made=head: Step(tuple(changed(c, state=DROPPED) for c in plant.batch(made.name).to_charge),
                                           "emptied"))
     assert given >= 6
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_whatever_is_done_the_book_and_the_batch_say_the_same(plant, seed):
+    """Random steps, refused ones too: tanks, promises and vessel stay sums of each other, and the record verifies."""
+    import random
+
+    rng = random.Random(seed)
+    start = {s.code: s.on_hand_kg for s in plant.stocks()}
+    refused = done = 0
+    for _ in range(25):
+        row = rng.choice(plant.batch("B-0001").charges)
+        kg, sure = round(row.plan_kg * rng.choice((1.0, 1.001, 1.2, 0.5, 10.0, -1.0)), 3), rng.random() < 0.4
+        step = plant.undo if done and rng.random() < 0.15 else rng.choice((
+            lambda: charging.charge(plant, "B-0001", row.line, kg, sure=sure),  # noqa: B023
+            lambda: charging.correct(plant, "B-0001", row.line, kg, why="x", sure=sure),  # noqa: B023
+            lambda: charging.correct(plant, "B-0001", row.line, 0, why="x", sure=sure),  # noqa: B023
+            lambda: charging.miss(plant, "B-0001", row.line, why="x"),  # noqa: B023
+            lambda: charging.check(plant, "B-0001", row.line, by="Ben"),  # noqa: B023
+            lambda: charging.replan(plant, "B-0001")))
+        before = plant.revision()
+        try:
+            step()
+            done += -1 if step == plant.undo else 1
+        except (DeskError, PlantError):
+            refused += 1
+            assert plant.revision() == before
+        made = plant.batch("B-0001")
+        for stock in plant.stocks():
+            charged = sum(c.actual_kg or 0.0 for c in made.charged if c.stock == stock.code)
+            assert stock.on_hand_kg == pytest.approx(start[stock.code] - charged, abs=1e-6)
+            assert stock.reserved_kg == pytest.approx(sum(c.plan_kg for c in made.to_charge if c.stock == stock.code))
+        assert made.in_vessel_kg == pytest.approx(sum(c.actual_kg or 0.0 for c in made.charged))
+        assert all(c.checked_by == "" or not batches.same_person(c.by, c.checked_by) for c in made.charges)
+    assert 0 < refused < 25
+    assert plant.verify() is None

@@ -8,12 +8,14 @@ from pathlib import Path
 
 import pytest
 
+from blendtui.cli import LONGEST
 from blendtui.desk import batches, lab, release, targets
 from blendtui.desk.batches import Questioned
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import open_plant
-from blendtui.store.batch_edits import changed
-from blendtui.store.batch_records import DROPPED, RELEASED, Charge, Content, Decision
+from blendtui.desk.topping_up import EARLIER
+from blendtui.store.batch_edits import changed, lots_of
+from blendtui.store.batch_records import DONE, DROPPED, RELEASED, Charge, Content, Decision
 from blendtui.store.errors import PlantError
 from blendtui.store.plant import Plant
 from blendtui.store.records import Step
@@ -108,6 +110,20 @@ def test_a_lot_that_was_typed_will_do(done):
     charge = done.batch("B-0001").charges[0]
     done.step(lambda: Step((changed(charge, actual_lot="typed 12"),), "lot"))
     assert lacks(done) == ()
+
+
+def test_oil_from_before_the_first_receipt_has_no_lot(done):
+    """As a receipt leaves a tank: part of it is of the lot that came, part of what was there before."""
+    def now_holds(lots: dict[str, float]) -> None:
+        row = done.batch("B-0001").charges[0]
+        done.step(lambda: Step((*lots_of(replace(row, lots=lots), row), changed(row, actual_lot="")), "lots"))
+
+    now_holds({EARLIER: 1.0})
+    assert lacks(done) == ("lot not known: line 1 (A): receive it or type it as a correction of the charge",)
+    now_holds({EARLIER: 0.25, "L7": 0.75})
+    assert lacks(done) == ()
+    assert release.remarks(done, done.batch("B-0001")) == (
+        "line 1 (A): 25 % of it is from before the tank's first receipt, and of no known lot",)
 
 
 def test_a_reason_settles_a_charge_outside_its_tolerance(plant):
@@ -236,8 +252,13 @@ def test_a_batch_without_a_charge_is_never_released(plant):
 
 
 def test_a_long_card_is_told_in_one_line_that_a_terminal_shows(plant):
-    """Thirty charges without a check: each named, and short enough for one message of the command line."""
-    ordered(plant, "P100", {f"S{n}": 10.0 for n in range(1, 31)})
+    """Twenty charges that lack everything: each named, and short enough for one message of the command line."""
+    ordered(plant, "P100", {"A": 10.0})
+    line = plant.batch("B-0001").charges[0]
+    done = replace(line, state=DONE, plan_kg=20.0, actual_kg=20.0, at=at(8), by="anna")
+    put(plant, *(replace(done, line=n, stock=f"OIL{n:02d}") for n in range(2, 21)))
     words = "; ".join(lacks(plant))
-    assert all(f"line {n} (S{n}, " in words for n in range(1, 31))
-    assert len(words) < 900
+    each = ", ".join(f"{n} (OIL{n:02d})" for n in range(2, 21))
+    assert words.count(each) == 2
+    assert f"no second check: lines {each}; lot not known: lines {each}: receive it" in words
+    assert len(words) < LONGEST

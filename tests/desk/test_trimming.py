@@ -9,12 +9,12 @@ from pathlib import Path
 
 import pytest
 
-from blendtui.desk import release, targets, trimming
+from blendtui.desk import batches, release, targets, trimming
 from blendtui.desk.batches import Questioned
 from blendtui.desk.errors import DeskError
 from blendtui.desk.plant import open_plant
-from blendtui.desk.stocks import edit_cell
-from blendtui.store.batch_records import REWORK
+from blendtui.desk.stocks import edit_cell, retire_stock
+from blendtui.store.batch_records import HEEL, REWORK, Content
 from blendtui.store.errors import PlantError
 from blendtui.store.plant import Plant
 from solver.recipe import evaluate
@@ -159,6 +159,17 @@ def test_only_what_the_product_lists(plant):
         trimming.propose(plant, "B-0001", aim="price")
 
 
+def test_a_stock_that_went_out_of_use_since_is_not_added(plant):
+    """The formula of the batch names it still; the product of today does not."""
+    measured(plant, BATCH)
+    targets.drop_rule(plant, "P100", "D")
+    retire_stock(plant, "D")
+    found = trimming.propose(plant, "B-0001", aim="mass")
+    assert set(found.trim.additions_kg) == {"B"}
+    with pytest.raises(DeskError, match="no stock D; the plant has A, B, N6, X, P"):
+        trimming.propose(plant, "B-0001", stocks=["D"])
+
+
 def test_whole_drums(plant):
     measured(plant, BATCH)
     found = trimming.propose(plant, "B-0001", stocks=["D"])
@@ -211,6 +222,33 @@ def test_every_limit_is_met_on_recomputation(plant):
     assert tried >= 4
 
 
+def test_oils_that_are_in_it_come_before_others(plant):
+    """Where a product allows only so many stocks, and the cheapest trim would bring in one more."""
+    goal = replace(targets.target_of(plant, "P100"), max_stocks=2)
+    ordered(plant, "P100", {"A": 11500.0, "B": 8500.0}, target=goal)
+    all_charged(plant)
+    sampled(plant, 1, BATCH, decision="trim")
+    found = trimming.propose(plant, "B-0001")
+    assert (set(found.trim.additions_kg), found.trim.broken, found.questions) == ({"B"}, (), ())
+    (beside,) = (x for x in found.words if x.startswith("only oils that are in it are added, for the product allows 2"))
+    assert "of its whole list it would be B 73.7 kg, D 1260 kg for 1341.07" in beside
+    # Who names another oil has it, and is asked.
+    named = trimming.propose(plant, "B-0001", stocks=["D"])
+    assert set(named.trim.additions_kg) == {"D"}
+    assert any("the product allows 2: the formulator has to agree" in x for x in named.questions)
+
+
+def test_a_heel_is_no_stock_of_the_recipe(plant):
+    goal = replace(targets.target_of(plant, "P100"), max_stocks=2)
+    heel = Content("B-0001", 1, HEEL, "N6", 200.0, cells=batches.cells_of(plant.stock("N6")))
+    ordered(plant, "P100", {"A": 11300.0, "B": 8500.0}, target=goal, contents=(heel,))
+    all_charged(plant)
+    sampled(plant, 1, BATCH, decision="trim")
+    found = trimming.propose(plant, "B-0001")
+    assert {s.code: part for s, part in found.batch.contents}["N6"] == pytest.approx(0.01)
+    assert found.trim.broken == ()
+
+
 # Unwise
 
 def test_trimming_noise(plant):
@@ -248,6 +286,21 @@ def test_an_absurd_trim_is_asked_about(plant):
         trimming.take(plant, "B-0001", stocks=["N6"])
 
 
+def test_guards_give_way_where_no_trim_keeps_them(plant):
+    """They are for predictions: KV40 between 100 and 101 with a guard of 2 % leaves nothing, the limits do."""
+    goal = targets.target_of(plant, "P100")
+    goal = replace(goal, limits=(Limit("kv40", 100.0, 101.0, guard_pct=2.0), Limit("flash", 190.0, None)))
+    ordered(plant, "P100", {"A": 11500.0, "B": 8500.0}, target=goal)
+    all_charged(plant)
+    sampled(plant, 1, BATCH, decision="trim")
+    found = trimming.propose(plant, "B-0001", aim="mass")
+    assert set(found.trim.additions_kg) == {"B"}
+    assert found.questions == (trimming.UNGUARDED,)
+    assert next(e for e in found.effects if e.property == "kv40").after == pytest.approx(100.0, rel=1e-5)
+    with pytest.raises(Questioned, match="no trim keeps the product's guards: this one meets the limits themselves"):
+        trimming.take(plant, "B-0001", aim="mass")
+
+
 # Room
 
 def test_too_little_room_says_how_much_to_draw_off(plant):
@@ -257,6 +310,7 @@ def test_too_little_room_says_how_much_to_draw_off(plant):
     assert found.trim.drawn_kg > 1500.0
     assert found.trim.litres <= 0.9 * 24000.0 * (1.0 + 1e-9)
     assert any(x.startswith("draw off ") for x in found.words)
+    assert any(f"blendtui batch draw B-0001 {found.trim.drawn_kg:g} --as rework" in x for x in found.words)
     with pytest.raises(DeskError, match=r"the room is too small: draw off \d+ kg first, which goes to rework"):
         trimming.take(plant, "B-0001", stocks=["B"])
     drawn(plant, REWORK, found.trim.drawn_kg)

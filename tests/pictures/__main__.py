@@ -7,8 +7,9 @@ from __future__ import annotations
 
 import asyncio
 import tempfile
-from datetime import date
+from datetime import UTC, date, datetime, tzinfo
 from pathlib import Path
+from unittest.mock import patch
 
 from blendtui.app import Console
 from blendtui.desk.plant import import_folder, open_plant
@@ -20,7 +21,33 @@ TODAY = date(2026, 6, 1)
 # Name of the picture → keys that lead there from the start.
 SHOTS = {"stocks": [], "targets": ["2", "down"], "recipe": ["3", "right_square_bracket"],
          "why": ["5", *["right_square_bracket"] * 3], "choices": ["6", "right_square_bracket"],
-         "chance": ["7", "right_square_bracket"], "lab": ["8"], "help": ["question_mark"]}
+         "chance": ["7", "right_square_bracket"], "lab": ["8"], "batches": ["9"], "floor": ["0"],
+         "help": ["question_mark"]}
+WITH_BATCHES = ("batches", "floor")
+
+
+class Noon(datetime):
+    """A clock that stands still."""
+
+    @classmethod
+    def now(cls, tz: tzinfo | None = None) -> datetime:
+        """Noon of the fixed day."""
+        return datetime(TODAY.year, TODAY.month, TODAY.day, 12, tzinfo=UTC).astimezone(tz)
+
+
+def order(plant_file: Path) -> None:
+    """Two batches: one that is planned, one that is being charged."""
+    from blendtui.desk import charging, orders
+
+    with open_plant(plant_file, who="operator") as plant, patch("blendtui.store.database.datetime", Noon):
+        orders.take(plant, orders.Order("GEAR-220", 20000.0, "T9", customer="Southern Gears", order_no="S-30",
+                                        tank_c={"": 45.0}), sure=True)
+        made = orders.take(plant, orders.Order("HYD-46", 12000.0, "K1", customer="Northern Presses", order_no="N-881",
+                                               tank_c={"": 45.0}), sure=True)
+        first, second = made.charges[:2]
+        charging.charge(plant, made.name, first.line, first.plan_kg, lot="24-0173", sure=True)
+        charging.check(plant, made.name, first.line, by="ines")
+        charging.charge(plant, made.name, second.line, second.plan_kg, lot="24-0166", sure=True)
 
 
 async def draw(name: str, keys: list[str], plant_file: Path) -> None:
@@ -45,6 +72,8 @@ def main() -> None:
         for name, keys in SHOTS.items():
             plant_file = Path(folder) / f"{name}.plant"
             import_folder(EXAMPLE, plant_file, who="operator")
+            if name in WITH_BATCHES:
+                order(plant_file)
             asyncio.run(draw(name, keys, plant_file))
             print(HERE / f"{name}.svg")
 

@@ -9,10 +9,10 @@ import numpy as np
 import pytest
 
 from solver.errors import StockError, TargetError
-from solver.recipe import design, evaluate
+from solver.recipe import design
 from solver.stocks import Stock
-from solver.target import Limit, ShareRule, Target
-from solver.trim import ABSURD, Trim, additions, effect, with_and_without
+from solver.target import Excess, Limit, ShareRule, Target
+from solver.trim import ABSURD, Trim, additions, effect
 from tests.solver.trim_cases import line, read, w_of
 
 BRIGHT = Stock("BRIGHT", on_hand_kg=5e4, price_per_t=1200.0, density15=897.0, kv40=490.0, kv100=32.0,
@@ -322,8 +322,10 @@ def test_where_nothing_would_do_the_nearest_is_told() -> None:
     trim = additions([BATCH], [LIGHT], AT_LEAST_100)
     assert trim.status == "infeasible"
     assert trim.additions_kg is None
-    assert said(trim) == ("no additions of the oils allowed bring every limit inside; with the vessel at 20,000 kg: no "
-                          "blend meets every limit; the nearest misses: KV at 40 °C 92 is 8 below the 100 that is held")
+    assert trim.notes == (
+        "no additions of the oils allowed bring every limit inside; with the vessel at 20,000 kg: no blend meets every "
+        "limit; the nearest misses: KV at 40 °C 92 is 8 below the 100 that is held",
+        "without KV at 40 °C of at least 100 mm²/s what is in it already would do")
 
 
 def test_vi_and_flash_are_told_before_and_after() -> None:
@@ -363,21 +365,28 @@ def test_an_oil_of_unknown_density_is_left_out_where_litres_count() -> None:
     assert [(x.stock, x.cell) for x in trim.recipe.left_out] == [("BRIGHT", "density15")]
 
 
-# What is in the vessel
+def test_with_what_the_laboratory_taught_it_is_still_inside() -> None:
+    """An excess between the batch's own oil as charged and the bright stock bends the rows; the end is recomputed."""
+    taught = Excess("HEAVY", "BRIGHT", "refutas", {40.0: (1.2,), 100.0: (0.8,)}, version="pair 1")
+    poured = [replace(HEAVY, code="C1", in_vessel_kg=14e3, contents=((HEAVY, 1.0),)),
+              replace(LIGHT, code="C2", in_vessel_kg=6e3, contents=((LIGHT, 1.0),))]
+    goal = Target("t", (Limit("kv40", 100.0, 110.0),), lessons=(taught,))
+    trim, plain = (additions(poured, [BRIGHT], replace(goal, lessons=lessons)) for lessons in ((taught,), ()))
+    assert trim.status == "stopped"
+    assert made(trim)["BRIGHT"] < 0.97 * made(plain)["BRIGHT"]
+    masses = {"C1": 14e3, "C2": 6e3, **made(trim)}
+    total = sum(masses.values())
+    part = {code: kg / total for code, kg in masses.items()}
+    index = sum(part[s.code] * refutas(s.kv40 or 0.0) for s in (*poured, BRIGHT)) + 1.2 * part["C1"] * part["BRIGHT"]
+    assert index == pytest.approx(refutas(100.0), abs=1e-5)
+    assert "with what the laboratory has taught the limits bend: found step by step, not proven" in trim.notes
 
-def test_effect_is_the_blend_of_what_is_there() -> None:
-    charges = [replace(HEAVY, in_vessel_kg=6e3), replace(LIGHT, in_vessel_kg=4e3)]
-    assert effect(charges, law="wright-mass") == pytest.approx(
-        evaluate([HEAVY, LIGHT], {"HEAVY": 0.6, "LIGHT": 0.4}, law="wright-mass").predicted)
-    assert effect([]) == {}
 
-
-@pytest.mark.parametrize(("part", "per_cent"), [(0.01, 1.8), (0.05, 9.5)])
-def test_a_heel_of_vg_320_in_vg_32_moves_it_as_practice_has_it(part: float, per_cent: float) -> None:
-    """Common practice (a plant's rule of thumb): 1 % left in moves KV40 +1.8 %, 5 % +9.5 %."""
-    heel = Stock("HEEL", kv40=320.0, kv100=24.0, density15=895.0, in_vessel_kg=part * 1e4)
-    oil = Stock("OIL", kv40=32.0, kv100=5.4, density15=870.0, in_vessel_kg=(1.0 - part) * 1e4)
-    with_heel, without = with_and_without([heel, oil], ["HEEL"])
-    assert with_heel["kv40"] is not None
-    assert without["kv40"] == pytest.approx(32.0)
-    assert 100.0 * (with_heel["kv40"] / 32.0 - 1.0) == pytest.approx(per_cent, abs=0.06)
+def test_with_nothing_in_the_vessel_yet_it_is_the_recipe() -> None:
+    target = Target("new", (Limit("kv40", 61.0, 75.0), Limit("vi", 97.0)), batch_kg=18e3)
+    trim, recipe = additions([], [BRIGHT, HEAVY, LIGHT], target, total_kg=18e3), design([BRIGHT, HEAVY, LIGHT], target)
+    assert trim.cost is not None
+    assert trim.cost / 18.0 == pytest.approx(recipe.cost_per_t, rel=3e-6)
+    assert (trim.before, trim.absurd) == ({}, False)
+    with pytest.raises(TargetError, match="nothing is in the vessel; design a recipe, or give the total that is asked"):
+        additions([], [BRIGHT], AT_LEAST_100)

@@ -11,7 +11,7 @@ from pathlib import Path
 
 import pytest
 
-from blendtui.store import database, edits, places, restoring
+from blendtui.store import connect, database, edits, places, restoring
 from blendtui.store.backup import is_plant
 from blendtui.store.edits import stock_cell
 from blendtui.store.errors import NetworkPlace, NewerPlant, NoPlant, NotAPlant, PlantBusy, PlantError, ReadOnlyPlant
@@ -151,6 +151,18 @@ def test_a_disk_that_fills_up_leaves_nothing(plant, tmp_path, monkeypatch):
         plant.backup(tmp_path / "b.plant")
     assert "b.plant" not in names(tmp_path)
     assert not [n for n in names(tmp_path) if n.startswith(".")]
+
+
+def test_one_who_reads_a_copy_in_memory_can_make_it(path, tmp_path, monkeypatch):
+    monkeypatch.setattr(database, "writable", lambda place: place.name != "small.plant")
+    monkeypatch.setattr(connect, "to_read", lambda place, shown, timeout: (
+        connect._copy(place, timeout), connect.fingerprint(place)))
+    with open_plant(path, who="gast") as plant:
+        state = plant.state()
+        plant.backup(tmp_path / "b.plant")
+    with open_plant(tmp_path / "b.plant", who="gast") as copy:
+        assert (copy.state(), copy.verify(), copy.read_only) == (state, None, False)
+        price(copy, 700.0)
 
 
 # Restore
@@ -370,6 +382,30 @@ def test_a_restore_that_is_killed_halfway_leaves_the_plant_as_it_was(saved, path
     with open_plant(path) as plant:
         assert (plant.state(), plant.last_hash(), plant.verify()) == (state, last, None)
         assert plant._database.con.execute("PRAGMA journal_mode").fetchone()[0] == "wal"
+
+
+def test_who_opens_the_plant_meanwhile_waits_and_finds_it_restored(saved, path, monkeypatch):
+    with open_plant(path, who="anna") as plant:
+        price(plant, 700.0)
+    script = ("import sys; print(flush=True); from blendtui.store.opening import open_plant\n"
+              "plant = open_plant(sys.argv[1], who='bertil', timeout=30.0); print(plant.stock('A').price_per_t)\n"
+              "from tests.store.test_backup import price; price(plant, 650.0); print(plant.verify())")
+    over, waiting = restoring._overwrite, []
+
+    def slow(con, temporary):
+        waiting.append(subprocess.Popen([sys.executable, "-c", script, str(path)], stdout=subprocess.PIPE, text=True,
+                                        cwd=Path(__file__).parents[2]))
+        waiting[0].stdout.readline()
+        with pytest.raises(subprocess.TimeoutExpired):
+            waiting[0].wait(2.0)
+        over(con, temporary)
+
+    monkeypatch.setattr(restoring, "_overwrite", slow)
+    restore(saved, path, who="carl", replace_newer=True)
+    said, _ = waiting[0].communicate(timeout=30.0)
+    assert said.split() == ["800.0", "None"]
+    with open_plant(path) as plant:
+        assert (plant.stock("A").price_per_t, plant.verify()) == (650.0, None)
 
 
 def test_what_is_a_plant(saved, tmp_path):

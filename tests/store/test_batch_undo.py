@@ -5,7 +5,7 @@ from __future__ import annotations
 import pytest
 
 from blendtui.store.batch_edits import added, changed
-from blendtui.store.batch_records import CANCELLED, REWORKED, Decision
+from blendtui.store.batch_records import CANCELLED, HEEL, LEFT, REWORKED, Content, Decision, Outcome
 from blendtui.store.edits import stock_cell
 from blendtui.store.errors import BuiltOn, ChangedSince, Closed, PlantError
 from blendtui.store.opening import open_plant
@@ -97,9 +97,19 @@ def test_a_quantity_that_nobody_knows_any_more_stays_unknown(plant, other):
 def test_a_receipt_that_has_gone_out_is_not_taken_back(plant, other):
     receive(plant, "A", "L1", 5000.0)
     other.change([stock_cell(other.stock("A"), "on_hand_kg", 4000.0)], "counted")
-    with pytest.raises(PlantError, match=r"^A: 5,000\.0 kg cannot be taken back from 4,000\.0 kg; some of it has gone"):
+    with pytest.raises(BuiltOn, match=r"^A: 5,000\.0 kg cannot be taken back from 4,000\.0 kg; some of it has gone"):
         plant.undo()
     assert on_hand(plant) == 4000.0
+
+
+def test_a_charge_of_more_than_the_book_says_goes_back_and_forth(plant):
+    order(plant, "B-0001", ("A", 500.0))
+    plant.change([stock_cell(plant.stock("A"), "on_hand_kg", 500.0)], "counted")
+    charge(plant, "B-0001", 1, 520.0)
+    plant.undo()
+    assert on_hand(plant) == 500.0
+    plant.redo()
+    assert on_hand(plant) == -20.0
 
 
 def test_a_quantity_that_was_typed_still_goes_back_only_to_what_it_was(plant, other):
@@ -135,6 +145,27 @@ def test_a_charge_before_a_sample_is_not_taken_back(plant, other):
     other.undo()
     plant.undo()
     assert on_hand(plant) == 40_000.0
+
+
+def test_a_second_check_or_a_plan_is_taken_back_although_a_sample_was_drawn(plant, other):
+    order(plant, "B-0001", ("A", 500.0), ("B", 20.0))
+    charge(plant, "B-0001", 1, 500.0)
+    check(plant, "B-0001", 1)
+    plant.change([changed(plant.batch("B-0001").charges[1], state="dropped")], "B-0001 charge 2 dropped")
+    sample(other, "B-0001")
+    assert plant.undo() == "undone: B-0001 charge 2 dropped"
+    assert plant.undo() == "undone: B-0001 charge 1 checked"
+    with pytest.raises(BuiltOn, match=r"^B-0001 sample 1: bertil put it on record"):
+        plant.undo()
+
+
+def test_a_correction_after_the_sample_is_taken_back(plant):
+    order(plant, "B-0001", ("A", 500.0))
+    charge(plant, "B-0001", 1, 500.0)
+    sample(plant, "B-0001")
+    plant.change([changed(plant.batch("B-0001").charges[0], actual_kg=510.0)], "B-0001 charge 1 corrected")
+    plant.undo()
+    assert plant.batch("B-0001").charges[0].actual_kg == 500.0
 
 
 def test_a_receipt_that_is_in_a_batch_is_not_taken_back(plant, other):
@@ -225,7 +256,42 @@ def test_packing_decisions_notes_and_lots_may_follow(plant):
     plant.change(added(Decision("B-0007", 1, 0, "release", "the customer asked again", "2026-01-01T00:00:00Z", "anna")),
                  "decided")
     plant.change([changed(plant.batch("B-0007").head, note="drum 3 leaks")], "noted")
+    with pytest.raises(Closed):  # a decision on a closed batch stands, and another one corrects it
+        plant.change([changed(plant.batch("B-0007").decisions[0], words="no")], "other words")
     receive(plant, "B", "RET-7", 50.0)
     made = plant.batch("B-0007")
     assert ([o.kg for o in made.outcomes], len(made.decisions), made.head.note) == ([400.0], 1, "drum 3 leaks")
     assert plant.verify() is None
+
+
+def test_a_decision_after_the_release_is_final(plant):
+    order(plant, "B-0007", ("A", 500.0))
+    close(plant, "B-0007")
+    plant.change(added(Decision("B-0007", 1, 0, "repeat", "", "2026-01-01T00:00:00Z", "anna")), "decided")
+    with pytest.raises(Closed, match=r"^B-0007 is released: its record stands"):
+        plant.undo()
+
+
+def test_the_oil_of_a_cancelled_batch_may_become_rework_and_that_stands(plant):
+    order(plant, "B-0007", ("A", 500.0))
+    charge(plant, "B-0007", 1, 500.0)
+    close(plant, "B-0007", CANCELLED)
+    close(plant, "B-0007", REWORKED)
+    assert plant.batch("B-0007").head.state == REWORKED
+    with pytest.raises(Closed, match=r"^B-0007 is reworked: its record stands"):
+        plant.undo()
+    with pytest.raises(Closed):
+        close(plant, "B-0007", CANCELLED)
+
+
+def test_a_heel_that_the_next_batch_began_with_is_not_taken_back(plant, other):
+    order(plant, "B-0007", ("A", 500.0))
+    close(plant, "B-0007")
+    plant.change(added(Outcome("B-0007", 1, LEFT, 90.0)), "B-0007 leaves a heel")
+    order(other, "B-0008", ("A", 500.0))
+    other.change(added(Content("B-0008", 1, HEEL, "B-0007", 90.0)), "B-0008 begins with a heel")
+    with pytest.raises(BuiltOn, match=r"^B-0007 outcome 1 is the heel of B-0008 already; correct it instead"):
+        plant.undo()
+    other.undo()
+    plant.undo()
+    assert plant.batch("B-0007").outcomes == ()

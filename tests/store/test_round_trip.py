@@ -10,6 +10,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from blendtui.store import edits
+from blendtui.store.batch_records import Vessel
+from blendtui.store.catalogue_vessels import cells_of
 from blendtui.store.database import Database
 from blendtui.store.errors import PlantError
 from blendtui.store.export import text
@@ -129,6 +131,19 @@ def product_changes(draw, code: str, names: list[str], place: int) -> list:
     return changes
 
 
+@st.composite
+def vessel_changes(draw, code: str, names: list[str], place: int) -> list:
+    capacity = draw(st.none() | number(1.0, 1e6))
+    share = draw(number(0.0, 1.0))
+    margin = draw(st.none() | st.tuples(number(0.0, 200.0), st.dates().map(lambda d: d.isoformat())))
+    vessel = Vessel(code, capacity, capacity and share * capacity, draw(st.none() | number(0.001, 100.0)),
+                    capacity and 0.8 * share * capacity, draw(st.sampled_from(("", *names))), *(margin or (None, "")))
+    changes = [change_of("vessel", (code,), None, {**cells_of(vessel), "position": place, "retired": 0})]
+    if draw(st.booleans()):
+        changes.append(change_of("extra", ("vessel", edits.row_key((code,)), "hall"), None, {"text": "north"}))
+    return changes
+
+
 @settings(max_examples=40, deadline=None)
 @given(st.data())
 def test_any_plant_comes_back_as_it_was(data):
@@ -141,6 +156,8 @@ def test_any_plant_comes_back_as_it_was(data):
             plant.change([edits.stock_cell(plant.stock(name), "on_hand_kg", stock.on_hand_kg)], "quantity")
         for place, code in enumerate(data.draw(st.lists(CODES, min_size=1, max_size=3, unique=True)), 1):
             plant.change(data.draw(product_changes(code, names, place)), "added")
+        for place, code in enumerate(data.draw(st.lists(CODES, max_size=3, unique=True)), 1):
+            plant.change(data.draw(vessel_changes(code, names, place)), "added")
         assert plant.verify() is None
         same(plant, again(plant))
 

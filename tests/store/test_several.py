@@ -7,10 +7,13 @@ import pytest
 from blendtui.desk import stocks as desk
 from blendtui.desk import targets
 from blendtui.store import edits, opening
+from blendtui.store.batch_edits import added, changed
+from blendtui.store.batch_records import Sample
 from blendtui.store.errors import ChangedSince
 from blendtui.store.opening import import_folder, open_plant
 from blendtui.store.state import change_of
 from solver.stocks import Stock
+from tests.store.batch_steps import order, sample
 
 
 @pytest.fixture
@@ -102,3 +105,32 @@ def test_an_import_works_on_the_plant_as_it_is_when_written(plant, other, path, 
     assert import_folder(tmp_path / "catalogue", path, who="anna").changes == 1
     assert plant.journal(1)[0].changes == (
         change_of("stock", ("A",), {"price_per_t": 999.0}, {"price_per_t": 820.0}),)
+
+
+@pytest.mark.parametrize(("table", "key", "said"), [
+    ("batch", ("B-0003",), "B-0003"), ("content", ("B-0003", 1), "B-0003 content 1"),
+    ("charge", ("B-0003", 2), "B-0003 charge 2"), ("charge_lot", ("B-0003", 2, "L1"), "B-0003 charge 2 lot L1"),
+    ("sample", ("B-0003", 1), "B-0003 sample 1"), ("result", ("B-0003", 1, 2), "B-0003 sample 1 result 2"),
+    ("decision", ("B-0003", 1), "B-0003 decision 1"), ("outcome", ("B-0003", 1), "B-0003 outcome 1"),
+    ("lot", ("A", "L1"), "A lot L1"), ("tank_lot", ("A", "L1"), "A lot L1 in the tank"), ("dip", ("A", 3), "A dip 3"),
+    ("vessel", ("K1",), "K1"), ("product_limit", ("P46", "vi", 1), "P46 vi"),
+    ("stock_value", ("A", "flash"), "A flash"),
+    ("batch", ("{batch} %s",), "{batch} %s"), ("lot", ("A", "{lot}"), "A lot {lot}")])
+def test_rows_are_called_as_people_call_them(table, key, said):
+    change = change_of(table, key, None, None)
+    assert change.named == said
+    assert change.words() == f"{said} added"
+
+
+def test_rows_of_a_batch_are_named_when_another_was_quicker(plant, other):
+    order(plant, "B-0003", ("A", 500.0))
+    made = other.batch("B-0003")
+    sample(plant, "B-0003")
+    refused(lambda: other.change(added(Sample("B-0003", 1, 0, "", "")), "again"), "anna",
+            "B-0003 sample 1: anna changed it at ")
+    check = changed(plant.batch("B-0003").results[0], withdrawn="bubbles")
+    other.change([changed(other.batch("B-0003").results[0], withdrawn="slip")], "B-0003 sample 1 kv40 withdrawn")
+    refused(lambda: plant.change([check], "late"), "bertil", "B-0003 sample 1 result 1: bertil changed it at ")
+    plant.change([changed(made.head, customer="north yard")], "B-0003 customer")
+    refused(lambda: other.change([changed(made.head, customer="south yard")], "late"), "anna",
+            "B-0003: anna changed it at ")

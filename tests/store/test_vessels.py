@@ -75,6 +75,15 @@ def test_vessels_travel_with_unknown_columns(path, folder, tmp_path):
         assert plant.state() == before
 
 
+def test_the_plants_own_order_of_charging_travels_and_is_not_called_unknown(path, folder, tmp_path):
+    place = folder("kettles", vessels="vessel,charge_order\nK1,B A\n")
+    assert import_folder(place, path, who="anna").notes == ()
+    with open_plant(path, who="anna") as plant:
+        assert plant.row("extra", "vessel", '["K1"]', "charge_order") == {"text": "B A"}
+        export_plant(plant, tmp_path / "out")
+    assert import_folder(tmp_path / "out", path, who="anna").changes == 0
+
+
 def test_a_vessel_that_the_folder_lacks_is_retired_and_without_the_file_nothing_is_said(path, folder, tmp_path):
     import_folder(folder("two", vessels=TWO), path, who="anna")
     assert import_folder(folder("silent"), path, who="anna").retired == ()
