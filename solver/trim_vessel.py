@@ -19,7 +19,7 @@ import numpy as np
 from .allowed import CLOSE, LeftOut, candidates
 from .charges import HAIR, Charges
 from .errors import StockError, TargetError
-from .linear import Polytope, Stopwatch, Whole
+from .linear import FIRM_HOLD, Polytope, Stopwatch, Whole
 from .properties import Array
 from .recipe import GAP, exact_search
 from .requirements import COST, Requirement
@@ -167,13 +167,14 @@ class Vessel:
 
     def problem(self, least: float, most: float) -> tuple[Charges, Polytope]:
         """All masses that can be charged to a total within a span [kg], and their unit."""
+        most = max(least, most * (1.0 - FIRM_HOLD))  # room has no hair to spare
         batch, slack = 0.5 * (least + most), 0.5 * (most - least)
         charges = self._charges(batch)
         problem = replace(charges.problem(slack), whole=self._numbers())
         if not self.ask.whole:
             problem = replace(problem, steps=None)
         if self.volume is not None and self.ask.fill is not None:
-            problem = problem.with_rows([self.volume], hold=0.0, room=[self.ask.fill[0] / batch])
+            problem = problem.with_rows([self.volume], hold=0.0, room=[self.ask.fill[0] * (1.0 - FIRM_HOLD) / batch])
         return charges, problem
 
     def _charges(self, batch: float) -> Charges:

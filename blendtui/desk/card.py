@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
@@ -13,7 +13,7 @@ from solver.stocks import Stock
 from solver.target import Limit, Target
 from solver.volume import litres
 
-from . import batch_outlook, batches, charge_lines, formulas, heels
+from . import batch_outlook, batches, charge_lines, formulas, heels, numbers
 from .cautions import Caution, cautions
 
 if TYPE_CHECKING:
@@ -27,28 +27,47 @@ COLDEST_KV, HOTTEST_KV = -60.0, 200.0  # °C between which a KV may be read
 class CardLine:
     """One charge as the card has it. None: unknown, or not yet."""
 
-    line: int
-    stock: str
+    charge: Charge
     name: str  # of the stock; the tank often stands in it
     rinse: bool  # the same stock stands on an earlier line
     lots: Mapping[str, float]  # lot → part of the tank now, or of what was charged; empty: no receipt is known
-    plan_kg: float
     step_kg: float | None
     own_scale: bool  # is it weighed finer than the vessel's scale can?
-    packages: int | None  # whole drums or IBCs
-    package_kg: float | None
-    tolerance_kg: float
+    package_kg: float | None  # one drum or IBC
     reading_kg: float | None  # of the scale after it, with what was in the vessel; None: dropped
     tared_kg: float | None  # the same from a scale that was set to 0 before the first charge
-    celsius: float | None
-    litres: float | None  # at that temperature
+    litres: float | None  # at the tank's temperature
+    alike: tuple[str, ...]  # codes of the plant that are read for this one's
     tested: str  # date and source of the stock's values
-    state: str
-    actual_kg: float | None
-    by: str
-    at: str  # local
-    checked_by: str
-    why: str
+
+    @property
+    def stock(self) -> str:
+        """Its code."""
+        return self.charge.stock
+
+    @property
+    def packages(self) -> int | None:
+        """Whole drums or IBCs."""
+        return round(self.charge.plan_kg / self.package_kg) if self.package_kg else None
+
+    @property
+    def kg(self) -> float:
+        """What was charged, else what is planned."""
+        return _kg(self.charge)
+
+    @property
+    def done(self) -> bool:
+        """Is it in the vessel?"""
+        return self.charge.state == DONE
+
+    @property
+    def within_kg(self) -> tuple[float, float]:
+        """Least and most that may be charged."""
+        return self.charge.plan_kg - self.charge.tolerance_kg, self.charge.plan_kg + self.charge.tolerance_kg
+
+
+def _kg(charge: Charge) -> float:
+    return charge.actual_kg if charge.state == DONE and charge.actual_kg is not None else charge.plan_kg
 
 
 @dataclass(frozen=True)
@@ -74,6 +93,11 @@ class Card:
     customer: tuple[Limit, ...]
     entry: int  # number of the last journal entry …
     hash: str  # … and its hash
+
+    @property
+    def on_card(self) -> tuple[CardLine, ...]:
+        """Lines that are charged or to charge."""
+        return tuple(x for x in self.lines if x.charge.state != DROPPED)
 
 
 def card(plant: Plant, batch: str) -> Card:
@@ -130,38 +154,35 @@ def _mix_kv(plant: Plant, made: Made, recipe: Recipe | None) -> float | None:
 
 def _lines(plant: Plant, made: Made, stocks: Mapping[str, Stock], of: Vessel | None, start: float) -> list[CardLine]:
     found: list[CardLine] = []
-    tared = 0.0
+    live, tared = plant.stocks(), 0.0
     for charge in made.charges:
-        if charge.state != DROPPED:
-            tared += (charge.actual_kg if charge.state == DONE else charge.plan_kg) or 0.0
+        dropped = charge.state == DROPPED
+        if not dropped:
+            tared += _kg(charge)
         # What was drawn off before a charge is missing on the scale when it is made.
         gone = sum(o.kg for o in made.outcomes if charge.state != DONE or o.at < charge.at)
-        again = any(x.stock == charge.stock and x.state != DROPPED for x in found)
-        found.append(_line(plant, charge, stocks.get(charge.stock), of, start, tared - gone, again))
+        again = any(x.stock == charge.stock and x.charge.state != DROPPED for x in found)
+        line = _line(plant, charge, stocks.get(charge.stock, Stock(charge.stock)), of, live)
+        readings = (None, None) if dropped else (start + tared - gone, tared - gone)
+        found.append(replace(line, rinse=again, reading_kg=readings[0], tared_kg=readings[1]))
     return found
 
 
-def _line(plant: Plant, charge: Charge, stock: Stock | None, of: Vessel | None, start: float, tared: float, again: bool
-          ) -> CardLine:
-    done, dropped = charge.state == DONE, charge.state == DROPPED
+def _line(plant: Plant, charge: Charge, stock: Stock, of: Vessel | None, live: Sequence[Stock]) -> CardLine:
+    """A line without its readings."""
+    done = charge.state == DONE
     lots = charge.lots if done else {charge.lot: 1.0} if charge.lot else plant.tank_lots(charge.stock)
-    weighed = stock if stock is None or of is None else charge_lines.in_steps([stock], of)[0]
-    package = None if stock is None else stock.package_kg
-    density = charge.cells.get("density15") if done else None if stock is None else stock.density15
-    kg = charge.actual_kg if done and charge.actual_kg is not None else charge.plan_kg
-    volume = None if density is None or charge.celsius is None else litres(kg, density, charge.celsius)
-    tested = "" if stock is None else ", ".join(x for x in (f"tested {stock.tested_on}" if stock.tested_on else "",
-                                                           stock.source) if x)
-    return CardLine(charge.line, charge.stock, "" if stock is None else stock.name, again, lots, charge.plan_kg,
-                    None if weighed is None else weighed.package_kg or weighed.division_kg,
-                    _own_scale(weighed, of), round(charge.plan_kg / package) if package else None, package,
-                    charge.tolerance_kg, None if dropped else start + tared, None if dropped else tared, charge.celsius,
-                    volume, tested, charge.state, charge.actual_kg, charge.by, batches.when(charge.at),
-                    charge.checked_by, charge.why)
+    weighed = stock if of is None else charge_lines.in_steps([stock], of)[0]
+    density = charge.cells.get("density15") if done else stock.density15
+    volume = None if density is None or charge.celsius is None else litres(_kg(charge), density, charge.celsius)
+    tested = [f"tested {stock.tested_on}" if stock.tested_on else "", stock.source]
+    return CardLine(charge, stock.name, False, lots, weighed.package_kg or weighed.division_kg, _own_scale(weighed, of),
+                    stock.package_kg, None, None, volume, tuple(charge_lines.look_alikes(stock, live)),
+                    ", ".join(part for part in tested if part))
 
 
-def _own_scale(weighed: Stock | None, of: Vessel | None) -> bool:
-    if weighed is None or weighed.package_kg is not None or weighed.division_kg is None:
+def _own_scale(weighed: Stock, of: Vessel | None) -> bool:
+    if weighed.package_kg is not None or weighed.division_kg is None:
         return False
     return of is not None and of.division_kg is not None and weighed.division_kg < of.division_kg
 
@@ -197,11 +218,13 @@ def content_json(content: Content) -> dict[str, Any]:
 
 
 def _line_json(x: CardLine) -> dict[str, Any]:
-    return {"line": x.line, "stock": x.stock, "name": x.name or None, "lots": dict(x.lots), "plan_kg": x.plan_kg,
-            "step_kg": x.step_kg, "packages": x.packages, "package_kg": x.package_kg, "tolerance_kg": x.tolerance_kg,
-            "reading_kg": x.reading_kg, "tared_kg": x.tared_kg, "tank_c": x.celsius, "litres": x.litres,
-            "state": x.state, "actual_kg": x.actual_kg, "by": x.by or None, "checked_by": x.checked_by or None,
-            "rinse": x.rinse, "own_scale": x.own_scale}
+    c = x.charge
+    return {"line": c.line, "round": c.round, "stock": c.stock, "name": x.name or None, "lots": dict(x.lots),
+            "plan_kg": c.plan_kg, "step_kg": x.step_kg, "packages": x.packages, "package_kg": x.package_kg,
+            "tolerance_kg": c.tolerance_kg, "reading_kg": x.reading_kg, "tared_kg": x.tared_kg, "tank_c": c.celsius,
+            "litres": x.litres, "state": c.state, "actual_kg": c.actual_kg, "by": c.by or None,
+            "checked_by": c.checked_by or None, "why": c.why or None, "rinse": x.rinse, "own_scale": x.own_scale,
+            "look_alikes": list(x.alike)}
 
 
 # Words that text and HTML share
@@ -220,6 +243,7 @@ def facts(made: Card) -> list[tuple[str, str]]:
         *([f"division {of.division_kg:g} kg"] if of.division_kg else [])]
     rows = [("Product", f"{head.product}  {made.product_name}".strip()), ("Customer", head.customer),
             ("Order", head.order_no), ("Asked", asked_words(made.made)),
+            ("Holds", f"{numbers.batch(head.batch_kg)} kg when all is charged, what was in the vessel included"),
             ("Vessel", ", ".join([head.vessel, *room])),
             ("Ordered", f"{batches.when(head.ordered_at)} by {head.ordered_by}"),
             ("State", batches.stage(made.made) + (f" ({head.why})" if head.why else "")), ("Note", head.note)]

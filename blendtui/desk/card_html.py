@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from html import escape
 
-from blendtui.store.batch_records import DONE, DROPPED, OPEN
+from blendtui.store.batch_records import OPEN
 from blendtui.store.harmless import harmless
 from solver.properties import lookup, volume_at
 from solver.requirements import COST
 
-from . import numbers
+from . import batches, numbers
 from .card import Card, CardLine, content_words, facts
 from .card_text import exact, lots_of
 from .sheet import NOT_A_CERTIFICATE
@@ -44,7 +44,7 @@ def card_html(made: Card) -> str:
     named = "".join(f"<dt>{_safe(name)}</dt><dd>{_safe(said)}</dd>" for name, said in facts(made))
     warned = "\n".join(f'<p class="warned">{_safe(words)}</p>' for words in _warned(made))
     inside = "<br>".join(map(_safe, content_words(made))) or "nothing; see that it is empty, clean and dry"
-    rows = "\n".join(_charge(x) for x in made.lines if x.state != DROPPED)
+    rows = "\n".join(map(_charge, made.on_card))
     heads = "".join(f"<th{_figure(n)}>{_safe(text)}</th>" for n, text in enumerate(HEADS))
     widths = "".join(f'<col style="width:{width}%">' for width in WIDTHS)
     start = _row(["", "start", "", "", f"{exact(made.start_kg)} (0)", "", "", "", "", ""])
@@ -118,29 +118,31 @@ def _warned(made: Card) -> Iterator[str]:
 
 
 def _charge(x: CardLine) -> str:
-    stock = f"<b>{_safe(x.stock)}</b> {_safe(x.name)}" + (" (rinse)" if x.rinse else "")
+    charge, trim = x.charge, f"trim {x.charge.round}: " if x.charge.round else ""
+    stock = f"{trim}<b>{_safe(x.stock)}</b> {_safe(x.name)}" + (" (rinse)" if x.rinse else "")
     if x.packages is not None and x.package_kg is not None:
-        stock += f"<br>{x.packages} × {_safe(exact(x.package_kg))} kg"
+        stock += f"<br>{x.packages} × {_safe(exact(x.package_kg))} kg, each one's lot written down, empties weighed"
     elif x.step_kg is not None:
         stock += f"<br>by {_safe(exact(x.step_kg))} kg" + (" on its own scale" if x.own_scale else "")
+    stock += f"<br>NOT {_safe(', '.join(x.alike))}" if x.alike else ""
     lots = _safe(lots_of(x)) + (f"<br>{_safe(x.tested)}" if x.tested else "")
     volume = "" if x.litres is None else (
-        f'{_safe(numbers.litres(x.litres))}<br><span class="small">at {x.celsius:g} °C</span>')
-    done = x.state == DONE and x.actual_kg is not None
-    boxes = (exact(x.actual_kg or 0.0), ", ".join(x.lots), f"{x.at}, {x.by}", x.checked_by) if done else ("",) * 4
-    cells = [f'<td class="small">{x.line}</td>', f"<td>{stock}</td>", f'<td class="small">{lots}</td>']
-    within = f"{exact(x.plan_kg - x.tolerance_kg)}–{exact(x.plan_kg + x.tolerance_kg)}"
+        f'{_safe(numbers.litres(x.litres))}<br><span class="small">at {charge.celsius:g} °C</span>')
+    at = f"{batches.when(charge.at)}, {charge.by}"
+    boxes = (exact(x.kg), ", ".join(x.lots), at, charge.checked_by) if x.done else ("",) * 4
+    cells = [f'<td class="small">{charge.line}</td>', f"<td>{stock}</td>", f'<td class="small">{lots}</td>']
+    within = "–".join(map(exact, x.within_kg))
     shows = "<br>" if x.reading_kg is None or x.tared_kg is None else (
         f'{_safe(exact(x.reading_kg))}<br><span class="small">({_safe(exact(x.tared_kg))})</span>')
-    kg = f'<b>{_safe(exact(x.plan_kg))}</b><br><span class="small">{_safe(within)}</span>'
+    kg = f'<b>{_safe(exact(charge.plan_kg))}</b><br><span class="small">{_safe(within)}</span>'
     cells += [f'<td class="figure">{text}</td>' for text in (kg, shows, volume)]
     cells += [f'<td class="box">{_safe(text)}</td>' for text in boxes]
     return "<tr>" + "".join(cells) + "</tr>"
 
 
 def _total(made: Card) -> str:
-    kg = sum(x.plan_kg if x.actual_kg is None else x.actual_kg for x in made.lines if x.state != DROPPED)
-    return _row(["", "total charged", "", exact(kg), exact(made.total_kg), "", "", "", "", ""])
+    charged = exact(sum(x.kg for x in made.on_card))
+    return _row(["", "total charged", "", charged, exact(made.total_kg), "", "", "", "", ""])
 
 
 def _mixing(made: Card) -> str:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import textwrap
 from collections.abc import Iterator
 
-from blendtui.store.batch_records import DONE, DROPPED
+from blendtui.store.batch_records import DROPPED
 from blendtui.store.harmless import harmless
 from solver.properties import lookup, volume_at
 from solver.requirements import COST
@@ -86,55 +86,53 @@ def _charges(made: Card) -> Iterator[str]:
     yield f"{'':5}{'stock':<{CODE}}{'name':<{NAME}}{'kg':>{KG}}{'shows kg':>{KG}}{'kg':>{KG}}"
     yield "-" * WIDTH
     yield f"{'':5}{'start':<{CODE + NAME}}{'':>{KG}}{exact(made.start_kg):>{KG}}{'0':>{KG}}"
-    for line in made.lines:
-        if line.state != DROPPED:
-            yield from _charge(line)
+    trim = 0
+    for line in made.on_card:
+        if line.charge.round > trim:
+            trim = line.charge.round
+            yield f"{'':5}trim {trim}"
+        yield from _charge(line)
     yield "-" * WIDTH
-    planned = sum(x.plan_kg if x.actual_kg is None else x.actual_kg for x in made.lines if x.state != DROPPED)
-    yield f"{'':5}{'total charged':<{CODE + NAME}}{exact(planned):>{KG}}{exact(made.total_kg):>{KG}}"
+    charged = sum(x.kg for x in made.on_card)
+    yield f"{'':5}{'total charged':<{CODE + NAME}}{exact(charged):>{KG}}{exact(made.total_kg):>{KG}}"
     yield from _wrap("Scale shows: heel, line and flush oil that goes in are on it from the start; from 0: it was set "
                      "to 0 before the first charge. Both run by the plan: after a charge that differs, go by the kg of "
                      "the next.")
     for line in made.lines:
-        if line.state == DROPPED:
-            yield from _wrap(f"line {line.line} {line.stock} dropped: {line.why}", rest="  ")
+        if line.charge.state == DROPPED:
+            yield from _wrap(f"line {line.charge.line} {line.stock} dropped: {line.charge.why}", rest="  ")
 
 
 def _charge(line: CardLine) -> Iterator[str]:
-    name = f"{line.name} (rinse)" if line.rinse else line.name
+    charge, name = line.charge, f"{line.name} (rinse)" if line.rinse else line.name
     codes, names = (textwrap.wrap(plain(text), width - 1) or [""] for text, width in ((line.stock, CODE), (name, NAME)))
-    done = line.state == DONE and line.actual_kg is not None
-    kg = line.actual_kg if done and line.actual_kg is not None else line.plan_kg
+    figures = "".join(f"{'' if kg is None else exact(kg):>{KG}}" for kg in (line.kg, line.reading_kg, line.tared_kg))
     for n in range(max(len(codes), len(names))):
         code, called = (each[n] if n < len(each) else "" for each in (codes, names))
-        figures = f"{exact(kg):>{KG}}{_reading(line.reading_kg):>{KG}}{_reading(line.tared_kg):>{KG}}"
-        figures = figures if n == 0 else ""
-        yield f"{line.line if n == 0 else '':>3}  {code:<{CODE}}{called:<{NAME}}{figures}"
+        yield f"{charge.line if n == 0 else '':>3}  {code:<{CODE}}{called:<{NAME}}{figures if n == 0 else ''}"
     yield from _wrap("; ".join(_details(line)), "     ", "     ")
     yield from _wrap(f"lot {lots_of(line)}" + (f" ({line.tested})" if line.tested else ""), "     ", "     ")
-    if done:
-        checked = f"checked by {line.checked_by}" if line.checked_by else "SECOND CHECK ______________"
-        yield from _wrap(f"CHARGED {exact(kg)} kg (planned {exact(line.plan_kg)}) by {line.by}, {line.at}; {checked}",
-                         "     ", "     ")
+    if line.done:
+        checked = f"checked by {charge.checked_by}" if charge.checked_by else "SECOND CHECK ______________"
+        yield from _wrap(f"CHARGED {exact(line.kg)} kg (planned {exact(charge.plan_kg)}) by {charge.by}, "
+                         f"{batches.when(charge.at)}; {checked}", "     ", "     ")
     else:
         yield f"     {BOXES}"
 
 
-def _reading(kg: float | None) -> str:
-    return "" if kg is None else exact(kg)
-
-
 def _details(line: CardLine) -> Iterator[str]:
-    low, high = line.plan_kg - line.tolerance_kg, line.plan_kg + line.tolerance_kg
-    yield f"within {exact(low)} to {exact(high)} kg"
+    charge = line.charge
+    yield "within {} to {} kg".format(*map(exact, line.within_kg))
     if line.packages is not None and line.package_kg is not None:
-        whole = abs(line.packages * line.package_kg - line.plan_kg) < 1e-6 * line.plan_kg
-        yield (f"{line.packages} x {exact(line.package_kg)} kg" if whole
-               else f"{line.plan_kg / line.package_kg:.2f} x {exact(line.package_kg)} kg: NOT WHOLE")
+        whole = abs(line.packages * line.package_kg - charge.plan_kg) < 1e-6 * charge.plan_kg
+        yield (f"{line.packages} x {exact(line.package_kg)} kg, each one's lot written down, empties weighed" if whole
+               else f"{charge.plan_kg / line.package_kg:.2f} x {exact(line.package_kg)} kg: NOT WHOLE")
     elif line.step_kg is not None:
         yield f"by {exact(line.step_kg)} kg" + (" on its own scale" if line.own_scale else "")
-    if line.litres is not None and line.celsius is not None:
-        yield f"{numbers.litres(line.litres)} L at {line.celsius:g} °C"
+    if line.litres is not None:
+        yield f"{numbers.litres(line.litres)} L at {charge.celsius:g} °C"
+    if line.alike:
+        yield f"NOT {', '.join(line.alike)}"
 
 
 def lots_of(line: CardLine) -> str:

@@ -120,6 +120,22 @@ def _named(line: Line, own: Sequence[str]) -> int:
     return next((n for n, name in enumerate(own) if name in names and name), len(own))
 
 
+def look_alikes(stock: Stock, stocks: Sequence[Stock]) -> list[str]:
+    """Codes that are read for this one's: one character other, or two that changed places. Packages are told apart by
+    their codes alone, so only what comes in packages or is a concentrate is looked at."""
+    if stock.package_kg is None and stock.kind not in CONCENTRATES:
+        return []
+    return [s.code for s in stocks if s.code != stock.code and _alike(stock.code.casefold(), s.code.casefold())]
+
+
+def _alike(one: str, other: str) -> bool:
+    if len(one) != len(other):
+        return False
+    off = [n for n, (a, b) in enumerate(zip(one, other, strict=True)) if a != b]
+    swapped = len(off) == 2 and off[1] == off[0] + 1 and one[off[0]] == other[off[1]] and one[off[1]] == other[off[0]]
+    return len(off) <= 1 or swapped
+
+
 def order_words(found: Sequence[Line], own: Sequence[str]) -> str:
     """By which order the lines stand, and what of the light stock is kept back."""
     rinse = next((line for line in found if line.role == RINSES), None)

@@ -57,8 +57,8 @@ def _content(plant: Plant, what: str, kg: float, of: str, measured: Mapping[str,
     cells, parts, source = _known(plant, of, called, stocks)
     cells = {**cells, **measured}
     if "kv40" in cells and "kv100" in cells and cells["kv100"] >= cells["kv40"]:
-        raise DeskError(f"{called}: KV40 {numbers.kv(cells['kv40'])} and KV100 {numbers.kv(cells['kv100'])} mm²/s: an oil "
-                        "is thinner hot than cold; swapped?")
+        raise DeskError(f"{called}: KV40 {numbers.kv(cells['kv40'])} and KV100 {numbers.kv(cells['kv100'])} mm²/s: an "
+                        "oil is thinner hot than cold; swapped?")
     lacks = [name for name in batches.DATUM if name not in cells]
     if lacks:
         raise DeskError(f"{called} of {numbers.batch(kg)} kg{f' ({harmless(of, 40)})' if of else ''}: its "
@@ -125,8 +125,8 @@ def doubts(contents: Sequence[Content], stocks: Mapping[str, Stock]) -> list[str
         for code in ("kv40", "kv100"):
             if code in own and abs(content.cells[code] / own[code] - 1.0) > FAR:
                 said.append(f"the {content.what} is said to be of {harmless(content.stock, 40)} ({code.upper()} "
-                            f"{numbers.kv(own[code])} mm²/s), and {numbers.kv(content.cells[code])} was measured: is it of "
-                            "something else, or mixed?")
+                            f"{numbers.kv(own[code])} mm²/s), and {numbers.kv(content.cells[code])} was measured: is "
+                            "it of something else, or mixed?")
     return said
 
 

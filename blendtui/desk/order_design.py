@@ -32,6 +32,7 @@ ROUNDS = 20  # of litres becoming kg; each is some thousand times nearer than th
 SLIGHT = 0.03  # part by which no change of the recipe moves a volume: what is further off never fits
 CELSIUS_OF = {"L15": 15.0, "L20": 20.0}
 GUESS = 0.87  # kg/L, about that of base oils: where the density begins
+MISSES = ("only the whole", "the nearest", "no blend")  # how notes begin that say what stands in the way
 TOLD = ("kv40", "kv100", "vi", "density15")  # effects of a heel that are told whether they are limited or not
 
 
@@ -216,7 +217,8 @@ def _why(inside: Sequence[Stock], plan: Plan, target: Target, free: Recipe, note
         if "conflicts" in report.done:
             said = [conflict_words(c, report.left_out) for c in report.conflicts]
             break
-    return tuple(dict.fromkeys((*said, *notes)))
+    misses = [note for note in notes if note.startswith(MISSES)]
+    return tuple(dict.fromkeys((*said, *misses, *notes)))
 
 
 def _none(plan: Plan, recipe: Recipe, asked_kg: float, density15: float | None, why: tuple[str, ...]) -> Designed:
@@ -243,6 +245,9 @@ def _told(plan: Plan, recipe: Recipe, lines: Sequence[charge_lines.Line], asked_
     density = whole.predicted.get("density15")
     fill = None if density is None else litres(total, density, plan.mix_c)
     effects = _effects(plan, whole, without) if stays else {}
+    if plan.unit == "kg" and density is not None:  # so that kg typed for litres is seen
+        volume = numbers.litres(litres(asked_kg, density, CELSIUS_OF["L20"]))
+        words.insert(0, f"{numbers.batch(asked_kg)} kg are about {volume} L at 20 °C")
     words += _heel_words(plan, whole, without) if stays else []
     words.append(charge_lines.order_words(lines, plan.charges_in))
     return Designed(recipe.status, recipe, tuple(lines), asked_kg, asked_kg + apart_kg(plan.contents), density, fill,

@@ -72,14 +72,8 @@ def _fill(made: Proposal) -> Iterator[str]:
         of = made.vessel
         least = f", at least {numbers.litres(of.least_fill_l)} L" if of.least_fill_l else ""
         pct = numbers.fixed(made.fill_pct, 1)
-        yield from _wrap(f"fill at {_mix_c(made):g} °C: {numbers.litres(made.fill_l)} L, {pct} % of "
+        yield from _wrap(f"fill at {made.order.mixed_at:g} °C: {numbers.litres(made.fill_l)} L, {pct} % of "
                          f"{numbers.litres(of.capacity_l)} L (at most {made.order.most_fill_pct:g} %{least})")
-
-
-def _mix_c(made: Proposal) -> float:
-    from .proposals import MIX_C
-
-    return MIX_C if made.order.mix_c is None else made.order.mix_c
 
 
 def _limits(made: Proposal) -> Iterator[str]:
@@ -123,7 +117,7 @@ def proposal_json(made: Proposal, name: str = "") -> dict[str, Any]:
     return {
         "batch": name or None, "product": order.product, "vessel": made.vessel.vessel, "status": made.status,
         "asked": order.amount, "unit": order.unit, "asked_kg": made.asked_kg, "batch_kg": made.batch_kg,
-        "mix_c": _mix_c(made), "fill_l": made.fill_l, "fill_pct": made.fill_pct, "most_fill_pct": order.most_fill_pct,
+        "mix_c": order.mixed_at, "fill_l": made.fill_l, "fill_pct": made.fill_pct, "most_fill_pct": order.most_fill_pct,
         "contents": [content_json(c) for c in made.contents],
         "charges": [{"line": c.line, "stock": c.stock, "kg": c.plan_kg, "tolerance_kg": c.tolerance_kg,
                      "step_kg": made.steps_kg.get(c.stock), "lot": c.lot or None, "tank_c": c.celsius}

@@ -21,13 +21,13 @@ from solver.stocks import Stock
 from . import batches, formulas, heels, numbers
 from .errors import DeskError
 from .order_design import MOST_FILL_PCT
-from .proposals import MIX_C, Order, Proposal, new_name, propose, proposed, rests_on
+from .proposals import Order, Proposal, new_name, propose, proposed, rests_on
 from .vessels import vessel
 
 __all__ = ["NoBlend", "Order", "Proposal", "cancel", "propose", "propose_again", "redesign", "redesigned", "reorder",
            "take", "taken"]
 SAID = 6  # reasons in one line
-TRIES = 4  # times that an order is worked out anew because others changed what it rests on
+TRIES = 8  # times that an order is worked out anew because others changed what it rests on
 
 
 class NoBlend(DeskError):
@@ -78,7 +78,7 @@ def _entered(plant: Plant, proposal: Proposal, who: str, why: str) -> Step:
     name, at = new_name(plant, order.name), now()
     head = Batch(name, order.product, harmless(order.order_no.strip(), 60), harmless(order.customer.strip(), 80),
                  order.amount, order.unit, proposal.batch_kg, proposal.vessel.vessel,
-                 MIX_C if order.mix_c is None else order.mix_c, proposal.formula, plant.revision(),
+                 order.mixed_at, proposal.formula, plant.revision(),
                  harmless(order.heel_ignored.strip(), 200), OPEN, at, who, harmless(order.note.strip(), 200))
     contents = tuple(replace(c, batch=name) for c in proposal.contents)
     charges = tuple(replace(c, batch=name) for c in proposal.charges)

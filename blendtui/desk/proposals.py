@@ -55,6 +55,11 @@ class Order:
     tank_c: Mapping[str, float] = field(default_factory=dict)  # stock → °C of its tank; "" for all others
     charges_in: tuple[str, ...] = ()  # order of charging by names; empty: the vessel's own, else the usual
 
+    @property
+    def mixed_at(self) -> float:
+        """Mixing temperature [°C]."""
+        return MIX_C if self.mix_c is None else self.mix_c
+
 
 @dataclass(frozen=True)
 class Proposal:
@@ -173,7 +178,7 @@ def _refuse_order(plant: Plant, order: Order, of: Vessel) -> None:
     if of.capacity_l is None:
         raise DeskError(f"{harmless(of.vessel, 40)} has no capacity, so its fill cannot be told; type it: blendtui "
                         f"vessel set {harmless(of.vessel, 40)} capacity_l=24000")
-    celsius = MIX_C if order.mix_c is None else order.mix_c
+    celsius = order.mixed_at
     if not -20.0 <= celsius <= 150.0:
         raise DeskError(f"a mixing temperature of {celsius:g} °C lies outside −20 to 150 °C; °F?")
     if not 1.0 <= order.most_fill_pct <= 100.0:
@@ -203,18 +208,18 @@ def new_name(plant: Plant, typed: str) -> str:
 def proposed(plant: Plant, order: Order, of: Vessel, target: Target, contents: Sequence[Content],
               stocks: Sequence[Stock], questions: Sequence[str], own: str = "") -> Proposal:
     heels.refuse_fuller(of, contents)
-    charges_in = order.charges_in or charge_order(plant, of.vessel)
+    every = plant.stocks(include_retired=True)
+    charges_in = charge_lines.names_of(" ".join(order.charges_in or charge_order(plant, of.vessel)), every)
     weighed = charge_lines.in_steps(stocks, of)
-    mix_c = MIX_C if order.mix_c is None else order.mix_c
     designed = work_out(Plan(target, of, tuple(weighed), batches.by_code(plant), tuple(contents), order.amount,
-                             order.unit, mix_c, bool(order.heel_ignored.strip()), order.most_fill_pct, order.whole,
+                             order.unit, order.mixed_at, bool(order.heel_ignored.strip()), order.most_fill_pct, order.whole,
                              charges_in))
     charges = tuple(_charge(plant, order, n, line) for n, line in enumerate(designed.lines, 1))
     used = [s for s in stocks if any(c.stock == s.code for c in charges)]
     how = {"most_fill_pct": order.most_fill_pct, "whole": order.whole, "tank_c": dict(order.tank_c),
            "charges_in": list(order.charges_in)}
     return Proposal(order, of, target, designed, charges, tuple(contents),
-                    (*questions, *heels.doubts(contents, batches.by_code(plant)), *_questions(plant, of, mix_c, own)),
+                    (*questions, *heels.doubts(contents, batches.by_code(plant)), *_questions(plant, of, order.mixed_at, own)),
                     (*heels.words(contents), *_foreign_words(plant, target, contents),
                      *_mass_words(order, designed, contents), *designed.remarks,
                      *_step_words(stocks, weighed, used), *_stock_words(used)),

@@ -53,7 +53,7 @@ def vessel(plant: Plant, code: str) -> Vessel:
 def charge_order(plant: Plant, code: str) -> tuple[str, ...]:
     """The plant's own order of charging in this vessel, as names; empty: the usual one."""
     row = plant.row("extra", "vessel", edits.row_key((code,)), CHARGE_ORDER)
-    return tuple(str((row or {}).get("text") or "").split())
+    return tuple(str((row or {}).get("text") or "").replace(",", " ").split())
 
 
 def text_of(plant: Plant, of: Vessel, cell: str) -> str:

@@ -213,7 +213,7 @@ class BatchesScreen(StepPage):
         def make(why: str, sure: bool) -> object:
             from blendtui.desk import orders
 
-            return orders.cancel(plant, name, by=by, why=why)
+            return orders.cancel(plant, name, by=by, why=why, sure=sure)
 
         self.type_why(f"{harmless(name)} is cancelled", make, lambda made: self.program.say(
             f"{name} cancelled; what was promised to it is free; u takes it back", "done"), yes="cancel it")

@@ -5,12 +5,11 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import TYPE_CHECKING, Any
 
-from blendtui.desk import numbers
 from blendtui.desk.errors import DeskError
 from blendtui.store.batch_records import Vessel
 from blendtui.store.harmless import harmless
 
-from . import floor_view, reading, words
+from . import reading
 from .base import step
 from .words import property_code
 
@@ -107,7 +106,7 @@ class Asking:
 
     def order(self) -> Any:
         """What was typed, as an order."""
-        from blendtui.desk.orders import Order
+        from blendtui.desk.proposals import Order
 
         found = dict(self.found)
         kg, unit = found.pop("amount")
@@ -120,94 +119,46 @@ class Asking:
         page, plant, order = self.page, self.page.program.plant, self.order()
 
         def work() -> tuple[Any, list[str]]:
-            from blendtui.desk import orders
+            from blendtui.desk.order_words import proposal_text
+            from blendtui.desk.proposals import propose
 
-            found = orders.propose(plant, order)
-            return found, proposal_lines(found)
+            found = propose(plant, order)
+            return found, proposal_text(found).split("\n")
 
         def show(found: tuple[Any, list[str]]) -> None:
             page.say("")
             proposal, text = found
-            keys = [("y", "take the order", lambda: self._take(order))] if proposal.charges else []
-            page.app.push_screen(reading.ReadingScreen(f"{harmless(self.product, 20)}: the charges of this order; "
-                                                       "nothing is written yet", text, keys))
+            keys = [("y", "take the order", lambda: self._take(order, proposal))] if proposal.charges else []
+            page.app.push_screen(reading.ReadingScreen(f"{harmless(self.product, 20)}: the charges of this order", text,
+                                                       keys))
 
         page.program.task(work, show, saying="working out the charges …")
 
-    def _take(self, order: Any) -> None:
+    def _take(self, order: Any, seen: Any) -> None:
         page, plant, by = self.page, self.page.program.plant, self.page.session.by
 
         def make(sure: bool) -> Any:
             from blendtui.desk import orders
 
-            return orders.take(plant, order, by=by, sure=sure)
+            return orders.taken(plant, order, by=by, sure=sure, seen=seen)
 
-        def done(made: Any) -> None:
+        def done(found: Any) -> None:
+            made, proposal = found
             page.typed_orders.pop(self.product, None)
             page.wanted = page.session.batch = made.name
-            page.program.say(f"{made.name} is ordered; Enter opens it on the floor, w writes its card", "done")
+            anew = "" if proposal is seen else "its charges were worked out anew, for what they rest on changed; "
+            page.program.say(f"{made.name} is ordered; {anew}Enter opens it on the floor, w writes its card", "done")
 
         page.take_step(make, done, yes="take it")
-
-
-def proposal_lines(found: Any) -> list[str]:
-    """A proposal in lines of 80 columns: what it comes to, the charges, what the heel does, what is to be known."""
-    order = found.order
-    of = ", ".join(harmless(part, 30) for part in (order.customer, order.order_no) if part)
-    fill = (f", {numbers.litres(found.fill_l)} L at {order.mix_c or 60.0:g} °C, {found.fill_pct:.0f} % of it"
-            if found.fill_l is not None and found.fill_pct is not None else "")
-    said = [f"{harmless(order.product, 20)}{f' for {of}' if of else ''}: {numbers.batch(found.asked_kg)} kg asked; "
-            f"{harmless(order.vessel, 20)} then holds {numbers.batch(found.batch_kg)} kg{fill}"]
-    if found.charges:
-        said += ["", f"{'CHARGES':<20} {'kg':>10} {'± kg':>6} {'mass %':>7}  {'lot':<14} °C"]
-    else:
-        said += ["", "! NO BLEND MEETS THIS ORDER", *(harmless(each, 600) for each in found.reasons)]
-    for charge in found.charges:
-        step = found.steps_kg.get(charge.stock)
-        at = "" if charge.celsius is None else f"{charge.celsius:g}"
-        share = numbers.pct(charge.plan_kg / found.batch_kg)
-        said.append(f"  {harmless(charge.stock, 18):<18} {floor_view.kg(charge.plan_kg, step):>10} "
-                    f"{floor_view.tolerance(charge.tolerance_kg, step):>6} {share:>7}  "
-                    f"{harmless(charge.lot, 14):<14} {at}")
-    said += _limit_lines(found) + _heel_lines(found)
-    if found.questions or found.remarks:
-        said += ["", "TO KNOW", *(f"? {harmless(each, 600)}" for each in found.questions),
-                 *(f"  {harmless(each, 600)}" for each in found.remarks)]
-    return [*said, "", words.CAUTION]
-
-
-def _limit_lines(found: Any) -> list[str]:
-    limits = [x for x in found.recipe.limits if x.property != "cost_per_t" and not x.property.startswith("vol")]
-    said = ["", f"{'PREDICTED':<20} {'value':>9} {'low':>9} {'high':>9}"] if limits else []
-    for limit in limits:
-        figures = " ".join(f"{numbers.value(limit.property, each) if each is not None else '':>9}"
-                           for each in (limit.value, limit.low, limit.high))
-        sign = {True: "", None: "  unknown", False: "  ! not met"}[limit.met]
-        said.append(f"  {words.heading(limit.property):<18} {figures} {words.unit(limit.property)}{sign}")
-    return said
-
-
-def _heel_lines(found: Any) -> list[str]:
-    if not found.effects:
-        return []
-    said = ["", f"{'HEEL AND LINE':<20} {'with':>9} {'without':>9}"]
-    for code, sides in found.effects.items():
-        if None not in sides:
-            shown = " ".join(f"{numbers.value(code, each):>9}" for each in sides)
-            said.append(f"  {words.heading(code):<18} {shown} {words.unit(code)}")
-    return said
 
 
 # Readers of what is typed
 
 def amount(typed: str) -> tuple[float, str]:
     """An amount and its unit as an order has them: kg, L15 or L20."""
-    from solver.scales import parse, split
+    from blendtui.desk.proposals import amount_of
 
-    number, unit = split(typed)
-    if unit in ("l15", "l20", "l", "litres", "litre"):
-        return number, "L20" if unit == "l20" else "L15"
-    return parse(typed, "mass"), "kg"
+    return amount_of(typed)
 
 
 def mass(typed: str) -> float:

@@ -8,7 +8,6 @@ from blendtui.desk import numbers
 from blendtui.store.batch_records import Made
 from blendtui.store.harmless import harmless
 
-from . import words
 from .reading import Key, ReadingScreen
 from .steps import StepPage
 
@@ -26,49 +25,32 @@ def show_outlook(page: StepPage, made: Made) -> None:
         page.take_step(make, lambda done: page.program.say(
             "the charges to come are planned anew; w writes the new card", "done"), yes="plan them")
 
-    def work() -> Any:
+    def work() -> tuple[Any, str]:
         from blendtui.desk import charging
+        from blendtui.headless.batch_floor import outlook_text
 
-        return charging.outlook(plant, made)
+        ahead = charging.outlook(plant, made)
+        return ahead, outlook_text(ahead)
 
-    def show(found: Any) -> None:
+    def show(found: tuple[Any, str]) -> None:
         page.say("")
-        keys: list[Key] = [("y", "plan these charges", replan)] if found.remedy is not None else []
+        ahead, text = found
+        keys: list[Key] = [("y", "plan these charges", replan)] if ahead.remedy is not None else []
         head = f"{harmless(made.name, 40)}: what it will be if the rest is charged as planned"
-        page.app.push_screen(ReadingScreen(head, outlook_lines(found), keys))
+        page.app.push_screen(ReadingScreen(head, text.split("\n"), keys))
 
     page.program.task(work, show, saying="working out what the batch will be …")
-
-
-def outlook_lines(found: Any) -> list[str]:
-    """What a batch will be, and what would put it right, in lines."""
-    said = [harmless(each, 400) if found.good else f"! {harmless(each, 400)}" for each in found.words]
-    if found.fill_l is not None:
-        of = f" of {numbers.litres(found.capacity_l)}" if found.capacity_l else ""
-        said.append(f"{numbers.batch(found.total_kg)} kg, {numbers.litres(found.fill_l)}{of} L at "
-                    f"{found.made.head.mix_c:g} °C")
-    limits = [x for x in (found.recipe.limits if found.recipe is not None else ()) if x.property != "cost_per_t"]
-    if limits:
-        said += ["", f"{'PREDICTED':<18} {'value':>9} {'low':>9} {'high':>9}"]
-    for limit in limits:
-        figures = " ".join(f"{numbers.value(limit.property, each) if each is not None else '':>9}"
-                           for each in (limit.value, limit.low, limit.high))
-        sign = {True: "", None: "  unknown", False: "  ! not met, or nearer than its guard"}[limit.met]
-        said.append(f"  {words.heading(limit.property):<16} {figures} {words.unit(limit.property):<6}{sign}")
-    if found.remedy_words:
-        said += ["", "WHAT WOULD PUT IT RIGHT", *(harmless(each, 600) for each in found.remedy_words)]
-    return [*said, "", words.CAUTION]
 
 
 def show_trim(page: StepPage, made: Made) -> None:
     """Show the trim of a measured batch; y there plans it, a third one only with its reason."""
     plant, by = page.program.plant, page.session.by
 
-    def work() -> tuple[Any, bool]:
+    def work() -> tuple[Any, bool, list[str]]:
         from blendtui.desk import release, trimming
 
         found = trimming.propose(plant, made.name)
-        return found, found.round > release.FREE_ROUNDS
+        return found, found.round > release.FREE_ROUNDS, trim_lines(found)
 
     def take(number: int, asks_why: bool) -> None:
         def make(why: str, sure: bool) -> Any:
@@ -84,13 +66,13 @@ def show_trim(page: StepPage, made: Made) -> None:
     def done(planned: Made) -> None:
         page.program.say(f"trim {planned.rounds} is planned: its charges stand below the others", "done")
 
-    def show(found: tuple[Any, bool]) -> None:
+    def show(found: tuple[Any, bool, list[str]]) -> None:
         page.say("")
-        proposed, asks_why = found
+        proposed, asks_why, text = found
         takable = proposed.charges and not proposed.trim.drawn_kg
         keys: list[Key] = [("y", "plan this trim", lambda: take(proposed.round, asks_why))] if takable else []
         head = f"{harmless(made.name, 40)}: trim {proposed.round}, nothing is written yet"
-        page.app.push_screen(ReadingScreen(head, trim_lines(proposed), keys))
+        page.app.push_screen(ReadingScreen(head, text, keys))
 
     page.program.task(work, show, saying="working out the trim …")
 

@@ -18,7 +18,7 @@ from blendtui.desk.orders import Order, take
 from blendtui.desk.plant import open_plant
 from blendtui.desk.sheet import NOT_A_CERTIFICATE
 from blendtui.store.batch_edits import changed, tank_parts
-from blendtui.store.batch_records import DROPPED, Lot, Vessel
+from blendtui.store.batch_records import DROPPED, Charge, Lot, Vessel
 from blendtui.store.errors import PlantError
 from blendtui.store.plant import Plant
 from blendtui.store.records import Step
@@ -53,7 +53,7 @@ def test_the_scale_runs_from_the_heel_and_from_nothing(made: Card) -> None:
     assert made.start_kg == 140  # heel and line
     reading, tared = 140.0, 0.0
     for line in made.lines:
-        reading, tared = reading + line.plan_kg, tared + line.plan_kg
+        reading, tared = reading + line.kg, tared + line.kg
         assert (line.reading_kg, line.tared_kg) == (pytest.approx(reading), pytest.approx(tared))
     assert made.total_kg == pytest.approx(reading)
 
@@ -62,9 +62,9 @@ def test_litres_are_those_at_the_tanks_temperature(made: Card) -> None:
     by_stock = {x.stock: x for x in made.lines}
     # ASTM D1250: about 0.07 % a degree (practice: 10 °C ignored is 0.7 % of the volume).
     warm, cool = by_stock["N100"], by_stock["N32"]
-    assert (warm.celsius, cool.celsius) == (45.0, 20.0)
-    assert warm.litres == pytest.approx(1000 * warm.plan_kg / 880 * (1 + 30 * 0.000715), rel=1e-3)
-    assert cool.litres == pytest.approx(1000 * cool.plan_kg / 868 * (1 + 5 * 0.000715), rel=1e-3)
+    assert (warm.charge.celsius, cool.charge.celsius) == (45.0, 20.0)
+    assert warm.litres == pytest.approx(1000 * warm.kg / 880 * (1 + 30 * 0.000715), rel=1e-3)
+    assert cool.litres == pytest.approx(1000 * cool.kg / 868 * (1 + 5 * 0.000715), rel=1e-3)
 
 
 def test_the_viscosity_at_mixing_temperature_is_that_of_the_blend(plant: Plant) -> None:
@@ -78,7 +78,7 @@ def test_the_viscosity_at_mixing_temperature_is_that_of_the_blend(plant: Plant) 
 def test_every_charge_has_its_tank_lot_limits_and_boxes(plant: Plant, made: Card) -> None:
     said = card_text(made)
     for line in made.lines:
-        assert re.search(rf"^ +{line.line}  {line.stock} ", said, re.MULTILINE)
+        assert re.search(rf"^ +{line.charge.line}  {line.stock} ", said, re.MULTILINE)
     assert said.count("kg _________  lot ______________  time ______  by ________  check ________") == len(made.lines)
     assert "Medium neutral (tank 2)" in said
     assert "by 0.5 kg on its own scale" in said
@@ -87,6 +87,24 @@ def test_every_charge_has_its_tank_lot_limits_and_boxes(plant: Plant, made: Card
     put(plant, *(Lot("N100", lot, "2026-05-01T00:00:00.000Z", 9000.0) for lot in ("M-7", "M-6")))
     plant.step(lambda: Step(tuple(tank_parts("N100", {}, {"M-7": 0.75, "M-6": 0.25})), "lots"))
     assert "lot M-7 75.0 %, M-6 25.0 % (tested 2026-03-01, own)" in text(plant)
+
+
+def test_drums_and_codes_that_look_alike_are_told_apart(plant: Plant) -> None:
+    from blendtui.desk.stocks import add_stock
+
+    add_stock(plant, "MV")
+    add_stock(plant, "KP")
+    add_stock(plant, "N33")
+    targets.set_rule(plant, "P46", "VM", "3", "6")
+    take(plant, Order("P46", 8000, "K1"))
+    flat = " ".join(text(plant).split())
+    assert "2 x 180 kg, each one's lot written down, empties weighed" in flat
+    alike = {x.stock: x.alike for x in card(plant, "B-0001").lines}
+    assert alike == {"N32": (), "VM": ("MV",), "PK": ("PD", "KP"), "PD": ("PK",), "AF": ()} | {
+        c: a for c, a in alike.items() if c == "N100"}
+    assert "NOT MV" in flat
+    assert "NOT PD, KP" in flat
+    assert "NOT N33" not in flat  # bulk oil is told apart by its tank
 
 
 def test_it_pins_the_record_and_the_formula(plant: Plant, made: Card) -> None:
@@ -104,19 +122,25 @@ def test_it_pins_the_record_and_the_formula(plant: Plant, made: Card) -> None:
 
 def test_it_shows_what_was_done_dropped_or_closed(plant: Plant, made: Card) -> None:
     first = made.lines[0]
-    charged(plant, 1, first.plan_kg + 15, by="anna", checked_by="")
+    charged(plant, 1, first.kg + 15, by="anna", checked_by="")
     charge = plant.batch("B-0001").charges[3]
     plant.step(lambda: Step((changed(charge, state=DROPPED, why="none left"),), "missed"))
     after = card(plant, "B-0001")
     said = " ".join(card_text(after).split())
-    assert f"CHARGED {first.plan_kg + 15:g} kg (planned {first.plan_kg:g}) by anna" in said
+    assert f"CHARGED {first.kg + 15:g} kg (planned {first.kg:g}) by anna" in said
     assert "SECOND CHECK ____" in said
     assert f"line {charge.line} {charge.stock} dropped: none left" in said
     assert f"Second check missing: line 1 {first.stock}" in said
     assert after.lines[0].lots == {"N32-7": 1.0}
     assert after.lines[1].reading_kg == pytest.approx((made.lines[1].reading_kg or 0) + 15)
     assert after.lines[3].reading_kg is None
+    assert "trim 1" not in said
     drawn(plant, "sample", 2.0)
+    put(plant, Charge("B-0001", 7, 1, "G320", "", 100.0, 5.0, 20.0, position=70))
+    trimmed = card(plant, "B-0001")
+    assert trimmed.lines[-1].reading_kg == pytest.approx(trimmed.total_kg)
+    assert re.search(r"^ +trim 1$", card_text(trimmed), re.MULTILINE)
+    assert "trim 1" in card_html(trimmed)
     assert card(plant, "B-0001").lines[1].reading_kg == pytest.approx((made.lines[1].reading_kg or 0) + 13)
     orders.cancel(plant, "B-0001", why="leak", sure=True)
     assert "*** THIS BATCH IS CANCELLED: DO NOT CHARGE ***" in text(plant)
@@ -207,7 +231,8 @@ def worst(tmp_path: Path) -> Iterator[Plant]:
         stocks="stock,name,kind,on_hand_kg,price_per_t,density15,kv40,kv100,flash,division_kg,package_kg\n"
                f'{oil},"{WORST}",base,900000,800,868,32,5.4,212,0.125,\n'
                f'PK,"{WORST}",additive,90000,3000,1010,90,9.1,150,,180\n',
-        products=f'product,name,grade\n{product},"{WORST}",\n', limits=f"product,property,low,high\n{product},kv40,25,50\n",
+        products=f'product,name,grade\n{product},"{WORST}",\n',
+        limits=f"product,property,low,high\n{product},kv40,25,50\n",
         shares=f"product,of,low_pct,high_pct\n{product},PK,1,3\n",
         vessels=f"vessel,capacity_l,heel_kg,heel_stock\n{kettle},9000000,1234.567891,{oil}\n")
     with open_plant(path, who="w" * 60) as opened:

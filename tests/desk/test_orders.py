@@ -52,6 +52,7 @@ def test_the_charges_sum_to_what_is_asked_and_the_vessel_holds_the_heel_besides(
     made = propose(plant, Order("P46", 10000, "K1", line=(40, "N100")))
     assert made.status == "optimal"
     assert (made.asked_kg, made.batch_kg) == (10000, 10140)
+    assert any("10000 kg are about 115" in words for words in made.remarks)  # L at 20 °C: kg typed for litres is seen
     assert sum_of(made) == pytest.approx(10000, abs=10)  # within half a scale division of 20 kg
     assert [(c.what, c.kg, c.stock) for c in made.contents] == [("heel", 100, "N100"), ("line", 40, "N100")]
     # Treat rates are shares of the whole, and heel and line hold none of it.

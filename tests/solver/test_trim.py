@@ -75,6 +75,13 @@ def test_by_wrights_law_the_temperatures_at_which_both_have_the_viscosity_mix() 
     assert made(trim) == {"BRIGHT": pytest.approx(by_hand, rel=1e-6)}
 
 
+def test_a_limit_at_another_temperature_is_read_off_the_batchs_own_line() -> None:
+    trim = additions([BATCH], [BRIGHT], Target("pumped", (Limit("kv60", 40.0, 60.0),), law="walther-mass"))
+    at_60 = {s.code: line(s)[0] - line(s)[1] * np.log10(60.0 + 273.15) for s in (BATCH, BRIGHT)}
+    by_hand = 20e3 * (w_of(40.0) - at_60["BATCH"]) / (at_60["BRIGHT"] - w_of(40.0))
+    assert made(trim) == {"BRIGHT": pytest.approx(by_hand, rel=1e-6)}
+
+
 def test_a_batch_that_is_too_thick_takes_light_oil() -> None:
     trim = additions([BATCH], [LIGHT, BRIGHT], Target("thin", (Limit("kv40", 60.0, 80.0),)))
     by_hand = 20e3 * (refutas(92.0) - refutas(80.0)) / (refutas(80.0) - refutas(30.6))
