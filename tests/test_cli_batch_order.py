@@ -186,6 +186,6 @@ def test_vessels_from_the_command_line(capsys: pytest.CaptureFixture[str], path:
     assert (answer["flash_margin_c"], answer["flash_margin_on"]) == (30.0, "2026-02-01")
     code, out, _ = run(capsys, path, "vessel", "list")
     assert max(map(len, out.splitlines())) <= 80
-    assert "K9: charged in the order heavy light" in out
+    assert "K9: charged in the order heavy, light" in out
     assert run(capsys, path, "vessel", "retire", "K9")[0] == 0
     assert [v["vessel"] for v in asked(capsys, path, "vessel", "list")[1]["vessels"]] == ["K1", "K2", "K3", "TINY"]

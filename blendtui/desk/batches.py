@@ -160,8 +160,10 @@ def content_stock(content: Content, code: str, stocks: Mapping[str, Stock], kg: 
     """A heel, line or flush as a stock of which so many kg are in the vessel."""
     like = stocks.get(content.stock)
     parts = content.parts or ({content.stock: 1.0} if like is not None else {})
+    # Nobody chose them for this recipe: the most stocks of a product counts none of them.
+    inside = tuple((replace(s, in_vessel_kg=part * kg), part) for s, part in made_of(parts, stocks))
     return as_stock(code, content.cells, like, name=content.what, kind="base", oil="", in_vessel_kg=kg,
-                    on_hand_kg=None, contents=made_of(parts, stocks), price_per_t=None, sigmas={},
+                    on_hand_kg=None, contents=inside, price_per_t=None, sigmas={},
                     source="own" if content.source == "measured" else like.source if like is not None else "typical")
 
 

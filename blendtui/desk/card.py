@@ -13,7 +13,7 @@ from solver.stocks import Stock
 from solver.target import Limit, Target
 from solver.volume import litres
 
-from . import batch_outlook, batches, charge_lines, formulas, heels, numbers
+from . import batch_outlook, batches, charge_lines, formulas, heels
 from .cautions import Caution, cautions
 
 if TYPE_CHECKING:
@@ -243,7 +243,7 @@ def facts(made: Card) -> list[tuple[str, str]]:
         *([f"division {of.division_kg:g} kg"] if of.division_kg else [])]
     rows = [("Product", f"{head.product}  {made.product_name}".strip()), ("Customer", head.customer),
             ("Order", head.order_no), ("Asked", asked_words(made.made)),
-            ("Holds", f"{numbers.batch(head.batch_kg)} kg when all is charged, what was in the vessel included"),
+            ("Holds", f"{round(head.batch_kg, 3):,.10g} kg when all is charged, what was in the vessel included"),
             ("Vessel", ", ".join([head.vessel, *room])),
             ("Ordered", f"{batches.when(head.ordered_at)} by {head.ordered_by}"),
             ("State", batches.stage(made.made) + (f" ({head.why})" if head.why else "")), ("Note", head.note)]

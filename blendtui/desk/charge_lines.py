@@ -65,10 +65,20 @@ def tolerance(stock: Stock, kg: float) -> float:
 # In which order
 
 def names_of(typed: str, stocks: Sequence[Stock]) -> tuple[str, ...]:
-    """An order of charging as typed, names parted by commas or blanks; DeskError for a name that is none."""
+    """An order of charging as typed, names parted by commas, or by blanks; DeskError for a name that is none."""
+    return known_names(parted(typed), stocks)
+
+
+def parted(typed: str) -> tuple[str, ...]:
+    """Names as they stand in a text: parted by its commas, where it has some, else by its blanks."""
+    return tuple(name.strip() for name in (typed.split(",") if "," in typed else typed.split()) if name.strip())
+
+
+def known_names(names: Sequence[str], stocks: Sequence[Stock]) -> tuple[str, ...]:
+    """The same names, each once, as the plant spells them; DeskError for one that is none."""
     known = {*ROLES, *KINDS, *(s.code for s in stocks), *(s.oil for s in stocks if s.oil)}
     found: dict[str, None] = {}
-    for word in typed.replace(",", " ").split():
+    for word in names:
         name = word if word in known else word.lower()
         if name not in known:
             raise DeskError(f"{harmless(word, 40)!r} is no stock, oil or kind, and none of {', '.join(ROLES)}; an "

@@ -183,7 +183,11 @@ def _refuse_order(plant: Plant, order: Order, of: Vessel) -> None:
         raise DeskError(f"a mixing temperature of {celsius:g} °C lies outside −20 to 150 °C; °F?")
     if not 1.0 <= order.most_fill_pct <= 100.0:
         raise DeskError(f"a fill of {order.most_fill_pct:g} % of the vessel cannot be; type one such as 85 or 90")
+    codes = {s.code for s in plant.stocks()} if order.tank_c else set()
     for stock, at in order.tank_c.items():
+        if stock and stock not in codes:
+            raise DeskError(f"a temperature is typed for the tank of {harmless(stock, 40)!r}, which is no stock; mend "
+                            "the code")
         if not -20.0 <= at <= 150.0:
             raise DeskError(f"{harmless(stock, 40) or 'the tanks'}: {at:g} °C lies outside −20 to 150 °C; °F?")
     if order.name:
@@ -206,25 +210,24 @@ def new_name(plant: Plant, typed: str) -> str:
 
 
 def proposed(plant: Plant, order: Order, of: Vessel, target: Target, contents: Sequence[Content],
-              stocks: Sequence[Stock], questions: Sequence[str], own: str = "") -> Proposal:
+             stocks: Sequence[Stock], questions: Sequence[str], own: str = "") -> Proposal:
+    """A proposal for contents and stocks that are settled; `own`: the batch that is designed anew."""
     heels.refuse_fuller(of, contents)
-    every = plant.stocks(include_retired=True)
-    charges_in = charge_lines.names_of(" ".join(order.charges_in or charge_order(plant, of.vessel)), every)
-    weighed = charge_lines.in_steps(stocks, of)
-    designed = work_out(Plan(target, of, tuple(weighed), batches.by_code(plant), tuple(contents), order.amount,
-                             order.unit, order.mixed_at, bool(order.heel_ignored.strip()), order.most_fill_pct, order.whole,
+    known, weighed = batches.by_code(plant), charge_lines.in_steps(stocks, of)
+    charges_in = charge_lines.known_names(order.charges_in or charge_order(plant, of.vessel), tuple(known.values()))
+    designed = work_out(Plan(target, of, tuple(weighed), known, tuple(contents), order.amount, order.unit,
+                             order.mixed_at, bool(order.heel_ignored.strip()), order.most_fill_pct, order.whole,
                              charges_in))
     charges = tuple(_charge(plant, order, n, line) for n, line in enumerate(designed.lines, 1))
     used = [s for s in stocks if any(c.stock == s.code for c in charges)]
+    asked = (*questions, *heels.doubts(contents, known), *_questions(plant, of, order.mixed_at, own))
+    remarks = (*heels.words(contents), *_foreign_words(known, target, contents),
+               *_mass_words(designed, contents), *designed.remarks, *_step_words(stocks, weighed, used),
+               *_stock_words(used))
     how = {"most_fill_pct": order.most_fill_pct, "whole": order.whole, "tank_c": dict(order.tank_c),
            "charges_in": list(order.charges_in)}
-    return Proposal(order, of, target, designed, charges, tuple(contents),
-                    (*questions, *heels.doubts(contents, batches.by_code(plant)), *_questions(plant, of, order.mixed_at, own)),
-                    (*heels.words(contents), *_foreign_words(plant, target, contents),
-                     *_mass_words(order, designed, contents), *designed.remarks,
-                     *_step_words(stocks, weighed, used), *_stock_words(used)),
-                    formulas.freeze(target, how), rests_on(plant, order, of, used),
-                    {line.stock.code: line.step_kg for line in designed.lines})
+    return Proposal(order, of, target, designed, charges, tuple(contents), asked, remarks, formulas.freeze(target, how),
+                    rests_on(plant, order, of, used), {line.stock.code: line.step_kg for line in designed.lines})
 
 
 def _charge(plant: Plant, order: Order, number: int, line: charge_lines.Line) -> Charge:
@@ -260,7 +263,7 @@ def rests_on(plant: Plant, order: Order, of: Vessel, used: Sequence[Stock]) -> t
 
 # What is remarked
 
-def _mass_words(order: Order, designed: Designed, contents: Sequence[Content]) -> list[str]:
+def _mass_words(designed: Designed, contents: Sequence[Content]) -> list[str]:
     stays = sum(c.kg for c in contents if c.what != FLUSH and c.counts)
     flush = sum(c.kg for c in contents if c.what == FLUSH and c.counts)
     if stays <= 0.0 and flush <= 0.0:
@@ -273,12 +276,12 @@ def _mass_words(order: Order, designed: Designed, contents: Sequence[Content]) -
     return [said]
 
 
-def _foreign_words(plant: Plant, target: Target, contents: Sequence[Content]) -> list[str]:
+def _foreign_words(known: Mapping[str, Stock], target: Target, contents: Sequence[Content]) -> list[str]:
     """What is in the vessel and not on the product's list: its mass counts, and somebody has to know."""
     from solver.allowed import candidates
     from solver.stocks import StockTable
 
-    table = StockTable(plant.stocks(include_retired=True))
+    table = StockTable(known.values())
     listed = {table.codes[i] for i in candidates(table, target)}
     foreign: dict[str, float] = {}
     for content in (c for c in contents if c.counts):

@@ -15,6 +15,7 @@ from blendtui.store.plant import Plant
 from blendtui.store.records import Change, Step
 from blendtui.store.state import change_of
 
+from .charge_lines import names_of, parted
 from .errors import DeskError
 from .stocks import Edit
 
@@ -53,13 +54,13 @@ def vessel(plant: Plant, code: str) -> Vessel:
 def charge_order(plant: Plant, code: str) -> tuple[str, ...]:
     """The plant's own order of charging in this vessel, as names; empty: the usual one."""
     row = plant.row("extra", "vessel", edits.row_key((code,)), CHARGE_ORDER)
-    return tuple(str((row or {}).get("text") or "").replace(",", " ").split())
+    return parted(str((row or {}).get("text") or ""))
 
 
 def text_of(plant: Plant, of: Vessel, cell: str) -> str:
     """A cell as it is shown and as it may be typed back."""
     if cell == CHARGE_ORDER:
-        return " ".join(charge_order(plant, of.vessel))
+        return ", ".join(charge_order(plant, of.vessel))
     value = getattr(of, cell)
     return "" if value is None else value if isinstance(value, str) else f"{value:.12g}"
 
@@ -99,10 +100,8 @@ def set_cells(plant: Plant, code: str, typed: Mapping[str, str]) -> Edit:
 
 
 def _own_order(plant: Plant, of: Vessel, typed: str) -> list[Change]:
-    from .charge_lines import names_of
-
     names = names_of(typed, plant.stocks())
-    before, after = " ".join(charge_order(plant, of.vessel)), " ".join(names)
+    before, after = ", ".join(charge_order(plant, of.vessel)), ", ".join(names)
     key = ("vessel", edits.row_key((of.vessel,)), CHARGE_ORDER)
     if before == after:
         return []

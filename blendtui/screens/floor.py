@@ -37,6 +37,7 @@ class FloorState:
     testing: bool = False  # to the laboratory, else to the charges
     seen: Seen | None = None
     lots: dict[int, str] = field(default_factory=dict)  # line → lot typed for a charge to come
+    refusal: str = ""  # why the batch could not be read
 
 
 class FloorScreen(LabCommands, OutCommands):
@@ -59,6 +60,7 @@ class FloorScreen(LabCommands, OutCommands):
         self.lines: list[CardLine] = []
         self.lab_lines: list[floor_lab.LabLine] = []
         self.read_for: tuple[int, str] | None = None
+        self.looked = False  # has the plant been read yet
         self.shown_name = ""  # of the batch on the screen
 
     def body(self) -> Iterable[Widget]:
@@ -83,14 +85,14 @@ class FloorScreen(LabCommands, OutCommands):
         if wanted != self.read_for:
             self.read_for, plant = wanted, self.program.plant
             self.program.task(lambda: floor_view.look(plant, wanted[1]), lambda seen: self._looked(wanted, seen),
-                              lambda refusal: self._looked(wanted, None))
+                              lambda refusal: self._looked(wanted, None, refusal))
         self._show()
         super().refresh_page()
 
-    def _looked(self, wanted: tuple[int, str], seen: Seen | None) -> None:
+    def _looked(self, wanted: tuple[int, str], seen: Seen | None, refusal: str = "") -> None:
         if wanted != self.read_for:
             return
-        name = seen.made.name if seen else ""
+        self.looked, name = True, seen.made.name if seen else ""
         other, self.shown_name = name != self.shown_name, name
         if seen is not None and not self.session.batch:
             self.session.batch = name  # a batch that is ordered later does not take its place
@@ -98,7 +100,7 @@ class FloorScreen(LabCommands, OutCommands):
         to_come = {c.line for c in seen.made.to_charge} if seen else set()
         lots = {} if other else {line: lot for line, lot in self.state.lots.items() if line in to_come}
         moved_on = other or self._was_next(seen)
-        self.state = replace(self.state, seen=seen, lots=lots)
+        self.state = replace(self.state, seen=seen, lots=lots, refusal=refusal)
         self._show(to_next=moved_on)
 
     def _was_next(self, seen: Seen | None) -> bool:
@@ -116,8 +118,9 @@ class FloorScreen(LabCommands, OutCommands):
         row = next((n for n, x in enumerate(self.lines) if here and x.charge.line == here.line), None)
         if to_next:
             row = next((n for n, x in enumerate(self.lines) if x.charge.state == PLANNED), row or 0)
-        self.charges.empty = "no charges" if seen else ("reading the batch …" if self.read_for is None else
-                                                        "no batch yet: on the screen Batches, a takes an order")
+        self.charges.empty = self.state.refusal or (
+            "no charges" if seen else "no batch yet: on the screen Batches, a takes an order" if self.looked else
+            "reading the batch …")
         self.charges.show(CHARGES, len(self.lines), self._cell, row=row)
         self.tests.empty = "no sample yet; s records one once everything is charged" if seen else ""
         self.tests.show(floor_lab.COLUMNS, len(self.lab_lines), self._lab_cell)

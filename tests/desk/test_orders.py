@@ -200,6 +200,7 @@ def test_a_measured_heel_far_from_what_it_is_said_to_be_is_questioned(plant: Pla
     (Order("P46", 8000, "K1", "gal"), "'gal' is no unit of an order; usable are kg, L15, L20"),
     (Order("P46", 8000, "K1", mix_c=260), "a mixing temperature of 260 °C lies outside"),
     (Order("P46", 8000, "K1", tank_c={"": 900}), "the tanks: 900 °C lies outside"),
+    (Order("P46", 8000, "K1", tank_c={"N33": 40}), "the tank of 'N33', which is no stock"),
     (Order("P46", 8000, "K1", most_fill_pct=0), "a fill of 0 % of the vessel cannot be"),
     (Order("P46", 8000, "K1", limits={"colour": ("1", "2")}), "no property 'colour'"),
     (Order("P46", 8000, "K1", limits={"kv40": ("48", "44")}), "low 48 is above high 44"),
@@ -329,7 +330,7 @@ def test_the_usual_order_keeps_light_stock_back_as_a_rinse(plant: Plant) -> None
 
 
 def test_the_plant_sets_its_own_order_for_a_vessel_or_one_batch(plant: Plant) -> None:
-    vessels.set_cell(plant, "K1", "charge_order", "heavy, light pour_depressant PK")
+    vessels.set_cell(plant, "K1", "charge_order", "heavy, light, pour_depressant, PK")
     assert [c.stock for c in propose(plant, Order("P46", 10000, "K1")).charges] == ["N100", "N32", "PD", "PK", "AF"]
     own = Order("P46", 10000, "K1", charges_in=("light", "additive", "rinse"))
     assert [c.stock for c in propose(plant, own).charges] == ["N32", "PK", "AF", "N32", "N100", "PD"]
