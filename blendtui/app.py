@@ -132,7 +132,8 @@ class Console(App[int]):
         return next(s for s in reversed(self.screen_stack) if hasattr(s, "say"))
 
     def say(self, message: str, kind: str = "note") -> None:
-        """Say what happened, in the status line and in the list of messages."""
+        """Say what happened, in the status line and in the list of messages; a headless command as its key."""
+        message = words.at_console(message)
         if message and self.said[-1] != (kind, message):
             self.said.append((kind, message))
         self.page.say(message, kind)

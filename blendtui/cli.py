@@ -47,6 +47,9 @@ def main(argv: Sequence[str] | None = None) -> int:
         return _refuse(*(map(str, error.faults) if every else [str(error)]))
     except (BadInput, SolverError, PlantError, DeskError) as error:
         return _refuse(str(error))
+    except UnicodeEncodeError as error:
+        # Bytes that are no text in this terminal's encoding; Python hands them on as halves of a pair.
+        return _refuse(f"{error.object[:40]!r} is no text: it holds bytes that are not UTF-8; type it anew")
     except KeyboardInterrupt:
         return 130
     except BrokenPipeError:
@@ -54,7 +57,8 @@ def main(argv: Sequence[str] | None = None) -> int:
         os.dup2(os.open(os.devnull, os.O_WRONLY), 1)
         return DONE
     except OSError as error:
-        return _refuse(f"the answer could not be written: {(error.strerror or str(error)).lower()}")
+        return _refuse(f"the answer could not be written: {(error.strerror or str(error)).lower()}; a step that was "
+                       "asked for may be on record: look before it is repeated")
     except Exception as error:
         if os.environ.get("BLENDTUI_DEBUG"):
             raise

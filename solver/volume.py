@@ -24,7 +24,8 @@ def density_at(density15: Any, celsius: Any) -> Any:
     """
     density, step = np.asarray(density15, dtype=np.float64), np.asarray(celsius, dtype=np.float64) - 15.0
     alpha = K1 / density
-    return density * np.exp(-alpha * step * (1.0 + 0.8 * alpha * step))
+    with np.errstate(over="ignore"):  # of no temperature that an oil has
+        return density * np.exp(-alpha * step * (1.0 + 0.8 * alpha * step))
 
 
 def litres(mass_kg: float, density15: float, celsius: float) -> float:

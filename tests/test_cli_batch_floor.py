@@ -64,6 +64,16 @@ def test_charge_and_check(batch, plant):
     assert (row.actual_kg, row.celsius, row.by, row.checked_by, row.lots) == (6010.0, 35.0, "Ben", "Eva", {"A7": 1.0})
 
 
+def test_several_lines_are_checked_all_or_none(batch, plant):
+    charge_all(batch)
+    code, out, err = batch("check", "B-0001", "1", "2", "9", "--by", "Eva")
+    assert (code, out, err.count("\n")) == (2, "", 1)
+    with open_plant(plant) as opened:
+        assert [c.checked_by for c in opened.batch("B-0001").charges] == ["", "", "", ""]
+    found = answer(batch, "check", "B-0001", "1", "2", "2", "--by", "Eva")
+    assert [(row["line"], row["checked_by"]) for row in found["lines"]] == [(1, "Eva"), (2, "Eva")]
+
+
 def test_a_charge_outside_tolerance_as_json(batch):
     found = answer(batch, "charge", "B-0001", "2", "1100", "--lot", "B7", "--by", "Ben")
     assert (found["batch"], found["odd"]) == ("B-0001", True)
@@ -94,8 +104,11 @@ def test_a_question_is_answered_with_sure(batch):
     (("charge", "B-0001", "1", "-5"), "-5 kg cannot have been charged"),
     (("charge", "B-0001", "1", "nan"), "not a number"),
     (("charge", "B-0001", "7", "5"), "has no line 7"), (("charge", "B-9", "1", "5"), "no batch 'B-9'"),
-    (("charge", "B-0001", "x", "5"), "invalid int value"), (("charge", "B-0001", "1"), "are required: KG"),
+    (("charge", "B-0001", "x", "5"), "argument LINE: 'x' is no whole number"), (("charge", "B-0001", "1"), "are required: KG"),
     (("charge", "B-0001", "1", "6000", "--at", "hot"), "--at: 'hot' is not a number"),
+    (("charge", "B-0001", "1", "6000", "--at", "1e308"), "--at: 1e308 is no temperature of an oil"),
+    (("check", "B-0001", "1_0"), "argument LINE: '1_0' is no whole number"),
+    (("result", "B-0001", "kv40=46", "--sample", "x" * 5000), "xxx…' is no whole number"),
     (("charge", "B-0001", "1", "6000", "--stock", "ZZ"), "the plant has no stock 'ZZ'"),
     (("correct", "B-0001", "1", "6000"), "a correction needs its reason"),
     (("miss", "B-0001", "1"), "a line is dropped only with its reason"),

@@ -189,3 +189,12 @@ def test_vessels_from_the_command_line(capsys: pytest.CaptureFixture[str], path:
     assert "K9: charged in the order heavy, light" in out
     assert run(capsys, path, "vessel", "retire", "K9")[0] == 0
     assert [v["vessel"] for v in asked(capsys, path, "vessel", "list")[1]["vessels"]] == ["K1", "K2", "K3", "TINY"]
+
+
+def test_bytes_that_are_no_text_are_refused_in_words(capsys: pytest.CaptureFixture[str], path: Path) -> None:
+    for argv in (("batch", "show", "B-\udcff"), ("batch", "order", "P\udcff", "10", "t", "--vessel", "K1"),
+                 ("trace", "\udcff"), ("vessel", "add", "K\udcff")):
+        code, out, err = run(capsys, path, *argv)
+        assert (code, out, err.count("\n")) == (2, "", 1)
+        assert "an unexpected fault" not in err
+    assert asked(capsys, path, "batch", "list")[1] == {"batches": []}

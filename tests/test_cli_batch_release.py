@@ -167,6 +167,14 @@ def test_a_certificate_is_written_once(batch, plant, tmp_path):
     assert not (tmp_path / "b2.html").exists()
     assert text.read_text(encoding="utf-8") == before
     assert batch("certificate", "B-0001", "--write", str(page.parent / "c"), "--html", str(page.parent / "c"))[0] == 2
+    # Where the second cannot be written the first is not there either.
+    code, out, err = batch("certificate", "B-0001", "--write", str(tmp_path / "b3.txt"), "--html",
+                           str(tmp_path / "none" / "b3.html"))
+    assert (code, out, err.startswith("cannot write ")) == (2, "", True)
+    assert not (tmp_path / "b3.txt").exists()
+    assert batch("certificate", "B-0001", "--write", "x" * 5000)[2].startswith("cannot write xxx")
+    code, out, err = batch("certificate", "B-0001", "--write", str(tmp_path / "\x1b[2J.txt"))
+    assert (code, err, "\x1b" in out) == (0, "", False)
 
 
 def test_a_batch_that_is_not_there(batch):

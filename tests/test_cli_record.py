@@ -140,3 +140,15 @@ def test_restore_needs_a_backup(run, tmp_path):
     code, out, err = run("restore")
     assert (code, out) == (2, "")
     assert "FILE" in err
+
+
+def test_backup_and_restore_in_the_folder_one_stands_in(run, plant, tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    assert run("backup", "saved.plant")[::2] == (0, "")
+    assert run("backup", "saved.plant", "--replace", on=Path("x.plant"))[::2] == (0, "")
+    price(plant, "bertil", 890.0)
+    assert run("restore", "saved.plant", "--replace-newer", on=Path("x.plant"))[::2] == (0, "")
+    assert run("restore", "saved.plant", on=Path("new.plant"))[::2] == (0, "")
+    with open_plant(plant) as opened, open_plant(tmp_path / "new.plant") as new:
+        assert (opened.stock("MN50").price_per_t, new.stock("MN50").price_per_t) == (880.0, 880.0)
+    assert not [x for x in tmp_path.iterdir() if x.name.endswith("-journal")]

@@ -119,7 +119,10 @@ def test_pack_draw_and_balance(run, plant):
     code, out, _ = run("batch", "pack", "B-1", "9350")
     assert (code, out.splitlines()[0]) == (0, "B-1: 9350 kg packed; 150 kg are in K1 by the book")
     assert answer(run, "batch", "balance", "B-1")["loss_kg"] is None
-    assert run("batch", "draw", "B-1", "110", "--as", "left")[0] == 0
+    code, out, _ = run("batch", "draw", "B-1", "110", "--as", "left")
+    assert (code, out.splitlines()) == (0, [
+        "B-1: 110 kg left", "the heel of K1 is now 110 kg of B-1", "loss 40.0 kg (0.40 %): 0.2–0.5 % is good",
+        "yield 94.54 %: packed, of what went in and did not stay as a heel"])
     assert run("batch", "pack", "B-1", "-10", "--why", "a drum counted twice")[0] == 0
     found = answer(run, "batch", "balance", "B-1")
     assert (found["in_kg"], found["packed_kg"], found["rework_kg"], found["left_kg"], found["loss_kg"]) == (

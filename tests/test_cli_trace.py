@@ -94,7 +94,7 @@ def test_a_long_past_is_cut_on_paper_and_whole_in_json(run, plant):
     with open_plant(plant, who="anna") as opened:
         for n in range(3, 12):
             release(opened, f"B-{n - 1}")
-            rework.leave(opened, f"B-{n - 1}", 4000.0, "left")
+            rework.leave(opened, f"B-{n - 1}", 4000.0, "left", sure=True)
             order(opened, f"B-{n}", {"LN": 200.0 + n, "HN": 100.0}, customer="Nordlub")
     out = run("Nordlub")[1]
     assert "steps more: --json has all of them" in out

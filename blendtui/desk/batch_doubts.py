@@ -12,7 +12,7 @@ from blendtui.store.harmless import harmless
 from solver.properties import lookup
 
 from . import batches, numbers
-from .batch_lessons import MINUTE
+from .batch_lessons import MINUTE, earlier
 from .batch_verdict import PAIR, mean_of, standing
 from .errors import DeskError
 from .reason_words import heading, unit
@@ -38,12 +38,16 @@ def ask(sure: bool, doubts: Iterable[str]) -> None:
 # Clock and times
 
 def clock(made: Made, sure: bool) -> str:
-    """This moment; questioned where the batch has an entry of a later one: the clock was set back, or was ahead."""
+    """This moment; questioned where the batch has an entry of a later one: the clock was set back, or was ahead.
+
+    What goes through all the same has the time of that entry, so that a batch's record keeps its order (which sample
+    came after which charge); the journal has the time that the clock showed.
+    """
     at, last = now(), last_entry(made)
     if at < last:
         batches.question(sure, f"the clock says {batches.when(at)}, and the record of {harmless(made.name, 40)} goes "
                                f"to {batches.when(last)}: was the clock set back? Set it, or say that it is right.")
-    return at
+    return max(at, last)
 
 
 def last_entry(made: Made) -> str:
@@ -64,14 +68,13 @@ def refuse_future(what: str, at: str) -> None:
 
 def of_sample(made: Made, at: str, celsius: float | None) -> Iterator[str]:
     """What is unlikely of a sample; DeskError for one that cannot be."""
-    refuse_future("a sample", at)
     if made.in_vessel_kg <= 0.0:
         raise DeskError(f"{harmless(made.name, 40)}: nothing is in the vessel yet, so there is nothing to sample")
     if at[:MINUTE] < made.head.ordered_at[:MINUTE]:
         raise DeskError(f"a sample at {batches.when(at)} is older than the batch, which was ordered at "
                         f"{batches.when(made.head.ordered_at)}; mend the time")
     last = max(made.charged, key=lambda c: c.at, default=None)
-    if last is not None and at[:MINUTE] < last.at[:MINUTE]:
+    if last is not None and earlier(at, last.at):
         yield (f"it was drawn at {batches.when(at)}, before the last charge (line {last.line}, "
                f"{harmless(last.stock, 40)}, {batches.when(last.at)}): it says nothing of the batch as it is and "
                "decides nothing")

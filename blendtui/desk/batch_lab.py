@@ -45,6 +45,8 @@ def sample(plant: Plant, batch: str, *, taken: str = "", place: str = "", celsiu
 
     def make() -> Step:
         made = batches.opened(plant, batch)
+        if at:
+            batch_doubts.refuse_future("a sample", at)
         moment = at or clock(plant, made, sure)
         batch_doubts.ask(sure, batch_doubts.of_sample(made, moment, celsius))
         number = 1 + max((s.sample for s in made.samples), default=0)
@@ -86,8 +88,10 @@ def results(plant: Plant, batch: str, sample: int | None, values: Mapping[str, s
     def make() -> Step:
         made = batches.opened(plant, batch)
         of = sampled(made, sample)
+        if time:
+            batch_doubts.refuse_future("a result", time)
         moment = time or clock(plant, made, sure)
-        _refuse_time(of, moment)
+        _refuse_earlier(of, moment)
         batch_doubts.refuse_swapped(made, of, typed)
         batch_doubts.ask(sure, batch_doubts.of_results(made, of, typed, expected))
         first = 1 + max((r.line for r in made.results if r.sample == of.sample), default=0)
@@ -134,8 +138,7 @@ def _typed(values: Mapping[str, str]) -> dict[str, float]:
     return found
 
 
-def _refuse_time(sample: Sample, at: str) -> None:
-    batch_doubts.refuse_future("a result", at)
+def _refuse_earlier(sample: Sample, at: str) -> None:
     if at[:MINUTE] < sample.taken_at[:MINUTE]:
         raise DeskError(f"a result at {batches.when(at)} is dated before its sample {sample.sample}, which was drawn "
                         f"at {batches.when(sample.taken_at)}; mend the time, or name the right sample")

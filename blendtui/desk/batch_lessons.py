@@ -23,7 +23,8 @@ from solver.stocks import Stock
 from . import batches
 
 NOTE = "batch {}, sample {}"  # by it a blend that came from a batch is told from one that somebody typed
-MINUTE = 16  # characters of an ISO time to the minute: typed times have no seconds
+MINUTE = 16  # characters of an ISO time to the minute: typed times have no seconds …
+TYPED = ":00.000Z"  # … and end so
 
 
 # Results of one sample
@@ -43,8 +44,13 @@ def means(made: Made, sample: int) -> dict[str, float]:
 
 def of_last_round(made: Made) -> list[Sample]:
     """Samples of the batch as it is now, drawn after its last charge, oldest first."""
-    last = max((c.at for c in made.charged), default="")[:MINUTE]
-    return [s for s in made.samples if s.round == made.rounds and s.taken_at >= last]
+    last = max((c.at for c in made.charged), default="")
+    return [s for s in made.samples if s.round == made.rounds and not earlier(s.taken_at, last)]
+
+
+def earlier(taken: str, charged: str) -> bool:
+    """Was a sample drawn before a charge? A time that was typed to the minute may be any moment of it."""
+    return taken[:MINUTE] < charged[:MINUTE] if taken.endswith(TYPED) else taken < charged
 
 
 # A batch as a measured blend
@@ -120,8 +126,7 @@ def why_not(made: Made, sample: Sample | int, stocks: Mapping[str, Stock]) -> st
     """Why a sample of a batch cannot teach, in words; empty: it can."""
     found = sample if isinstance(sample, Sample) else next(s for s in made.samples if s.sample == sample)
     rounds = [c for c in made.charges if c.round <= found.round]
-    if any(c.state == PLANNED for c in rounds) or any(c.at[:MINUTE] > found.taken_at for c in rounds
-                                                      if c.state == DONE):
+    if any(c.state == PLANNED or (c.state == DONE and earlier(found.taken_at, c.at)) for c in rounds):
         return f"sample {found.sample} was drawn before all was charged"
     blend = measured_of(made, found, stocks)
     if not blend.values:

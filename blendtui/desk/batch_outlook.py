@@ -11,7 +11,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
-from blendtui.store.batch_records import DROPPED, Made, Vessel
+from blendtui.store.batch_records import DROPPED, Charge, Made, Vessel
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.errors import SolverError
@@ -156,7 +156,8 @@ def contents(plant: Plant, made: Made, target: Target) -> list[Stock]:
     base = max((s.round for s in made.samples if s.round < made.rounds and means(made, s.sample)), default=None)
     if base is None:
         return batches.in_vessel(made, stocks)
-    since = [batches.charge_stock(c, stocks, c.actual_kg or 0.0) for c in made.charged if c.round > base]
+    since = [batches.charge_stock(c, stocks, kg) for c, kg in batches.held(made)
+             if isinstance(c, Charge) and c.round > base and kg > 0.0]
     left = made.in_vessel_kg - sum(s.in_vessel_kg or 0.0 for s in since)
     try:
         measured = measured_batch(plant, replace(made, charges=tuple(c for c in made.charges if c.round <= base)),

@@ -133,14 +133,21 @@ def held(made: Made) -> list[tuple[Content | Charge, float]]:
     masses: list[tuple[Content | Charge, float]] = [(c, c.kg) for c in made.contents if c.counts and c.kg > 0.0]
     came = [(c.at, 0, c) for c in made.charged]
     went = [(o.at, 1, o) for o in made.outcomes]
+    gone = 0.0  # kg since the last charge: what is taken back of them is of the same oil
     for _, leaves, event in sorted([*came, *went], key=lambda each: each[:2]):
-        if not leaves:
-            masses.append((event, event.actual_kg or 0.0))  # type: ignore[arg-type, union-attr]
+        if leaves:
+            gone += event.kg  # type: ignore[union-attr]
             continue
-        there = sum(kg for _, kg in masses)
-        left = max(0.0, there - event.kg) / there if there > 0.0 else 0.0  # type: ignore[union-attr]
-        masses = [(thing, kg * left) for thing, kg in masses]
-    return masses
+        masses = [*_without(masses, gone), (event, event.actual_kg or 0.0)]  # type: ignore[list-item, union-attr]
+        gone = 0.0
+    return _without(masses, gone)
+
+
+def _without(masses: list[tuple[Content | Charge, float]], kg: float) -> list[tuple[Content | Charge, float]]:
+    """Masses after so many kg left them all in proportion."""
+    there = sum(mass for _, mass in masses)
+    left = max(0.0, there - kg) / there if there > 0.0 else 0.0
+    return [(thing, mass * left) for thing, mass in masses]
 
 
 def in_vessel(made: Made, stocks: Mapping[str, Stock]) -> list[Stock]:

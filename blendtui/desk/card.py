@@ -104,9 +104,10 @@ def card(plant: Plant, batch: str) -> Card:
     """The card of a batch as it stands; NoSuchRow when there is none of that name."""
     made, stocks = plant.batch(batch), batches.by_code(plant)
     of = next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
-    ahead = batch_outlook.outlook(plant, made)
+    full = _as_made(made)
+    ahead = batch_outlook.outlook(plant, full)
     fill, limits = ahead.fill_l, () if ahead.recipe is None else ahead.recipe.limits
-    total = made.in_vessel_kg + sum(c.plan_kg for c in made.to_charge)
+    total = full.in_vessel_kg + sum(c.plan_kg for c in made.to_charge)
     inside = batches.in_vessel(replace(made, head=replace(made.head, heel_ignored=""), charges=(), outcomes=()), stocks)
     going = [stocks[code] for code in dict.fromkeys(c.stock for c in made.charges if c.state != DROPPED)
              if code in stocks]
@@ -115,9 +116,20 @@ def card(plant: Plant, batch: str) -> Card:
     return Card(made, _product_name(plant, made.head.product), of, made.contents, start,
                 tuple(_lines(plant, made, stocks, of, start)), ahead.recipe, ahead.why_not, limits, ahead.missed, total,
                 fill, 100.0 * fill / of.capacity_l if fill is not None and of is not None and of.capacity_l else None,
-                _mix_kv(plant, made, ahead.recipe), cautions([*inside, *going], of, made.head.mix_c, fill_l=fill),
+                _mix_kv(plant, full, ahead.recipe), cautions([*inside, *going], of, made.head.mix_c, fill_l=fill),
                 formulas.changes_since(plant, made) if made.head.formula else (),
                 formulas.customer_limits_of(made) if made.head.formula else (), entry, last)
+
+
+def _as_made(made: Made) -> Made:
+    """The batch as it stood when all was charged: what has left the vessel since, packed or drawn, is in it again.
+
+    What was drawn off to make room for charges that are still to come stays out.
+    """
+    last = max((c.at for c in made.charged), default="")
+    if made.to_charge or not last:
+        return made
+    return replace(made, outcomes=tuple(o for o in made.outcomes if o.at < last))
 
 
 def _product_name(plant: Plant, code: str) -> str:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import textwrap
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
@@ -16,7 +17,7 @@ from solver.properties import lookup
 from solver.target import Target
 
 from . import batch_lessons, batches, numbers, release
-from .batch_verdict import PAIR, drawn_together, mean_of, standing
+from .batch_verdict import PAIR, drawn_together, standing, values_of
 from .errors import DeskError
 
 if TYPE_CHECKING:
@@ -106,13 +107,20 @@ def certificate(plant: Plant, batch: str) -> Certificate:
         head.batch, head.product, _product_name(plant, head.product), target.grade, head.customer, head.order_no,
         f"{numbers.batch(head.asked)} {UNITS.get(head.unit, head.unit)}" if head.asked else "",
         sum(packed) if packed else None,
-        tuple(f"{s.sample}, drawn {batches.when(s.taken_at)}" + (f", {s.place}" if s.place else "") for s in draw),
+        tuple(f"{s.sample}, drawn {batches.when(s.taken_at)}" + (f", {s.place}" if s.place else "")
+              for s in (*draw, *_older(made, draw, [need.code for need in needs]))),
         _lines(made, draw, [_asked_by(need, target) for need in needs]), decided.why if decided is not None else "",
         tests, head.closed_by, batches.when(head.closed_at), entry, last)
 
 
 def _product_name(plant: Plant, code: str) -> str:
     return next((p.name for p in plant.products(include_retired=True) if p.product == code), "")
+
+
+def _older(made: Made, draw: Sequence[Sample], codes: Sequence[str]) -> list[Sample]:
+    """Older samples of the same oil that alone were tested for one of these."""
+    of = {number for code in codes for _, _, number in values_of(made, draw, code)}
+    return [s for s in reversed(made.samples) if s.sample in of and s not in draw]
 
 
 def _pin(plant: Plant) -> tuple[int, str]:
@@ -133,15 +141,17 @@ def _lines(made: Made, draw: Sequence[Sample], needs: Sequence[Requirement]) -> 
 
 def _line(code: str, made: Made, draw: Sequence[Sample], need: Requirement | None) -> Line | None:
     """One property as the verdict reads it: the mean of its samples; None: it was not measured."""
-    means = [m for m in (mean_of(made, s, code) for s in draw) if m is not None]
+    means = values_of(made, draw, code)
     if not means:
         return None
     entry, codes = lookup(code), PAIR if code == "vi" else (code,)
-    results = [r for s in draw for c in codes for r in standing(made, s, c)]
+    of = {number for _, _, number in means}
+    results = [r for s in made.samples if s.sample in of for c in codes for r in standing(made, s, c)]
     methods = dict.fromkeys([CALCULATED] if code == "vi" else [r.method or entry.method for r in results])
-    return Line(code, entry.name, entry.unit, ", ".join(methods), fmean(m for m, _ in means), sum(n for _, n in means),
-                batches.when(max(r.at for r in results))[:10], need.low if need else None, need.high if need else None,
-                need.sources if need else (), calculated=code == "vi")
+    return Line(code, entry.name, entry.unit, ", ".join(methods), fmean(m for m, _, _ in means),
+                sum(n for _, n, _ in means), batches.when(max(r.at for r in results))[:10],
+                need.low if need else None, need.high if need else None, need.sources if need else (),
+                calculated=code == "vi")
 
 
 def _asked_by(need: Requirement, target: Target) -> Requirement:
@@ -224,11 +234,33 @@ def write_new(path: Path, text: str, what: str = "certificate") -> str:
         with path.open("x", encoding="utf-8") as out:
             out.write(text)
     except FileExistsError:
-        raise DeskError(f"{path} is there already; choose another name or move the old {what} away") from None
+        raise DeskError(_taken(path, what)) from None
     except OSError as error:
         raise DeskError(f"cannot write {path}: {(error.strerror or str(error)).lower()}; choose another place"
                         ) from None
-    return f"{what} written to {path}"
+    return f"{what} written to {harmless(str(path))}"
+
+
+def _taken(path: Path, what: str) -> str:
+    return f"{path} is there already; choose another name or move the old {what} away"
+
+
+def write_all(files: Sequence[tuple[Path, str]], what: str = "certificate") -> list[str]:
+    """Write several texts to new files, all of them or none, and say where; DeskError as `write_new`."""
+    if len({path.resolve() for path, _ in files}) < len(files):
+        raise DeskError(f"{files[0][0]} is named twice; give each {what} a file of its own")
+    for path, _ in files:
+        if os.path.lexists(path):
+            raise DeskError(_taken(path, what))
+    said: list[str] = []
+    try:
+        for path, text in files:
+            said.append(write_new(path, text, what))
+    except DeskError:
+        for path, _ in files[:len(said)]:
+            path.unlink(missing_ok=True)
+        raise
+    return said
 
 
 # JSON

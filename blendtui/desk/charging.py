@@ -30,6 +30,7 @@ if TYPE_CHECKING:
 
 PLAN = ("plan_kg", "tolerance_kg", "state", "why", "position")  # cells of a line that planning anew may change
 LONGEST = 300  # characters of a typed reason
+BLENDS = "blend_"  # how the values begin with which an additive blends
 CELLS = ("stock", "state", "actual_kg", "actual_lot", "at", "by", "celsius", "why", "cells", "checked_at", "checked_by")
 
 
@@ -114,6 +115,7 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
         if _is_nothing(kg):
             batches.question(sure, f"was nothing charged on line {line}? Then {numbers.batch(row.actual_kg)} kg go "
                                    f"back to {harmless(oil.code, 40)} and the line is to come again.")
+            _question_gone(made, -(row.actual_kg or 0.0), sure)
             return _taken_back(plant, made, row, oil, tank, reason)
         mass = charging_words.read_kg(kg, row, oil, celsius)
         off = mass - (row.actual_kg or 0.0)
@@ -123,6 +125,7 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
         back = replace(oil, on_hand_kg=None if oil.on_hand_kg is None else oil.on_hand_kg + (row.actual_kg or 0.0))
         without = replace(made, charges=tuple(c for c in made.charges if c.line != line))
         batch_doubts.ask(sure, _asked(plant, without, row, back, mass, given, tank, celsius))
+        _question_gone(made, off, sure)
         done = replace(row, actual_kg=mass, actual_lot=given or row.actual_lot, by=who, checked_at="", checked_by="",
                        celsius=row.celsius if celsius is None else celsius,
                        why=_after(f"corrected from {numbers.batch(row.actual_kg)} kg ({row.by}): {reason}", row.why),
@@ -142,25 +145,39 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
 
 def check(plant: Plant, batch: str, line: int, *, by: str = "", sure: bool = False) -> Charge:
     """The second check of a charge, by another person than the one who made it; returns the line."""
+    return check_all(plant, batch, (line,), by=by, sure=sure)[0]
+
+
+def check_all(plant: Plant, batch: str, lines: Sequence[int], *, by: str = "", sure: bool = False
+              ) -> tuple[Charge, ...]:
+    """The second check of several charges in one step: all of them or none; returns the lines."""
     who = batches.person(plant, by)
 
     def make() -> Step:
         made = batches.opened(plant, batch)
-        row = charging_words.line_of(made, line)
-        if row.state != DONE:
-            raise DeskError(f"line {line} of {harmless(batch, 40)} is not charged yet: there is nothing to check")
-        if row.checked_by:
-            raise DeskError(f"line {line} was checked by {harmless(row.checked_by, 40)} at "
-                            f"{batches.when(row.checked_at)} already")
-        if batches.same_person(who, row.by):
-            raise DeskError(f"line {line} was entered by {harmless(row.by, 40)}: the second check is by another person")
+        rows = [charging_words.line_of(made, line) for line in dict.fromkeys(lines)]
+        for row in rows:
+            _refuse_check(row, who)
         at = clock(plant, made, sure)
-        return Step((changed(row, checked_by=who, checked_at=at),), f"{batch} line {line} checked", "",
-                    replace(row, checked_by=who, checked_at=at))
+        numbers_of = ", ".join(str(row.line) for row in rows)
+        return Step(tuple(changed(row, checked_by=who, checked_at=at) for row in rows),
+                    f"{batch} line{'' if len(rows) == 1 else 's'} {numbers_of} checked", "",
+                    tuple(replace(row, checked_by=who, checked_at=at) for row in rows))
 
-    row = plant.step(make).result
-    assert isinstance(row, Charge)
-    return row
+    rows = plant.step(make).result
+    assert isinstance(rows, tuple)
+    return rows
+
+
+def _refuse_check(row: Charge, who: str) -> None:
+    """DeskError for a line that is not charged, is checked already, or was charged by the same person."""
+    if row.state != DONE:
+        raise DeskError(f"line {row.line} of {harmless(row.batch, 40)} is not charged yet: there is nothing to check")
+    if row.checked_by:
+        raise DeskError(f"line {row.line} was checked by {harmless(row.checked_by, 40)} at "
+                        f"{batches.when(row.checked_at)} already")
+    if batches.same_person(who, row.by):
+        raise DeskError(f"line {row.line} was entered by {harmless(row.by, 40)}: the second check is by another person")
 
 
 def miss(plant: Plant, batch: str, line: int, *, why: str = "", by: str = "", sure: bool = False) -> Charged:
@@ -233,6 +250,14 @@ def _oil(stocks: Mapping[str, Stock], code: str) -> Stock:
     return stocks[code]
 
 
+def _question_gone(made: Made, off: float, sure: bool) -> None:
+    """Ask where less went in by a correction than has left the vessel already."""
+    short = -(made.in_vessel_kg + off)
+    if short > charging_words.HAIR:
+        batches.question(sure, f"{harmless(made.name, 40)}: {numbers.kg(short)} kg more are recorded to have left the "
+                               "vessel than would have gone in; which of the two is right?")
+
+
 def _is_nothing(kg: float | str) -> bool:
     """Is an entry 0, as a number or as typed?"""
     if isinstance(kg, str):
@@ -264,20 +289,22 @@ def _lots(oil: Stock, lot: str, tank: Mapping[str, float]) -> dict[str, float]:
 def _cells(plant: Plant, oil: Stock, lot: str, tank: Mapping[str, float]) -> dict[str, float]:
     """The stock's values now; of a drum, or of a lot that is not the tank's, those of the lot where they are known.
 
-    A lot is tested neat, so it says nothing of the viscosity with which an additive blends.
+    A lot is tested neat, so it says nothing of the viscosity with which an additive blends, unless its papers do.
     """
     cells = batches.cells_of(oil)
     own = next((x for x in plant.lots() if x.lot == lot), None) if lot and (oil.package_kg or lot not in tank) else None
     if own is None or (own.stock != oil.code and not own.cells):
         return cells
+    blends = {code.removeprefix(BLENDS): value for code, value in own.cells.items() if code.startswith(BLENDS)}
     neat = ("kv40", "kv100") if oil.blend_kv40 is not None else ()
-    return {**cells, **{code: value for code, value in own.cells.items() if code not in neat}}
+    given = {code: value for code, value in own.cells.items() if code not in neat and not code.startswith(BLENDS)}
+    return {**cells, **given, **blends}
 
 
 def _tank_after(plant: Plant, oil: Stock, tank: Mapping[str, float], *draws: tuple[Mapping[str, float], float]
                 ) -> list[Change]:
     """What a store of drums is made of after lots [kg] were taken from it; a mixed tank keeps its proportions."""
-    if not oil.package_kg or not oil.on_hand_kg or not tank:
+    if not oil.package_kg or oil.on_hand_kg is None or not tank:
         return []
     own = set(tank) | {x.lot for x in plant.lots(oil.code)}
     masses = {lot: part * oil.on_hand_kg for lot, part in tank.items()}

@@ -18,7 +18,7 @@ from solver.stocks import Stock
 from solver.target import Target
 
 from . import batches, numbers, release
-from .batch_verdict import PAIR, drawn_together, mean_of
+from .batch_verdict import PAIR, drawn_together, mean_of, values_of
 from .errors import DeskError
 from .reason_words import heading
 
@@ -38,7 +38,7 @@ def measured_batch(plant: Plant, made: Made, target: Target) -> tuple[Stock, tup
                         "trim moves both viscosities, so measure KV40 and KV100 on one sample first")
     measured: dict[str, float] = {}
     for code in dict.fromkeys(r.property for r in made.results if r.property != "vi"):
-        found = [m[0] for m in (mean_of(made, s, code) for s in draw) if m is not None]
+        found = [mean for mean, _, _ in values_of(made, draw, code)]  # of an older sample what only that was tested for
         if found:
             measured[code] = sum(found) / len(found)
     stocks = batches.by_code(plant)

@@ -99,7 +99,7 @@ def restore(file: Path, plant: Path | None, *, by: str = "",
     made = put_back(file, plant or example_plant(), who=by.strip() or None, replace_newer=replace_newer)
     lines = [f"restored {harmless(str(made.plant))} from {harmless(str(file))}, {made.entries} entries"]
     if made.kept is not None:
-        lost = f", {made.lost} later entries among it" if made.lost else ""
+        lost = f", {made.lost} later entr{'y' if made.lost == 1 else 'ies'} among it" if made.lost else ""
         lines.append(f"what was there{lost} is kept in {harmless(str(made.kept))}")
     return ({"plant": str(made.plant), "entries": made.entries, "lost": made.lost,
              "kept": None if made.kept is None else str(made.kept)}, lines)

@@ -133,6 +133,8 @@ def _of_results(made: Made, target: Target) -> Iterator[str]:
         return
     if any(r.at > decided.at for s in says.samples for r in batch_lessons.standing(made, s)):
         yield f"results of {of} came after the decision on it: decide again"
+    elif decided.words and decided.words != "; ".join(says.words):
+        yield f"what the results of {of} say has changed since the decision on it: decide again"
     if decided.decision != RELEASE:
         yield f"the decision on sample {decided.sample} is {decided.decision}, not release"
     elif says.decision not in (RELEASE, NO_RESULT) and not decided.why:

@@ -42,6 +42,7 @@ KEPT = (REWORK, FLUSH)  # what may go into a stock
 WEIGHED = (PACKED, LEFT)  # on other scales than what went in …
 GAIN = 0.01  # … and so they may be more than the book by this part of what went in
 OVER = 1.05  # of what was asked: more is questioned
+MUCH = 0.05  # of what went in: a batch that is closed out with a larger loss is questioned
 
 
 @dataclass(frozen=True)
@@ -73,7 +74,7 @@ def leave(plant: Plant, batch: str, kg: float | str, what: str, *, stock: str = 
 
     Refused: more than the vessel holds (what is packed or left may exceed the book by 1 %, questioned), rework
     without a reason or a family, a stock that is no rework or of another family. Questioned unless `sure`: 5 % more
-    packed than asked, a heel recorded after the vessel was charged again.
+    packed than asked, a heel recorded after the vessel was charged again, or one that leaves a loss past 5 %.
     """
     from solver import recipe  # noqa: F401  (slow to import: not while others wait for this transaction)
 
@@ -92,7 +93,7 @@ def leave(plant: Plant, batch: str, kg: float | str, what: str, *, stock: str = 
         changes += [*batch_edits.added(out), *_heel(plant, after, out, words), *_closed(plant, after, out, words)]
         said = f"{made.name}: {numbers.kg(amount)} kg {what}{f' into {out.stock}' if out.stock else ''}"
         rest = f"; {numbers.kg(max(0.0, after.in_vessel_kg))} kg are in {_vessel(made)} by the book"
-        words = [said + (rest if what != LEFT else ""), *_asked(after, out, values), *words]
+        words = [said + (rest if balance(after).loss_kg is None else ""), *_asked(after, out, values), *words]
         return Step(tuple(changes), said + signed(plant, by), why, Left(**_fields(out), words=tuple(words)))
 
     done = plant.step(make).result
@@ -115,6 +116,10 @@ def _refuse(made: Made, out: Outcome, family: str) -> None:
                         + ("release it first" if head.state == OPEN else "its oil may go to rework or slops"))
     if (out.stock or family) and out.what not in KEPT:
         raise DeskError(f"{name}: {out.what} goes into no stock; only {' and '.join(KEPT)} do")
+    if out.what == FLUSH and any(not c.counts for c in made.contents):
+        raise DeskError(f"{name}: its flush oil was pumped through and is no part of what {_vessel(made)} holds; "
+                        "receive it into a rework stock under a lot of its own, with its values (blendtui stock "
+                        "receive); what was flushed out of the batch itself is slops")
     if out.what == REWORK and not out.why:
         raise DeskError(f"{name}: say why this oil becomes rework: it stands in the record")
     if out.kg < 0.0 or (out.kg == 0.0 and out.what != LEFT):
@@ -142,11 +147,18 @@ def _vessel(made: Made) -> str:
 
 def _question(plant: Plant, made: Made, out: Outcome, values: Values | None, sure: bool) -> None:
     name, there = harmless(made.name, 40), made.in_vessel_kg
+    if out.what == LEFT and made.head.state == OPEN and there - out.kg > NOTHING:
+        batches.question(sure, f"{name} is open and {numbers.kg(there - out.kg)} kg more are in {_vessel(made)}: what "
+                               "stays there is known once the rest is out; is it as typed?")
     if out.what == LEFT:
         later = next((b.batch for b in plant.batches() if b.vessel == made.head.vessel
                       and b.ordered_at > made.head.ordered_at and plant.batch(b.batch).charged), "")
         if later:
             batches.question(sure, f"{name}: {_vessel(made)} has taken {later} since; is this still what stands in it?")
+        lost, came = there - out.kg, balance(made).in_kg
+        if made.head.state != OPEN and lost > MUCH * came:
+            batches.question(sure, f"{name}: then {numbers.kg(lost)} kg of it ({numbers.pct(lost / came)} %) went "
+                                   "nowhere on record; was it packed or drawn off? Record that first")
     if out.kg > max(0.0, there) + NOTHING:
         batches.question(sure, f"{name}: {numbers.kg(out.kg)} kg is {numbers.kg(out.kg - there)} kg more than "
                                f"{_vessel(made)} holds of it by the book; was it weighed?")

@@ -19,16 +19,7 @@ from solver.stocks import Stock
 from solver.target import Target
 
 from . import batches, numbers, release
-from .batch_verdict import (
-    FRESH,
-    NO_RESULT,
-    PAIR,
-    RELEASE,
-    REPEAT,
-    SEVERITY,
-    TRIM,
-    verdict,
-)
+from .batch_verdict import FRESH, NO_RESULT, RELEASE, REPEAT, SEVERITY, TRIM, drawn_together, values_of, verdict
 from .errors import DeskError
 from .measured_batch import measured_batch
 
@@ -105,7 +96,7 @@ def propose(plant: Plant, batch: str, *, aim: str = "cost", chance: float | None
     vessel = next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
     # The formula may name a stock that is out of use by now: it stands in the table, and is left out by name.
     there = _in_steps(plant.stocks(include_retired=True), vessel)
-    measured = _with_result(made, samples)
+    measured = _with_result(made)
     found = _found(plant, made, whole, there, target, _Wish(aim, chance, tuple(stocks), _room(made, vessel)))
     trim = found.trim
     number = made.rounds + 1
@@ -175,10 +166,10 @@ def _found(plant: Plant, made: Made, whole: Stock, there: Sequence[Stock], targe
                             f"whole list it would be {other} for {numbers.cost(trim.cost)}",), questions)
 
 
-def _with_result(made: Made, samples: Sequence[int]) -> frozenset[str]:
-    """Codes of the properties that the samples have a result of; a VI follows from both KVs."""
-    found = {r.property for r in made.results if r.sample in samples and not r.withdrawn}
-    return frozenset(found | ({"vi"} if set(PAIR) <= found else set()))
+def _with_result(made: Made) -> frozenset[str]:
+    """Codes of the properties that the batch as it is has a result of; a VI follows from both KVs."""
+    draw = drawn_together(made)
+    return frozenset(code for code in {"vi", *(r.property for r in made.results)} if values_of(made, draw, code))
 
 
 def _how(made: Made) -> dict[str, Any]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, Add, number, opened, show
+from .common import DONE, Add, number, opened, show, whole
 from .stock import answered, lines_of, person
 
 if TYPE_CHECKING:
@@ -27,9 +27,9 @@ def add_to(of_batch: Add) -> None:
     _line(made)
     _amount(made)
     person(made)
-    made = of_batch("check", _check, "second check of one or more lines, by another person")
+    made = of_batch("check", _check, "second check of one or more lines, by another person; all of them or none")
     made.add_argument("batch", metavar="BATCH", help="such as B-0001")
-    made.add_argument("lines", metavar="LINE", type=int, nargs="+")
+    made.add_argument("lines", metavar="LINE", type=whole, nargs="+")
     person(made)
     made = of_batch("miss", _miss, "drop a line that is not charged, with its reason")
     _line(made)
@@ -45,7 +45,7 @@ def add_to(of_batch: Add) -> None:
 
 def _line(command: argparse.ArgumentParser) -> None:
     command.add_argument("batch", metavar="BATCH", help="such as B-0001")
-    command.add_argument("line", metavar="LINE", type=int, help="of the card")
+    command.add_argument("line", metavar="LINE", type=whole, help="of the card")
 
 
 def _amount(command: argparse.ArgumentParser) -> None:
@@ -102,8 +102,8 @@ def _check(options: argparse.Namespace) -> int:
     from blendtui.desk import batches, charging
 
     with opened(options) as plant:
-        rows = [answered(lambda line=line: charging.check(plant, options.batch, line, by=options.by,  # type: ignore[misc]
-                                                          sure=options.sure)) for line in options.lines]
+        rows = answered(lambda: charging.check_all(plant, options.batch, options.lines, by=options.by,
+                                                   sure=options.sure))
     show(options, {"batch": options.batch, "lines": [charge_json(row) for row in rows]}, lines_of(
         [f"line {row.line}, {row.stock}: checked by {row.checked_by}, {batches.when(row.checked_at)}" for row in rows]))
     return DONE

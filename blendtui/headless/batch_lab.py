@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, Add, BadInput, number, opened, show
+from .common import DONE, Add, BadInput, number, opened, show, whole
 from .stock import answered, lines_of, person
 
 if TYPE_CHECKING:
@@ -25,14 +25,14 @@ def add_to(of_batch: Add) -> None:
     made = of_batch("result", _result, "put results of a sample on record, and say what all of them say")
     made.add_argument("batch", metavar="BATCH", help="such as B-0001")
     made.add_argument("values", metavar="PROPERTY=V", nargs="+", help="such as kv40=45.2 kv100=6.81 flash=221")
-    made.add_argument("--sample", metavar="N", type=int, help="else the newest")
+    made.add_argument("--sample", metavar="N", type=whole, help="else the newest")
     made.add_argument("--method", metavar="TEXT", default="", help="else the registry's, such as ASTM D445")
     made.add_argument("--when", metavar="TIME", default="", help="when it was found; else now")
     person(made)
     made = of_batch("withdraw-result", _withdraw, "withdraw a result with its reason; it stays on record")
     made.add_argument("batch", metavar="BATCH", help="such as B-0001")
-    made.add_argument("sample", metavar="SAMPLE", type=int)
-    made.add_argument("line", metavar="RESULT", type=int, help="its number on the sample")
+    made.add_argument("sample", metavar="SAMPLE", type=whole)
+    made.add_argument("line", metavar="RESULT", type=whole, help="its number on the sample")
     person(made)
     of_batch("verdict", _verdict, "what the results say, with the arithmetic").add_argument(
         "batch", metavar="BATCH", help="such as B-0001")

@@ -53,10 +53,12 @@ def _leave(options: argparse.Namespace, what: str, **more: str) -> int:
     with opened(options) as plant:
         done = answered(lambda: rework.leave(plant, options.batch, " ".join(options.amount), what, by=options.by,
                                              why=options.why, sure=options.sure, **more))
-        state = plant.batch(options.batch).head.state
-    answer = asdict(done)
-    show(options, {**{name: value for name, value in answer.items() if name != "words"}, "state": state,
-                   "said": list(done.words)}, lines_of(done.words))
+        made = plant.batch(options.batch)
+    closed = rework.balance(made)
+    # What is lost is said as soon as the balance closes, and not only to whoever asks for it.
+    said = [*done.words, *(closed.words if closed.loss_kg is not None else ())]
+    answer = {name: value for name, value in asdict(done).items() if name != "words"}
+    show(options, {**answer, "state": made.head.state, "said": said}, lines_of(said))
     return DONE
 
 

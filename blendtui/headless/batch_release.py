@@ -6,7 +6,7 @@ import argparse
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from .common import DONE, NO_BLEND, Add, BadInput, opened, path, say, show
+from .common import DONE, NO_BLEND, Add, opened, path, say, show
 from .stock import answered, person
 
 if TYPE_CHECKING:
@@ -142,7 +142,7 @@ def _certificate(options: argparse.Namespace) -> int:
 
 
 def _written(options: argparse.Namespace, made: Certificate) -> list[str]:
-    """Write what is asked for; nothing at all where one of the files is there already."""
+    """Write what is asked for, both files or none."""
     from blendtui.desk import certificate
     from blendtui.desk.certificate_html import certificate_html
 
@@ -151,9 +151,4 @@ def _written(options: argparse.Namespace, made: Certificate) -> list[str]:
         asked.append((options.write, certificate.certificate_text(made)))
     if options.html is not None:
         asked.append((options.html, certificate_html(made)))
-    if len({file.resolve() for file, _ in asked}) < len(asked):
-        raise BadInput("--write and --html name the same file; give each its own")
-    for file, _ in asked:
-        if file.exists():
-            raise BadInput(f"{file} is there already; choose another name or move the old certificate away")
-    return [certificate.write_new(file, text) for file, text in asked]
+    return certificate.write_all(asked)

@@ -17,6 +17,8 @@ if TYPE_CHECKING:
 
 DONE, BAD_INPUT, NO_BLEND = 0, 2, 3
 MOST_SHARE = 100.0  # mass fraction: no slip of the point, and none whose sum overflows
+COLDEST, HOTTEST = -273.15, 1000.0  # °C: nothing beyond is a slip of the pen; closer bounds belong to what is asked
+LONGEST_WHOLE = 9  # digits
 Run = Callable[[argparse.Namespace], int]
 Add = Callable[[str, Run, str], argparse.ArgumentParser]  # (name, run, one sentence) → the command's parser
 
@@ -39,7 +41,19 @@ def path(text: str) -> Path:
     """A path as typed on the command line."""
     if not text.strip():
         raise argparse.ArgumentTypeError("a path cannot be empty")
+    if "\0" in text:
+        raise argparse.ArgumentTypeError("a path cannot hold a null character")
     return Path(text)
+
+
+def whole(text: str) -> int:
+    """A whole number as typed on the command line: a line of a card, a sample."""
+    plain = text.strip()
+    if not (plain.removeprefix("-").isascii() and plain.removeprefix("-").isdigit() and len(plain) <= LONGEST_WHOLE):
+        from blendtui.store.harmless import harmless
+
+        raise argparse.ArgumentTypeError(f"{harmless(text, 40)!r} is no whole number")
+    return int(plain)
 
 
 def number(text: str, what: str, quantity: Any = "number") -> float:
@@ -52,6 +66,8 @@ def number(text: str, what: str, quantity: Any = "number") -> float:
         raise BadInput(f"{what}: {error}") from None
     if not math.isfinite(value):
         raise BadInput(f"{what}: {text} is not a finite number")
+    if quantity == "temperature" and not COLDEST <= value <= HOTTEST:
+        raise BadInput(f"{what}: {text} is no temperature of an oil; type °C, or °F such as 95F")
     return value
 
 

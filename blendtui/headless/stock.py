@@ -8,7 +8,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import asdict
 from typing import TYPE_CHECKING, Any, TypeVar
 
-from .common import DONE, Add, BadInput, opened, shared, show
+from .common import DONE, Add, BadInput, opened, shared, show, whole
 
 if TYPE_CHECKING:
     from blendtui.desk.ledger import Book
@@ -53,7 +53,7 @@ def register(add: Add) -> None:
     made.add_argument("--correct", action="store_true", help="set the book to the dip; needs --why")
     person(made)
     made = of_stock("book", _book, "every movement with the balance after it, the lots in the tank, the last dip")
-    made.add_argument("--last", metavar="N", type=int, default=0, help="only the last N movements")
+    made.add_argument("--last", metavar="N", type=whole, default=0, help="only the last N movements")
 
 
 def person(command: argparse.ArgumentParser) -> None:

@@ -44,7 +44,8 @@ class Page(Screen[Any]):
         self.keys = KeyBar()
         self._later: deque[events.Key | events.Paste] = deque()
         self._hint = ""  # the last one said in the status line
-        self._swallowing = False  # a number is being typed at a cell that takes none
+        self._swallowing = False  # something is being typed at a cell that takes nothing
+        self._swallowed = False  # … and a digit of it has come already
 
     def body(self) -> Iterable[Widget]:
         """The widgets between the title and the status line."""
@@ -107,9 +108,20 @@ class Page(Screen[Any]):
             self.status.refresh(layout=True)
 
     def refuse(self, message: str) -> None:
-        """Nothing can be typed here: say why, and let no digit of what is typed nevertheless open a screen."""
+        """Nothing can be typed here: say why, and let no key of a number that is typed nevertheless do anything."""
         self.say(message)
-        self._swallowing = True
+        self._swallowing, self._swallowed = True, False
+
+    def _swallow(self, event: events.Key) -> bool:
+        """Does this key belong to a number that is typed where none can be? `8.95 t` and its Enter do."""
+        digit = event.character is not None and event.character in "0123456789.,"
+        goes_on = self._swallowed and (event.is_printable or event.key in ("backspace", "enter"))
+        if self._swallowing and (digit or goes_on):
+            self._swallowed, self._swallowing = True, event.key != "enter"
+            self.say("nothing can be typed at this cell, and nothing was; an arrow goes on")
+            return True
+        self._swallowing = self._swallowed = False
+        return False
 
     def show_keys(self) -> None:
         """The keys that mean something now."""
@@ -154,10 +166,8 @@ class Page(Screen[Any]):
             self.say("nothing is being typed here: Enter first, then paste")
 
     def _key(self, event: events.Key) -> None:
-        if self._swallowing and event.character and event.character in "0123456789.,":
-            self.say("no number can be typed at this cell; another key goes on")
+        if self._swallow(event):
             return
-        self._swallowing = False
         if self.edit.typing and self.edit.typing.asking and event.character == "!":
             self.program.do_messages()
             return

@@ -6,10 +6,11 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field, replace
 from typing import Any
 
+from rich.cells import cell_len
 from textual.widget import Widget
 
 from blendtui import commands
-from blendtui.store.batch_records import DONE, DROPPED, PLANNED, Charge
+from blendtui.store.batch_records import DROPPED, PLANNED, Charge
 from blendtui.store.harmless import harmless
 from blendtui.widgets.grid import Cell, Column, Grid, more_only
 from blendtui.widgets.head import Head
@@ -17,6 +18,7 @@ from blendtui.widgets.lines import OneLine
 from blendtui.widgets.paint import BAD, BOLD, DIM, PLAIN, cut_line
 
 from . import floor_lab, floor_view, reading, remedy
+from .floor_charge import ChargeCommands
 from .floor_lab import LabCommands
 from .floor_out import OutCommands
 from .floor_view import CardLine, Seen
@@ -40,7 +42,7 @@ class FloorState:
     refusal: str = ""  # why the batch could not be read
 
 
-class FloorScreen(LabCommands, OutCommands):
+class FloorScreen(LabCommands, ChargeCommands, OutCommands):
     """The charges over the laboratory; on a small terminal one of the two."""
 
     NAME = commands.FLOOR
@@ -84,7 +86,7 @@ class FloorScreen(LabCommands, OutCommands):
         wanted = (self.snapshot.revision, self.session.batch)
         if wanted != self.read_for:
             self.read_for, plant = wanted, self.program.plant
-            self.program.task(lambda: floor_view.look(plant, wanted[1]), lambda seen: self._looked(wanted, seen),
+            self.program.task(lambda: floor_view.look_or_newest(plant, wanted[1]), lambda seen: self._looked(wanted, seen),
                               lambda refusal: self._looked(wanted, None, refusal))
         self._show()
         super().refresh_page()
@@ -94,8 +96,9 @@ class FloorScreen(LabCommands, OutCommands):
             return
         self.looked, name = True, seen.made.name if seen else ""
         other, self.shown_name = name != self.shown_name, name
-        if seen is not None and not self.session.batch:
-            self.session.batch = name  # a batch that is ordered later does not take its place
+        if not refusal and self.session.batch != name:
+            # One that is ordered later does not take its place; one whose order was taken back is there no more.
+            self.session.batch = name
             self.read_for = (wanted[0], name)
         to_come = {c.line for c in seen.made.to_charge} if seen else set()
         lots = {} if other else {line: lot for line, lot in self.state.lots.items() if line in to_come}
@@ -133,9 +136,11 @@ class FloorScreen(LabCommands, OutCommands):
             self.head.show([])
             self.caution.show()
             return
-        width = self.size.width
+        width, who = self.size.width, f"  as {self.who}"
         missed = floor_view.missed_words(seen)
-        self.head.show([cut_line([(f"{seen.name}: ", BOLD), (floor_view.headline(seen), PLAIN)], width),
+        first = cut_line([(f"{seen.name}: ", BOLD), (floor_view.headline(seen), PLAIN)], width - cell_len(who))
+        gap = width - cell_len(who) - sum(cell_len(text) for text, _ in first)
+        self.head.show([[*first, (" " * gap, PLAIN), (who, BOLD)],
                         cut_line([("next: ", BOLD), (floor_view.next_words(seen), PLAIN)], width)])
         if missed:
             self.caution.show((missed, BAD))
@@ -159,9 +164,8 @@ class FloorScreen(LabCommands, OutCommands):
         seen = self.seen
         count = len(self.lab_lines if self.state.testing else self.lines)
         grid = self.tests if self.state.testing else self.charges
-        who = f"as {harmless(self.session.by, 20)}" if self.session.by else ""
         self.title_line.show(harmless(self.shown_name, 12) or "no batch",
-                             f" {grid.row + 1} of {count}" if count else "", f" {who}" if who else "")
+                             f" {grid.row + 1} of {count}" if count else "")
         if seen is None:
             self.edit.show("", "")
         elif self.state.testing:
@@ -235,16 +239,6 @@ class FloorScreen(LabCommands, OutCommands):
 
         self.program.task(lambda: plant.batches(OPEN), then)
 
-    def do_person(self) -> None:
-        """Type the name under which steps are recorded here."""
-        def then(name: str) -> None:
-            self.session.by = name
-            self._show_row()
-            self.say(f"steps are recorded under {name or self.program.plant.who}")
-
-        self.type_checked("your name, for the record (empty: the login name)", self.session.by,
-                          lambda text: harmless(text, 60), then)
-
     def do_cautions(self) -> None:
         """Show the cautions in full."""
         if self.seen is None:
@@ -262,115 +256,6 @@ class FloorScreen(LabCommands, OutCommands):
             self.type_result()
         else:
             self.type_actual()
-
-    def of_charge(self, *wanted: str) -> Charge | None:
-        """The charge under the cursor if it is in such a state; else say what it is, and None."""
-        charge = self.charge
-        if self.state.testing:
-            self.refuse("Tab goes to the charges first")
-        elif charge is None:
-            self.refuse("there is no charge here")
-        elif charge.state not in wanted:
-            told = {DONE: f"charged by {harmless(charge.by, 30)} already; e corrects it, and says why",
-                    DROPPED: "given up as missed; R shows what the batch will be without it",
-                    PLANNED: "not charged yet; Enter types its actual"}
-            self.refuse(f"line {charge.line}, {harmless(charge.stock, 30)}, is {told[charge.state]}")
-        else:
-            return charge
-        return None
-
-    def type_actual(self) -> None:
-        """Type what was charged in the line under the cursor."""
-        charge = self.of_charge(PLANNED, DROPPED)
-        if charge is None or self.seen is None:
-            return
-        plant, name, by = self.program.plant, self.seen.made.name, self.session.by
-        lot = self.state.lots.get(charge.line, "")
-
-        def make(typed: str, sure: bool) -> Any:
-            from blendtui.desk import charging
-
-            return charging.charge(plant, name, charge.line, typed, lot=lot, by=by, sure=sure)
-
-        step = floor_view.division_of(self.seen, charge)
-        plan = f"{floor_view.kg(charge.plan_kg, step)} kg ± {floor_view.tolerance(charge.tolerance_kg, step)}"
-        self.type_step(f"{charge.line} {harmless(charge.stock, 20)} charged (kg, t or drums; plan {plan})", "", make,
-                       self.say_charged, yes="it was so")
-
-    def say_charged(self, done: Any) -> None:
-        """Say what a charge did to the batch, and where the remedy is."""
-        more = ["R shows it, and y there plans it"] if done.remedy is not None else []
-        self.program.say(harmless("; ".join([*done.words, *more]), 2000), "refused" if done.odd else "done")
-
-    def do_lot(self) -> None:
-        """Type the lot of the charge under the cursor, then its actual."""
-        charge = self.of_charge(PLANNED)
-        if charge is None or self.seen is None:
-            return
-        parts = floor_view.lots_words(self.seen.lots.get(charge.stock, {}))
-
-        def then(lot: str) -> None:
-            lots = {k: v for k, v in self.state.lots.items() if k != charge.line}
-            self.state = replace(self.state, lots={**lots, charge.line: lot} if lot else lots)
-            self._show()
-            self.type_actual()
-
-        self.type_checked(f"{charge.line} {harmless(charge.stock, 20)} lot (in the tank: {parts or 'none on record'})",
-                          self.state.lots.get(charge.line, charge.lot), str.strip, then)
-
-    def do_check(self) -> None:
-        """Second check of a charge, by another person."""
-        charge = self.of_charge(DONE)
-        if charge is None or self.seen is None:
-            return
-        plant, name = self.program.plant, self.seen.made.name
-
-        def make(by: str, sure: bool) -> Any:
-            from blendtui.desk import charging
-
-            return charging.check(plant, name, charge.line, by=by, sure=sure)
-
-        self.type_step(f"{charge.line} {harmless(charge.stock, 20)} checked by (another than "
-                       f"{harmless(charge.by, 20)})", "", make,
-                       lambda made: self.program.say(f"line {charge.line} checked", "done"))
-
-    def do_miss(self) -> None:
-        """The charge under the cursor will not be made."""
-        charge = self.of_charge(PLANNED)
-        if charge is None or self.seen is None:
-            return
-        plant, name, by = self.program.plant, self.seen.made.name, self.session.by
-
-        def make(why: str, sure: bool) -> Any:
-            from blendtui.desk import charging
-
-            return charging.miss(plant, name, charge.line, why=why, by=by, sure=sure)
-
-        self.type_why(f"line {charge.line}, {harmless(charge.stock, 20)}, is not charged", make, self.say_charged,
-                      yes="give it up")
-
-    def do_correct(self) -> None:
-        """Correct a charge that was made, or withdraw a result."""
-        if self.state.testing:
-            self.withdraw_result()
-            return
-        charge = self.of_charge(DONE)
-        if charge is None or self.seen is None:
-            return
-        plant, name, by = self.program.plant, self.seen.made.name, self.session.by
-        step = floor_view.division_of(self.seen, charge)
-
-        def then(typed: str) -> None:
-            def make(why: str, sure: bool) -> Any:
-                from blendtui.desk import charging
-
-                return charging.correct(plant, name, charge.line, typed, why=why, by=by, sure=sure)
-
-            self.type_why(f"line {charge.line} is corrected to {harmless(typed, 20)}", make, self.say_charged,
-                          yes="it was so")
-
-        self.type_checked(f"{charge.line} {harmless(charge.stock, 20)} truly charged, kg",
-                          floor_view.kg(charge.actual_kg, step), str.strip, then)
 
     def do_remedy(self) -> None:
         """Show what the batch will be, and the charges to come worked out anew."""

@@ -16,8 +16,8 @@ from . import reading, remedy, words
 from .floor_view import Seen
 from .steps import StepPage
 
-COLUMNS = (Column("mark", "", "", 1, "left"), Column("what", "laboratory", "", 15, "left"),
-           Column("low", "low", "", 8), Column("high", "high", "", 8), Column("result", "result", "", 9),
+COLUMNS = (Column("mark", "", "", 1, "left"), Column("what", "laboratory", "", 17, "left"),
+           Column("low", "low", "", 7), Column("high", "high", "", 7), Column("result", "result", "", 9),
            Column("unit", "unit", "", 8, "left"), Column("says", "says", "", 24, "left"))
 PAIR = ("kv40", "kv100")
 RULE = ("R is the method's reproducibility. Inside a limit by 0.59 R or more: release; inside but nearer: repeat; "
@@ -114,7 +114,9 @@ def cell(line: LabLine, column: int) -> Cell:
 def told(lines: list[LabLine], row: int) -> tuple[str, str]:
     """What the line under the table says of a row."""
     line = lines[row] if row < len(lines) else None
-    return ("laboratory", "no sample yet") if line is None else (line.texts[1], line.told)
+    if line is None:
+        return "laboratory", "no sample yet"
+    return line.texts[1], line.told.removeprefix(f"{line.texts[1]} ")
 
 
 class LabCommands(StepPage):

@@ -9,6 +9,7 @@ from typing import Any
 
 from blendtui.desk import batches
 from blendtui.store.batch_records import DONE, DROPPED, LEFT, OPEN, PLANNED, RELEASED, Batch, Charge, Made, Vessel
+from blendtui.store.errors import NoSuchRow
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.stocks import Stock
@@ -23,7 +24,7 @@ class Seen:
     made: Made
     vessel: Vessel | None = None  # None: it is out of use
     stocks: Mapping[str, Stock] = field(default_factory=dict)  # every stock there ever was
-    lots: Mapping[str, Mapping[str, float]] = field(default_factory=dict)  # of the tanks still to charge from
+    lots: Mapping[str, Mapping[str, float]] = field(default_factory=dict)  # of the tanks that it is charged from
     cautions: tuple[Any, ...] = ()
     verdict: Any = None  # on the newest samples; None: none was drawn
     missing: tuple[str, ...] = ()  # for the release
@@ -50,7 +51,7 @@ def look(plant: Plant, name: str) -> Seen | None:
         return None
     made, stocks = plant.batch(name), batches.by_code(plant)
     vessel = next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)
-    lots = {c.stock: plant.tank_lots(c.stock) for c in made.to_charge}
+    lots = {code: plant.tank_lots(code) for code in {c.stock for c in made.charges}}
     is_open = made.head.state == OPEN
     verdict = batch_lab.verdict(made, batches.target_of(plant, made)) if made.samples else None
     ahead = batch_outlook.outlook(plant, made) if is_open else None
@@ -59,6 +60,14 @@ def look(plant: Plant, name: str) -> Seen | None:
     told = cautions.cautions([*heel, *going], vessel, made.head.mix_c, fill_l=ahead.fill_l if ahead else None)
     return Seen(made, vessel, stocks, lots, told, verdict, tuple(release.missing(plant, made)) if is_open else (),
                 ahead.missed if ahead and made.to_charge else ())
+
+
+def look_or_newest(plant: Plant, name: str) -> Seen | None:
+    """The batch of that name; where its order was taken back meanwhile, the newest there is."""
+    try:
+        return look(plant, name)
+    except NoSuchRow:
+        return look(plant, "")
 
 
 def results_of_last(made: Made) -> bool:
@@ -92,6 +101,15 @@ def kg(mass: float | None, division: float | None) -> str:
     text = f"{mass:.{places}f}"
     # A recipe that is not to be charged in whole steps has digits that a scale does not show: they are not hidden.
     return text if abs(float(text) - mass) < 5e-4 else f"{mass:.3f}".rstrip("0")
+
+
+def reading(mass: float, division: float | None) -> str:
+    """What a scale shows of a mass [kg]: no finer than its division, whatever a finer scale weighed into it.
+
+    >>> reading(18340.3, 20.0), reading(7765.0, 20.0), reading(152.25, 0.5)
+    ('18340', '7765', '152.2')
+    """
+    return f"{mass:.{decimals(division)}f}"
 
 
 def tolerance(mass: float, division: float | None) -> str:
@@ -197,11 +215,11 @@ def _charge_words(seen: Seen, charge: Charge) -> str:
     step = division_of(seen, charge)
     whole = packages(seen, charge)
     lot = charge.lot or lots_words(seen.lots.get(charge.stock, {}))
-    reading = scale_readings(seen.made)[charge.line]
+    shown = scale_readings(seen.made)[charge.line]
     trim = f"trim {charge.round}, " if charge.round else ""
     return (f"{trim}charge {kg(charge.plan_kg, step)} kg of {harmless(charge.stock, 20)}"
             + (f" ({whole} kg)" if whole else "") + (f", lot {harmless(lot, 40)}" if lot else "")
-            + f", until the scale shows {kg(reading, seen.vessel.division_kg if seen.vessel else None)} kg")
+            + f", until the scale shows {reading(shown, seen.vessel.division_kg if seen.vessel else None)} kg")
 
 
 def lots_words(parts: Mapping[str, float]) -> str:
@@ -236,7 +254,7 @@ def card_lines(seen: Seen, typed_lots: Mapping[int, str]) -> Iterator[CardLine]:
             "mark": mark(charge, to_come), "line": f"{charge.line}" + (f" T{charge.round}" if charge.round else ""),
             "stock": harmless(charge.stock), "plan": kg(charge.plan_kg, step),
             "tolerance": tolerance(charge.tolerance_kg, step), "lot": _lot(seen, charge, typed_lots),
-            "scale": kg(readings[charge.line], seen.vessel.division_kg if seen.vessel else None)
+            "scale": reading(readings[charge.line], seen.vessel.division_kg if seen.vessel else None)
             if charge.line in readings else "",
             "actual": "missed" if charge.state == DROPPED else kg(charge.actual_kg, step)
             if charge.state == DONE else "",

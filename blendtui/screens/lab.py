@@ -77,7 +77,6 @@ class LabScreen(Page):
     """Table of measured blends over the lessons and offers."""
 
     NAME = commands.LAB
-    CSS = "#blends { height: 1fr; } #taught { height: 7; } .-wide #taught { height: 14; }"
 
     def __init__(self) -> None:
         super().__init__()

@@ -19,6 +19,9 @@ Screen { layout: vertical; overflow: hidden; background: ansi_default; color: an
 #batches, #charges { height: 1fr; }
 #summary { display: none; height: 16; }
 .-wide #summary { display: block; }
+#blends { height: 1fr; }
+#taught { height: 7; }
+.-wide #taught { height: 14; }
 #tests { height: 1fr; display: none; }
 .-testing #charges { display: none; }
 .-testing #tests, .-wide #tests, .-wide #charges { display: block; }

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from typing import Any
 
 from blendtui.desk.errors import DeskError
+from blendtui.store.harmless import harmless
 from blendtui.widgets.edit_line import Ended
 
 from .base import Page, step
@@ -16,6 +17,21 @@ Done = Callable[[Any], None]
 
 class StepPage(Page):
     """A screen that takes steps of a batch."""
+
+    @property
+    def who(self) -> str:
+        """The name under which steps at this terminal are recorded, fit to be shown."""
+        return harmless(self.session.by or self.program.plant.who, 16)
+
+    def do_person(self) -> None:
+        """Type the name under which steps are recorded here."""
+        def then(name: str) -> None:
+            self.session.by = name
+            self.refresh_page()
+            self.say(f"steps are recorded under {name or self.program.plant.who}")
+
+        self.type_checked("your name, for the record (empty: the login name)", self.session.by,
+                          lambda text: harmless(text, 60), then)
 
     def take_step(self, make: Make, done: Done, *, yes: str = "do it", again: Callable[[], None] | None = None,
                   saying: str = "putting it on record …") -> None:
@@ -63,7 +79,7 @@ class StepPage(Page):
 
     def type_why(self, of: str, make: Callable[[str, bool], Any], done: Done, *, yes: str = "do it") -> None:
         """Ask for a reason, which may not be empty, and do `make(why, sure)`."""
-        self.type_checked(f"why {of}", "", _reason, lambda why: self.take_step(
+        self.type_checked(f"why {of}", "", reason, lambda why: self.take_step(
             lambda sure: make(why, sure), done, yes=yes))
 
     def ask_through(self, steps: list[tuple[str, Callable[[], str], Callable[[str], Any]]],
@@ -85,7 +101,8 @@ class StepPage(Page):
         ask()
 
 
-def _reason(typed: str) -> str:
+def reason(typed: str) -> str:
+    """A reason as it was typed; DeskError for none."""
     if not typed.strip():
         raise DeskError("a reason is needed here: a few words that another person will understand")
     return typed.strip()

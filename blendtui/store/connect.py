@@ -32,7 +32,7 @@ def look(path: Path, shown: Path | str) -> None:
 
 def connect(path: Path | None, how: str, timeout: float) -> sqlite3.Connection:
     """A connection to a file, opened in the way of these URI parameters, or to memory."""
-    address = ":memory:" if path is None else f"{path.as_uri()}?{how}"
+    address = ":memory:" if path is None else f"{path.absolute().as_uri()}?{how}"
     return sqlite3.connect(address, uri=True, isolation_level=None, timeout=timeout, check_same_thread=False)
 
 

@@ -22,10 +22,19 @@ def reserved(con: sqlite3.Connection, stock: str | None = None) -> dict[str, flo
 
 
 def refuse_double(con: sqlite3.Connection, changes: Sequence[Change]) -> None:
-    """PlantError where a change, applied already, promises more of a stock than its tank can give."""
+    """PlantError where a change, applied already, promises more of a stock than its tank can give.
+
+    A charge that is taken back gives its tank what it promises anew: that goes through even where a dip or another
+    charge has left too little for all.
+    """
+    back: dict[object, float] = {}
+    for change in changes:
+        mg = [(cells or {}).get("mg") for cells in (change.before, change.after)]
+        if change.table == "quantity" and None not in mg:
+            back[change.key["stock"]] = (float(mg[1] or 0) - float(mg[0] or 0)) / 1e6
     for change in changes:
         if change.table == "charge" and change.after is not None and _promises_more(change.before, change.after):
-            _refuse(con, change)
+            _refuse(con, change, back)
 
 
 def _promises_more(before: Mapping[str, Value] | None, after: Mapping[str, Value]) -> bool:
@@ -38,17 +47,17 @@ def _promises_more(before: Mapping[str, Value] | None, after: Mapping[str, Value
     return again or "stock" in after or float(after.get("plan_kg") or 0.0) > float(before.get("plan_kg") or 0.0)
 
 
-def _refuse(con: sqlite3.Connection, change: Change) -> None:
+def _refuse(con: sqlite3.Connection, change: Change, back: Mapping[object, float]) -> None:
     batch, line = change.key["batch"], change.key["line"]
-    stock, state, plan = con.execute("SELECT stock, state, plan_kg FROM charge WHERE batch = ? AND line = ?",
-                                     (batch, line)).fetchone()
+    stock, state, plan, tolerance = con.execute(
+        "SELECT stock, state, plan_kg, tolerance_kg FROM charge WHERE batch = ? AND line = ?", (batch, line)).fetchone()
     found = con.execute("SELECT unpumpable_kg FROM stock WHERE stock = ?", (stock,)).fetchone()
     mg = con.execute(QUANTITY_OF, (stock,)).fetchone()[0]
     if state != PLANNED or found is None or mg is None:
         return
     there = mg / 1e6 - (found[0] or 0.0)
     promised = reserved(con, stock).get(stock, 0.0)
-    if promised <= there + LEAST:
+    if promised <= there + LEAST or (change.before is not None and back.get(stock, 0.0) >= plan - tolerance > 0.0):
         return
     others = con.execute(f"SELECT DISTINCT c.batch, b.ordered_by {OF_OPEN} AND c.stock = ? AND c.batch <> ? "
                          "ORDER BY c.batch", (stock, batch)).fetchall()

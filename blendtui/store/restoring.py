@@ -10,7 +10,7 @@ import os
 import sqlite3
 from collections import Counter
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -156,7 +156,8 @@ def _replace(temporary: Path, source: Path, chain: Chain, place: Path, who: str,
 
 
 def _set_aside(lost: int, kept: Path) -> str:
-    return harmless(f"what was there, {lost} later entries among it, is kept in {kept.name}" if lost else
+    entries = "entry" if lost == 1 else "entries"
+    return harmless(f"what was there, {lost} later {entries} among it, is kept in {kept.name}" if lost else
                     f"what was there is kept in {kept.name}")
 
 
@@ -177,6 +178,9 @@ def _held(place: Path, timeout: float) -> Iterator[sqlite3.Connection]:
         try:
             _alone(con, place)
             yield con
+            # Whoever comes in between finds the restored plant, and its journal may stay.
+            with suppress(sqlite3.OperationalError):
+                _let_go(con)
         finally:
             con.execute("PRAGMA locking_mode = NORMAL")
             con.execute("PRAGMA journal_mode = WAL")
@@ -197,6 +201,14 @@ def _alone(con: sqlite3.Connection, place: Path) -> None:
         name = writer_of(place)
         raise PlantBusy(f"{place} is open elsewhere{f': {name} is writing it' if name else ''}; nothing was restored: "
                         "ask everybody to leave it, and restore again", who=name) from error
+
+
+def _let_go(con: sqlite3.Connection) -> None:
+    """Give up the exclusive lock, and the spent journal that it leaves beside the file."""
+    con.execute("PRAGMA locking_mode = NORMAL")
+    con.execute("SELECT COUNT(*) FROM sqlite_master").fetchone()  # only now is the lock gone
+    for mode in ("PERSIST", "DELETE"):  # on this way SQLite takes the journal away
+        con.execute(f"PRAGMA journal_mode = {mode}").fetchone()
 
 
 def _overwrite(con: sqlite3.Connection, temporary: Path) -> None:

@@ -204,6 +204,21 @@ def test_each_caution_has_its_reason_in_these_stocks(made: Card) -> None:
     assert any(c.warns and "IT DOES NOT FIT" in c.advice for c in over)
 
 
+def test_the_fill_is_of_what_was_made_and_not_of_what_is_left(plant: Plant, made: Card) -> None:
+    for line in made.lines:
+        charged(plant, line.charge.line)
+    whole = card(plant, "B-0001")
+    assert whole.fill_l == pytest.approx(made.fill_l)
+    drawn(plant, "packed", 10000.0, hour=20)
+    drawn(plant, "left", 140.0, hour=21)
+    packed = card(plant, "B-0001")
+    assert packed.made.in_vessel_kg == pytest.approx(made.total_kg - 10140.0)
+    assert (packed.fill_l, packed.total_kg) == (whole.fill_l, whole.total_kg)
+    assert packed.mix_kv == whole.mix_kv
+    assert of(packed, "Room") == of(whole, "Room")
+    assert [x.reading_kg for x in packed.lines] == [x.reading_kg for x in whole.lines]
+
+
 def test_no_caution_ever_clears_anything(plant: Plant, made: Card) -> None:
     far = Vessel("K", 1e4, 10.0, flash_margin_c=1.0, flash_margin_on="2026-01-01")
     for each in (*made.cautions, *cautions([Stock("A", values={"flash": 300.0})], far, 20.0)):

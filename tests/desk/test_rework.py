@@ -301,6 +301,17 @@ def test_what_is_left_is_the_heel_of_the_vessel(made: Plant) -> None:
         rework.leave(made, "B-1", 5.0, "left")
 
 
+def test_a_heel_that_leaves_much_of_the_batch_nowhere_is_questioned(made: Plant) -> None:
+    release(made, "B-1")
+    entries = made.revision()
+    with pytest.raises(Questioned, match=r"then 9890 kg of it \(98\.90 %\) went nowhere on record; was it packed"):
+        rework.leave(made, "B-1", 110.0, "left")
+    assert made.revision() == entries
+    rework.leave(made, "B-1", 9390.0, "packed")
+    rework.leave(made, "B-1", 110.0, "left")
+    assert rework.balance(made.batch("B-1")).loss_kg == 500.0
+
+
 def test_the_balance_of_a_batch(made: Plant) -> None:
     assert rework.balance(made.batch("B-1")).words == (
         "10000 kg are in K1 by the book; the balance closes when what stays there is recorded",)

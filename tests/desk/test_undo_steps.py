@@ -73,7 +73,7 @@ def test_rework_goes_back_until_it_closes_the_batch(plant):
     for charge in plant.batch("B-0001").to_charge:
         charging.charge(plant, "B-0001", charge.line, charge.plan_kg, lot="seen", why="board", sure=True)
     inside = plant.batch("B-0001").in_vessel_kg
-    there_and_back(plant, lambda: rework.leave(plant, "B-0001", 90.0, "left"))
+    there_and_back(plant, lambda: rework.leave(plant, "B-0001", 90.0, "left", sure=True))
     there_and_back(plant, lambda: rework.leave(plant, "B-0001", 1000.0, "rework", family="hydraulic", why="wrong oil",
                                                sure=True))
     rework.leave(plant, "B-0001", inside - 1090.0, "slops", why="wrong oil", sure=True)
