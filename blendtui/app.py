@@ -26,6 +26,7 @@ from blendtui.desk.plant import Plant, open_plant
 from blendtui.quiet import quiet
 from blendtui.screens import asker, messages, words
 from blendtui.screens.asker import Asker, fault
+from blendtui.screens.at_console import at_console
 from blendtui.screens.layout import CSS
 from blendtui.screens.session import Session
 from blendtui.screens.state import Snapshot, read
@@ -133,7 +134,7 @@ class Console(App[int]):
 
     def say(self, message: str, kind: str = "note") -> None:
         """Say what happened, in the status line and in the list of messages; a headless command as its key."""
-        message = words.at_console(message)
+        message = at_console(message)
         if message and self.said[-1] != (kind, message):
             self.said.append((kind, message))
         self.page.say(message, kind)

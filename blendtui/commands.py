@@ -159,17 +159,26 @@ COMMANDS: tuple[Command, ...] = (
         "number or state all the typed words are found.", changes=False),
     _on(BATCHES, "a", "add", "new order", "Take an order for the product all screens speak of: amount, vessel, "
         "customer, heel and the rest are asked for in turn, then its charges are shown; nothing is written before y."),
+    _on(BATCHES, "n", "redesign", "anew", "Work the charges of the batch under the cursor out anew on today's tanks, "
+        "before the first of them is made; y there puts them in place of the old ones."),
+    _on(BATCHES, "v", "vessels", "vessels", "Show the vessels in place of the batches, and back: Enter there edits a "
+        "cell, a adds a vessel, d takes one out of use.", changes=False),
     _on(BATCHES, "d", "cancel", "cancel", "Cancel the batch under the cursor; the reason is asked for, and what was "
         "promised to it is free again."),
     _on(BATCHES, "t", "trace", "trace", "Follow a lot, a batch, an order, a customer or a stock both ways, with the "
         "parts it had.", changes=False),
+    _on(BATCHES, "b", "person", "name", "Type the name under which the steps at this terminal are recorded; empty: "
+        "the login name.", changes=False, late=True),
     _on(BATCHES, "w", "write", "write card", "Write the card of the batch under the cursor to a file, and say where; a "
         "name that ends in .html makes a page that prints."),
 
     # floor
-    _on(FLOOR, "enter", "type", "type", "Type the actual of the charge under the cursor (kg, t, 3 drums); in the "
-        "laboratory, the result of the property under the cursor.", shown="Enter"),
-    _on(FLOOR, "l", "lot", "lot", "Type the lot that is charged in the line under the cursor."),
+    _on(FLOOR, "enter", "type", "type", "Type the actual of the charge under the cursor (kg, t, 3 drums, 9 t at 48 "
+        "°C); in the laboratory, the result of the property under the cursor.", shown="Enter"),
+    _on(FLOOR, "l", "lot", "lot", "Type the lot that is charged in the line under the cursor; of a charge that is "
+        "made, put its lot right."),
+    _on(FLOOR, "o", "other", "other", "Record that another oil than the planned one was charged on the line under "
+        "the cursor: which, how much, its lot and why.", late=True),
     _on(FLOOR, "c", "check", "check", "Second check of the charge under the cursor, under the name of another person."),
     _on(FLOOR, "x", "miss", "missed", "The charge under the cursor will not be made; the reason is asked for."),
     _on(FLOOR, "e", "correct", "correct", "Correct the actual of a charge that was made, or withdraw a result; the "
@@ -182,7 +191,8 @@ COMMANDS: tuple[Command, ...] = (
     _on(FLOOR, "v", "verdict", "verdict", "Show the decision that the results ask for, limit by limit, with its "
         "arithmetic.", changes=False, late=True),
     _on(FLOOR, "d", "decide", "decide", "Decide on the last sample: release, repeat, fresh sample or trim."),
-    _on(FLOOR, "t", "trim", "trim", "Show what to add so that the measured batch meets every limit; y there plans it."),
+    _on(FLOOR, "t", "trim", "trim", "Show what to add so that the measured batch meets every limit; y there plans it, "
+        "m asks for the least mass, c for a chance."),
     _on(FLOOR, "p", "out", "pack", "Record what leaves the vessel: kg and as what (packed, sample, slops, flush, "
         "rework, left).", late=True),
     _on(FLOOR, "L", "release", "release", "Release the batch under the name of who does; what is missing is named "
@@ -192,7 +202,7 @@ COMMANDS: tuple[Command, ...] = (
     _on(FLOOR, "k", "cautions", "cautions", "Show the cautions that apply to these stocks, each with its reason; the "
         "site's procedure decides.", changes=False),
     _on(FLOOR, "n", "next", "next", "Go to the next open batch.", changes=False, late=True),
-    _on(FLOOR, "b", "person", "by name", "Type the name under which the steps at this terminal are recorded; empty: "
+    _on(FLOOR, "b", "person", "name", "Type the name under which the steps at this terminal are recorded; empty: "
         "the login name.", changes=False, late=True),
 
     _on(ALL, "u", "undo", "undo", "Take back your last change, on this screen or another, and say what it was."),

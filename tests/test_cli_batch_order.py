@@ -3,13 +3,16 @@
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import pytest
 
 from blendtui.cli import main
+from blendtui.desk import order_words
 from blendtui.desk.plant import open_plant
+from solver.recipe import LimitResult
 from tests.desk.order_plant import order_plant
 
 
@@ -122,7 +125,16 @@ def test_heel_flush_and_what_ignoring_does(capsys: pytest.CaptureFixture[str], p
     (("batch", "list", "--state", "lost"), "--state lost: usable are open, released, cancelled, reworked"),
     (("batch",), "say what is to be done"), (("vessel",), "say what is to be done with vessels"),
     (("vessel", "set", "K1", "capacity_l"), "capacity_l: write CELL=VALUE"),
-    (("vessel", "set", "K1", "capacity_l=1", "capacity_l=2"), "capacity_l is given twice")])
+    (("vessel", "set", "K1", "capacity_l=1", "capacity_l=2"), "capacity_l is given twice"),
+    (("vessel", "set", "K1", "capacity_l=much"), "K1 capacity: 'much' is not a number"),
+    ((*ORDER, "--limit", "kv40=44:nan"), "the customer's KV40: 'nan' is not a number"),
+    ((*ORDER, "--heel-value", "kv40=nan"), "kv40: 'nan' is not a number"),
+    ((*ORDER, "--heel-value", "kv40=1e308"), "the heel: KV at 40 °C 1e+308 mm²/s lies outside 0.3 to 2e+07"),
+    ((*ORDER, "--heel", "1e99"), "the heel: 1e+99 kg is more than 1e+09 kg; check the unit"),
+    ((*ORDER, "--flush", "1e99=N32"), "the flush oil: 1e+99 kg is more than 1e+09 kg"),
+    (("batch", "order", "P46", "1e308 L", "--vessel", "K1"), "an order of inf L at 15 °C cannot be"),
+    (("batch", "reorder", "B-0001", "1.5"), "argument LINE: '1.5' is no whole number"),
+    (("batch", "order", "P46", "9", "--vessel", "K1", "--mix", "1e308"), "--mix: 1e308 is no temperature of an oil")])
 def test_what_cannot_be_is_one_line_on_stderr(capsys: pytest.CaptureFixture[str], path: Path, argv: tuple[str, ...],
                                               words: str) -> None:
     code = main([argv[0], "--plant", str(path), *argv[1:]])
@@ -160,11 +172,17 @@ def test_card_list_show_redesign_reorder_and_cancel(capsys: pytest.CaptureFixtur
     code, out, err = run(capsys, path, "batch", "card", "B-0001", "--write", str(text))
     assert code == 2
     assert "is there already" in err
+    other = tmp_path / "other.txt"
+    for second in (page, other, tmp_path / "none" / "card.html"):
+        code, out, err = run(capsys, path, "batch", "card", "B-0001", "--write", str(other), "--html", str(second))
+        assert (code, out, err.count("\n")) == (2, "", 1)
+        assert not other.exists()  # both or none
     code, out, _ = run(capsys, path, "batch", "card", "B-0001")
     assert out == text.read_text()
     code, shown = asked(capsys, path, "batch", "show", "B-0001")
     assert [c["state"] for c in shown["charges"]] == ["planned"] * 6
     assert shown["formula"]["grade"] == "ISO VG 46"
+    assert (shown["charges"][0]["by"], shown["charges"][0]["actual_lot"], shown["charges"][0]["at"]) == (None,) * 3
     code, again = asked(capsys, path, "batch", "redesign", "B-0001", "--try")
     assert again["batch"] is None
     code, again = asked(capsys, path, "batch", "redesign", "B-0001", "--why", "new tank")
@@ -189,6 +207,39 @@ def test_vessels_from_the_command_line(capsys: pytest.CaptureFixture[str], path:
     assert "K9: charged in the order heavy, light" in out
     assert run(capsys, path, "vessel", "retire", "K9")[0] == 0
     assert [v["vessel"] for v in asked(capsys, path, "vessel", "list")[1]["vessels"]] == ["K1", "K2", "K3", "TINY"]
+
+
+def test_a_vessel_is_added_with_its_cells_or_not_at_all(capsys: pytest.CaptureFixture[str], path: Path) -> None:
+    for cell in ("colour=red", "capacity_l=much", "capacity_l=-5", "least_fill_l=-1", "heel_stock=ZZ"):
+        code, out, err = run(capsys, path, "vessel", "add", "K9", "division_kg=1", cell)
+        assert (code, out, err.count("\n")) == (2, "", 1)
+        assert len(asked(capsys, path, "vessel", "list")[1]["vessels"]) == 4
+    with open_plant(path) as plant:
+        before = plant.revision()
+    run(capsys, path, "vessel", "add", "K9", "capacity_l=5000", "division_kg=1")
+    run(capsys, path, "vessel", "retire", "K9")
+    code, answer = asked(capsys, path, "vessel", "add", "K9", "capacity_l=6000")
+    assert (code, answer["capacity_l"], answer["division_kg"]) == (0, 6000.0, 1.0)
+    with open_plant(path) as plant:
+        assert plant.revision() == before + 3
+        assert plant.verify() is None
+
+
+def test_what_only_its_guard_misses_is_not_called_a_miss() -> None:
+    limit = LimitResult("vi", 95.0, None, 2.0, 97.0, None, 96.58, False, -0.42, "low", ("limit on vi",))
+    assert order_words._word(limit) == " in its guard"
+    assert order_words._word(replace(limit, value=94.9)) == " NOT MET"
+    assert order_words._word(replace(limit, value=None, met=None)) == " unknown"
+    assert order_words._word(replace(limit, value=97.5, met=True)) == ""
+
+
+def test_a_limit_of_a_volume_is_not_shown_as_the_products(capsys: pytest.CaptureFixture[str], path: Path) -> None:
+    code, answer = asked(capsys, path, "batch", "order", "P46", "20000 L", "--vessel", "K1", "--limit",
+                         "density15=:900")
+    assert code == 3
+    limit = next(x for x in answer["limits"] if x["property"] == "density15")
+    assert (limit["low"], limit["held_low"], limit["high"]) == (None, None, 900.0)
+    assert limit["sources"] == ["customer"]
 
 
 def test_bytes_that_are_no_text_are_refused_in_words(capsys: pytest.CaptureFixture[str], path: Path) -> None:

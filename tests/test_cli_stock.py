@@ -71,7 +71,8 @@ def test_receive_is_questioned_and_refused(run):
                         (["8 barrels", "--lot", "L1", *FULL], "'barrels'"),
                         (["8 t", "--lot", "L1", *FULL, "--source", "rumour"], "source 'rumour' is not known"),
                         (["8 t", "--lot", "L1", *FULL, "--on", "4.3.26"], "'4.3.26' is no time"),
-                        (["8 t", "--lot", "L1", *FULL, "--law", "guess"], "guess")):
+                        (["8 t", "--lot", "L1", *FULL, "--law", "guess"], "guess"),
+                        (["8 t", "--lot", "L1", "--value", "kv40=nan"], "kv40: 'nan' is not a number")):
         code, out, err = run("stock", "receive", "LN", *words)
         assert (code, out) == (2, "")
         assert said in err
@@ -107,6 +108,15 @@ def test_test_dip_and_book(run):
     assert run("stock", "book", "LN", "--last", "-1")[0] == 2
     assert answer(run, "stock", "book", "UN")["balance_kg"] is None
     assert "the book quantity is unknown" in run("stock", "book", "UN")[1]
+
+
+def test_litres_beyond_the_tables_are_refused(run):
+    for typed in ("500", "1e308"):
+        code, out, err = run("stock", "dip", "LN", "30000 L", "--at", typed)
+        assert (code, out, err.count("\n")) == (2, "", 1)
+        assert "is no temperature of a" in err
+    assert run("stock", "dip", "LN", "26 t", "--at", "500")[0] == 0  # a mass has no temperature
+    assert run("stock", "book", "LN", "--last", "x")[2].startswith("argument --last: 'x' is no whole number")
 
 
 def test_pack_draw_and_balance(run, plant):

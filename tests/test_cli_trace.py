@@ -71,7 +71,7 @@ def test_json(run):
     found = json.loads(out, parse_constant=lambda text: pytest.fail(f"{text} is no JSON"))
     assert (found["kind"], found["kg"], found["also"]) == ("batch", 10000.0, [])
     assert {(o["stock"], o["lot"]): o["part"] for o in found["origins"]} == pytest.approx(
-        {("LN", "L1"): 0.134, ("LN", "before"): 0.402, ("HN", ""): 0.464})
+        {("LN", "L1"): 0.134, ("LN", "before"): 0.402, ("HN", None): 0.464})
     assert found["origins"][-1]["receipt"]["certificate"] == "C-7"
     assert [(n["what"], n["name"]) for n in found["back"]] == [
         ("heel", "B-1"), ("charge", "LN"), ("charge", "RW-HYDRAULIC"), ("charge", "HN")]
@@ -87,6 +87,8 @@ def test_kinds_and_unknown_names(run):
     code, out, err = run("L9")
     assert (code, out) == (2, "")
     assert err == "no lot, batch, order, customer or stock 'L9'; the latest batches are B-2, B-1\n"
+    assert run("B-1", "--kind", "parcel")[2] == (
+        "'parcel' is no kind of name; usable are batch, lot, stock, order, customer\n")
     assert run("B-1", "--kind", "customer")[2] == "B-1 is no customer; it is a batch and a lot\n"
 
 

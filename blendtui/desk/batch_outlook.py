@@ -228,6 +228,15 @@ def _rules(target: Target, stocks: Sequence[Stock], masses: Mapping[str, float],
     return found
 
 
+def broken(plant: Plant, made: Made) -> tuple[str, ...]:
+    """Share rules that what is in the vessel breaks (a treat rate, a cap), and stocks that are not on the list."""
+    target, stocks = batches.target_of(plant, made), own_stocks(plant, made)
+    inside = contents(plant, made, target)
+    masses = {s.code: s.in_vessel_kg or 0.0 for s in inside}
+    return (*(_rules(target, inside, masses, made) if sum(masses.values()) > 0.0 else ()),
+            *(f"{harmless(code, 40)} is not on the product's list" for code in unlisted(made, stocks, target)))
+
+
 def unlisted(made: Made, stocks: Sequence[Stock], target: Target) -> list[str]:
     """Stocks that were charged and that the product's list does not permit."""
     from solver.allowed import candidates

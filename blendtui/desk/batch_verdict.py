@@ -86,7 +86,7 @@ class Verdict:
         """The verdict in one line."""
         if not self.samples:
             return "no sample that counts yet"
-        which = f"sample {and_of([str(s) for s in sorted(self.samples)])}"
+        which = f"sample{'s' if len(self.samples) > 1 else ''} {and_of([str(s) for s in sorted(self.samples)])}"
         if self.decision == NO_RESULT:
             has = "has" if len(self.missing) == 1 else "have"
             return f"{which}: no release while {and_of(self.missing)} {has} no result"
@@ -299,7 +299,9 @@ def _past(made: Made, draw: Sequence[Sample]) -> Iterator[str]:
     for sample in made.samples:
         if sample.sample in counted or sample.round != made.rounds:
             continue
-        why = "a newer one counts" if sample.sample in alive else "it was drawn before the last charge"
+        tested = any(r.sample == sample.sample and not r.withdrawn for r in made.results)
+        why = ("it was drawn before the last charge" if sample.sample not in alive else
+               "a newer one counts" if tested else "it has no result that stands")
         found = {code: mean_of(made, sample, code) for code in PAIR}
         told = ", ".join(f"{heading(c)} {numbers.value(c, m[0])}" for c, m in found.items() if m is not None)
         yield f"sample {sample.sample} does not count: {why}" + (f" ({told})" if told else "")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import unicodedata
 from collections.abc import Mapping
 from dataclasses import asdict, replace
 from datetime import UTC, datetime
@@ -42,8 +43,8 @@ def opened(plant: Plant, name: str) -> Made:
 
 
 def next_name(plant: Plant) -> str:
-    """The plant's own name for the next batch: B-0001, B-0002 …"""
-    numbers = [int(b.batch[2:]) for b in plant.batches() if b.batch.startswith("B-") and b.batch[2:].isdigit()]
+    """The plant's own name for the next batch: B-0001, B-0002 …; none is ever used twice, however it was undone."""
+    numbers = [int(name[2:]) for name in plant.batch_names() if name.startswith("B-") and name[2:].isdigit()]
     return f"B-{1 + max(numbers, default=0):04d}"
 
 
@@ -53,8 +54,10 @@ def person(plant: Plant, by: str) -> str:
 
 
 def same_person(one: str, other: str) -> bool:
-    """Are two typed names the same, whatever their case and blanks?"""
-    return "".join(one.split()).casefold() == "".join(other.split()).casefold()
+    """Are two typed names the same, whatever their case, blanks and points, and however an accent is spelt?"""
+    first, second = ("".join(sign for sign in unicodedata.normalize("NFKC", name).casefold() if sign.isalnum())
+                     for name in (one, other))
+    return first == second
 
 
 def when(iso: str) -> str:
@@ -138,8 +141,11 @@ def held(made: Made) -> list[tuple[Content | Charge, float]]:
         if leaves:
             gone += event.kg  # type: ignore[union-attr]
             continue
-        masses = [*_without(masses, gone), (event, event.actual_kg or 0.0)]  # type: ignore[list-item, union-attr]
-        gone = 0.0
+        there = sum(kg for _, kg in masses)
+        # More than was there left before a charge that was corrected away and entered anew: it left of that charge.
+        now = min(gone, there) if there > 0.0 else 0.0
+        masses = [*_without(masses, now), (event, event.actual_kg or 0.0)]  # type: ignore[list-item, union-attr]
+        gone -= now
     return _without(masses, gone)
 
 

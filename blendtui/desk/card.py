@@ -15,6 +15,7 @@ from solver.volume import litres
 
 from . import batch_outlook, batches, charge_lines, formulas, heels
 from .cautions import Caution, cautions
+from .scale import readings
 
 if TYPE_CHECKING:
     from solver.recipe import LimitResult, Recipe
@@ -29,7 +30,7 @@ class CardLine:
 
     charge: Charge
     name: str  # of the stock; the tank often stands in it
-    rinse: bool  # the same stock stands on an earlier line
+    rinse: bool  # the same stock stands on an earlier line of the recipe, or of the same trim
     lots: Mapping[str, float]  # lot → part of the tank now, or of what was charged; empty: no receipt is known
     step_kg: float | None
     own_scale: bool  # is it weighed finer than the vessel's scale can?
@@ -166,17 +167,13 @@ def _mix_kv(plant: Plant, made: Made, recipe: Recipe | None) -> float | None:
 
 def _lines(plant: Plant, made: Made, stocks: Mapping[str, Stock], of: Vessel | None, start: float) -> list[CardLine]:
     found: list[CardLine] = []
-    live, tared = plant.stocks(), 0.0
+    live, shows = plant.stocks(), readings(made)
     for charge in made.charges:
-        dropped = charge.state == DROPPED
-        if not dropped:
-            tared += _kg(charge)
-        # What was drawn off before a charge is missing on the scale when it is made.
-        gone = sum(o.kg for o in made.outcomes if charge.state != DONE or o.at < charge.at)
-        again = any(x.stock == charge.stock and x.charge.state != DROPPED for x in found)
+        again = any(x.stock == charge.stock and x.charge.state != DROPPED and x.charge.round == charge.round
+                    for x in found)
         line = _line(plant, charge, stocks.get(charge.stock, Stock(charge.stock)), of, live)
-        readings = (None, None) if dropped else (start + tared - gone, tared - gone)
-        found.append(replace(line, rinse=again, reading_kg=readings[0], tared_kg=readings[1]))
+        kg = shows.get(charge.line)
+        found.append(replace(line, rinse=again, reading_kg=kg, tared_kg=None if kg is None else kg - start))
     return found
 
 

@@ -5,14 +5,14 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from html import escape
 
-from blendtui.store.batch_records import OPEN
+from blendtui.store.batch_records import DROPPED, OPEN
 from blendtui.store.harmless import harmless
 from solver.properties import lookup, volume_at
 from solver.requirements import COST
 
 from . import batches, numbers
 from .card import Card, CardLine, content_words, facts
-from .card_text import exact, lots_of
+from .card_text import SCALE, TOLD, exact, lots_of
 from .sheet import NOT_A_CERTIFICATE
 
 STYLE = """
@@ -74,7 +74,8 @@ def card_html(made: Card) -> str:
 {_total(made)}
 </tbody>
 </table>
-<h2>Mixing</h2>
+<p class="small">{_safe(SCALE)}</p>
+{_dropped(made)}<h2>Mixing</h2>
 <p>{_safe(_mixing(made))}</p>
 <p class="write">from <span></span> to <span></span> at <span></span> °C &nbsp; KV40 top <span></span>
 middle <span></span> bottom <span></span></p>
@@ -165,11 +166,26 @@ def _predicted(made: Card) -> str:
             figures = [limit.value, limit.low, limit.high]
             shown = ["" if v is None else numbers.value(limit.property, v) for v in figures]
             label = lookup(limit.property).label + (" (customer)" if limit.property in customer else "")
-            rows.append(f"<tr><td>{_safe(label)}</td>" + "".join(f'<td class="figure">{_safe(t)}</td>' for t in shown)
-                        + "</tr>")
+            rows.append(_figures(label, shown))
+    held = {limit.property for limit in made.limits}
+    rows += [_figures(lookup(code).label, [numbers.value(code, value), "", ""]) for code in TOLD
+             if code not in held and (value := made.recipe.predicted.get(code)) is not None]
     return ("<h2>Predicted</h2>\n<table><thead><tr><th>property</th><th class=\"figure\">predicted</th>"
             "<th class=\"figure\">at least</th><th class=\"figure\">at most</th></tr></thead><tbody>\n"
             + "\n".join(rows) + "\n</tbody></table>")
+
+
+def _figures(label: str, shown: Sequence[str]) -> str:
+    return f"<tr><td>{_safe(label)}</td>" + "".join(f'<td class="figure">{_safe(t)}</td>' for t in shown) + "</tr>"
+
+
+def _dropped(made: Card) -> str:
+    """Lines that are not charged, and the second checks that are due."""
+    said = [f"Line {x.charge.line} {x.stock} dropped: {x.charge.why}" for x in made.lines if x.charge.state == DROPPED]
+    unchecked = batches.unchecked(made.made)
+    if unchecked:
+        said.append("Second check missing: " + ", ".join(f"line {c.line} {c.stock}" for c in unchecked))
+    return "".join(f'<p class="small">{_safe(words)}</p>\n' for words in said)
 
 
 def _rests_on(made: Card) -> str:
@@ -177,4 +193,6 @@ def _rests_on(made: Card) -> str:
     if made.recipe is not None:
         said += f"; law {made.recipe.law}"
         said += f" with the laboratory's lessons {', '.join(made.recipe.lessons)}" if made.recipe.lessons else ""
+        said += f" (provisional: {', '.join(made.recipe.provisional)})" if made.recipe.provisional else ""
+        said += "".join(f". To be tested: {test}" for test in made.recipe.to_be_tested)
     return f"{said}."

@@ -19,6 +19,9 @@ CODE, NAME, KG = 13, 32, 10  # columns of a stock's code and name (longer ones g
 _PLAIN = str.maketrans({"–": "-", "²": "2", "³": "3", "°": "deg ", "·": ".", "−": "-", "≤": "<=", "≥": ">=", "…": "~",
                         "×": "x", "→": "->", "’": "'"})
 DECIDE = "CAUTIONS: site procedures, safety data sheets, permits and codes decide"
+SCALE = ("Scale shows: heel, line and flush oil that goes in are on it from the start; from 0: it was set to 0 before "
+         "the first charge. Both run by the plan: after a charge that differs, go by the kg of the next.")
+TOLD = ("kv40", "kv100", "vi", "density15")  # predicted figures that stand on the card although nothing limits them
 BOXES = "kg _________  lot ______________  time ______  by ________  check ________"
 
 
@@ -95,9 +98,7 @@ def _charges(made: Card) -> Iterator[str]:
     yield "-" * WIDTH
     charged = sum(x.kg for x in made.on_card)
     yield f"{'':5}{'total charged':<{CODE + NAME}}{exact(charged):>{KG}}{exact(made.total_kg):>{KG}}"
-    yield from _wrap("Scale shows: heel, line and flush oil that goes in are on it from the start; from 0: it was set "
-                     "to 0 before the first charge. Both run by the plan: after a charge that differs, go by the kg of "
-                     "the next.")
+    yield from _wrap(SCALE)
     for line in made.lines:
         if line.charge.state == DROPPED:
             yield from _wrap(f"line {line.charge.line} {line.stock} dropped: {line.charge.why}", rest="  ")
@@ -175,7 +176,7 @@ def _predicted(made: Card) -> Iterator[str]:
             label = ""
         yield f"{label:<34}{numbers.value(limit.property, limit.value):>12}{low:>12}{high:>12}".replace("–", "-")
     held = {limit.property for limit in made.limits}
-    for code in ("kv40", "kv100", "vi", "density15"):
+    for code in TOLD:
         if code not in held and (value := made.recipe.predicted.get(code)) is not None:
             yield f"{plain(lookup(code).label):<34}{numbers.value(code, value):>12}"
 

@@ -126,11 +126,12 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
         without = replace(made, charges=tuple(c for c in made.charges if c.line != line))
         batch_doubts.ask(sure, _asked(plant, without, row, back, mass, given, tank, celsius))
         _question_gone(made, off, sure)
+        anew = bool(given) and not _same_lot(row, oil, given)  # else the oil stays what it was when it was charged
         done = replace(row, actual_kg=mass, actual_lot=given or row.actual_lot, by=who, checked_at="", checked_by="",
                        celsius=row.celsius if celsius is None else celsius,
                        why=_after(f"corrected from {numbers.batch(row.actual_kg)} kg ({row.by}): {reason}", row.why),
-                       cells=_cells(plant, oil, given, tank) if given else row.cells,
-                       lots=_lots(oil, given, tank) if given else row.lots)
+                       cells=_cells(plant, oil, given, tank) if anew else row.cells,
+                       lots=_lots(oil, given, tank) if anew else row.lots)
         changes = (changed(row, **{cell: getattr(done, cell) for cell in CELLS}), *lots_of(done, row), moved(oil, -off),
                    *_tank_after(plant, oil, tank, (row.lots, -(row.actual_kg or 0.0)), (done.lots, mass)))
         return Step(changes, f"{batch} line {line}: {numbers.batch(row.actual_kg)} kg corrected to "
@@ -273,6 +274,7 @@ def _asked(plant: Plant, made: Made, row: Charge, oil: Stock, kg: float, lot: st
     yield from charging_words.doubts(made, row, oil, kg, vessel_of(plant, made), contents(plant, made, target), celsius)
     elsewhere = [x.stock for x in plant.lots() if x.lot == lot] if lot and lot not in tank else []
     yield from charging_words.foreign_lot(oil, lot, tank, elsewhere)
+    yield from charging_words.lot_of_drums(oil, lot, tank, kg)
 
 
 def _reason(row: Charge, oil: Stock, reason: str) -> str:
@@ -284,6 +286,11 @@ def _lots(oil: Stock, lot: str, tank: Mapping[str, float]) -> dict[str, float]:
     if lot and (oil.package_kg or lot not in tank):
         return {lot: 1.0}
     return dict(tank)
+
+
+def _same_lot(row: Charge, oil: Stock, lot: str) -> bool:
+    """Does a lot that is typed with a correction say what is recorded already? A tank may hold others by now."""
+    return bool(row.lots) and (lot == row.actual_lot or (not oil.package_kg and lot in row.lots))
 
 
 def _cells(plant: Plant, oil: Stock, lot: str, tank: Mapping[str, float]) -> dict[str, float]:

@@ -15,7 +15,7 @@ from . import batches, numbers
 from .batch_outlook import Outlook, apart_kg, fill_of
 from .errors import DeskError
 from .reason_words import and_of, heading, unit
-from .typed import mass
+from .typed import LITRES, mass
 
 SLIP = 5.0  # times the plan, or a part of it, from which an actual is questioned
 PACKAGES = re.compile(r"(drums?|ibcs?|packages?|pieces?|totes?)", re.IGNORECASE)
@@ -23,7 +23,6 @@ HAIR = 1e-6  # kg
 WHOLE = 0.01  # of a package: what a residue of 0.5–2 % may take from it is told, less is not
 NEAT = ("additive", "vi_improver", "pour_depressant")  # never charged onto nothing
 TOLD = ("kv40", "kv100", "vi", "density15", "flash", "pour")  # told even where the product does not limit them
-LITRES = ("l", "litre", "litres", "m³", "m3", "us gal", "usgal")
 COLDEST, HOTTEST = -20.0, 150.0  # °C that a tank or drum may have
 
 
@@ -119,6 +118,21 @@ def foreign_lot(oil: Stock, lot: str, tank: Mapping[str, float], elsewhere: Sequ
     where = f"; {harmless(lot, 40)} was received as {and_of([harmless(c, 40) for c in elsewhere])}" if elsewhere else ""
     holds = ", ".join(f"{harmless(name, 30)} {numbers.pct(part)} %" for name, part in list(tank.items())[:6])
     yield f"lot {harmless(lot, 40)} is not in {harmless(oil.code, 40)}, which holds {holds}{where}"
+
+
+def lot_of_drums(oil: Stock, lot: str, tank: Mapping[str, float], kg: float) -> Iterator[str]:
+    """Drums of several lots: each is of one, so it is to be typed; and no more of a lot than there is by the record."""
+    if not oil.package_kg or not oil.on_hand_kg:
+        return
+    if not lot and len(tank) > 1:
+        holds = ", ".join(f"{harmless(name, 30)} {numbers.kg(part * oil.on_hand_kg)} kg" for name, part in
+                          list(tank.items())[:6])
+        yield (f"{harmless(oil.code, 40)} comes in packages, and there are {holds}: of which lot was it? Unsaid, it is "
+               "recorded as of all of them in proportion")
+    there = tank.get(lot, 0.0) * oil.on_hand_kg
+    if lot in tank and kg > there * (1.0 + WHOLE) + HAIR:
+        yield (f"by the record {numbers.kg(there)} kg of lot {harmless(lot, 40)} are in {harmless(oil.code, 40)}, less "
+               f"than the {numbers.kg(kg)} kg typed: was part of it of another lot?")
 
 
 def substituted(row: Charge, oil: Stock, target: Target) -> Iterator[str]:

@@ -10,6 +10,7 @@ from typing import Any
 from blendtui.store.batch_records import Made
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
+from solver.errors import SolverError
 from solver.requirements import Requirement, merge
 from solver.target import Limit, Target
 
@@ -54,8 +55,11 @@ def _limit(code: str, sides: tuple[str, str], source: str, own: list[Limit]) -> 
 
     from .amounts import amount
 
-    low, high = (None if not text.strip() else
-                 amount(text.strip(), code) if code != "vi" else float(_number(text)) for text in sides)
+    try:
+        low, high = (None if not text.strip() else
+                     amount(text.strip(), code) if code != "vi" else float(_number(text)) for text in sides)
+    except SolverError as error:
+        raise DeskError(f"the customer's {heading(code)}: {error}") from None
     if low is None and high is None:
         raise DeskError(f"the customer's {heading(code)} has neither a low nor a high; write kv40=44:48")
     if low is not None and high is not None and low > high:

@@ -10,11 +10,14 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from statistics import fmean
 
+from blendtui.store import cells as check
 from blendtui.store.batch_records import DONE, FLUSH, HEEL, LINE, Content, Made, Vessel
 from blendtui.store.errors import NoSuchRow
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
+from solver.properties import lookup
 from solver.stocks import Stock
 
 from . import batches, numbers, typed
@@ -48,12 +51,24 @@ def contents_of(plant: Plant, vessel: Vessel, *, heel_kg: float | None = None, h
 def _mass(kg: float, what: str) -> float:
     if not math.isfinite(kg) or kg < 0.0:
         raise DeskError(f"the {what}: {kg:g} kg cannot be; type a mass, 0 for none")
+    if kg > check.LARGEST_KG:
+        raise DeskError(f"the {what}: {kg:g} kg is more than {check.LARGEST_KG:g} kg; check the unit")
     return kg
+
+
+def _refuse_values(measured: Mapping[str, float], called: str) -> None:
+    """DeskError for a measured value that no oil has."""
+    for code, value in measured.items():
+        entry = lookup(code.removeprefix("blend_"))
+        if not entry.lowest <= value <= entry.highest:
+            raise DeskError(f"{called}: {entry.name} {value:.6g} {entry.unit} lies outside {entry.lowest:g} to "
+                            f"{entry.highest:g}; check the figure and its unit")
 
 
 def _content(plant: Plant, what: str, kg: float, of: str, measured: Mapping[str, float], stocks: Mapping[str, Stock]
              ) -> Content:
     called = {HEEL: "the heel", LINE: "the line", FLUSH: "the flush oil"}[what]
+    _refuse_values(measured, called)
     cells, parts, source = _known(plant, of, called, stocks)
     cells = {**cells, **measured}
     if "kv40" in cells and "kv100" in cells and cells["kv100"] >= cells["kv40"]:
@@ -92,8 +107,7 @@ def of_batch(made: Made, stocks: Mapping[str, Stock]) -> tuple[dict[str, float],
     """
     from solver.recipe import evaluate
 
-    from .batch_lessons import means
-    from .release import newest
+    from .batch_verdict import drawn_together, values_of
 
     last = max((c.at for c in made.charges if c.state == DONE), default="")
     # What left after the last charge took its part of everything and changed nothing of what stays.
@@ -105,9 +119,11 @@ def of_batch(made: Made, stocks: Mapping[str, Stock]) -> tuple[dict[str, float],
         raise DeskError(f"{harmless(made.name, 40)}: nothing was charged into it, so nothing of it can be a heel")
     found = evaluate(inside, {s.code: (s.in_vessel_kg or 0.0) / total for s in inside}, law=_law(made)).predicted
     cells = {code: value for code, value in found.items() if value is not None and code != "vi"}
-    on = newest(made)
-    if on is not None:
-        cells.update({code: value for code, value in means(made, on.sample).items() if code != "vi"})
+    draw = drawn_together(made)
+    for code in dict.fromkeys(r.property for r in made.results if r.property != "vi"):
+        means = [mean for mean, _, _ in values_of(made, draw, code)]
+        if means:
+            cells[code] = fmean(means)
     return cells, batches.composition(made)
 
 

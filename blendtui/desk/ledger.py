@@ -21,6 +21,7 @@ from .topping_up import COMPUTED, PAIR, cells_changed, codes_of, value_of
 
 __all__ = ["Book", "Dipped", "Line", "Received", "Tested", "book", "dip", "receive", "test"]
 AGREES = 0.005  # of the book: dips and book agree within this (common practice)
+SLIPPED = 5.0  # times the book, or a part of it: has a point slipped?
 LEAST = 1e-3  # kg: what a sum of decimals may be off
 
 
@@ -161,7 +162,8 @@ def dip(plant: Plant, stock: str, kg: float | str, *, celsius: float | None = No
 
     With `correct` the book is set to the dip, as one movement with its reason, which is required; so it is where
     the book was unknown. A dip outside 0.5 % of the book is said to be. Refused: below 0, no reason for a
-    correction. Questioned unless `sure`: more than ten times what the tank ever held.
+    correction. Questioned unless `sure`: more than ten times what the tank ever held, and a book that is set to less
+    than a fifth or more than five times itself.
     """
     def make() -> Step:
         tank = live(plant, stock)
@@ -173,13 +175,17 @@ def dip(plant: Plant, stock: str, kg: float | str, *, celsius: float | None = No
         odd = too_much(plant, tank, found)
         if odd:
             batches.question(sure, f"{harmless(stock, 40)}: {asked(odd)}")
+        book = tank.on_hand_kg or 0.0
+        if correct and book > 0.0 and not book / SLIPPED < found < book * SLIPPED:
+            batches.question(sure, f"{harmless(stock, 40)}: the dip of {numbers.kg(found)} kg is "
+                                   f"{numbers.figures(found / book, 2)} times the book's {numbers.kg(book)} kg; has the "
+                                   "point slipped?")
         line = 1 + max((d.line for d in plant.dips(stock)), default=0)
         made = Dip(stock, line, found, tank.on_hand_kg, int(correct), now(), batches.person(plant, by),
                    typed.name(why, "reason"))
         changes = [*batch_edits.added(made), *([edits.stock_cell(tank, "on_hand_kg", found)] if correct else [])]
         what = f"{stock} book set to the dip, {numbers.kg(found)} kg: {made.why}" if correct else (
             f"{stock} dipped, {numbers.kg(found)} kg")
-        book = tank.on_hand_kg
         off = None if not book else 100.0 * (found - book) / book
         return Step(tuple(changes), what + signed(plant, by), why, Dipped(made, off, _dip_words(tank, made, off)))
 

@@ -44,10 +44,12 @@ class Past:
 def whole(made: Made) -> list[Thing]:
     """What a batch was made of: all of it, before it left the vessel.
 
-    What was drawn off before the last charge is no part of it any more.
+    What was drawn off before the last charge is no part of it any more, unless that was everything: then a charge was
+    entered anew after its oil had left.
     """
     last = max((c.at for c in made.charged), default="")
-    return batches.held(replace(made, outcomes=tuple(o for o in made.outcomes if o.at < last)))
+    found = batches.held(replace(made, outcomes=tuple(o for o in made.outcomes if o.at < last)))
+    return found if any(kg > 0.0 for _, kg in found) else batches.held(replace(made, outcomes=()))
 
 
 def when_drawn(made: Made, at: str) -> list[Thing]:

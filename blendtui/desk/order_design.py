@@ -24,7 +24,7 @@ from . import batches, blends, charge_lines, numbers
 from .errors import DeskError
 
 if TYPE_CHECKING:
-    from solver.recipe import Recipe
+    from solver.recipe import LimitResult, Recipe
 
 MOST_FILL_PCT = 90.0  # of a vessel at mixing temperature; practice fills 85–90 % and keeps the rest for foam and a trim
 TIME_LIMIT = 10.0  # s
@@ -127,7 +127,15 @@ def _in_any_mass(plan: Plan, inside: Sequence[Stock], asked_kg: float) -> Recipe
     lowest = Limit("density15", lookup("density15").lowest, source=f"vessel {plan.vessel.vessel}")
     target = _target(plan, asked_kg)
     found = blends.best([*plan.stocks, *inside], replace(target, limits=(*target.limits, lowest)), TIME_LIMIT)
-    return replace(found, limits=tuple(x for x in found.limits if x.sources != (lowest.source,)))
+    return replace(found, limits=tuple(_without(x, lowest) for x in found.limits if x.sources != (lowest.source,)))
+
+
+def _without(shown: LimitResult, own: Limit) -> LimitResult:
+    """A limit of the answer without that of one's own which was put together with it."""
+    if own.source not in shown.sources:
+        return shown
+    low = {} if shown.low != own.low else {"low": None, "held_low": None}
+    return replace(shown, sources=tuple(x for x in shown.sources if x != own.source), **low)
 
 
 def _first(plan: Plan, inside: Sequence[Stock]) -> Recipe:

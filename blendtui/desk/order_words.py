@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Iterator
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from blendtui.store.harmless import harmless
 from solver.properties import lookup, volume_at
@@ -15,6 +15,9 @@ from .card import UNITS, content_json
 from .card_text import exact
 from .proposals import Proposal
 from .sheet import NOT_A_CERTIFICATE
+
+if TYPE_CHECKING:
+    from solver.recipe import LimitResult
 
 WIDTH = 80
 STATUS = {"optimal": "least cost", "stopped": "best known, not proven to be the least cost"}
@@ -86,16 +89,23 @@ def _limits(made: Proposal) -> Iterator[str]:
     yield "-" * 63
     for x in rows:
         low, high = ("" if v is None else numbers.value(x.property, v) for v in (x.low, x.high))
-        word = {True: "", False: " NOT MET", None: " unknown"}[x.met]
         label = lookup(x.property).label
         if len(label) > 29:
             yield label
             label = ""
-        yield f"{label:<30}{numbers.value(x.property, x.value):>11}{low:>11}{high:>11}{word}"
+        yield f"{label:<30}{numbers.value(x.property, x.value):>11}{low:>11}{high:>11}{_word(x)}"
     asked = [harmless(lookup(x.property).name, 40) for x in rows if any(s.startswith("customer") for s in x.sources)]
     if asked:
         yield from _wrap(f"asked by the customer: {', '.join(asked)}")
     yield ""
+
+
+def _word(limit: LimitResult) -> str:
+    """What stands behind a limit: nothing where it is met with its guard."""
+    if limit.met is not False or limit.value is None:
+        return " unknown" if limit.met is None else ""
+    inside = (limit.low is None or limit.value >= limit.low) and (limit.high is None or limit.value <= limit.high)
+    return " in its guard" if inside else " NOT MET"
 
 
 def _effects(made: Proposal) -> Iterator[str]:

@@ -96,6 +96,9 @@ def _recheck(plant: Plant, proposal: Proposal, own: Made | None = None) -> None:
         vessel_now = vessel(plant, proposal.vessel.vessel)
     except DeskError:
         raise _Changed from None
+    if own is None:
+        flush = {c.stock for c in proposal.contents if c.what == FLUSH}
+        heels.deducted([s for s in plant.stocks() if s.code in flush], proposal.contents)  # it promises nothing itself
     there = heels.deducted(there, proposal.contents) if own is None else _given_back(there, own)
     if rests_on(plant, proposal.order, vessel_now, there) != proposal.rests_on:
         raise _Changed
@@ -213,7 +216,7 @@ def reorder(plant: Plant, batch: str, lines: Sequence[int], *, by: str = "", why
 def cancel(plant: Plant, batch: str, *, by: str = "", why: str = "", sure: bool = False) -> Made:
     """Cancel an open batch, with its reason: what it still had to charge is free again, its record stands.
 
-    Questioned once something is in the vessel.
+    Questioned once something was charged, or flush oil drawn with the order.
     """
     who, reason = batches.person(plant, by), harmless(why.strip(), 200)
     if not reason:
@@ -222,9 +225,14 @@ def cancel(plant: Plant, batch: str, *, by: str = "", why: str = "", sure: bool 
     def make() -> Step:
         made = batches.opened(plant, batch)
         inside = sum(c.actual_kg or 0.0 for c in made.charged)
-        if inside > 0.0:
-            batches.question(sure, f"{numbers.batch(inside)} kg are charged into {harmless(batch, 40)} already; "
-                                   "record what becomes of it (rework, slops) as well.")
+        flush = sum(c.kg for c in made.contents if c.what == FLUSH)
+        asked = [f"{numbers.batch(inside)} kg are charged into {harmless(batch, 40)} already; record what becomes of "
+                 "it (rework, slops) as well."] if inside > 0.0 else []
+        if flush > 0.0:
+            asked.append(f"{numbers.batch(flush)} kg of flush oil were drawn from their tank with the order of "
+                         f"{harmless(batch, 40)}; where they were not, dip the tank and set its book.")
+        if asked:
+            batches.question(sure, " ".join(asked))
         new = {"state": CANCELLED, "closed_at": now(), "closed_by": who, "why": reason}
         return Step((batch_edits.changed(made.head, **new),), f"{made.name} cancelled", reason,
                     replace(made, head=replace(made.head, **new)))  # type: ignore[arg-type]

@@ -15,8 +15,10 @@ from solver.stocks import Stock
 from solver.target import Target
 
 from . import batches, charge_lines, formulas, heels, numbers
+from .balance import balance
 from .errors import DeskError
 from .order_design import CELSIUS_OF, MOST_FILL_PCT, Designed, Plan, work_out
+from .release import STEP
 from .vessels import charge_order, vessel
 
 if TYPE_CHECKING:
@@ -27,6 +29,7 @@ MIX_C = 60.0  # °C where none is said: practice mixes at 50–65
 COOL, HOT = 30.0, 90.0  # °C from which a mixing temperature is questioned
 VOLUMES = ("l", "litre", "litres", "m³", "m3", "us gal", "usgal")
 AMBIENT_C = 20.0  # °C of a tank whose temperature is not said
+MISSED = 0.01  # of what went in: what may be missing where it was forgotten to say what stayed
 OLD_DAYS = 365  # of a test, from which it is remarked
 
 
@@ -167,14 +170,19 @@ def propose(plant: Plant, order: Order) -> Proposal:
     return proposed(plant, order, of, formulas.target_with(product, limits), contents, stocks, wider)
 
 
+def _shown(unit: str) -> str:
+    return unit if unit == "kg" else f"L at {CELSIUS_OF[unit]:g} °C"
+
+
 def _refuse_order(plant: Plant, order: Order, of: Vessel) -> None:
     """DeskError for what no order can be."""
     if order.unit not in UNITS:
         raise DeskError(f"{harmless(order.unit, 20)!r} is no unit of an order; usable are {', '.join(UNITS)}")
+    asked = f"an order of {order.amount:g} {_shown(order.unit)}"
     if not math.isfinite(order.amount) or order.amount <= 0.0:
-        raise DeskError(f"an order of {order.amount:g} {order.unit} cannot be; type what the customer is to get")
+        raise DeskError(f"{asked} cannot be; type what the customer is to get")
     if order.amount > check.LARGEST_KG:
-        raise DeskError(f"an order of {order.amount:g} {order.unit} is more than {check.LARGEST_KG:g}; check the unit")
+        raise DeskError(f"{asked} is more than {check.LARGEST_KG:g}; check the unit")
     if of.capacity_l is None:
         raise DeskError(f"{harmless(of.vessel, 40)} has no capacity, so its fill cannot be told; type it: blendtui "
                         f"vessel set {harmless(of.vessel, 40)} capacity_l=24000")
@@ -244,12 +252,26 @@ def _questions(plant: Plant, of: Vessel, mix_c: float, own: str) -> list[str]:
         asked.append(f"{harmless(of.vessel, 40)} holds {harmless(other.batch, 40)} ({harmless(other.product, 40)}, "
                      f"{batches.stage(plant.batch(other.batch))}, ordered by {harmless(other.ordered_by, 40)}), which "
                      "is open: the heel after it is not known yet")
+    asked += _still_in(plant, of, own)
     if not COOL <= mix_c <= HOT:
         asked.append(f"a mixing temperature of {mix_c:g} °C is far from the usual 50–65 °C")
     back = plant.clock_back()
-    if back is not None:
+    if back is not None and back > STEP:
         asked.append(f"the clock stands {back:,.0f} s before the last entry of the record: was it set back?")
     return asked
+
+
+def _still_in(plant: Plant, of: Vessel, own: str) -> list[str]:
+    """Is the oil of the batch before still in the vessel by the book, though that batch is closed?"""
+    before = (plant.batch(b.batch) for b in plant.batches() if b.vessel == of.vessel and b.batch != own)
+    made = next((m for m in before if m.charged or m.head.state == OPEN), None)
+    if made is None or made.head.state == OPEN:
+        return []
+    last, found = made.head, balance(made)
+    if found.loss_kg is not None or found.in_vessel_kg <= MISSED * found.in_kg:
+        return []
+    return [f"by the book {numbers.batch(found.in_vessel_kg)} kg of {harmless(last.batch, 40)}, which is {last.state}, "
+            f"are still in {harmless(of.vessel, 40)}: record what became of them (packed, rework, slops, left)"]
 
 
 def rests_on(plant: Plant, order: Order, of: Vessel, used: Sequence[Stock]) -> tuple[object, ...]:

@@ -74,7 +74,7 @@ def as_json(made: Verified) -> dict[str, Any]:
 def words(plant: Plant, made: Verified) -> list[str]:
     """The same as lines."""
     lines = [f"the record of {harmless(str(plant.path))} stands:",
-             f"{made.entries} entries, each follows the one before it, and the plant is what they say",
+             f"{_entries(made.entries)}, each follows the one before it, and the plant is what they say",
              f"last hash {made.last_hash}"]
     if made.found is not None:
         later = "none came after it" if not made.after else f"{made.after} came after it"
@@ -83,11 +83,15 @@ def words(plant: Plant, made: Verified) -> list[str]:
     return [*lines, *(f"remark: {remark}" for remark in made.remarks)]
 
 
+def _entries(count: int, which: str = "") -> str:
+    return f"{count} {which}{'entry' if count == 1 else 'entries'}"
+
+
 def backup(plant: Plant, file: Path, *, replace: bool = False) -> tuple[dict[str, Any], list[str]]:
     """Write one consistent, checked file of the plant; the answer as JSON and as lines."""
     made = plant.backup(file, replace=replace)
     return ({"file": str(made.path), "entries": made.entries, "last_hash": made.last_hash},
-            [f"backup of {harmless(str(plant.path))}: {harmless(str(made.path))}, {made.entries} entries, checked",
+            [f"backup of {harmless(str(plant.path))}: {harmless(str(made.path))}, {_entries(made.entries)}, checked",
              f"last hash {made.last_hash}"])
 
 
@@ -97,9 +101,9 @@ def restore(file: Path, plant: Path | None, *, by: str = "",
     from blendtui.store.restoring import restore as put_back
 
     made = put_back(file, plant or example_plant(), who=by.strip() or None, replace_newer=replace_newer)
-    lines = [f"restored {harmless(str(made.plant))} from {harmless(str(file))}, {made.entries} entries"]
+    lines = [f"restored {harmless(str(made.plant))} from {harmless(str(file))}, {_entries(made.entries)}"]
     if made.kept is not None:
-        lost = f", {made.lost} later entr{'y' if made.lost == 1 else 'ies'} among it" if made.lost else ""
+        lost = f", {_entries(made.lost, 'later ')} among it" if made.lost else ""
         lines.append(f"what was there{lost} is kept in {harmless(str(made.kept))}")
     return ({"plant": str(made.plant), "entries": made.entries, "lost": made.lost,
              "kept": None if made.kept is None else str(made.kept)}, lines)

@@ -150,6 +150,7 @@ def decision_on(made: Made, sample: int) -> Decision | None:
 
 def remarks(plant: Plant, made: Made) -> tuple[str, ...]:
     """What does not stand in the way of a release and should be known."""
+    from .batch_outlook import broken
     from .batch_verdict import RELEASE
     from .formulas import changes_since
     from .topping_up import EARLIER
@@ -164,6 +165,7 @@ def remarks(plant: Plant, made: Made) -> tuple[str, ...]:
         if part >= TOLD and known_lots(charge):
             said.append(f"line {charge.line} ({harmless(charge.stock, 40)}): {100.0 * part:.3g} % of it is from before "
                         "the tank's first receipt, and of no known lot")
+    said += [f"what was charged is not as the product says: {words}" for words in broken(plant, made)]
     on = newest(made)
     decided = decision_on(made, on.sample) if on is not None else None
     if decided is not None and decided.decision == RELEASE and decided.why:

@@ -74,6 +74,8 @@ def _lots(plant: Plant, name: str) -> list[Lot]:
 
 
 def _nothing(name: str, kind: str, kinds: Sequence[str], heads: Sequence[Batch]) -> str:
+    if kind and kind not in KINDS:
+        return f"{harmless(kind, 40)!r} is no kind of name; usable are {', '.join(KINDS)}"
     if kinds:
         return f"{harmless(name, 40)} is no {harmless(kind, 20)}; it is a {' and a '.join(kinds)}"
     latest = ", ".join(harmless(b.batch, 40) for b in heads[:4])

@@ -15,17 +15,23 @@ from .amounts import amount
 from .errors import DeskError
 from .topping_up import OWN_COLUMN
 
+LITRES = ("l", "litre", "litres", "m³", "m3", "us gal", "usgal")  # units of a volume, as solver.scales reads them
+
 
 def mass(typed: str | float, density15: float | None = None, celsius: float | None = None) -> float:
     """A mass [kg], to the milligram: a number, or typed with its unit (`24 t`, `12000 L`).
 
     Litres need the density at 15 °C [kg/m³]; they are litres at `celsius`, or at 15 °C without it.
-    DeskError for what is no mass at all, ScaleError for a unit that does not belong here.
+    DeskError for what is no mass at all and for a temperature beyond the tables, ScaleError for a unit that does not
+    belong here.
     """
     if isinstance(typed, str):
         if celsius is not None and density15 is not None:
-            from solver.volume import density_at
+            from solver.volume import HIGHEST, LOWEST, density_at
 
+            if _is_volume(typed) and not LOWEST <= celsius <= HIGHEST:
+                raise DeskError(f"{celsius:g} °C is no temperature of a tank or drum ({LOWEST:g} to {HIGHEST:g} °C); "
+                                "°F? Mend it, or type kg")
             density15 = float(density_at(density15, celsius))
         kg = amount(typed, "on_hand_kg", density15)
     else:
@@ -35,6 +41,12 @@ def mass(typed: str | float, density15: float | None = None, celsius: float | No
     if abs(kg) > check.LARGEST_KG:
         raise DeskError(f"{harmless(str(typed), 40)} is more than {check.LARGEST_KG:g} kg; check the unit")
     return round(kg * 1e6) / 1e6
+
+
+def _is_volume(typed: str) -> bool:
+    from solver.scales import split
+
+    return split(typed)[1] in LITRES
 
 
 def values(typed: Mapping[str, str | float]) -> dict[str, float]:
@@ -50,11 +62,21 @@ def values(typed: Mapping[str, str | float]) -> dict[str, float]:
         if not isinstance(text, str):
             found[code] = float(text)
         elif text.strip():
-            found |= _pair(code, text) or {code: amount(text.strip(), code)}
+            found |= _read(code, text.strip())
     bad = next((code for code, value in found.items() if not math.isfinite(value)), None)
     if bad:
         raise DeskError(f"{bad} is not a number; leave it out where it is unknown")
     return found
+
+
+def _read(code: str, text: str) -> dict[str, float]:
+    """One value as typed, or the two of a Saybolt pair; DeskError names the property."""
+    from solver.errors import SolverError
+
+    try:
+        return _pair(code, text) or {code: amount(text, code)}
+    except SolverError as error:
+        raise DeskError(f"{code}: {error}") from None
 
 
 def _pair(code: str, text: str) -> dict[str, float] | None:

@@ -14,6 +14,7 @@ from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.store.records import Change, Step
 from blendtui.store.state import change_of
+from solver.errors import ScaleError
 
 from .charge_lines import names_of, parted
 from .errors import DeskError
@@ -37,6 +38,7 @@ VESSEL_CELLS: tuple[VesselCell, ...] = (
     VesselCell("heel_stock", "heel of"), VesselCell("flash_margin_c", "margin to flash", "°C"),
     VesselCell("flash_margin_on", "margin typed on"), VesselCell(CHARGE_ORDER, "order of charging"))
 _BY_CODE = {c.code: c for c in VESSEL_CELLS}
+CELLS = tuple(code for code in _BY_CODE if code != CHARGE_ORDER)  # those that are fields of Vessel
 
 
 def vessel(plant: Plant, code: str) -> Vessel:
@@ -47,7 +49,7 @@ def vessel(plant: Plant, code: str) -> Vessel:
     if found is None:
         have = ", ".join(harmless(v.vessel, 20) for v in there[:12])
         raise DeskError(f"no vessel {harmless(code, 40)!r}; " + (f"the plant has {have}" if have else
-                        "the plant has none yet: blendtui vessel add NAME --set capacity_l=24000"))
+                        "the plant has none yet: blendtui vessel add NAME capacity_l=24000"))
     return found
 
 
@@ -76,15 +78,7 @@ def set_cell(plant: Plant, code: str, cell: str, typed: str) -> Edit:
 def set_cells(plant: Plant, code: str, typed: Mapping[str, str]) -> Edit:
     """Several cells in one step: all of them or none."""
     old = vessel(plant, code)
-    new, changes = old, []
-    for cell, text in typed.items():
-        if cell not in _BY_CODE:
-            raise DeskError(f"a vessel has no {harmless(cell, 40)!r}; it has {', '.join(_BY_CODE)}")
-        if cell == CHARGE_ORDER:
-            changes += _own_order(plant, old, text)
-        else:
-            new = _with(plant, new, cell, text.strip())
-    _refuse(new)
+    new, changes = _typed(plant, old, typed)
     cells = {c: getattr(new, c) for c in _BY_CODE if c != CHARGE_ORDER and getattr(new, c) != getattr(old, c)}
     if cells:
         changes.append(changed(old, **cells))
@@ -97,6 +91,20 @@ def set_cells(plant: Plant, code: str, typed: Mapping[str, str]) -> Edit:
     words = f"{old.vessel} {', '.join(said)}"
     plant.change(changes, words)
     return Edit("saved", words)
+
+
+def _typed(plant: Plant, old: Vessel, typed: Mapping[str, str]) -> tuple[Vessel, list[Change]]:
+    """A vessel with what was typed, and the change of its own order of charging; DeskError for what cannot be true."""
+    new, changes = old, list[Change]()
+    for cell, text in typed.items():
+        if cell not in _BY_CODE:
+            raise DeskError(f"a vessel has no {harmless(cell, 40)!r}; it has {', '.join(_BY_CODE)}")
+        if cell == CHARGE_ORDER:
+            changes += _own_order(plant, old, text)
+        else:
+            new = _with(plant, new, cell, text.strip())
+    _refuse(new)
+    return new, changes
 
 
 def _own_order(plant: Plant, of: Vessel, typed: str) -> list[Change]:
@@ -116,7 +124,7 @@ def _with(plant: Plant, old: Vessel, cell: str, typed: str) -> Vessel:
         if cell == "flash_margin_on":
             return replace(old, flash_margin_on=check.iso_date(typed))
         value = _number(cell, typed, old)
-    except check.CellError as error:
+    except (check.CellError, ScaleError) as error:
         raise DeskError(f"{harmless(old.vessel, 40)} {_BY_CODE[cell].heading}: {error}") from None
     if cell == "flash_margin_c":
         # A margin is a decision of a day: without a date nobody could tell whether it still stands.
@@ -167,8 +175,11 @@ def _refuse(of: Vessel) -> None:
         raise DeskError(f"{harmless(of.vessel, 40)}: {fault[1]}; {fault[2]}")
 
 
-def add_vessel(plant: Plant, code: str) -> Vessel:
-    """Add a vessel under a code, of which nothing is known yet; a retired one of that code comes back as it was."""
+def add_vessel(plant: Plant, code: str, typed: Mapping[str, str] | None = None) -> Vessel:
+    """Add a vessel under a code with the cells that were typed, in one step: all of it or nothing.
+
+    A retired one of that code comes back as it was, but for what was typed.
+    """
     try:
         code = check.code(code.strip())
     except check.CellError as error:
@@ -177,12 +188,16 @@ def add_vessel(plant: Plant, code: str) -> Vessel:
         raise DeskError(f"there is a vessel {code} already; give the new one another code")
     row = plant.row("vessel", code)
     if row is not None:
-        changes = [change_of("vessel", (code,), {"retired": 1}, {"retired": 0})]
+        old = Vessel(code, **{name: row[name] for name in CELLS})  # type: ignore[arg-type]
+        new, more = _typed(plant, old, typed or {})
+        cells = {name: getattr(new, name) for name in CELLS if getattr(new, name) != getattr(old, name)}
+        before = {name: row[name] for name in cells}
+        changes = [change_of("vessel", (code,), {"retired": 1, **before}, {"retired": 0, **cells}), *more]
     else:
-        changes = added(Vessel(code))
+        new, more = _typed(plant, Vessel(code), typed or {})
+        first = added(new)[0]
         position = edits.next_position(plant, "vessel")
-        first = changes[0]
-        changes = [replace(first, after={**(first.after or {}), "position": position, "retired": 0})]
+        changes = [replace(first, after={**(first.after or {}), "position": position, "retired": 0}), *more]
     plant.change(changes, f"vessel {code} added")
     return vessel(plant, code)
 

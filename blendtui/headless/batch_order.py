@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 import argparse
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, NO_BLEND, Add, BadInput, number, opened, path, say, show
+from .common import DONE, NO_BLEND, Add, BadInput, number, opened, path, say, show, told, whole
 from .stock import answered, lines_of, person
 
 if TYPE_CHECKING:
@@ -32,7 +31,7 @@ def add_to(of_batch: Add) -> None:
     person(made)
     made = of_batch("reorder", _reorder, "give the lines still to come another order")
     _named(made)
-    made.add_argument("lines", metavar="LINE", type=int, nargs="+",
+    made.add_argument("lines", metavar="LINE", type=whole, nargs="+",
                       help="every line still to come, in the order wished")
     person(made)
     made = of_batch("cancel", _cancel, "cancel an open batch, with its reason; what it had promised is free again")
@@ -203,22 +202,18 @@ def _list(options: argparse.Namespace) -> int:
 
 
 def _head(head: Batch) -> dict[str, Any]:
-    from dataclasses import asdict
-
-    cells = {name: value for name, value in asdict(head).items() if name != "formula"}
-    return {name: None if value == "" else value for name, value in cells.items()}
+    return {name: value for name, value in told(head).items() if name != "formula"}
 
 
 def _show(options: argparse.Namespace) -> int:
     import json
-    from dataclasses import asdict
 
     from blendtui.desk import batches, card
 
     with opened(options) as plant:
         made, seen = plant.batch(options.batch), card.card(plant, options.batch)
     answer = {**_head(made.head), "stage": batches.stage(made), "formula": json.loads(made.head.formula or "null"),
-              **{name: [asdict(x) for x in getattr(made, name)]
+              **{name: [told(x) for x in getattr(made, name)]
                  for name in ("contents", "charges", "samples", "results", "decisions", "outcomes")}}
     show(options, answer, lines_of(_story(made, seen)))
     return DONE
@@ -254,21 +249,17 @@ def _story(made: Made, seen: Any) -> list[str]:
 def _card(options: argparse.Namespace) -> int:
     from blendtui.desk import card
     from blendtui.desk.card_html import card_html
+    from blendtui.desk.certificate import write_all
 
     with opened(options) as plant:
         made = card.card(plant, options.batch)
     text = card.card_text(made)
-    said = [_write(file, content) for file, content in ((options.write, text), (options.html, card_html(made)))
-            if file is not None]
+    asked = [(file, content) for file, content in ((options.write, text), (options.html, card_html(made)))
+             if file is not None]
+    said = write_all(asked, "card") if asked else []
     show(options, {**card.card_json(made), "written": [str(f) for f in (options.write, options.html) if f is not None]},
          "\n".join(said) if said else text.rstrip("\n"))
     return DONE
-
-
-def _write(file: Path, text: str) -> str:
-    from blendtui.desk.certificate import write_new
-
-    return write_new(file, text, "card")
 
 
 def _reorder(options: argparse.Namespace) -> int:

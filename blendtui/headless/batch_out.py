@@ -6,7 +6,7 @@ import argparse
 from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, Add, BadInput, opened, show
+from .common import DONE, Add, BadInput, opened, show, told
 from .stock import answered, lines_of, person
 
 if TYPE_CHECKING:
@@ -57,7 +57,7 @@ def _leave(options: argparse.Namespace, what: str, **more: str) -> int:
     closed = rework.balance(made)
     # What is lost is said as soon as the balance closes, and not only to whoever asks for it.
     said = [*done.words, *(closed.words if closed.loss_kg is not None else ())]
-    answer = {name: value for name, value in asdict(done).items() if name != "words"}
+    answer = {name: value for name, value in told(done).items() if name != "words"}
     show(options, {**answer, "state": made.head.state, "said": said}, lines_of(said))
     return DONE
 

@@ -80,6 +80,13 @@ def show(options: argparse.Namespace, answer: Any, text: str) -> None:
         print(text)
 
 
+def told(record: Any, **cells: Any) -> dict[str, Any]:
+    """A record of the plant for JSON: what was never typed is null, as everything unknown is."""
+    from dataclasses import asdict
+
+    return {name: None if value == "" else value for name, value in {**asdict(record), **cells}.items()}
+
+
 def say(text: str) -> None:
     """Progress: to stderr, and only when a person is looking."""
     if sys.stderr.isatty():

@@ -5,10 +5,9 @@ from __future__ import annotations
 import argparse
 import textwrap
 from collections.abc import Callable, Sequence
-from dataclasses import asdict
 from typing import TYPE_CHECKING, Any, TypeVar
 
-from .common import DONE, Add, BadInput, opened, shared, show, whole
+from .common import DONE, Add, BadInput, opened, shared, show, told, whole
 
 if TYPE_CHECKING:
     from blendtui.desk.ledger import Book
@@ -161,12 +160,12 @@ def _book(options: argparse.Namespace) -> int:
 
 def lot_json(lot: Lot) -> dict[str, Any]:
     """A receipt."""
-    return {**asdict(lot), "cells": dict(lot.cells)}
+    return told(lot, cells=dict(lot.cells))
 
 
 def dip_json(dip: Dip) -> dict[str, Any]:
     """A dip."""
-    return {**asdict(dip), "corrected": bool(dip.corrected)}
+    return told(dip, corrected=bool(dip.corrected))
 
 
 def book_json(found: Book) -> dict[str, Any]:
@@ -175,7 +174,7 @@ def book_json(found: Book) -> dict[str, Any]:
     return {"stock": found.stock.code, "balance_kg": found.balance_kg, "promised_kg": found.promised_kg,
             "free_kg": found.stock.available_kg, "last_dip": dip,
             "lots_in_tank": dict(found.parts), "lots": [lot_json(x) for x in found.lots],
-            "movements": [asdict(x) for x in found.lines], "said": list(found.words)}
+            "movements": [told(x) for x in found.lines], "said": list(found.words)}
 
 
 def book_text(found: Book, last: int = 0) -> str:

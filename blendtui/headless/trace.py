@@ -4,10 +4,9 @@ from __future__ import annotations
 
 import argparse
 from collections.abc import Iterator
-from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, Add, opened, show
+from .common import DONE, Add, opened, show, told
 from .stock import lines_of, lot_json
 
 if TYPE_CHECKING:
@@ -39,15 +38,15 @@ def trace_json(found: Trace) -> dict[str, Any]:
     """Answer of `trace`; parts are mass fractions."""
     return {"name": found.name, "kind": found.what, "also": list(found.also), "said": list(found.words), "kg": found.kg,
             "back": [_node_json(n) for n in found.back],
-            "origins": [{"stock": o.stock, "lot": o.lot, "kg": o.kg, "part": o.part,
+            "origins": [{"stock": o.stock or None, "lot": o.lot or None, "kg": o.kg, "part": o.part,
                          "receipt": None if o.receipt is None else lot_json(o.receipt)} for o in found.origins],
             "batches_back": dict(found.batches), "not_followed_back": found.faint,
-            "batches": [{**asdict(u), "via": list(u.via)} for u in found.uses],
-            "now_in": [asdict(p) for p in found.places], "not_followed_on": found.faint_uses}
+            "batches": [told(u, via=list(u.via)) for u in found.uses],
+            "now_in": [told(p) for p in found.places], "not_followed_on": found.faint_uses}
 
 
 def _node_json(node: Node) -> dict[str, Any]:
-    return {"what": node.what, "name": node.name, "kg": node.kg, "part": node.part, "said": node.words,
+    return {"what": node.what, "name": node.name, "kg": node.kg, "part": node.part, "said": node.words or None,
             "of": [_node_json(n) for n in node.below]}
 
 

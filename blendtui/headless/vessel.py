@@ -83,11 +83,10 @@ def _add(options: argparse.Namespace) -> int:
 
     cells = _cells(options.cells)
     with opened(options) as plant:
-        made = vessels.add_vessel(plant, options.vessel)
+        made = vessels.add_vessel(plant, options.vessel, cells)
         said = [f"vessel {made.vessel} added"]
-        if cells:
-            said.append(vessels.set_cells(plant, made.vessel, cells).message)
-        answer = _json(plant, vessels.vessel(plant, made.vessel))
+        said += [f"{name} {text}" for name in cells if (text := vessels.text_of(plant, made, name))]
+        answer = _json(plant, made)
     show(options, answer, "\n".join(said))
     return DONE
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
+from contextlib import suppress
 from dataclasses import dataclass, field, replace
 
 from textual.widget import Widget
@@ -10,16 +11,19 @@ from textual.widget import Widget
 from blendtui import commands
 from blendtui.desk import batches as desk
 from blendtui.store.batch_records import OPEN, Batch
+from blendtui.store.errors import NoSuchRow
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from blendtui.widgets.edit_line import Ended
 from blendtui.widgets.grid import Cell, Column, Grid
+from blendtui.widgets.lines import OneLine
 from blendtui.widgets.page_text import PageText
-from blendtui.widgets.paint import BAD, BOLD, PLAIN, Line, wrap
+from blendtui.widgets.paint import BAD, BOLD, PLAIN, Line, fit, wrap
 
 from . import floor_view, ordering, reading, tracing
 from .floor_view import Seen
-from .steps import StepPage
+from .vessel_list import KEYS as VESSEL_KEYS
+from .vessel_list import VesselCommands
 
 LIST = (Column("batch", "batch", "", 8, "left"), Column("product", "product", "", 9, "left"),
         Column("asked", "ordered", "", 10), Column("vessel", "vessel", "", 7, "left"),
@@ -52,11 +56,22 @@ def matches(batch: Batch, words: str) -> bool:
 
 
 def stages(plant: Plant, names: Iterable[str]) -> dict[str, str]:
-    """Where each of these stands, in a few words."""
-    return {name: desk.stage(plant.batch(name)) for name in names}
+    """Where each of these stands, in a few words; one whose order was taken back meanwhile is left out."""
+    found = {}
+    for name in names:
+        with suppress(NoSuchRow):
+            found[name] = floor_view.stage_words(plant.batch(name))
+    return found
 
 
-class BatchesScreen(StepPage):
+def _look(plant: Plant, name: str) -> Seen | None:
+    """All of a batch; None where its order was taken back meanwhile."""
+    with suppress(NoSuchRow):
+        return floor_view.look(plant, name)
+    return None
+
+
+class BatchesScreen(VesselCommands):
     """Table of batches; on a wide terminal with a summary of the one under the cursor."""
 
     NAME = commands.BATCHES
@@ -68,14 +83,15 @@ class BatchesScreen(StepPage):
         self.grid.picked = self._moved
         self.grid.foot = lambda column: ""
         self.summary = PageText(id="summary")
+        self.ordering = OneLine(id="caution")
         self.rows: tuple[Batch, ...] = ()
         self.wanted = ""  # the batch that the cursor goes to once the list has been read
         self.typed_orders: dict[str, dict[str, str]] = {}  # product → what was typed of an order not taken
         self.asked: set[str] = set()  # names whose stage or summary is being read
 
     def body(self) -> Iterable[Widget]:
-        """The table and the summary."""
-        return self.grid, self.summary
+        """The table and the summary, or the vessels; then what a new order is of, and who records."""
+        return self.grid, self.summary, self.vessels, self.ordering
 
     @property
     def batch(self) -> Batch | None:
@@ -92,7 +108,16 @@ class BatchesScreen(StepPage):
             self.asked.clear()
             self.program.task(lambda: ordered(plant.batches()), lambda found: self._read(revision, found))
         self._show()
+        if self.at_vessels:
+            self.refresh_vessels()
         super().refresh_page()
+
+    def show_keys(self) -> None:
+        """The keys of the table that has them."""
+        if self.at_vessels and not self.edit.active:
+            self.keys.show(VESSEL_KEYS)
+        else:
+            super().show_keys()
 
     def _read(self, revision: int, found: tuple[Batch, ...]) -> None:
         if revision == self.state.revision:
@@ -130,7 +155,7 @@ class BatchesScreen(StepPage):
             self.program.task(lambda: stages(plant, names), lambda found: self._staged(revision, found))
         if here is not None and (key := f"all of {here.batch}") not in self.asked:
             self.asked.add(key)
-            self.program.task(lambda: floor_view.look(plant, here.batch), lambda seen: self._summed(revision, seen))
+            self.program.task(lambda: _look(plant, here.batch), lambda seen: self._summed(revision, seen))
 
     def _staged(self, revision: int | None, found: dict[str, str]) -> None:
         if revision == self.state.revision:
@@ -144,6 +169,12 @@ class BatchesScreen(StepPage):
 
     def _show_row(self) -> None:
         batch, count = self.batch, len(self.rows)
+        if self.at_vessels:
+            self.ordering.show(("the margin to the flash point is the site's own, typed and dated; there is no default",
+                                PLAIN))
+            self.show_vessel()
+            return
+        self._show_ordering()
         place = f"{self.grid.row + 1} of {count}" if count else "none"
         self.title_line.show(f"filter {place}" if self.state.words else place)
         seen = self.state.seen.get(batch.batch) if batch else None
@@ -153,9 +184,17 @@ class BatchesScreen(StepPage):
         else:
             self.edit.show(harmless(batch.batch), floor_view.next_words(seen) if seen else "")
 
+    def _show_ordering(self) -> None:
+        """What a new order would be of, and under which name steps are recorded."""
+        product = self.snapshot.product(self.session.product)
+        what = f"new order of {harmless(product.product, 20)}" if product else "no product yet"
+        name = f", {harmless(product.name, 40)}; [ ] another product" if product else ""
+        self.ordering.show(("a: ", BOLD), (what, BOLD), (f"; as {self.who}", BOLD), (name, PLAIN))
+
     def spare(self) -> int:
         """Blank lines under the table."""
-        return self.grid.size.height - self.grid.needs()
+        shown = self.vessels if self.at_vessels else self.grid
+        return shown.size.height - shown.needs()
 
     def on_resize(self) -> None:
         """Lay everything for the new size."""
@@ -163,7 +202,10 @@ class BatchesScreen(StepPage):
 
     def move(self, key: str) -> None:
         """Move the cursor."""
-        if self.grid.move(key):
+        if self.at_vessels:
+            if self.vessels.move(key):
+                self.show_vessel()
+        elif self.grid.move(key):
             self._moved()
 
     def _moved(self) -> None:
@@ -173,18 +215,25 @@ class BatchesScreen(StepPage):
     # Commands
 
     def do_open(self) -> None:
-        """Open the batch under the cursor on the floor."""
-        if self._here():
+        """Open the batch under the cursor on the floor; among the vessels, type the cell."""
+        if self.at_vessels:
+            self.edit_vessel()
+        elif self._here():
             self.session.batch = self.batch.batch  # type: ignore[union-attr]
             self.program.go(commands.FLOOR)
 
     def _here(self) -> bool:
-        if self.batch is None:
+        if self.at_vessels:
+            self.say("v goes back to the batches first")
+        elif self.batch is None:
             self.say("there is no batch here; a takes an order")
-        return self.batch is not None
+        return self.batch is not None and not self.at_vessels
 
     def do_filter(self) -> None:
         """Type the words of the filter."""
+        if self.at_vessels:
+            self.say("v goes back to the batches first")
+            return
         self.type_text("show batches with the words", self.state.words, self._filter)
 
     def _filter(self, ended: Ended) -> None:
@@ -194,18 +243,31 @@ class BatchesScreen(StepPage):
                  + ("; Esc shows all again" if self.state.words else ""))
 
     def do_back(self) -> None:
-        """Take the filter off."""
-        if self.state.words:
+        """Go back to the batches, or take the filter off."""
+        if self.at_vessels:
+            self.do_vessels()
+        elif self.state.words:
             self._filter(Ended(""))
         else:
             self.program.do_back()
 
     def do_add(self) -> None:
-        """Ask for an order, show its charges, and take it when told so."""
-        ordering.ask(self)
+        """Ask for an order, show its charges, and take it when told so; among the vessels, add one."""
+        if self.at_vessels:
+            self.add_vessel()
+        else:
+            ordering.ask(self)
+
+    def do_redesign(self) -> None:
+        """Show the charges of the batch under the cursor worked out anew, and take them when told so."""
+        if self._here():
+            ordering.anew(self, self.batch.batch)  # type: ignore[union-attr]
 
     def do_cancel(self) -> None:
-        """Cancel the batch under the cursor."""
+        """Cancel the batch under the cursor; among the vessels, retire one."""
+        if self.at_vessels:
+            self.retire_vessel()
+            return
         if not self._here():
             return
         name, plant, by = self.batch.batch, self.program.plant, self.session.by  # type: ignore[union-attr]
@@ -237,8 +299,8 @@ def summary(seen: Seen, width: int) -> list[Line]:
         cells = line.cells
         done = (f"{cells['actual']} kg by {cells['by']}" if line.charge.actual_kg is not None else
                 cells["actual"] or "to charge")
-        lines.append([(f"  {cells['mark'] or ' '} {cells['line']:>5}  {cells['stock']:<12.12} {cells['plan']:>10} kg"
-                       f"  {cells['lot']:<18.18}  {done}", PLAIN)])
+        lines.append([(f"  {cells['mark'] or ' '} {cells['line']:>5}  {fit(cells['stock'], 12)} {cells['plan']:>10} kg"
+                       f"  {fit(cells['lot'], 18)}  {done}", PLAIN)])
     if seen.missing and not seen.made.to_charge:
         lines += [[(part, BAD)] for part in wrap("! before the release: " + "; ".join(seen.missing), width, "  ")]
     return lines

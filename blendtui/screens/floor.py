@@ -64,6 +64,7 @@ class FloorScreen(LabCommands, ChargeCommands, OutCommands):
         self.read_for: tuple[int, str] | None = None
         self.looked = False  # has the plant been read yet
         self.shown_name = ""  # of the batch on the screen
+        self.wants_next = False  # charges were planned from here: the cursor goes to the first of them
 
     def body(self) -> Iterable[Widget]:
         """Heading and next step, charges, laboratory, cautions."""
@@ -86,7 +87,8 @@ class FloorScreen(LabCommands, ChargeCommands, OutCommands):
         wanted = (self.snapshot.revision, self.session.batch)
         if wanted != self.read_for:
             self.read_for, plant = wanted, self.program.plant
-            self.program.task(lambda: floor_view.look_or_newest(plant, wanted[1]), lambda seen: self._looked(wanted, seen),
+            self.program.task(lambda: floor_view.look_or_newest(plant, wanted[1]),
+                              lambda seen: self._looked(wanted, seen),
                               lambda refusal: self._looked(wanted, None, refusal))
         self._show()
         super().refresh_page()
@@ -102,7 +104,8 @@ class FloorScreen(LabCommands, ChargeCommands, OutCommands):
             self.read_for = (wanted[0], name)
         to_come = {c.line for c in seen.made.to_charge} if seen else set()
         lots = {} if other else {line: lot for line, lot in self.state.lots.items() if line in to_come}
-        moved_on = other or self._was_next(seen)
+        moved_on = other or self.wants_next or self._was_next(seen)
+        self.wants_next = False
         self.state = replace(self.state, seen=seen, lots=lots, refusal=refusal)
         self._show(to_next=moved_on)
 
@@ -202,6 +205,11 @@ class FloorScreen(LabCommands, ChargeCommands, OutCommands):
             self.keys.show([*listed, *(pair for pair in commands.key_line(self.NAME) if pair not in found.values())])
         else:
             super().show_keys()
+
+    def charges_planned(self) -> None:
+        """Charges to come were planned from here: go to the first of them."""
+        self.wants_next = True
+        self.go_pane(False)
 
     # Commands
 

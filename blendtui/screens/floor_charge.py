@@ -109,7 +109,6 @@ class ChargeCommands(StepPage):
         if charge is None or self.seen is None:
             return
         seen, plant, name, by = self.seen, self.program.plant, self.seen.made.name, self.session.by
-        typed: dict[str, str] = {}  # what stands on the line again where the step is refused
 
         def stock(text: str) -> str:
             able = [code for code in seen.stocks if code.casefold() == text.strip().casefold()]
@@ -117,32 +116,17 @@ class ChargeCommands(StepPage):
                 raise DeskError(f"the plant has no stock {harmless(text, 40)!r}; type its code as Stocks has it")
             return able[0]
 
-        def ask() -> None:
-            self.ask_through([
-                (self._label(charge, "was not charged, but which stock"), *kept("stock", stock)),
-                (self._label(charge, "so much of it (kg, t, L, drums, such as 9 t at 48 °C)"), *kept("kg", actual)),
-                (self._label(charge, "its lot (empty: as in its tank)"), *kept("lot", str.strip)),
-                (self._label(charge, "why another oil"), *kept("why", reason))], then)
+        def make(found: list[Any], sure: bool) -> Any:
+            from blendtui.desk import charging
 
-        def kept(what: str, read: Any) -> tuple[Any, Any]:
-            def keep(text: str) -> Any:
-                typed[what] = text
-                return read(text)
-
-            return lambda: typed.get(what, ""), keep
-
-        def then(found: list[Any]) -> None:
             code, (kg, celsius), lot, why = found
+            return charging.charge(plant, name, charge.line, kg, lot=lot, celsius=celsius, stock=code, why=why, by=by,
+                                   sure=sure)
 
-            def make(sure: bool) -> Any:
-                from blendtui.desk import charging
-
-                return charging.charge(plant, name, charge.line, kg, lot=lot, celsius=celsius, stock=code, why=why,
-                                       by=by, sure=sure)
-
-            self.take_step(make, self.say_charged, yes="it was so", again=ask)
-
-        ask()
+        self.ask_step([(self._label(charge, "was not charged, but which stock"), "", stock),
+                       (self._label(charge, "so much of it (kg, t, L, drums, such as 9 t at 48 °C)"), "", actual),
+                       (self._label(charge, "its lot (empty: as in its tank)"), "", str.strip),
+                       (self._label(charge, "why another oil"), "", reason)], make, self.say_charged, yes="it was so")
 
     def do_check(self) -> None:
         """Second check of a charge, by another person."""
@@ -189,25 +173,22 @@ class ChargeCommands(StepPage):
         plant, name, by = self.program.plant, self.seen.made.name, self.session.by
         step = floor_view.division_of(self.seen, charge)
 
-        def then(typed: str) -> None:
-            def make(why: str, sure: bool) -> Any:
-                from blendtui.desk import charging
+        def make(found: list[Any], sure: bool) -> Any:
+            from blendtui.desk import charging
 
-                kg, celsius = actual(typed)
-                return charging.correct(plant, name, charge.line, kg, celsius=celsius, why=why, by=by, sure=sure)
+            (kg, celsius), why = found
+            return charging.correct(plant, name, charge.line, kg, celsius=celsius, why=why, by=by, sure=sure)
 
-            self.type_why(f"line {charge.line} is corrected to {harmless(typed, 20)}", make, self.say_charged,
-                          yes="it was so")
-
-        self.type_checked(self._label(charge, "truly charged (kg; the same again only adds its reason)"),
-                          floor_view.kg(charge.actual_kg, step), str.strip, then)
+        self.ask_step([(self._label(charge, "truly charged (kg; the same again only adds its reason)"),
+                        floor_view.kg(charge.actual_kg, step), actual),
+                       (f"why line {charge.line} is corrected", "", reason)], make, self.say_charged, yes="it was so")
 
 
 def actual(typed: str) -> tuple[str, float | None]:
     """What was charged as it was typed, and the temperature [°C] where one was typed with it.
 
-    >>> actual("8950 L at 48 °C"), actual("3 drums"), actual("9 t @ 118 F")
-    (('8950 L', 48.0), ('3 drums', None), ('9 t', 47.77777777777777))
+    >>> actual("8950 L at 48 °C"), actual("3 drums"), actual("9 t @ 122 F")
+    (('8950 L', 48.0), ('3 drums', None), ('9 t', 50.0))
     """
     from solver.scales import parse
 

@@ -116,7 +116,7 @@ def told(lines: list[LabLine], row: int) -> tuple[str, str]:
     line = lines[row] if row < len(lines) else None
     if line is None:
         return "laboratory", "no sample yet"
-    return line.texts[1], line.told.removeprefix(f"{line.texts[1]} ")
+    return line.texts[1], line.told.removeprefix(line.texts[1]).lstrip(": ")  # not its name twice
 
 
 class LabCommands(StepPage):
@@ -141,21 +141,20 @@ class LabCommands(StepPage):
             return
         plant, by = self.program.plant, self.session.by
 
-        def then(typed: list[str]) -> None:
+        def make(found: list[Any], sure: bool) -> Any:
             from blendtui.desk import batch_lab
 
-            place, celsius, taken = typed
-            self.take_step(lambda sure: batch_lab.sample(
-                plant, made.name, taken=taken, place=place, celsius=_celsius(celsius), by=by, sure=sure), done,
-                yes="it was so")
+            place, at, taken = found
+            return batch_lab.sample(plant, made.name, taken=taken, place=place, celsius=at, by=by, sure=sure)
 
         def done(sample: Sample) -> None:
             self.go_pane(True)
             self.program.say(f"sample {sample.sample} is on record; Enter on a property types its result", "done")
 
-        self.type_through([("sample drawn from (top, middle, bottom, line)", ""),
-                           ("its temperature, °C (empty: not measured)", ""),
-                           ("taken at (empty: now; 14:30; 2026-03-04 14:30)", "")], then)
+        self.ask_step([("sample drawn from (top, middle, bottom, line)", "", str.strip),
+                       ("its temperature, °C (empty: not measured)", "", _celsius),
+                       ("taken at (empty: now; 14:30; 2026-03-04 14:30)", "", str.strip)], make, done,
+                      yes="it was so")
 
     def type_result(self) -> None:
         """Type the result of the property under the cursor."""

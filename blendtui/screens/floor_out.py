@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 from blendtui.store.batch_records import FLUSH, LEFT, PACKED, RELEASED, REWORK, SAMPLE, SLOPS
@@ -9,7 +10,7 @@ from blendtui.store.harmless import harmless
 
 from . import reading
 from .floor_view import Seen
-from .steps import StepPage
+from .steps import StepPage, reason
 
 WHATS = (PACKED, SAMPLE, SLOPS, FLUSH, REWORK, LEFT)
 
@@ -26,30 +27,28 @@ class OutCommands(StepPage):
             return
         plant, name, by = self.program.plant, self.seen.made.name, self.session.by
 
-        def take(what: str, kg: str, stock: str = "", family: str = "", why: str = "") -> None:
-            def make(sure: bool) -> Any:
-                from blendtui.desk import rework
-
-                return rework.leave(plant, name, kg, what, stock=stock, family=family, why=why, by=by, sure=sure)
-
-            self.take_step(make, lambda left: self.program.task(
-                lambda: _balance(plant, name), lambda balance: self.program.say(
-                    harmless("; ".join(dict.fromkeys([*left.words, *balance])), 1000), "done")), yes="it was so")
+        def done(left: Any) -> None:
+            self.program.task(lambda: _balance(plant, name), lambda balance: self.program.say(
+                harmless("; ".join(dict.fromkeys([*left.words, *balance])), 1000), "done"))
 
         def then(what: str) -> None:
-            steps = [(f"{what} (kg, t, L)", _left(self.seen) if what in (PACKED, LEFT) else "")]
+            steps: list[tuple[str, str, Callable[[str], Any]]] = [
+                (f"{what} (kg, t, L)", _left(self.seen) if what in (PACKED, LEFT) else "", _quantity)]
             if what == REWORK:
-                steps += [("into which rework stock (empty: by its family)", ""),
-                          ("its family, where it is a new stock (the oil that share rules name)", "")]
+                steps += [("into which rework stock (empty: by its family)", "", str.strip),
+                          ("its family, where it is a new stock (the oil that share rules name)", "", str.strip)]
             if what not in (PACKED, SAMPLE, LEFT):
-                steps.append(("why (a few words)", ""))
+                steps.append(("why (a few words)", "", reason if what == REWORK else str.strip))
 
-            def took(typed: list[str]) -> None:
-                kg, *rest = typed
+            def make(found: list[Any], sure: bool) -> Any:
+                from blendtui.desk import rework
+
+                kg, *rest = found
                 stock, family = (rest.pop(0), rest.pop(0)) if what == REWORK else ("", "")
-                take(what, kg, stock, "" if stock else family, *rest)
+                return rework.leave(plant, name, kg, what, stock=stock, family="" if stock else family,
+                                    why=rest[0] if rest else "", by=by, sure=sure)
 
-            self.type_through(steps, took, 1)
+            self.ask_step(steps, make, done, yes="it was so", before=1)
 
         self.type_checked(f"what leaves the vessel, as what ({', '.join(WHATS)})",
                           PACKED if self.seen.made.head.state == RELEASED else "", _what, then)
@@ -102,6 +101,14 @@ class OutCommands(StepPage):
 
 def _left(seen: Seen | None) -> str:
     return f"{seen.made.in_vessel_kg:.10g}" if seen else ""
+
+
+def _quantity(typed: str) -> str:
+    from blendtui.desk.errors import DeskError
+
+    if not typed.strip():
+        raise DeskError("how much? Type kg, t or L")
+    return typed.strip()
 
 
 def _balance(plant: Any, name: str) -> tuple[str, ...]:

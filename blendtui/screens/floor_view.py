@@ -7,13 +7,14 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
-from blendtui.desk import batches
+from blendtui.desk import batches, scale
 from blendtui.store.batch_records import DONE, DROPPED, LEFT, OPEN, PLANNED, RELEASED, Batch, Charge, Made, Vessel
 from blendtui.store.errors import NoSuchRow
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.stocks import Stock
 
+DECIDED = ("release", "repeat", "fresh sample", "trim")  # a stage that alone would read as done
 MASSES = {"kg": "kg", "L15": "L at 15 °C", "L20": "L at 20 °C"}
 
 
@@ -140,17 +141,6 @@ def packages(seen: Seen, charge: Charge) -> str:
     return f"{round(count)} × {stock.package_kg:g}" if round(count) and abs(count - round(count)) < 1e-6 else ""
 
 
-def scale_readings(made: Made) -> dict[int, float]:
-    """Line → what the vessel's scale shows once that charge is in [kg]; charges to come count as planned."""
-    total = sum(c.kg for c in made.contents if c.counts)
-    found = {}
-    for charge in made.charges:
-        if charge.state != DROPPED:
-            total += charge.actual_kg if charge.state == DONE and charge.actual_kg is not None else charge.plan_kg
-            found[charge.line] = total
-    return found
-
-
 # In words
 
 def headline(seen: Seen) -> str:
@@ -172,7 +162,8 @@ def stage_words(made: Made) -> str:
     """The stage, and when and by whom a batch was closed."""
     head = made.head
     if head.state == OPEN:
-        return batches.stage(made)
+        stage = batches.stage(made)
+        return f"decided: {stage}" if stage in DECIDED else stage
     why = f", {harmless(head.why, 60)}" if head.why else ""
     return f"{head.state} {batches.when(head.closed_at)} by {harmless(head.closed_by, 30)}{why}"
 
@@ -215,7 +206,7 @@ def _charge_words(seen: Seen, charge: Charge) -> str:
     step = division_of(seen, charge)
     whole = packages(seen, charge)
     lot = charge.lot or lots_words(seen.lots.get(charge.stock, {}))
-    shown = scale_readings(seen.made)[charge.line]
+    shown = scale.readings(seen.made)[charge.line]
     trim = f"trim {charge.round}, " if charge.round else ""
     return (f"{trim}charge {kg(charge.plan_kg, step)} kg of {harmless(charge.stock, 20)}"
             + (f" ({whole} kg)" if whole else "") + (f", lot {harmless(lot, 40)}" if lot else "")
@@ -246,7 +237,7 @@ class CardLine:
 
 def card_lines(seen: Seen, typed_lots: Mapping[int, str]) -> Iterator[CardLine]:
     """The charges in the order of the card; `typed_lots`: lots typed for charges to come."""
-    readings = scale_readings(seen.made)
+    readings = scale.readings(seen.made)
     to_come = seen.made.to_charge
     for charge in seen.made.charges:
         step = division_of(seen, charge)

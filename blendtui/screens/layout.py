@@ -19,6 +19,9 @@ Screen { layout: vertical; overflow: hidden; background: ansi_default; color: an
 #batches, #charges { height: 1fr; }
 #summary { display: none; height: 16; }
 .-wide #summary { display: block; }
+#vessels { height: 1fr; display: none; }
+.-vessels #vessels { display: block; }
+.-vessels #batches, .-vessels #summary { display: none; }
 #blends { height: 1fr; }
 #taught { height: 7; }
 .-wide #taught { height: 14; }

@@ -31,23 +31,20 @@ class LedgerCommands(StepPage):
             return
         plant, code, by = self.program.plant, stock.code, self.session.by
 
-        def then(found: list[Any]) -> None:
+        def make(found: list[Any], sure: bool) -> Any:
+            from blendtui.desk import ledger
+
             kg, lot, certificate, cells, keep = found
-
-            def make(sure: bool) -> Any:
-                from blendtui.desk import ledger
-
-                return ledger.receive(plant, code, kg, lot, cells=cells, certificate=certificate, keep=keep, by=by,
-                                      sure=sure)
-
-            self.take_step(make, self._say_words, yes="it was so")
+            return ledger.receive(plant, code, kg, lot, cells=cells, certificate=certificate, keep=keep, by=by,
+                                  sure=sure)
 
         named = harmless(code, 20)
-        self.ask_through([
-            (f"{named} received (kg, t, L)", str, lambda text: _mass(text, stock)), (f"{named} lot", str, _lot),
-            (f"{named} number of its certificate (empty: none)", str, str.strip),
-            (f"{named} values on it (kv40 31.2, kv100 5.35, density15 871)", str, read_cells),
-            (f"{named} what it does not say is as in the tank (yes, no)", lambda: "no", _yes)], then)
+        self.ask_step([
+            (f"{named} received (kg, t, L)", "", lambda text: _mass(text, stock)), (f"{named} lot", "", _lot),
+            (f"{named} number of its certificate (empty: none)", "", str.strip),
+            (f"{named} values on it (kv40 31.2, kv100 5.35, density15 871)", "", read_cells),
+            (f"{named} what it does not say is as in the tank (yes, no)", "no", _yes)], make, self._say_words,
+            yes="it was so")
 
     def do_test(self) -> None:
         """Give the tank the results of its own test."""
@@ -56,15 +53,13 @@ class LedgerCommands(StepPage):
             return
         plant, code, by = self.program.plant, stock.code, self.session.by
 
-        def then(cells: dict[str, str]) -> None:
-            def make(sure: bool) -> Any:
-                from blendtui.desk import ledger
+        def make(found: list[Any], sure: bool) -> Any:
+            from blendtui.desk import ledger
 
-                return ledger.test(plant, code, cells, by=by, sure=sure)
+            return ledger.test(plant, code, found[0], by=by, sure=sure)
 
-            self.take_step(make, self._say_words, yes="it was so")
-
-        self.type_checked(f"{harmless(code, 20)} tested (kv40 31.2, kv100 5.35, density15 871)", "", read_cells, then)
+        self.ask_step([(f"{harmless(code, 20)} tested (kv40 31.2, kv100 5.35, density15 871)", "", read_cells)], make,
+                      self._say_words, yes="it was so")
 
     def do_dip(self) -> None:
         """Record a dip against the book; where they differ the book may be set to it, with the reason."""
@@ -73,19 +68,23 @@ class LedgerCommands(StepPage):
             return
         plant, code, by = self.program.plant, stock.code, self.session.by
 
-        def then(found: list[Any]) -> None:
-            kg, correct = found
+        named, book = harmless(code, 20), stock.on_hand_kg
+
+        def then(kg: float) -> None:
+            off = "the book is empty" if book is None else f"{kg - book:+.10g} kg against the book"
+            self.type_checked(f"{named} {off}: set the book to the dip (yes, no)", "no", _yes,
+                              lambda correct: dipped(kg, correct))
+
+        def dipped(kg: float, correct: bool) -> None:
             if correct:
-                self.type_why(f"the book of {harmless(code, 20)} is set to its dip",
+                self.type_why(f"the book of {named} is set to its dip",
                               lambda why, sure: _dip(plant, code, kg, True, why, by, sure), self._say_words,
                               yes="set it")
             else:
                 self.take_step(lambda sure: _dip(plant, code, kg, False, "", by, sure), self._say_words,
                                yes="it was so")
 
-        named = harmless(code, 20)
-        self.ask_through([(f"{named} dip (kg, t, L at 15 °C)", str, lambda text: _mass(text, stock)),
-                          (f"{named} set the book to it (yes, no)", lambda: "no", _yes)], then)
+        self.type_checked(f"{named} dip (kg, t, L at 15 °C)", "", lambda text: _mass(text, stock), then)
 
     def _say_words(self, done: Any) -> None:
         self.program.say(harmless("; ".join(done.words), 1500), "done")

@@ -26,8 +26,7 @@ def ask(page: BatchesScreen) -> None:
 
     def then(vessels: list[Vessel]) -> None:
         if not vessels:
-            page.program.say("the plant has no vessel yet: blendtui vessel add NAME, or a vessels.csv in its catalogue",
-                             "refused")
+            page.program.say("the plant has no vessel yet: v shows the vessels, and a there adds one", "refused")
             return
         Asking(page, product.product, vessels).begin(product.batch_kg)
 
@@ -44,6 +43,7 @@ class Asking:
         self.page, self.product, self.vessels = page, product, vessels
         self.typed: dict[str, str] = page.typed_orders.setdefault(product, {})
         self.found: dict[str, Any] = {}
+        self.heel_of = self.typed.get("vessel", "").casefold()  # the vessel whose heel was typed last
 
     def begin(self, batch_kg: float | None) -> None:
         """Ask the first question."""
@@ -63,7 +63,7 @@ class Asking:
             ("mix_c", ("mixing temperature, °C", "60", celsius)),
             ("tank_c", ("temperature of the tanks, °C (45, or LIGHT 45 HEAVY 55)", "20", tank_celsius)),
             ("heel_kg", ("heel in the vessel, kg", heel, mass)),
-            ("heel_stock", ("heel is of which stock or batch (or its values: kv40 46 kv100 6.8 density15 875)",
+            ("heel_stock", ("heel is of which stock or batch (else its values, kv40 46 kv100 6.8 density15 875)",
                             vessel.heel_stock, str.strip)),
             ("line", ("line holds (kg and stock: 40 N150; empty: nothing)", "", line)),
             ("flush", ("flush oil (kg, stock, in or out: 60 N150 in; empty: none)", "", flush)),
@@ -94,10 +94,10 @@ class Asking:
             return found
 
         def then(found: Any) -> None:
-            if name == "vessel" and found != self.found.get("vessel"):
-                for each in ("heel_kg", "heel_stock"):  # those of the vessel stand on the line
-                    if self.found.get("vessel"):
-                        self.typed.pop(each, None)
+            if name == "vessel" and found.casefold() != self.heel_of:
+                self.heel_of = found.casefold()
+                for each in ("heel_kg", "heel_stock", "heel_ignored"):  # another vessel has a heel of its own
+                    self.typed.pop(each, None)
             self.found[name] = found
             self._ask(at + 1)
 
@@ -123,7 +123,7 @@ class Asking:
             from blendtui.desk.proposals import propose
 
             found = propose(plant, order)
-            return found, proposal_text(found).split("\n")
+            return found, [*self._other_heel(), *proposal_text(found).split("\n")]
 
         def show(found: tuple[Any, list[str]]) -> None:
             page.say("")
@@ -133,6 +133,16 @@ class Asking:
                                                        keys))
 
         page.program.task(work, show, saying="working out the charges …")
+
+    def _other_heel(self) -> list[str]:
+        """Where another heel was typed than the vessel has by the book: what the book says, at the head of it all."""
+        vessel = next(v for v in self.vessels if v.vessel == self.found["vessel"])
+        booked, of, typed = vessel.heel_kg or 0.0, vessel.heel_stock, self.found["heel_kg"]
+        if abs(booked - typed) < 1e-9 and (not booked or self.found.get("heel_stock", "") == of):
+            return []
+        book = f"{booked:g} kg of {harmless(of, 20) or 'unknown oil'}" if booked else "no heel"
+        return [f"! by the book {harmless(vessel.vessel, 20)} holds {book}; this order says {typed:g} kg"
+                + (f" of {harmless(self.found.get('heel_stock', ''), 40)}" if typed else ""), ""]
 
     def _take(self, order: Any, seen: Any) -> None:
         page, plant, by = self.page, self.page.program.plant, self.page.session.by
@@ -150,6 +160,35 @@ class Asking:
             page.program.say(f"{made.name} is ordered; {anew}Enter opens it on the floor, w writes its card", "done")
 
         page.take_step(make, done, yes="take it")
+
+
+def anew(page: BatchesScreen, name: str) -> None:
+    """Show the charges of an open batch worked out anew, before the first is made; y there takes them."""
+    plant, by = page.program.plant, page.session.by
+
+    def work() -> tuple[bool, list[str]]:
+        from blendtui.desk.order_words import proposal_text
+        from blendtui.desk.orders import propose_again
+
+        found = propose_again(plant, name)
+        return bool(found.charges), proposal_text(found).split("\n")
+
+    def take() -> None:
+        def make(why: str, sure: bool) -> Any:
+            from blendtui.desk import orders
+
+            return orders.redesign(plant, name, by=by, why=why, sure=sure)
+
+        page.type_why(f"{harmless(name, 20)} is designed anew", make, lambda made: page.program.say(
+            f"the charges of {harmless(name, 40)} are planned anew; w writes the new card", "done"), yes="plan them")
+
+    def show(found: tuple[bool, list[str]]) -> None:
+        page.say("")
+        takable, text = found
+        keys = [("y", "plan these charges", take)] if takable else []
+        page.app.push_screen(reading.ReadingScreen(f"{harmless(name, 40)}: its charges on today's tanks", text, keys))
+
+    page.program.task(work, show, saying="working out the charges …")
 
 
 # Readers of what is typed

@@ -11,6 +11,7 @@ from blendtui.desk.errors import DeskError
 from blendtui.desk.stocks import Edit
 from blendtui.widgets.paint import BAD, BOLD, PLAIN, WARN, Line, wrap
 
+from .at_console import at_console
 from .base import Page
 from .overlays import TextScreen
 
@@ -24,7 +25,7 @@ class ReadingScreen(TextScreen):
     def __init__(self, head: str, text: Sequence[str], keys: Sequence[Key] = ()) -> None:
         super().__init__()
         self.HEAD = head
-        self.said, self.own_keys = tuple(text), tuple(keys)
+        self.said, self.own_keys = tuple(at_console(line) for line in text), tuple(keys)
 
     def on_mount(self, event: events.Mount) -> None:  # type: ignore[override]
         """Show the keys."""

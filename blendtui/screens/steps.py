@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
+from functools import partial
 from typing import Any
 
 from blendtui.desk.errors import DeskError
@@ -17,6 +18,9 @@ Done = Callable[[Any], None]
 
 class StepPage(Page):
     """A screen that takes steps of a batch."""
+
+    def charges_planned(self) -> None:
+        """Charges to come were planned: a screen that shows them goes there."""
 
     @property
     def who(self) -> str:
@@ -79,17 +83,42 @@ class StepPage(Page):
 
     def type_why(self, of: str, make: Callable[[str, bool], Any], done: Done, *, yes: str = "do it") -> None:
         """Ask for a reason, which may not be empty, and do `make(why, sure)`."""
-        self.type_checked(f"why {of}", "", reason, lambda why: self.take_step(
-            lambda sure: make(why, sure), done, yes=yes))
+        self.ask_step([(f"why {of}", "", reason)], lambda found, sure: make(found[0], sure), done, yes=yes)
+
+    def ask_step(self, steps: Sequence[tuple[str, str, Callable[[str], Any]]], make: Callable[[list[Any], bool], Any],
+                 done: Done, *, yes: str = "do it", before: int = 0) -> None:
+        """Ask for several things in turn (label, text to begin with, reader), then do `make(found, sure)`.
+
+        What is refused comes back to the lines, each with what was typed on it. `before`: steps asked already.
+        """
+        typed = [begun for _, begun, _ in steps]
+
+        def kept(at: int, read: Callable[[str], Any]) -> Callable[[str], Any]:
+            def keep(text: str) -> Any:
+                typed[at] = text
+                return read(text)
+
+            return keep
+
+        def ask() -> None:
+            self.ask_through([(label, partial(typed.__getitem__, n), kept(n, read))
+                              for n, (label, _, read) in enumerate(steps)], then, before)
+
+        def then(found: list[Any]) -> None:
+            self.take_step(lambda sure: make(found, sure), done, yes=yes, again=ask)
+
+        ask()
 
     def ask_through(self, steps: list[tuple[str, Callable[[], str], Callable[[str], Any]]],
-                    then: Callable[[list[Any]], None]) -> None:
+                    then: Callable[[list[Any]], None], before: int = 0) -> None:
         """Ask for several things in turn, each read as soon as it is typed: (label, text to begin with, reader)."""
         found: list[Any] = []
+        count = len(steps) + before
 
         def ask() -> None:
             label, text, read = steps[len(found)]
-            self.type_checked(step(len(found) + 1, len(steps), label), text(), read, took)
+            told = step(len(found) + before + 1, count, label) if count > 1 else label
+            self.type_checked(told, text(), read, took)
 
         def took(value: Any) -> None:
             found.append(value)

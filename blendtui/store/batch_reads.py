@@ -40,6 +40,15 @@ def batches(con: sqlite3.Connection, state: str | None = None) -> list[Batch]:
     return _read(con, Batch, "batch", f"{where} ORDER BY ordered_at DESC, batch DESC", given)
 
 
+def names_used(con: sqlite3.Connection) -> set[str]:
+    """Names of all batches, of those too whose order was undone: a card of it may be on paper."""
+    told = con.execute("SELECT changes FROM journal WHERE undoes IS NOT NULL "
+                       "AND instr(changes, '\"table\":\"batch\"') > 0")
+    undone = {str(change["key"]["batch"]) for (changes,) in told for change in json.loads(changes)
+              if change["table"] == "batch"}
+    return undone | {name for (name,) in con.execute("SELECT batch FROM batch")}
+
+
 def batch(con: sqlite3.Connection, name: str) -> Made:
     """One batch with all its rows."""
     heads = _read(con, Batch, "batch", "WHERE batch = ?", (name,))

@@ -115,6 +115,11 @@ class Plant:
         with self._lock, self._database.reading() as con:
             return batch_reads.batches(con, state)
 
+    def batch_names(self) -> set[str]:
+        """Names that batches have or had, an undone order included."""
+        with self._lock, self._database.reading() as con:
+            return batch_reads.names_used(con)
+
     def batch(self, name: str) -> Made:
         """One batch with everything that was recorded of it; NoSuchRow when there is none of that name."""
         with self._lock, self._database.reading() as con:

@@ -148,6 +148,13 @@ def test_a_fresh_sample_counts_and_the_older_stays_visible():
                                           "sample 1 was outside too")
 
 
+def test_a_newer_sample_without_a_result_is_told_as_such():
+    samples = tuple(Sample("B-1", n, 0, at(9, n), "carl") for n in (1, 2))
+    found = batch_lab.verdict(made(*((1, code, v) for code, v in LIMITED.items()), samples=samples), TARGET)
+    assert (found.samples, found.decision) == ((1,), RELEASE)
+    assert found.remarks == ("sample 2 does not count: it has no result that stands",)
+
+
 def test_a_sample_before_the_last_charge_does_not_count():
     early = made((1, "kv40", 46.0), samples=(Sample("B-1", 1, 0, at(7, 30), "carl"),))
     found = batch_lab.verdict(early, TARGET)
@@ -168,7 +175,7 @@ def test_top_middle_and_bottom_are_compared():
     found = batch_lab.verdict(heights(45.9, 46.0, 46.2), TARGET)
     assert (found.decision, found.samples) == (RELEASE, (3, 2, 1))
     assert found.limits[0].value == pytest.approx((45.9 + 46.0 + 46.2) / 3)
-    assert found.headline == "sample 1, 2 and 3: release"
+    assert found.headline == "samples 1, 2 and 3: release"
     # 0.3 against R = 0.0122·46.03.
     assert "top, middle and bottom: KV40 differs by 0.300 = 0.53 R, they agree" in found.remarks
 

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 
-from blendtui.desk import orders, targets, vessels
+from blendtui.desk import charging, numbers, orders, targets, vessels
 from blendtui.desk.card import Card, card, card_json, card_text
 from blendtui.desk.card_html import card_html
 from blendtui.desk.cautions import DECIDES, cautions
@@ -331,6 +331,15 @@ def test_the_page_has_what_the_text_has(plant: Plant, made: Card) -> None:
     for caution in made.cautions:
         assert " ".join(caution.advice.split()) in page
     assert made.hash in page
+    for code in ("kv100", "density15"):  # predicted, though nothing limits them
+        assert made.recipe is not None
+        assert numbers.value(code, made.recipe.predicted[code]) in page
+    assert "after a charge that differs, go by the kg of the next" in page
+    charging.charge(plant, "B-0001", 1, made.lines[0].kg, lot="L", by="anna", sure=True)
+    charging.miss(plant, "B-0001", 5, why="none on the yard", by="anna")
+    page = card_html(card(plant, "B-0001"))
+    assert f"Line 5 {made.lines[4].stock} dropped: none on the yard (anna)" in page
+    assert f"Second check missing: line 1 {made.lines[0].stock}" in page
     targets.set_limit(plant, "P46", "flash", "200", "")
     assert "The product has changed since this order" in card_html(card(plant, "B-0001"))
 

@@ -267,3 +267,49 @@ def test_a_charge_taken_back_promises_nothing_that_another_has(plant):
     ordered(plant, "P100", {"A": free}, name="B-0002")
     with pytest.raises(PlantError, match=r"A: 6,000\.0 kg are planned and 1\.0 kg are free; the rest is promised"):
         charging.correct(plant, B1, 1, 0.0, why="nothing went in", sure=True)
+
+
+def test_a_forgotten_additive_is_remarked_before_a_release(tmp_path):
+    """Both viscosities and the flash may be right without it."""
+    path = plant_file(tmp_path / "d", stocks="stock,kind,on_hand_kg,price_per_t,density15,kv40,kv100\n"
+                      "A,base,90000,800,868,100,11.2\nPK,additive,9000,3000,980,60,7.5\n",
+                      products="product,grade,only_listed\nP100,ISO VG 100,yes\n",
+                      shares="product,of,low_pct,high_pct\nP100,A,,\nP100,PK,0.85,0.85\n", vessels=VESSELS)
+    with open_plant(path, who="erik") as plant:
+        ordered(plant, "P100", {"A": 9915.0, "PK": 85.0}, tolerance=1.0)
+        assert release.remarks(plant, plant.batch(B1)) == ()
+        put_in(plant, 1)
+        charging.miss(plant, B1, 2, why="drum not found")
+        assert release.remarks(plant, plant.batch(B1)) == (
+            "what was charged is not as the product says: PK 0 %, low 0.85 % (by 84.3 kg)",)
+
+
+def test_a_charge_that_was_entered_anew_after_oil_had_left(plant):
+    """What is in the vessel is what its parts add up to."""
+    put_in(plant, 1)
+    rework.leave(plant, B1, 25.0, "slops", sure=True)
+    charging.correct(plant, B1, 1, 0.0, why="the wrong line", sure=True)
+    charging.charge(plant, B1, 1, 6000.0, lot="L", sure=True)
+    made = plant.batch(B1)
+    assert made.in_vessel_kg == 5975.0
+    assert [kg for _, kg in batches.held(made)] == pytest.approx([5975.0])
+
+
+@pytest.mark.parametrize("again", ["jos\u00e9 m", "Jose\u0301 M.", " JOS\u00c9  m ", "J\uff4fs\u00e9 M"])
+def test_a_name_spelt_another_way_is_no_second_person(plant, again):
+    charging.charge(plant, B1, 1, 6000.0, lot="L", by="Jos\u00e9 M", sure=True)
+    with pytest.raises(DeskError, match="the second check is by another person"):
+        charging.check(plant, B1, 1, by=again)
+    assert charging.check(plant, B1, 1, by="Jos\u00e9 N").checked_by == "Jos\u00e9 N"
+
+
+def test_a_correction_with_the_lot_of_then_keeps_the_oil_of_then(plant):
+    """The tank was topped up since: what was charged was not of the new lot."""
+    ledger.receive(plant, "A", 90000.0, "L1", keep=True, sure=True)
+    charging.charge(plant, B1, 1, 6000.0, lot="L1", sure=True)
+    before = plant.batch(B1).charges[0]
+    ledger.receive(plant, "A", 50000.0, "L2", cells={"kv40": "31.5", "kv100": "5.3", "density15": "869"}, keep=True,
+                   sure=True)
+    after = charging.correct(plant, B1, 1, 6010.0, lot="L1", why="read again", sure=True).line
+    assert (after.actual_kg, after.lots, after.cells) == (6010.0, before.lots, before.cells)
+    assert set(after.lots) == {"before", "L1"}
