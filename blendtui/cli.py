@@ -10,7 +10,7 @@ import os
 import sys
 from collections.abc import Callable, Sequence
 from importlib import import_module
-from typing import NoReturn
+from typing import Any, NoReturn
 
 from blendtui.desk.errors import DeskError
 from blendtui.headless.common import BAD_INPUT, DONE, BadInput, number, opened, path, say, shared, shares_of, show
@@ -23,12 +23,19 @@ HEADLESS = """blendtui opens its console on a terminal, and there is none here. 
   blendtui design HYD-46
   blendtui design HYD-46 --json --ranges --blends 4
   blendtui viscosity --kv40 46 --kv100 6.8 --at 0 --at 60
+  blendtui batch order HYD-46 15 t --vessel K1 --try
 Without --plant PATH these use the example plant. blendtui --help lists every command."""
 LONGEST = 1000  # characters of one message: what was typed may be a file
 
 
 class _Parser(argparse.ArgumentParser):
-    """argparse, with its complaint in one line."""
+    """argparse, with its complaint in one line, made by the command that was typed and not by the whole program."""
+
+    def parse_known_args(self, args: Any = None, namespace: Any = None) -> tuple[Any, list[str]]:
+        found, unknown = super().parse_known_args(args, namespace)
+        if unknown:
+            self.error(f"unrecognized arguments: {' '.join(unknown)}")
+        return found, unknown
 
     def error(self, message: str) -> NoReturn:
         raise BadInput(f"{message}; {self.prog} --help shows what is taken")

@@ -104,7 +104,8 @@ def test_a_question_is_answered_with_sure(batch):
     (("charge", "B-0001", "1", "-5"), "-5 kg cannot have been charged"),
     (("charge", "B-0001", "1", "nan"), "not a number"),
     (("charge", "B-0001", "7", "5"), "has no line 7"), (("charge", "B-9", "1", "5"), "no batch 'B-9'"),
-    (("charge", "B-0001", "x", "5"), "argument LINE: 'x' is no whole number"), (("charge", "B-0001", "1"), "are required: KG"),
+    (("charge", "B-0001", "x", "5"), "argument LINE: 'x' is no whole number"),
+    (("charge", "B-0001", "1"), "are required: KG"),
     (("charge", "B-0001", "1", "6000", "--at", "hot"), "--at: 'hot' is not a number"),
     (("charge", "B-0001", "1", "6000", "--at", "1e308"), "--at: 1e308 is no temperature of an oil"),
     (("check", "B-0001", "1_0"), "argument LINE: '1_0' is no whole number"),
@@ -184,6 +185,16 @@ def test_the_laboratory_from_sample_to_decision(batch, plant):
     with open_plant(plant) as opened:
         assert opened.verify() is None
         assert [b.name for b in opened.measured()] == ["B-0001"]
+
+
+def test_an_outlook_tells_of_what_the_laboratory_measured(batch):
+    charge_all(batch)
+    assert batch("sample", "B-0001", "--by", "Carl")[0] == 0
+    assert batch("result", "B-0001", "kv40=48.0", "kv100=7.6", "--by", "Dora")[0] == 0
+    said = answer(batch, "outlook", "B-0001")["said"]
+    assert said[-1].startswith("the laboratory has measured it: sample 1: trim")
+    assert said[-1].endswith("; blendtui batch verdict B-0001 says why")
+    assert "the laboratory has measured it" in batch("outlook", "B-0001")[1]
 
 
 def test_swapped_slipped_and_withdrawn_results(batch):

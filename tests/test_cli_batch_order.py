@@ -126,6 +126,8 @@ def test_heel_flush_and_what_ignoring_does(capsys: pytest.CaptureFixture[str], p
     (("batch",), "say what is to be done"), (("vessel",), "say what is to be done with vessels"),
     (("vessel", "set", "K1", "capacity_l"), "capacity_l: write CELL=VALUE"),
     (("vessel", "set", "K1", "capacity_l=1", "capacity_l=2"), "capacity_l is given twice"),
+    ((*ORDER, "--colour", "red"), "unrecognized arguments: --colour red; blendtui batch order --help shows"),
+    (("vessel", "list", "--all"), "unrecognized arguments: --all; blendtui vessel list --help shows what is taken"),
     (("vessel", "set", "K1", "capacity_l=much"), "K1 capacity: 'much' is not a number"),
     ((*ORDER, "--limit", "kv40=44:nan"), "the customer's KV40: 'nan' is not a number"),
     ((*ORDER, "--heel-value", "kv40=nan"), "kv40: 'nan' is not a number"),
@@ -193,6 +195,12 @@ def test_card_list_show_redesign_reorder_and_cancel(capsys: pytest.CaptureFixtur
     code, gone = asked(capsys, path, "batch", "cancel", "B-0001", "--why", "the customer left", "--by", "Berta")
     assert (code, gone["state"], gone["why"], gone["closed_by"]) == (0, "cancelled", "the customer left", "Berta")
     assert asked(capsys, path, "batch", "list", "--state", "open")[1] == {"batches": []}
+    # Nothing is ahead of it any more, and nothing will make a certificate of it.
+    code, out, err = run(capsys, path, "batch", "outlook", "B-0001")
+    assert (code, out) == (2, "")
+    assert err.startswith("B-0001 is cancelled (Berta, ")
+    assert run(capsys, path, "batch", "certificate", "B-0001")[2] == (
+        "B-0001 is cancelled, not released: a certificate speaks of a released batch only\n")
 
 
 def test_vessels_from_the_command_line(capsys: pytest.CaptureFixture[str], path: Path) -> None:

@@ -24,6 +24,7 @@ FAR_PART = 0.25  # … where it is also so far off, as a part of the prediction 
 SLIP = (8.0, 12.5)  # ratio of two figures within which a point may have slipped by one place
 VI_APART = 2.0  # points between a typed VI and that of the KVs: its R, by common practice
 SKEW = timedelta(seconds=90)  # that a typed time may be ahead of the clock
+COLDEST, HOTTEST = -60.0, 300.0  # °C that oil in a plant can have
 COOL, HOT = 10.0, 20.0  # °C that a sample may be below or above the mixing temperature
 
 
@@ -62,6 +63,12 @@ def refuse_future(what: str, at: str) -> None:
     ahead = datetime.fromisoformat(at.replace("Z", "+00:00")) - datetime.fromisoformat(now().replace("Z", "+00:00"))
     if ahead > SKEW:
         raise DeskError(f"{what} at {batches.when(at)} lies in the future; it is {batches.when(now())} now")
+
+
+def refuse_temperature(celsius: float | None) -> None:
+    """DeskError for what no oil in a plant can have [°C]."""
+    if celsius is not None and not COLDEST <= celsius <= HOTTEST:
+        raise DeskError(f"{celsius:g} °C is no temperature of an oil ({COLDEST:g} to {HOTTEST:g} °C); °F?")
 
 
 # Samples

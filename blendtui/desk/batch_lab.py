@@ -42,6 +42,7 @@ def sample(plant: Plant, batch: str, *, taken: str = "", place: str = "", celsiu
     charge, while charges are to come, or at a temperature far from the mixing temperature.
     """
     who, at = batches.person(plant, by), batches.moment(taken) if taken.strip() else ""
+    batch_doubts.refuse_temperature(celsius)
 
     def make() -> Step:
         made = batches.opened(plant, batch)

@@ -76,11 +76,11 @@ def moment(typed: str) -> str:
     try:
         if len(text) <= 5 and ":" in text:
             text = f"{datetime.now():%Y-%m-%d} {text.zfill(5)}"
-        read = datetime.fromisoformat(text.replace("Z", "+00:00"))
-    except ValueError:
+        read = datetime.fromisoformat(text.replace("Z", "+00:00")).astimezone(UTC)
+    except (ValueError, OverflowError):
         raise DeskError(f"{harmless(typed, 40)!r} is no time; type one such as 2026-03-04 14:30, or 14:30 for today"
                         ) from None
-    return read.astimezone(UTC).isoformat(timespec="milliseconds").replace("+00:00", "Z")
+    return read.isoformat(timespec="milliseconds").replace("+00:00", "Z")
 
 
 # The formula, kept as it was when the order was taken

@@ -252,7 +252,7 @@ def facts(made: Card) -> list[tuple[str, str]]:
         *([f"division {of.division_kg:g} kg"] if of.division_kg else [])]
     rows = [("Product", f"{head.product}  {made.product_name}".strip()), ("Customer", head.customer),
             ("Order", head.order_no), ("Asked", asked_words(made.made)),
-            ("Holds", f"{round(head.batch_kg, 3):,.10g} kg when all is charged, what was in the vessel included"),
+            ("Holds", f"{round(made.total_kg, 3):,.10g} kg when all is charged, what was in the vessel included"),
             ("Vessel", ", ".join([head.vessel, *room])),
             ("Ordered", f"{batches.when(head.ordered_at)} by {head.ordered_by}"),
             ("State", batches.stage(made.made) + (f" ({head.why})" if head.why else "")), ("Note", head.note)]

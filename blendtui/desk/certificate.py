@@ -10,7 +10,7 @@ from pathlib import Path
 from statistics import fmean
 from typing import TYPE_CHECKING, Any
 
-from blendtui.store.batch_records import PACKED, RELEASED, Made, Sample
+from blendtui.store.batch_records import OPEN, PACKED, RELEASED, Made, Sample
 from blendtui.store.harmless import harmless
 from blendtui.store.plant import Plant
 from solver.properties import lookup
@@ -51,8 +51,12 @@ class Line:
 
     @property
     def shown(self) -> str:
-        """The result as it is given."""
-        return numbers.value(self.property, self.value)
+        """The result as it is given; with more digits where rounding would bring it inside a limit."""
+        text = numbers.value(self.property, self.value)
+        given = float(text)
+        inside = (self.low is not None and self.value < self.low <= given) or (
+            self.high is not None and self.value > self.high >= given)
+        return f"{self.value:.6g}" if inside else text
 
     @property
     def bounds(self) -> tuple[str, str]:
@@ -93,8 +97,9 @@ def certificate(plant: Plant, batch: str) -> Certificate:
     made = plant.batch(batch)
     head = made.head
     if head.state != RELEASED:
+        how = f" (blendtui batch release {harmless(batch, 40)})" if head.state == OPEN else ""
         raise DeskError(f"{harmless(batch, 40)} is {head.state}, not released: a certificate speaks of a released "
-                        f"batch only (blendtui batch release {harmless(batch, 40)})")
+                        f"batch only{how}")
     draw = drawn_together(made)
     if not draw:
         raise DeskError(f"{harmless(batch, 40)} has no sample after its last charge; nothing can be certified")

@@ -56,6 +56,7 @@ def charge(plant: Plant, batch: str, line: int, kg: float | str, *, lot: str = "
     the plan, more than the tank or the vessel holds, a lot that is not in the tank, a clock that was set back.
     """
     who, reason, given = batches.person(plant, by), harmless(why.strip(), LONGEST), harmless(lot.strip(), 60)
+    batch_doubts.refuse_temperature(celsius)
     before = plain_outlook(plant, plant.batch(batch))  # also brings in the slow libraries before the transaction
 
     def make() -> Step:
@@ -102,6 +103,7 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
     who, reason, given = batches.person(plant, by), harmless(why.strip(), LONGEST), harmless(lot.strip(), 60)
     if not reason:
         raise DeskError("a correction needs its reason; type why the first entry was wrong")
+    batch_doubts.refuse_temperature(celsius)
     before = plain_outlook(plant, plant.batch(batch))
 
     def make() -> Step:
@@ -274,7 +276,8 @@ def _asked(plant: Plant, made: Made, row: Charge, oil: Stock, kg: float, lot: st
     yield from charging_words.doubts(made, row, oil, kg, vessel_of(plant, made), contents(plant, made, target), celsius)
     elsewhere = [x.stock for x in plant.lots() if x.lot == lot] if lot and lot not in tank else []
     yield from charging_words.foreign_lot(oil, lot, tank, elsewhere)
-    yield from charging_words.lot_of_drums(oil, lot, tank, kg)
+    if row.state != DONE:  # a correction keeps its lot
+        yield from charging_words.lot_of_drums(oil, lot, tank, kg)
 
 
 def _reason(row: Charge, oil: Stock, reason: str) -> str:

@@ -177,9 +177,9 @@ def dip(plant: Plant, stock: str, kg: float | str, *, celsius: float | None = No
             batches.question(sure, f"{harmless(stock, 40)}: {asked(odd)}")
         book = tank.on_hand_kg or 0.0
         if correct and book > 0.0 and not book / SLIPPED < found < book * SLIPPED:
-            batches.question(sure, f"{harmless(stock, 40)}: the dip of {numbers.kg(found)} kg is "
-                                   f"{numbers.figures(found / book, 2)} times the book's {numbers.kg(book)} kg; has the "
-                                   "point slipped?")
+            times = numbers.figures(found / book, 2)
+            batches.question(sure, f"{harmless(stock, 40)}: the dip of {numbers.kg(found)} kg is {times} times the "
+                                   f"book's {numbers.kg(book)} kg; has the point slipped?")
         line = 1 + max((d.line for d in plant.dips(stock)), default=0)
         made = Dip(stock, line, found, tank.on_hand_kg, int(correct), now(), batches.person(plant, by),
                    typed.name(why, "reason"))

@@ -32,6 +32,7 @@ if TYPE_CHECKING:
     from solver.requirements import Requirement
 
 FREE_ROUNDS = 2  # trims that need no reason: practice says at most two, then the formulator
+LEAST_KG = 0.1  # less in a vessel is what sums of masses are off, and no oil
 TOLD = 0.001  # part of a charge of which no lot is known from which on it is remarked
 STEP = 5.0  # s: what the clocks of two machines, or of one that is being set right, may differ by
 
@@ -74,6 +75,10 @@ def _of_charges(made: Made) -> Iterator[str]:
     alone = [c for c in done if c.checked_by and batches.same_person(c.by, c.checked_by)]
     if not made.charges:
         yield "no charge was ever planned"
+    elif not counts:
+        yield "nothing was charged: every line was dropped"
+    elif made.charged and made.in_vessel_kg < LEAST_KG:
+        yield "nothing of it is in the vessel any more"
     yield from _named("not charged", [c for c in counts if c.actual_kg is None],
                       lambda c: f"{numbers.kg(c.plan_kg)} kg")
     yield from _named("no second check", [c for c in done if not c.checked_by])

@@ -91,6 +91,9 @@ def propose(plant: Plant, batch: str, *, aim: str = "cost", chance: float | None
         lines = ", ".join(f"{c.line} ({harmless(c.stock, 40)})" for c in made.to_charge)
         raise DeskError(f"{harmless(batch, 40)} is still being charged: line {lines}; charge what is to come or drop "
                         "it with its reason, then sample, then trim")
+    if made.in_vessel_kg < release.LEAST_KG:
+        raise DeskError(f"{harmless(batch, 40)}: by the book nothing is in the vessel any more, so nothing can be "
+                        "trimmed")
     target = batches.target_of(plant, made)
     whole, samples, guessed = measured_batch(plant, made, target)
     vessel = next((v for v in plant.vessels() if v.vessel == made.head.vessel), None)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 from .common import DONE, Add, number, opened, show, whole
@@ -110,11 +111,16 @@ def _check(options: argparse.Namespace) -> int:
 
 
 def _outlook(options: argparse.Namespace) -> int:
-    from blendtui.desk import charging
+    from blendtui.desk import batch_lab, batches, charging
 
     with opened(options) as plant:
-        ahead = charging.outlook(plant, plant.batch(options.batch))
-    show(options, outlook_json(ahead), outlook_text(ahead))
+        # Of a closed batch nothing is ahead any more.
+        made = batches.opened(plant, options.batch)
+        ahead, says = charging.outlook(plant, made), batch_lab.verdict(made, batches.target_of(plant, made))
+    # A prediction is not the last word on what the laboratory has measured.
+    measured = [f"the laboratory has measured it: {says.headline}; blendtui batch verdict {options.batch} says why"
+                ] if any(limit.value is not None for limit in says.limits) else []
+    show(options, outlook_json(ahead, measured), outlook_text(ahead, measured))
     return DONE
 
 
@@ -142,7 +148,7 @@ def charge_json(row: Charge) -> dict[str, Any]:
             "why": row.why or None}
 
 
-def outlook_json(ahead: Outlook) -> dict[str, Any]:
+def outlook_json(ahead: Outlook, more: Sequence[str] = ()) -> dict[str, Any]:
     """What is ahead of a batch, numbers unrounded; null: unknown."""
     from blendtui import as_json
 
@@ -153,7 +159,7 @@ def outlook_json(ahead: Outlook) -> dict[str, Any]:
             "missed": list(ahead.missed), "near": list(ahead.near), "fill_l": ahead.fill_l,
             "capacity_l": ahead.capacity_l, "fill_pct": ahead.fill_pct, "mix_c": ahead.made.head.mix_c,
             "remedy": None if ahead.remedy is None else remedy_json(ahead.remedy),
-            "said": [*ahead.words, *ahead.remedy_words]}
+            "said": [*ahead.words, *ahead.remedy_words, *more]}
 
 
 def remedy_json(trim: Trim) -> dict[str, Any]:
@@ -163,7 +169,7 @@ def remedy_json(trim: Trim) -> dict[str, Any]:
             "cost": trim.cost, "notes": list(trim.notes)}
 
 
-def outlook_text(ahead: Outlook) -> str:
+def outlook_text(ahead: Outlook, more: Sequence[str] = ()) -> str:
     """What is ahead of a batch, in text of at most 80 columns."""
     from blendtui.as_text import table
     from blendtui.desk import numbers
@@ -183,7 +189,7 @@ def outlook_text(ahead: Outlook) -> str:
         rows += [[lookup(code).label[:36], numbers.value(code, ahead.predicted.get(code)), "", "", ""]
                  for code in ("kv40", "kv100", "vi", "density15") if code not in limited]
         parts.append(table(["predicted", "value", "low", "high", "verdict"], rows))
-    parts.append(lines_of([*ahead.words, *ahead.remedy_words]))
+    parts.append(lines_of([*ahead.words, *ahead.remedy_words, *more]))
     return "\n\n".join([*parts, NOT_A_CERTIFICATE])
 
 

@@ -20,6 +20,11 @@ KEYS = {  # headless command → the key
 # A word of the command's own: an option with what follows it, capitals, a name or number with a digit, CELL=VALUE.
 OWN = r"(?: (?:--[a-z-]+(?: (?:[A-Z]+\b|rework|slops|cost|mass))?|\w+=\w+|[\w.+-]*\d[\w.+-]*(?<!\.)|[A-Z]+\b))*"
 COMMAND = re.compile(rf"blendtui (batch|stock|vessel)\s([a-z][a-z-]*)({OWN})")
+PHRASES = {  # what the desk leaves open, because headless it is another command
+    "type it with the charge, or correct the line with the same kg": 
+    "on its line e with the same kg asks for it",
+    "receive it or type it as a correction of the charge": 
+    f"on its line l {FLOOR} types it"}
 OPTION = re.compile(r"\s*\(--(?:why TEXT|sure|by NAME)\)")
 
 
@@ -31,6 +36,8 @@ def at_console(message: str) -> str:
     >>> at_console("a batch is cancelled only with a reason; type why (--why TEXT)")
     'a batch is cancelled only with a reason; type why'
     """
+    for phrase, key in PHRASES.items():
+        message = message.replace(phrase, key)
     if "blendtui " not in message and "(--" not in message:
         return message
     return OPTION.sub("", COMMAND.sub(lambda found: KEYS.get(f"{found[1]} {found[2]}", found[0]), message))

@@ -87,7 +87,10 @@ class Page(Screen[Any]):
 
     def say(self, message: str, kind: str = "note") -> None:
         """Show a message in the status line; a long one takes blank lines of the body."""
-        typing = self.edit.active and not (self.edit.typing and self.edit.typing.asking)
+        asking = self.edit.typing is not None and self.edit.typing.asking
+        if asking and kind in ("note", "wait"):
+            return  # what another person changed is in the list of messages; the question stays in sight
+        typing = self.edit.active and not asking
         self.status.show(message, kind, "Esc, then ! shows all" if typing else "! shows all")
         self._grow()
 

@@ -18,7 +18,7 @@ from blendtui.widgets.edit_line import Ended
 from blendtui.widgets.grid import Cell, Column, Grid
 from blendtui.widgets.lines import OneLine
 from blendtui.widgets.page_text import PageText
-from blendtui.widgets.paint import BAD, BOLD, PLAIN, Line, fit, wrap
+from blendtui.widgets.paint import BAD, BOLD, PLAIN, Line, fit, with_tail, wrap
 
 from . import floor_view, ordering, reading, tracing
 from .floor_view import Seen
@@ -189,7 +189,7 @@ class BatchesScreen(VesselCommands):
         product = self.snapshot.product(self.session.product)
         what = f"new order of {harmless(product.product, 20)}" if product else "no product yet"
         name = f", {harmless(product.name, 40)}; [ ] another product" if product else ""
-        self.ordering.show(("a: ", BOLD), (what, BOLD), (f"; as {self.who}", BOLD), (name, PLAIN))
+        self.ordering.show(*with_tail([("a: ", BOLD), (what, BOLD), (name, PLAIN)], f"as {self.who}", self.size.width))
 
     def spare(self) -> int:
         """Blank lines under the table."""

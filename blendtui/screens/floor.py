@@ -6,7 +6,6 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field, replace
 from typing import Any
 
-from rich.cells import cell_len
 from textual.widget import Widget
 
 from blendtui import commands
@@ -15,7 +14,7 @@ from blendtui.store.harmless import harmless
 from blendtui.widgets.grid import Cell, Column, Grid, more_only
 from blendtui.widgets.head import Head
 from blendtui.widgets.lines import OneLine
-from blendtui.widgets.paint import BAD, BOLD, DIM, PLAIN, cut_line
+from blendtui.widgets.paint import BAD, BOLD, DIM, PLAIN, cut_line, with_tail
 
 from . import floor_lab, floor_view, reading, remedy
 from .floor_charge import ChargeCommands
@@ -139,11 +138,9 @@ class FloorScreen(LabCommands, ChargeCommands, OutCommands):
             self.head.show([])
             self.caution.show()
             return
-        width, who = self.size.width, f"  as {self.who}"
-        missed = floor_view.missed_words(seen)
-        first = cut_line([(f"{seen.name}: ", BOLD), (floor_view.headline(seen), PLAIN)], width - cell_len(who))
-        gap = width - cell_len(who) - sum(cell_len(text) for text, _ in first)
-        self.head.show([[*first, (" " * gap, PLAIN), (who, BOLD)],
+        width, missed = self.size.width, floor_view.missed_words(seen)
+        self.head.show([with_tail([(f"{seen.name}: ", BOLD), (floor_view.headline(seen), PLAIN)], f"as {self.who}",
+                                  width),
                         cut_line([("next: ", BOLD), (floor_view.next_words(seen), PLAIN)], width)])
         if missed:
             self.caution.show((missed, BAD))

@@ -184,7 +184,7 @@ def next_words(seen: Seen) -> str:
     if not results_of_last(made):
         return f"type the results of sample {last}: Tab to the laboratory, Enter on a property"
     if seen.verdict is not None and seen.verdict.decision == "no result":
-        return f"still without a result: {harmless(', '.join(seen.verdict.missing), 200)}: Enter in the laboratory"
+        return f"Enter in the laboratory: still without a result: {harmless(', '.join(seen.verdict.missing), 200)}"
     return {"release": _release_words(seen), "repeat": f"test sample {last} once more and type the new results",
             "fresh sample": "take a fresh sample before anything is added: s in the laboratory",
             "trim": "t in the laboratory shows the trim"}.get(

@@ -36,7 +36,8 @@ class ReadingScreen(TextScreen):
     def lines(self, width: int) -> Iterable[Line]:
         """The text; a line that is too long goes on below, indented."""
         for line in self.said:
-            style = STYLES.get(line[:2], BOLD if line.isupper() else PLAIN)
+            heading = line.isupper() and not any(c.isdigit() for c in line)  # a row of codes and figures is none
+            style = STYLES.get(line[:2], BOLD if heading else PLAIN)
             indent = " " * (len(line) - len(line.lstrip()) + 2)
             for part in [line] if len(line) <= width else wrap(line, width, indent):
                 yield [(part, style)]

@@ -128,7 +128,7 @@ class StocksScreen(LedgerCommands):
         place = f"row {self.grid.row + 1} of {len(self.rows)}" if self.rows else "no rows"
         by = next((c.heading for c in self.grid.columns if c.code == self.state.sort), "")
         sort = f"by {by}{' down' if self.state.down else ''}, " if by else ""
-        self.title_line.show(f"{filtered}{sort}{place}")
+        self.title_line.show(f"{filtered}{sort}{place}", f" as {self.who}" if self.session.by else "")
         if stock is None:
             self.edit.show("", "")
             return

@@ -23,7 +23,7 @@ TABLE = (Column("vessel", "vessel", "", 8, "left"), Column("capacity_l", "capaci
 HELP = {"heel_stock": "a stock, or the batch that was made there last",
         "flash_margin_c": "the site's own margin below the flash point; dated today",
         "flash_margin_on": "the day on which the margin was typed",
-        "charge_order": "stocks, kinds or groups, parted by commas; empty: the usual order"}
+        "charge_order": "light heavy vi_improver additive rinse, or stocks; empty: the usual order"}
 KEYS = [("Enter", "edit"), ("a", "add"), ("d", "retire"), ("v", "batches"), ("b", "name"), ("u", "undo"),
         ("r", "redo"), (":", "all"), ("q", "quit"), ("?", "help")]
 

@@ -115,6 +115,18 @@ def cut_line(line: Line, width: int) -> Line:
     return kept
 
 
+def with_tail(line: Line, tail: str, width: int) -> Line:
+    """A line with a text at its right end, which is never the one that is cut.
+
+    >>> with_tail([("B-0001: planned", None)], "as anna", 18)
+    [('B-0001: …', None), ('  ', None), ('as anna', Style(bold=True))]
+    """
+    room = width - cell_len(tail) - 2
+    kept = cut_line(line, room)
+    gap = 2 + room - sum(cell_len(text) for text, _ in kept)
+    return [*kept, (" " * gap, PLAIN), (tail, BOLD)]
+
+
 def cells(line: Iterable[Run], width: int) -> list[Cell]:
     """A line as exactly `width` screen columns."""
     found: list[Cell] = []

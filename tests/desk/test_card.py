@@ -219,6 +219,14 @@ def test_the_fill_is_of_what_was_made_and_not_of_what_is_left(plant: Plant, made
     assert [x.reading_kg for x in packed.lines] == [x.reading_kg for x in whole.lines]
 
 
+def test_an_oil_of_the_recipe_is_a_rinse_only_after_itself_and_not_in_a_trim(plant: Plant, made: Card) -> None:
+    put(plant, Charge("B-0001", 20, 1, "N32", "", 200.0, 10.0, 20.0, position=20),
+        Charge("B-0001", 21, 1, "N32", "", 50.0, 10.0, 20.0, position=21))
+    trim = [x for x in card(plant, "B-0001").lines if x.charge.round == 1]
+    assert [x.rinse for x in trim] == [False, True]
+    assert [x.rinse for x in made.lines if x.stock == "N32"] == [False, True]
+
+
 def test_no_caution_ever_clears_anything(plant: Plant, made: Card) -> None:
     far = Vessel("K", 1e4, 10.0, flash_margin_c=1.0, flash_margin_on="2026-01-01")
     for each in (*made.cautions, *cautions([Stock("A", values={"flash": 300.0})], far, 20.0)):

@@ -313,3 +313,54 @@ def test_a_correction_with_the_lot_of_then_keeps_the_oil_of_then(plant):
     after = charging.correct(plant, B1, 1, 6010.0, lot="L1", why="read again", sure=True).line
     assert (after.actual_kg, after.lots, after.cells) == (6010.0, before.lots, before.cells)
     assert set(after.lots) == {"before", "L1"}
+
+
+def test_a_drum_is_of_one_lot(plant):
+    there = drums(plant)
+    ordered(plant, "P100", {"A": 5000.0, "VM": 180.0}, name="B-0002")
+    with pytest.raises(Questioned, match="there are V1 180 kg, V2 180 kg: of which lot was it"):
+        charging.charge(plant, "B-0002", 2, 180.0)
+    with pytest.raises(Questioned, match="180 kg of lot V2 are in VM, less than the 360 kg typed"):
+        charging.charge(plant, "B-0002", 2, 360.0, lot="V2")
+    assert charging.charge(plant, "B-0002", 2, 180.0, lot="V2").line.lots == {"V2": 1.0}
+    assert there() == pytest.approx({"V1": 1.0})
+    assert charging.correct(plant, "B-0002", 2, 178.0, why="weighed again").line.lots == {"V2": 1.0}
+
+
+@pytest.mark.parametrize(("code", "value", "low", "high", "shown"), [
+    ("kv40", 89.996, 90.0, 110.0, "89.996"), ("kv40", 90.004, 90.0, 110.0, "90.00"),
+    ("flash", 204.6, 205.0, None, "204.6"), ("vi", 94.6, 95.0, None, "94.6"), ("vi", 95.4, 95.0, None, "95"),
+    ("pour", -8.6, None, -9.0, "-8.6")])
+def test_no_rounding_on_a_certificate_brings_a_result_inside(code, value, low, high, shown):
+    assert certificate.Line(code, code, "", "", value, 1, "", low, high, ()).shown == shown
+
+
+def test_a_batch_that_is_gone_is_neither_released_nor_trimmed(plant):
+    put_in(plant, 1, 2)
+    batch_lab.sample(plant, B1)
+    laboratory(plant, GOOD)
+    batch_lab.decide(plant, B1)
+    rework.leave(plant, B1, 9999.95, "slops", sure=True)
+    assert lacks(plant) == ("nothing of it is in the vessel any more",)
+    with pytest.raises(DeskError, match="nothing can be trimmed"):
+        trimming.propose(plant, B1)
+
+
+def test_a_batch_of_which_every_line_was_dropped_is_not_released(plant):
+    for line in (1, 2):
+        charging.miss(plant, B1, line, why="not wanted")
+    assert lacks(plant)[0] == "nothing was charged: every line was dropped"
+
+
+@pytest.mark.parametrize("celsius", [float("nan"), float("inf"), -300.0, 400.0])
+def test_no_temperature_that_oil_cannot_have_whatever_is_answered(plant, celsius):
+    for step in (lambda: charging.charge(plant, B1, 1, 6000.0, celsius=celsius, sure=True),
+                 lambda: charging.correct(plant, B1, 1, 6000.0, celsius=celsius, why="read again", sure=True),
+                 lambda: batch_lab.sample(plant, B1, celsius=celsius, sure=True)):
+        with pytest.raises(DeskError, match="is no temperature of an oil"):
+            step()
+
+
+def test_a_time_before_every_calendar_is_no_time():
+    with pytest.raises(DeskError, match="is no time"):
+        batches.moment("0001-01-01 00:00")

@@ -9,7 +9,7 @@ import pytest
 
 from blendtui.desk import batches, heels, orders
 from blendtui.desk.batches import Questioned
-from blendtui.desk.card import card
+from blendtui.desk.card import card, facts
 from blendtui.desk.errors import DeskError
 from blendtui.desk.orders import Order
 from blendtui.desk.plant import open_plant
@@ -93,3 +93,13 @@ def test_the_card_reads_the_scale_as_it_stands(plant):
     made = card(plant, "B-0001")
     assert [x.reading_kg for x in made.lines] == [7810.0, 3010.0, 7880.0]
     assert [x.tared_kg for x in made.lines] == [7810.0, 3010.0, 7880.0]
+
+
+def test_the_heading_of_a_card_says_what_its_lines_add_up_to(plant):
+    """Whole steps of the scale rarely come to just what was asked."""
+    made = orders.take(plant, Order("P46", 10000.0, "K1"), sure=True)
+    paper = card(plant, made.name)
+    total = sum(c.plan_kg for c in made.charges) + 100.0
+    assert total != made.head.batch_kg
+    assert dict(facts(paper))["Holds"].startswith(f"{round(total, 3):,.10g} kg when all is charged")
+    assert paper.lines[-1].reading_kg == pytest.approx(total)
