@@ -58,7 +58,7 @@ def test_an_order_from_the_command_line_and_every_key(capsys: pytest.CaptureFixt
 def test_try_proposes_and_writes_nothing(capsys: pytest.CaptureFixture[str], path: Path) -> None:
     code, out, _ = run(capsys, path, *ORDER, "--try", "--limit", "kv40=41:51")
     assert code == 0
-    assert out.startswith("P46, 10,000 kg in K1: nothing is written (least cost)")
+    assert out.startswith("P46, 10000 kg in K1: nothing is written (least cost)")
     assert "? the customer's KV40 41–51 is wider than the product's 41.4–50.6 mm²/s" in out
     assert max(map(len, out.splitlines())) <= 80
     assert asked(capsys, path, "batch", "list")[1] == {"batches": []}

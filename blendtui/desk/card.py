@@ -240,19 +240,19 @@ def _line_json(x: CardLine) -> dict[str, Any]:
 
 def asked_words(made: Made) -> str:
     """What was ordered, with its unit."""
-    return f"{made.head.asked:,.10g} {UNITS.get(made.head.unit, made.head.unit)}"
+    return f"{made.head.asked:.10g} {UNITS.get(made.head.unit, made.head.unit)}"
 
 
 def facts(made: Card) -> list[tuple[str, str]]:
     """The heading, line by line; what is not known is left out."""
     head, of = made.made.head, made.vessel
     room = [] if of is None else [
-        *([f"capacity {of.capacity_l:,.10g} L"] if of.capacity_l else []),
-        *([f"least fill {of.least_fill_l:,.10g} L"] if of.least_fill_l else []),
+        *([f"capacity {of.capacity_l:.10g} L"] if of.capacity_l else []),
+        *([f"least fill {of.least_fill_l:.10g} L"] if of.least_fill_l else []),
         *([f"division {of.division_kg:g} kg"] if of.division_kg else [])]
     rows = [("Product", f"{head.product}  {made.product_name}".strip()), ("Customer", head.customer),
             ("Order", head.order_no), ("Asked", asked_words(made.made)),
-            ("Holds", f"{round(made.total_kg, 3):,.10g} kg when all is charged, what was in the vessel included"),
+            ("Holds", f"{round(made.total_kg, 3):.10g} kg when all is charged, what was in the vessel included"),
             ("Vessel", ", ".join([head.vessel, *room])),
             ("Ordered", f"{batches.when(head.ordered_at)} by {head.ordered_by}"),
             ("State", batches.stage(made.made) + (f" ({head.why})" if head.why else "")), ("Note", head.note)]

@@ -159,7 +159,7 @@ def _asked(plan: Plan, inside: Sequence[Stock], free: Recipe) -> tuple[float, li
             break
         recipe = _in_any_mass(plan, inside, kg)
     kg = round(kg, 6)
-    return kg, [f"{plan.asked:,.10g} L at {celsius:g} °C are {numbers.batch(kg)} kg by the density that is predicted, "
+    return kg, [f"{plan.asked:.10g} L at {celsius:g} °C are {numbers.batch(kg)} kg by the density that is predicted, "
                 f"{numbers.fixed(1000.0 * kg / plan.asked, 1)} kg/m³ at {celsius:g} °C"]
 
 

@@ -34,7 +34,7 @@ def _wrap(text: str, first: str = "", rest: str = "  ") -> list[str]:
 
 def _lines(made: Proposal, name: str) -> Iterator[str]:
     order = made.order
-    asked = f"{order.amount:,.10g} {UNITS.get(order.unit, order.unit)}"
+    asked = f"{order.amount:.10g} {UNITS.get(order.unit, order.unit)}"
     head = f"{harmless(order.product, 40)}, {asked} in {harmless(made.vessel.vessel, 40)}"
     told = f"{harmless(name, 60)}: {head}" if name else f"{head}: nothing is written"
     yield from _wrap(f"{told} ({STATUS.get(made.status, 'NO BLEND')})")

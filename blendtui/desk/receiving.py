@@ -131,7 +131,7 @@ def refuse(tank: Stock, came: Stock, receipt: Lot) -> None:
         raise DeskError(f"{code}: its book quantity is unknown, so what it holds after a delivery is too; dip the tank "
                         "first and set the book to the dip")
     if tank.on_hand_kg < 0.0:
-        raise DeskError(f"{code}: its book says {tank.on_hand_kg:,.1f} kg, which cannot be; dip the tank first and set "
+        raise DeskError(f"{code}: its book says {tank.on_hand_kg:.1f} kg, which cannot be; dip the tank first and set "
                         "the book to the dip")
     wrong = faults(came)
     if wrong:

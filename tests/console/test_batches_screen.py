@@ -101,7 +101,7 @@ async def test_an_order_is_shown_before_anything_is_written(path: Path, size: Si
         lines = ["".join(text for text, _ in line) for line in driver.app.screen.page_text.lines]
         text = "\n".join(lines)
         assert max(map(len, lines)) <= size[0]
-        assert "H46, 15,000 kg in K1: nothing is written" in text
+        assert "H46, 15000 kg in K1: nothing is written" in text
         for part in ("LIGHT", "fill at 55 °C", "asked by the customer: KV at 40 °C", "heel and line (part of the"):
             assert part in text
         assert driver.plant.revision() == before
