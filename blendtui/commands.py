@@ -159,8 +159,8 @@ COMMANDS: tuple[Command, ...] = (
         "number or state all the typed words are found.", changes=False),
     _on(BATCHES, "a", "add", "new order", "Take an order for the product all screens speak of: amount, vessel, "
         "customer, heel and the rest are asked for in turn, then its charges are shown; nothing is written before y."),
-    _on(BATCHES, "n", "redesign", "redesign", "Work the charges of the batch under the cursor out anew on today's tanks, "
-        "before the first of them is made; y there puts them in place of the old ones."),
+    _on(BATCHES, "n", "redesign", "redesign", "Work the charges of the batch under the cursor out anew on today's "
+        "tanks, before the first of them is made; y there puts them in place of the old ones."),
     _on(BATCHES, "v", "vessels", "vessels", "Show the vessels in place of the batches, and back: Enter there edits a "
         "cell, a adds a vessel, d takes one out of use.", changes=False),
     _on(BATCHES, "d", "cancel", "cancel", "Cancel the batch under the cursor; the reason is asked for, and what was "

@@ -37,6 +37,22 @@ def shared(**default: Any) -> argparse.ArgumentParser:
     return made
 
 
+def group(add: Add, name: str, words: str, nothing: str) -> Add:
+    """A command with commands of its own; how to add one. `nothing`: what is said where none is named."""
+    def refuse(options: argparse.Namespace) -> int:
+        raise BadInput(nothing)
+
+    command = add(name, refuse, words)
+    commands = command.add_subparsers(title=f"commands of {name}", metavar="WHAT", parser_class=type(command))
+
+    def of_group(name: str, run: Run, words: str) -> argparse.ArgumentParser:
+        made = commands.add_parser(name, parents=[shared()], help=words, description=words)
+        made.set_defaults(run=run)
+        return made
+
+    return of_group
+
+
 def path(text: str) -> Path:
     """A path as typed on the command line."""
     if not text.strip():

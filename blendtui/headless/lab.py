@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from solver.target import LAWS
 
-from .common import DONE, Add, BadInput, opened, shared, shares_of, show
+from .common import DONE, Add, BadInput, group, opened, shares_of, show
 from .lab_fit import add_fit
 from .lab_plan import add_plan
 
@@ -20,14 +20,9 @@ PLACES = {"--kv40": "KV at 40 °C, mm²/s", "--kv100": "KV at 100 °C, mm²/s"}
 
 def register(add: Add) -> None:
     """Add `lab` with its own commands."""
-    command = add("lab", _nothing, "measured blends, and what they teach the laws")
-    commands = command.add_subparsers(title="commands of lab", metavar="WHAT", parser_class=type(command))
-
-    def of_lab(name: str, run: Callable[[argparse.Namespace], int], words: str) -> argparse.ArgumentParser:
-        made = commands.add_parser(name, parents=[shared()], help=words, description=words)
-        made.set_defaults(run=run)
-        return made
-
+    of_lab = group(add, "lab", "measured blends, and what they teach the laws",
+                   "say what the laboratory is to do: record, list, confirm, drop, residuals, offer, take, withdraw, "
+                   "lessons, plan or fit; blendtui lab --help tells of each")
     _add_record(of_lab)
     made = of_lab("list", _list, "list the measured blends, with what is doubtful of them")
     made.add_argument("--product", metavar="PRODUCT", help="only those made for it")
@@ -51,7 +46,7 @@ def register(add: Add) -> None:
     of_lab("lessons", _lessons, "the lessons in use").add_argument(
         "--all", action="store_true", help="those that were withdrawn too")
     add_plan(of_lab)
-    add_fit(commands)
+    add_fit(of_lab)
 
 
 def _add_record(add: Add) -> None:
@@ -68,11 +63,6 @@ def _add_record(add: Add) -> None:
     made.add_argument("--method", metavar="TEXT", default="")
     made.add_argument("--note", metavar="TEXT", default="")
     made.add_argument("--confirm", action="store_true", help="what is doubtful of it has been looked at and is so")
-
-
-def _nothing(options: argparse.Namespace) -> int:
-    raise BadInput("say what the laboratory is to do: record, list, confirm, drop, residuals, offer, take, withdraw, "
-                   "lessons, plan or fit; blendtui lab --help tells of each")
 
 
 def _record(options: argparse.Namespace) -> int:

@@ -7,7 +7,7 @@ import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, BadInput, show
+from .common import DONE, Add, BadInput, show
 
 if TYPE_CHECKING:
     from blendtui.desk.lab_fit import FileFit, SystemFit
@@ -17,15 +17,11 @@ WIDTH = 80  # columns of a printer
 _CONSTANTS = {"none": "no term", "one": "one term", "two": "two terms"}
 
 
-def add_fit(commands: Any) -> None:
+def add_fit(add: Add) -> None:
     """Add `fit` to the sub-commands of `lab`."""
-    words = "the excess of pairs, fitted to a CSV file of measured mixtures"
-    command = commands.add_parser("fit", help=words, description=words)
+    command = add("fit", run, "the excess of pairs, fitted to a CSV file of measured mixtures")
     command.add_argument("file", metavar="FILE.csv", help="columns system, frac_mass (of the heavier), kv, use")
     command.add_argument("--law", default="refutas", help=LAWS)
-    command.add_argument("--json", action="store_true", default=argparse.SUPPRESS,
-                         help="the answer as JSON, numbers unrounded")
-    command.set_defaults(run=run)
 
 
 def run(options: argparse.Namespace) -> int:

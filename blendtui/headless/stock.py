@@ -7,7 +7,7 @@ import textwrap
 from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING, Any, TypeVar
 
-from .common import DONE, Add, BadInput, opened, shared, show, told, whole
+from .common import DONE, Add, BadInput, Run, group, opened, show, told, whole
 
 if TYPE_CHECKING:
     from blendtui.desk.ledger import Book
@@ -19,12 +19,12 @@ WORDS = 31  # columns of what a movement was, so that a line of the book fits 80
 
 def register(add: Add) -> None:
     """Add `stock` with its own commands."""
-    command = add("stock", _nothing, "one stock: receive a delivery, test it, dip it, read its book")
-    commands = command.add_subparsers(title="commands of stock", metavar="WHAT", parser_class=type(command))
+    of_group = group(add, "stock", "one stock: receive a delivery, test it, dip it, read its book",
+                     "say what is to be done with the stock: receive, test, dip or book; blendtui stock --help tells "
+                     "of each")
 
-    def of_stock(name: str, run: Callable[[argparse.Namespace], int], words: str) -> argparse.ArgumentParser:
-        made = commands.add_parser(name, parents=[shared()], help=words, description=words)
-        made.set_defaults(run=run)
+    def of_stock(name: str, run: Run, words: str) -> argparse.ArgumentParser:
+        made = of_group(name, run, words)
         made.add_argument("stock", metavar="STOCK")
         return made
 
@@ -97,11 +97,6 @@ def values_of(typed: Sequence[str]) -> dict[str, str]:
             raise BadInput(f"--value {each}: {code} is given twice")
         found[code] = value.strip()
     return found
-
-
-def _nothing(options: argparse.Namespace) -> int:
-    raise BadInput("say what is to be done with the stock: receive, test, dip or book; blendtui stock --help tells of "
-                   "each")
 
 
 def _receive(options: argparse.Namespace) -> int:

@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 import argparse
-from collections.abc import Callable
 from typing import TYPE_CHECKING, Any
 
-from .common import DONE, Add, BadInput, opened, shared, show
+from .common import DONE, Add, BadInput, group, opened, show
 
 if TYPE_CHECKING:
     from blendtui.desk.plant import Plant
@@ -15,14 +14,9 @@ if TYPE_CHECKING:
 
 def register(add: Add) -> None:
     """Add `vessel` with its own commands."""
-    command = add("vessel", _nothing, "kettles and blending tanks: capacity, least fill, scale, heel, margin to flash")
-    commands = command.add_subparsers(title="commands of vessel", metavar="WHAT", parser_class=type(command))
-
-    def of_vessel(name: str, run: Callable[[argparse.Namespace], int], words: str) -> argparse.ArgumentParser:
-        made = commands.add_parser(name, parents=[shared()], help=words, description=words)
-        made.set_defaults(run=run)
-        return made
-
+    of_vessel = group(add, "vessel", "kettles and blending tanks: capacity, least fill, scale, heel, margin to flash",
+                      "say what is to be done with vessels: list, add, set or retire; blendtui vessel --help tells of "
+                      "each")
     of_vessel("list", _list, "the vessels in use")
     for name, run, words in (("add", _add, "add a vessel"), ("set", _set, "give cells of a vessel new values"),
                              ("retire", _retire, "take a vessel out of use")):
@@ -32,11 +26,6 @@ def register(add: Add) -> None:
             made.add_argument("cells", metavar="CELL=VALUE", nargs="*" if name == "add" else "+",
                               help="capacity_l, least_fill_l, division_kg, heel_kg, heel_stock, flash_margin_c, "
                                    "flash_margin_on or charge_order; empty: unknown")
-
-
-def _nothing(options: argparse.Namespace) -> int:
-    raise BadInput("say what is to be done with vessels: list, add, set or retire; blendtui vessel --help tells of "
-                   "each")
 
 
 def _cells(typed: list[str]) -> dict[str, str]:
