@@ -319,7 +319,7 @@ def rounded_words(each: Rounded, stocks: Iterable[Stock]) -> str:
     stock = next((s for s in stocks if s.code == each.of), None)
     unit = "package" if stock is not None and stock.package_kg else "step"
     return (f"{each.of} is rounded to a whole {unit} of {kg(each.step_kg)} kg: {100.0 * each.share:.4g} % in place of "
-            f"{100.0 * asked:.4g} %, {kg(abs(each.off_kg))} kg {'more' if each.off_kg > 0.0 else 'less'}"
+            f"{100.0 * asked:.4g} %, {abs(each.off_kg):.3g} kg {'more' if each.off_kg > 0.0 else 'less'}"
             + ("" if abs(each.share - asked) <= SMALL * asked else ": the formulator has to agree"))
 
 

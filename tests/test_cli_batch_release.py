@@ -109,7 +109,7 @@ def test_a_trim_without_both_viscosities_is_refused(batch, plant):
     sampled(plant, 1, {"kv40": 40.3})
     code, out, err = batch("trim", "B-0001")
     assert (code, out) == (2, "")
-    assert err == ("sample 1 of B-0001 has KV40: a trim moves both viscosities, so measure KV40 and KV100 on one "
+    assert err == ("sample 1 of B-0001 has KV40 on record; a trim moves both: measure KV40 and KV100 on one "
                    "sample first\n")
 
 

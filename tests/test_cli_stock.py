@@ -48,7 +48,7 @@ def test_receive(run, plant):
     code, out, _ = run("stock", "receive", "LN", "8", "t", "--lot", "L1", "--certificate", "C-7", *FULL, "--by", "bert")
     assert code == 0
     assert out.splitlines()[:2] == ["8000 kg of lot L1 received; the book of LN says 32000 kg",
-                                    "it holds before 75.00 %, L1 25.00 %"]
+                                    "it holds what was there before 75.00 %, lot L1 25.00 %"]
     found = answer(run, "stock", "receive", "LN", "8000", "--lot", "L2", "--keep", "--value", "kv40=30.4",
                    "--value", "kv100=5.24", "--on", "2031-05-04", "--sure", "--note", "second truck")
     assert found["lot"]["cells"] == {"kv40": 30.4, "kv100": 5.24}

@@ -19,7 +19,7 @@ from solver.errors import TargetError
 from solver.properties import lookup, volume_at
 
 from . import batch_doubts, batches
-from .batch_lessons import MINUTE, lesson_changes
+from .batch_lessons import MINUTE, renewed_changes
 from .batch_outlook import predicted
 from .batch_verdict import DECISIONS, NO_RESULT, RELEASE, LimitVerdict, Verdict, verdict
 from .errors import DeskError
@@ -191,7 +191,7 @@ def decide(plant: Plant, batch: str, *, decision: str = "", why: str = "", by: s
         _refuse_twice(made, says, final, reason)
         line = 1 + max((d.line for d in made.decisions), default=0)
         found = Decision(made.name, line, number, final, "; ".join(says.words), at, who, reason)
-        changes: list[Change] = [*added(found), *lesson_changes(plant, made, number)]
+        changes: list[Change] = [*added(found), *renewed_changes(plant, made, number)]
         return Step(tuple(changes), f"{made.name} sample {number}: {final}", reason, found)
 
     found = plant.step(make).result

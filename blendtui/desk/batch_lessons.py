@@ -155,6 +155,21 @@ def lesson_changes(plant: Plant, made: Made, sample: Sample | int) -> list[Chang
     return lab_edits.dropped_measured(plant, blend.name) + lab_edits.new_measured(plant, blend)
 
 
+def renewed_changes(plant: Plant, made: Made, sample: Sample | int) -> list[Change]:
+    """As `lesson_changes`, and what other samples of the batch taught by results that have changed since: recorded
+    anew, or dropped where none of their results stands any more."""
+    number = sample.sample if isinstance(sample, Sample) else sample
+    found, known = lesson_changes(plant, made, sample), {b.name: b for b in plant.measured()}
+    evidence = {name for lesson in plant.lessons() for name in lesson.evidence}
+    for other in (s for s in made.samples if s.sample != number):
+        name = name_of(made.name, other.sample)
+        if any(True for _ in standing(made, other.sample)):
+            found += lesson_changes(plant, made, other) if name in known else []
+        elif name in known and name not in evidence and known[name].note == NOTE.format(made.name, other.sample):
+            found += lab_edits.dropped_measured(plant, name)
+    return found
+
+
 def _same(one: Measured, other: Measured) -> bool:
     """Do two blends say the same? Shares are kept to ten decimals of a per cent."""
     shares = [{p.stock: round(100.0 * p.share, 8) for p in each.parts} for each in (one, other)]

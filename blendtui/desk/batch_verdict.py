@@ -199,8 +199,8 @@ def _limit(need: Requirement, made: Made, draw: Sequence[Sample]) -> LimitVerdic
 def _arithmetic(code: str, side: str, at: float, inside: float, r: float, made: Made, draw: Sequence[Sample]) -> str:
     """`low 41.40: inside by 3.80 = 7.52 R (R 0.505, ASTM D445)`."""
     methods, part = _other_methods(code, made, draw), abs(inside) / r
-    # Beside a threshold two decimals would show it on the wrong side.
-    shown = f"{part:.4f}" if min(abs(part - SURE), abs(part - 1.0)) < 0.005 else f"{part:.2f}"
+    # Two decimals may show it on the wrong side of a threshold, or on it.
+    shown = f"{part:.2f}" if all((part < at) == (round(part, 2) < at) for at in (SURE, 1.0)) else f"{part:.4f}"
     return (f"{side} {numbers.value(code, at)}: {'inside' if inside >= 0.0 else 'outside'} by "
             f"{numbers.figures(abs(inside), 3)} = {shown} R (R {numbers.figures(r, 3)}, {lookup(code).method})"
             + (f", measured by {and_of(methods)}" if methods else ""))

@@ -136,8 +136,10 @@ def correct(plant: Plant, batch: str, line: int, kg: float | str, *, why: str = 
                        lots=_lots(oil, given, tank) if anew else row.lots)
         changes = (changed(row, **{cell: getattr(done, cell) for cell in CELLS}), *lots_of(done, row), moved(oil, -off),
                    *_tank_after(plant, oil, tank, (row.lots, -(row.actual_kg or 0.0)), (done.lots, mass)))
-        return Step(changes, f"{batch} line {line}: {numbers.batch(row.actual_kg)} kg corrected to "
-                    f"{numbers.batch(mass)} kg", reason, (made, row, done, oil, tank))
+        what = f"{numbers.batch(row.actual_kg)} kg corrected to {numbers.batch(mass)} kg"
+        if abs(off) <= charging_words.HAIR:
+            what = f"its lot corrected to {harmless(done.actual_lot, 40)}" if anew else "its temperature corrected"
+        return Step(changes, f"{batch} line {line}: {what}", reason, (made, row, done, oil, tank))
 
     made, row, done, oil, tank = _result(plant.step(make))
     if done == replace(row, why=done.why):
@@ -362,7 +364,9 @@ def _corrected_words(made: Made, row: Charge, done: Charge, oil: Stock, tank: Ma
     if done.state == PLANNED:
         yield f"{name}: {numbers.batch(row.actual_kg)} kg taken back; the line is to come again"
     else:
-        yield f"{name}: {numbers.batch(row.actual_kg)} → {numbers.batch(done.actual_kg)} kg"
+        same = row.actual_kg == done.actual_kg
+        yield (f"{name}: {numbers.batch(done.actual_kg)} kg as before" if same
+               else f"{name}: {numbers.batch(row.actual_kg)} → {numbers.batch(done.actual_kg)} kg")
         yield from charging_words.charged_words(row, done, oil)
         yield from charging_words.lot_words(done, oil, tank, row)
     if row.checked_by:

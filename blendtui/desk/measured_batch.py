@@ -33,9 +33,10 @@ def measured_batch(plant: Plant, made: Made, target: Target) -> tuple[Stock, tup
         raise DeskError(f"{harmless(made.name, 40)} has no sample of what is in the vessel now: a trim starts from the "
                         "measured batch, not from the predicted one; draw a sample and measure KV40 and KV100")
     if not any(all(mean_of(made, s, code) for code in PAIR) for s in draw):
-        have = ", ".join(heading(code) for code in PAIR if any(mean_of(made, s, code) for s in draw)) or "neither"
-        raise DeskError(f"sample {', '.join(str(s.sample) for s in draw)} of {harmless(made.name, 40)} has {have}: a "
-                        "trim moves both viscosities, so measure KV40 and KV100 on one sample first")
+        have = [heading(code) for code in PAIR if any(mean_of(made, s, code) for s in draw)]
+        samples = ", ".join(str(s.sample) for s in draw)
+        raise DeskError(f"sample {samples} of {harmless(made.name, 40)} has {', '.join(have) or 'neither viscosity'} "
+                        "on record; a trim moves both: measure KV40 and KV100 on one sample first")
     measured: dict[str, float] = {}
     for code in dict.fromkeys(r.property for r in made.results if r.property != "vi"):
         found = [mean for mean, _, _ in values_of(made, draw, code)]  # of an older sample what only that was tested for

@@ -240,12 +240,16 @@ def _more_than_left(plant: Plant, receipt: Lot) -> list[str]:
 
 # What is said
 
+def _lot_words(lot: str) -> str:
+    return "what was there before" if lot == EARLIER else f"lot {harmless(lot, 40)}"
+
+
 def _words(tank: Stock, done: Received, kept: bool) -> tuple[str, ...]:
     new, lot = done.stock, done.lot
     said = [f"{numbers.kg(lot.kg)} kg of lot {harmless(lot.lot, 40)} received; the book of {tank.code} says "
             f"{numbers.kg(new.on_hand_kg)} kg"]
     if len(done.parts) > 1:
-        said.append("it holds " + ", ".join(f"{harmless(name, 40)} {numbers.pct(part)} %" for name, part in
+        said.append("it holds " + ", ".join(f"{_lot_words(name)} {numbers.pct(part)} %" for name, part in
                                             sorted(done.parts.items(), key=lambda each: -each[1])[:6]))
     moved = [f"{c.upper()} {numbers.kv(value_of(tank, c))} → {numbers.kv(value_of(new, c))} mm²/s" for c in PAIR
              if value_of(new, c) is not None]

@@ -195,7 +195,7 @@ def release(plant: Plant, batch: str, *, by: str = "", why: str = "", sure: bool
         changes = [changed(made.head, state=closed.state, closed_at=at, closed_by=who, why=closed.why)]
         on = newest(made)
         assert on is not None  # else it would be missing
-        changes += batch_lessons.lesson_changes(plant, made, on)
+        changes += batch_lessons.renewed_changes(plant, made, on)
         return Step(tuple(changes), f"{batch} released", why, replace(made, head=closed))
 
     done = plant.step(make).result

@@ -144,7 +144,7 @@ def test_a_fresh_sample_counts_and_the_older_stays_visible():
     assert "sample 1 does not count: a newer one counts (KV40 41.00, KV100 6.900)" in found.remarks
     again = batch_lab.verdict(with_kv40(41.0, ((2, "kv40", 41.1), (2, "kv100", 6.5))), TARGET)
     assert again.decision == TRIM
-    assert again.limits[0].words.endswith("outside by 0.300 = 0.5940 R (R 0.505, ASTM D445), by less than R: trim, for "
+    assert again.limits[0].words.endswith("outside by 0.300 = 0.59 R (R 0.505, ASTM D445), by less than R: trim, for "
                                           "sample 1 was outside too")
 
 

@@ -61,7 +61,7 @@ def test_a_top_up_mixes_by_the_laws_of_a_blend(plant: Plant) -> None:
     assert (lot.kg, lot.certificate, lot.source, lot.by, lot.cells["kv40"]) == (
         10000.0, "C-77", "certificate", "bert", 31.0)
     assert done.words == ("10000 kg of lot L1 received; the book of LN says 40000 kg",
-                          "it holds before 75.00 %, L1 25.00 %",
+                          "it holds what was there before 75.00 %, lot L1 25.00 %",
                           "KV40 30.00 → 30.25 mm²/s, KV100 5.200 → 5.225 mm²/s, computed until the tank is tested")
     assert (entry := plant.journal(1)[0]).what == "LN received 10000 kg, lot L1 (by bert)"
     assert len([c for c in entry.changes if c.table == "lot"]) == 1

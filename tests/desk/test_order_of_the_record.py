@@ -364,3 +364,23 @@ def test_no_temperature_that_oil_cannot_have_whatever_is_answered(plant, celsius
 def test_a_time_before_every_calendar_is_no_time():
     with pytest.raises(DeskError, match="is no time"):
         batches.moment("0001-01-01 00:00")
+
+
+def test_a_result_that_was_withdrawn_teaches_no_longer_whatever_sample_decides(plant):
+    put_in(plant, 1, 2)
+    batch_lab.sample(plant, B1)
+    laboratory(plant, {**GOOD, "kv40": "89.0"})
+    batch_lab.decide(plant, B1, decision="fresh sample", why="hardly so")
+    assert {b.name: b.values["kv40"] for b in plant.measured()} == {B1: 89.0}
+    line = next(r.line for r in plant.batch(B1).results if r.property == "kv40")
+    batch_lab.withdraw(plant, B1, 1, line, why="another oil")
+    batch_lab.sample(plant, B1)
+    laboratory(plant, GOOD)
+    batch_lab.decide(plant, B1)
+    assert {b.name: b.values.get("kv40") for b in plant.measured()} == {B1: None, f"{B1} S2": 100.2}
+    for row in [r for r in plant.batch(B1).results if r.sample == 1 and not r.withdrawn]:
+        batch_lab.withdraw(plant, B1, 1, row.line, why="another oil")
+    batch_lab.decide(plant, B1, why="sample 1 was of another oil")
+    release.release(plant, B1)
+    assert [b.name for b in plant.measured()] == [f"{B1} S2"]
+    assert plant.verify() is None

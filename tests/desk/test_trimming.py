@@ -131,7 +131,7 @@ def test_what_was_not_measured_is_the_prediction_and_said(plant):
 
 
 @pytest.mark.parametrize(("results", "words"), [
-    ({"kv40": 92.0}, "sample 1 of B-0001 has KV40: a trim moves both viscosities, so measure KV40 and KV100"),
+    ({"kv40": 92.0}, "sample 1 of B-0001 has KV40 on record; a trim moves both: measure KV40 and KV100"),
     ({"flash": 235.0}, "sample 1 of B-0001 has neither")])
 def test_both_viscosities_of_one_sample(plant, results, words):
     measured(plant, results)
