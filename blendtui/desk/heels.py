@@ -81,7 +81,8 @@ def _content(plant: Plant, what: str, kg: float, of: str, measured: Mapping[str,
                         "is of, or type what was measured (--heel-value kv40=46.1)" if what == HEEL else
                         f"{called} of {numbers.batch(kg)} kg ({harmless(of, 40)}): its {', '.join(lacks)} "
                         "is unknown; enter it with the stock")
-    return Content("", 0, what, of, round(kg, 6), 1, cells, parts, "measured" if measured else source)
+    lots = plant.tank_lots(of) if what == FLUSH else {}
+    return Content("", 0, what, of, round(kg, 6), 1, cells, parts, "measured" if measured else source, lots)
 
 
 def _known(plant: Plant, of: str, called: str, stocks: Mapping[str, Stock]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 from blendtui.store.batch_records import Charge, Content, Lot
@@ -66,20 +67,24 @@ class Back:
 
     def _charge(self, charge: Charge, kg: float, part: float, above: frozenset[str]) -> Node:
         lots = lots_of(charge)
-        if not lots:
-            self.ends(charge.stock, "", kg, part)
-        below = tuple(self.lot(charge.stock, lot, kg * of, part * of, above) for lot, of in
-                      sorted(lots.items(), key=lambda each: -each[1]))
+        below = self._lots(charge.stock, lots, kg, part, above)
         words = f"charged {batches.when(charge.at)}" + (f" by {charge.by}" if charge.by else "")
         return Node("charge", charge.stock, kg, part, words if lots else f"{words}; no lot was recorded", below,
                     "" if lots else "no lot")
 
+    def _lots(self, stock: str, lots: Mapping[str, float], kg: float, part: float, above: frozenset[str]
+              ) -> tuple[Node, ...]:
+        if not lots:
+            self.ends(stock, "", kg, part)
+        return tuple(self.lot(stock, lot, kg * of, part * of, above) for lot, of in
+                     sorted(lots.items(), key=lambda each: -each[1]))
+
     def _content(self, content: Content, kg: float, part: float, above: frozenset[str]) -> Node:
         made = self.past.made(content.stock) if content.stock and content.stock not in self.past.stocks else None
         if made is None:
-            self.ends(content.stock, "", kg, part)
-            mark = "no lot" if content.stock else "unknown origin"
-            return Node(content.what, content.stock, kg, part, mark, (), mark)
+            below = self._lots(content.stock, content.lots, kg, part, above)
+            mark = "" if below else "no lot" if content.stock else "unknown origin"
+            return Node(content.what, content.stock, kg, part, mark, below, mark)
         below = self.batch(content.stock, left_at(made), kg, part, above)
         mark = "" if below else "not followed"
         return Node(content.what, content.stock, kg, part, mark and f"{mark} further", below, mark)

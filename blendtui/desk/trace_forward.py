@@ -73,11 +73,17 @@ class Forward:
     def _first(self) -> list[str]:
         plant, found = self.past.plant, list(self.roots)
         for stock, lot in self.lots:
-            found += [c.batch for c in plant.charges_of(stock=stock, lot=lot)]
+            found += self._holding(stock, lot)
         if self.stock:
             found += [c.batch for c in plant.charges_of(stock=self.stock)]
             found += [c.batch for c in plant.onward([self.stock])[1]]
         return list(dict.fromkeys(found))
+
+    def _holding(self, stock: str, lot: str) -> list[str]:
+        """Batches into which a lot was charged or flushed."""
+        plant = self.past.plant
+        flushed = [c.batch for c in plant.onward([stock])[1] if lot in c.lots]
+        return [*(c.batch for c in plant.charges_of(stock=stock, lot=lot)), *flushed]
 
     def _again(self, name: str) -> bool:
         self.seen[name] = self.seen.get(name, 0) + 1
@@ -89,7 +95,7 @@ class Forward:
         for lot in lots:
             phi = self.part(made, when_drawn(made, drawn_at(made, lot.stock, lot.lot)))
             if self._news(self.lots, (lot.stock, lot.lot), phi):
-                after += [c.batch for c in self.past.plant.charges_of(stock=lot.stock, lot=lot.lot)]
+                after += self._holding(lot.stock, lot.lot)
         if self._news(self.heels, made.name, self.part(made, when_drawn(made, left_at(made)))):
             after += [c.batch for c in contents]
         return after
@@ -113,9 +119,10 @@ class Forward:
     def _of(self, made: Made, thing: Content | Charge) -> float:
         if made.name in self.roots or (self.stock and thing.stock == self.stock):
             return 1.0
-        if isinstance(thing, Content):
+        if isinstance(thing, Content) and not thing.lots:
             return self.heels.get(thing.stock, 0.0)
-        return sum(part * self.lots.get((thing.stock, lot), 0.0) for lot, part in lots_of(thing).items())
+        lots = thing.lots if isinstance(thing, Content) else lots_of(thing)
+        return sum(part * self.lots.get((thing.stock, lot), 0.0) for lot, part in lots.items())
 
     # What was found
 

@@ -14,7 +14,7 @@ from .errors import NoSuchRow
 from .harmless import harmless
 from .schema import QUANTITY_OF, TABLES, VESSEL_CELLS
 
-MAPPINGS = ("cells", "parts")  # columns that hold a JSON object
+MAPPINGS = ("cells", "parts", "lots")  # columns that hold a JSON object
 
 
 def _read(con: sqlite3.Connection, kind: type, table: str, rest: str = "", given: tuple[Any, ...] = ()) -> list[Any]:

@@ -63,6 +63,7 @@ class Content:
     cells: Mapping[str, float] = field(default_factory=dict)  # kv40, kv100, density15, flash, …
     parts: Mapping[str, float] = field(default_factory=dict)  # stock → mass fraction of what it was made of
     source: str = ""  # "measured", "typed", "stock"
+    lots: Mapping[str, float] = field(default_factory=dict)  # of flush oil: lot → its part, as its tank was then
 
 
 @dataclass(frozen=True)

@@ -37,7 +37,7 @@ VESSEL_CELLS = ("capacity_l", "least_fill_l", "division_kg", "heel_kg", "heel_st
 BATCH_CELLS = ("product", "order_no", "customer", "asked", "unit", "batch_kg", "vessel", "mix_c", "formula",
                "formula_entry", "heel_ignored", "state", "ordered_at", "ordered_by", "note", "closed_at", "closed_by",
                "why")
-CONTENT_CELLS = ("what", "stock", "kg", "counts", "cells", "parts", "source")
+CONTENT_CELLS = ("what", "stock", "kg", "counts", "cells", "parts", "source", "lots")
 CHARGE_CELLS = ("round", "stock", "lot", "plan_kg", "tolerance_kg", "celsius", "state", "actual_kg", "actual_lot", "at",
                 "by", "checked_at", "checked_by", "why", "cells", "position")
 SAMPLE_CELLS = ("round", "taken_at", "taken_by", "place", "celsius", "note")
@@ -86,7 +86,7 @@ RECORD = ("lot", "tank_lot", "dip", "batch", "content", "charge", "charge_lot", 
           "outcome")
 
 # Columns that came with a later step: an entry written before it does not speak of them, and they were empty then.
-LATER: dict[str, Row] = {"stock": dict.fromkeys(STOCK_CHARGES)}
+LATER: dict[str, Row] = {"stock": dict.fromkeys(STOCK_CHARGES), "content": {"lots": "{}"}}
 
 # Sum of movements since the last marker "quantity unknown" (mg null), in whole milligrams: it is exact.
 QUANTITY = """
@@ -247,4 +247,7 @@ MIGRATIONS: tuple[tuple[str, ...], ...] = ((
 ), (
     # The sum of a stock's movements is read with every list of stocks: from the index alone.
     "CREATE INDEX movement_sum ON movement (stock, mg)",
+), (
+    # Lot → part of flush oil, as its tank was when it was drawn; JSON.
+    "ALTER TABLE content ADD COLUMN lots TEXT NOT NULL DEFAULT '{}'",
 ))

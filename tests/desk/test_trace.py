@@ -9,12 +9,13 @@ from pathlib import Path
 
 import pytest
 
-from blendtui.desk import ledger, rework
+from blendtui.desk import batches, charging, ledger, orders, rework
 from blendtui.desk.errors import DeskError
 from blendtui.desk.trace import trace
 from blendtui.store.batch_edits import added, lots_of
 from blendtui.store.batch_records import HEEL, Batch, Content
-from blendtui.store.opening import open_plant
+from blendtui.store.opening import import_folder, open_plant
+from blendtui.store.places import example_folder
 from blendtui.store.plant import Plant
 from blendtui.store.records import Step
 from tests.benchmarks import batch_plant
@@ -178,3 +179,20 @@ def test_a_trace_is_quick_in_a_plant_with_a_long_past(tmp_path: Path) -> None:
             assert found.uses
         back = trace(plant, "B-1999")
         assert sum(o.part for o in back.origins) + back.faint == pytest.approx(1.0)
+
+
+def test_flush_oil_is_traced_by_the_lots_of_its_tank(tmp_path: Path) -> None:
+    """By hand: 60 kg of a tank that holds 30 t of a lot in 91.4 t, in 15.12 t of batch, once all is charged."""
+    import_folder(example_folder(), tmp_path / "p.plant")
+    with open_plant(tmp_path / "p.plant", who="anna") as plant:
+        own = {c: f"{v:.12g}" for c, v in batches.cells_of(plant.stock("LN15A")).items()}
+        ledger.receive(plant, "LN15A", 30000.0, "L9", cells=own, sure=True)
+        made = orders.take(plant, orders.Order("HYD-46", 15000.0, "K1", flush=(60.0, "LN15A", True)))
+        for each in made.charges:
+            charging.charge(plant, made.name, each.line, each.plan_kg, lot="" if each.stock == "LN15A" else "X")
+        (use,), part = trace(plant, "L9").uses, 30000.0 / 91400.0
+        light = 60.0 + sum(c.plan_kg for c in made.charges if c.stock == "LN15A")
+        assert use.kg == pytest.approx(part * light, rel=1e-9)
+        assert "flush of LN15A" in use.via
+        back = {(o.stock, o.lot): o.kg for o in trace(plant, made.name).origins}
+        assert back["LN15A", "L9"] == pytest.approx(part * light, rel=1e-9)
