@@ -11,8 +11,8 @@ from blendtui import cli
 from blendtui.store.batch_edits import changed
 from blendtui.store.opening import open_plant
 from blendtui.store.records import Step
+from tests.desk.charging_plant import LIMITS, PLAN, SHARES, STOCKS, TOLERANCE
 from tests.desk.made_batches import ordered, plant_file
-from tests.desk.test_charging import LIMITS, PLAN, SHARES, STOCKS, TOLERANCE
 
 
 @pytest.fixture
