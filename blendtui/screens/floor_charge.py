@@ -22,12 +22,8 @@ class ChargeCommands(StepPage):
 
     seen: Seen | None
     state: Any  # the floor screen's own
+    charge: Charge | None  # the one under the cursor; the floor screen reads it off its table
     checker = ""  # who checked last at this terminal
-
-    @property
-    def charge(self) -> Charge | None:
-        """The charge under the cursor; the floor screen knows it."""
-        raise NotImplementedError
 
     def of_charge(self, *wanted: str) -> Charge | None:
         """The charge under the cursor if it is in such a state; else say what it is, and None."""

@@ -14,10 +14,7 @@ from .steps import StepPage
 class LedgerCommands(StepPage):
     """The steps of the ledger, on the stock under the cursor."""
 
-    @property
-    def stock(self) -> Stock | None:
-        """The stock under the cursor; the screen knows it."""
-        raise NotImplementedError
+    stock: Stock | None  # the one under the cursor; the screen reads it off its table
 
     def _tank(self) -> Stock | None:
         if self.stock is None:
